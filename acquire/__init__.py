@@ -1,0 +1,1 @@
+"""The controller and the front door: command line, journal, sweep, resume."""

@@ -1,0 +1,1 @@
+"""Pure computing: frame -> spots -> orders -> pitch -> budget -> decision -> report."""

@@ -1,0 +1,1 @@
+"""Settings: the YAML that ships and the models that read it."""

@@ -1,0 +1,181 @@
+"""What stands on the table: screen, beam, stage, camera, lasers, air, emission line.
+
+Every quantity's key carries its unit; ``u_`` keys are standard uncertainties. The
+nominal values and their uncertainties are the priors of the joint fit.
+"""
+
+from typing import Annotated, Literal, Self
+
+from pydantic import Field, model_validator
+
+from pitchsweep.configs.settings_base import (
+    AngleDeg,
+    Fraction,
+    Name,
+    NonNegative,
+    Positive,
+    Settings,
+    Text,
+)
+from pitchsweep.configs.twin_model import TwinSettings
+
+
+class Hole(Settings):
+    """The hole in the screen through which the beam comes; spots on it are unused."""
+
+    x_mm: Annotated[float, Field(ge=-500.0, le=500.0)] = 0.0
+    y_mm: Annotated[float, Field(ge=-500.0, le=500.0)] = 0.0
+    diameter_mm: Annotated[float, Field(gt=0.0, le=100.0)] = 8.0
+
+
+class Screen(Settings):
+    """A flat screen facing the part; x, y in mm from where nominal +z meets it."""
+
+    distance_mm: Annotated[float, Field(ge=20.0, le=5000.0)]
+    u_distance_mm: Annotated[float, Field(gt=0.0, le=200.0)] = 5.0
+    u_tilt_mrad: Annotated[float, Field(gt=0.0, le=200.0)] = 30.0
+    u_offset_mm: Annotated[float, Field(gt=0.0, le=50.0)] = 3.0
+    width_mm: Annotated[float, Field(ge=10.0, le=5000.0)]
+    height_mm: Annotated[float, Field(ge=5.0, le=5000.0)]
+    u_map_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.5
+    hole: Hole = Hole()
+
+
+class Beam(Settings):
+    """The beam where it meets the part, and how well its line is known."""
+
+    diameter_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 1.0
+    u_elevation_mrad: Annotated[float, Field(gt=0.0, le=100.0)] = 5.0
+    u_offset_mm: Annotated[float, Field(gt=0.0, le=10.0)] = 0.5
+    u_height_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 1.0
+
+
+class Stage(Settings):
+    """The rotation stage: sense, travel, and what is known of its errors."""
+
+    direction: Literal[1, -1] = 1
+    travel_min_deg: AngleDeg = -180.0
+    travel_max_deg: AngleDeg = 180.0
+    speed_deg_per_s: Annotated[float, Field(gt=0.0, le=720.0)] = 10.0
+    settle_s: Annotated[float, Field(ge=0.0, le=600.0)] = 0.25
+    approach_deg: Annotated[float, Field(ge=0.0, le=30.0)] = 0.5
+    angle_tolerance_deg: Annotated[float, Field(gt=0.0, le=5.0)] = 0.01
+    u_zero_deg: Annotated[float, Field(gt=0.0, le=20.0)] = 0.5
+    u_repeatability_arcsec: Annotated[float, Field(gt=0.0, le=3600.0)] = 5.0
+    u_harmonics_arcsec: tuple[Positive, Positive, Positive, Positive] = (
+        60.0,
+        20.0,
+        10.0,
+        10.0,
+    )
+
+    @model_validator(mode="after")
+    def _travel_has_a_length(self) -> Self:
+        if self.travel_min_deg >= self.travel_max_deg:
+            raise ValueError("travel_min_deg must be below travel_max_deg")
+        return self
+
+
+class Camera(Settings):
+    """The camera and its nominal pixel-to-millimetre map (one scale, a centre).
+
+    A pixel (column, row) lies on the screen at
+    x = mm_per_px * (column - centre_column_px), y = -mm_per_px * (row - centre_row_px).
+    """
+
+    width_px: Annotated[int, Field(ge=64, le=20000)]
+    height_px: Annotated[int, Field(ge=64, le=20000)]
+    bits: Literal[8, 10, 12, 16] = 12
+    mm_per_px: Annotated[float, Field(gt=0.0, le=10.0)]
+    centre_column_px: Annotated[float, Field(ge=-20000.0, le=40000.0)]
+    centre_row_px: Annotated[float, Field(ge=-20000.0, le=40000.0)]
+    gain_dn_per_e: Annotated[float, Field(gt=0.0, le=1000.0)] = 0.4
+    read_noise_e: Annotated[float, Field(ge=0.0, le=10000.0)] = 4.0
+    black_level_dn: Annotated[float, Field(ge=0.0, le=10000.0)] = 64.0
+    readout_s: Annotated[float, Field(ge=0.0, le=60.0)] = 0.03
+
+
+class Laser(Settings):
+    """One laser: vacuum wavelength with its standard uncertainty, power at the part."""
+
+    vacuum_wavelength_nm: Annotated[float, Field(ge=400.0, le=700.0)]
+    u_wavelength_nm: Annotated[float, Field(gt=0.0, le=20.0)]
+    power_mw: Annotated[float, Field(gt=0.0, le=500.0)]
+    frequency_doubled: bool = False
+
+
+class Air(Settings):
+    """The air in the enclosure where no sensor reads it."""
+
+    temperature_C: Annotated[float, Field(ge=0.0, le=50.0)] = 20.0
+    u_temperature_C: Annotated[float, Field(gt=0.0, le=20.0)] = 0.5
+    pressure_hPa: Annotated[float, Field(ge=600.0, le=1200.0)] = 1013.25
+    u_pressure_hPa: Annotated[float, Field(gt=0.0, le=200.0)] = 5.0
+    humidity_percent: Annotated[float, Field(ge=0.0, le=100.0)] = 50.0
+    u_humidity_percent: Annotated[float, Field(gt=0.0, le=50.0)] = 10.0
+    co2_ppm: Annotated[float, Field(ge=0.0, le=2000.0)] = 450.0
+
+
+class Emission(Settings):
+    """The unit that switches light. A static control line is refused by design."""
+
+    line: Literal["keep-alive"] = "keep-alive"
+    switches: Literal["head-shutter", "laser"] = "head-shutter"
+    keep_alive_ms: Annotated[int, Field(ge=50, le=250)] = 200
+    unit_identity: Name = "bench-unit-1"
+
+
+class SerialPort(Settings):
+    """A serial port and the dialect spoken on it."""
+
+    port: Text
+    dialect: Name
+    baud: Annotated[int, Field(ge=1200, le=4_000_000)] = 115200
+
+
+class Ports(Settings):
+    """The ports of a bench with hardware."""
+
+    stage: SerialPort
+    unit: SerialPort
+    camera: Text
+
+
+class Bench(Settings):
+    """A bench: either a twin or ports, never both."""
+
+    bench: Name
+    note: Text | None = None
+    screen: Screen
+    beam: Beam = Beam()
+    stage: Stage = Stage()
+    camera: Camera
+    lasers: Annotated[dict[Name, Laser], Field(min_length=1, max_length=8)]
+    air: Air = Air()
+    emission: Emission = Emission()
+    reading_u_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1
+    twin: TwinSettings | None = None
+    ports: Ports | None = None
+
+    @model_validator(mode="after")
+    def _twin_or_ports(self) -> Self:
+        if (self.twin is None) == (self.ports is None):
+            raise ValueError("a bench has either 'twin:' or 'ports:', exactly one")
+        return self
+
+
+__all__ = [
+    "Air",
+    "Beam",
+    "Bench",
+    "Camera",
+    "Emission",
+    "Fraction",
+    "Hole",
+    "Laser",
+    "NonNegative",
+    "Ports",
+    "Screen",
+    "SerialPort",
+    "Stage",
+]

@@ -1,0 +1,38 @@
+"""A job: bench + part + recipe. A job file names them; a frozen job holds them."""
+
+from typing import Self
+
+from pydantic import model_validator
+
+from pitchsweep.configs.bench_model import Bench
+from pitchsweep.configs.part_model import Part
+from pitchsweep.configs.recipe_model import Recipe
+from pitchsweep.configs.settings_base import Name, Settings, Text
+
+
+class JobFile(Settings):
+    """What a job file says: three file names, resolved against the job file itself."""
+
+    job: Name
+    note: Text | None = None
+    bench: Text
+    part: Text
+    recipe: Text
+
+
+class Job(Settings):
+    """A complete job, as frozen into a run folder's ``job.yaml``."""
+
+    job: Name
+    note: Text | None = None
+    bench: Bench
+    part: Part
+    recipe: Recipe
+
+    @model_validator(mode="after")
+    def _recipe_fits_bench(self) -> Self:
+        for laser in self.recipe.lasers:
+            if laser not in self.bench.lasers:
+                known = ", ".join(sorted(self.bench.lasers))
+                raise ValueError(f"recipe names laser '{laser}'; the bench has {known}")
+        return self

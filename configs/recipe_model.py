@@ -1,0 +1,44 @@
+"""How to sweep: angles, mounts, lasers, exposures, what is recorded."""
+
+from typing import Annotated, Literal, Self
+
+from pydantic import Field, model_validator
+
+from pitchsweep.configs.settings_base import AngleDeg, Name, Settings, Text
+
+ExposureMs = Annotated[float, Field(gt=0.0, le=60000.0)]
+
+
+class Recipe(Settings):
+    """A sweep of incidence from ``start_deg`` to ``stop_deg``, relative to each mount.
+
+    The stage goes to ``mount_deg + direction * incidence``. ``angle_order`` is the
+    order of the steps in time; every angle is approached from the same side.
+    """
+
+    recipe: Name
+    note: Text | None = None
+    lasers: Annotated[tuple[Name, ...], Field(min_length=1, max_length=8)]
+    mounts_deg: Annotated[tuple[AngleDeg, ...], Field(min_length=1, max_length=8)] = (
+        0.0,
+    )
+    start_deg: Annotated[float, Field(ge=-89.0, le=89.0)]
+    stop_deg: Annotated[float, Field(ge=-89.0, le=89.0)]
+    step_deg: Annotated[float, Field(ge=0.01, le=45.0)]
+    angle_order: Literal["up-down", "shuffled", "up"] = "up-down"
+    record: Literal["frames", "spots"] = "frames"
+    exposures_ms: Annotated[tuple[ExposureMs, ...], Field(min_length=1, max_length=6)]
+    dark_every_steps: Annotated[int, Field(ge=1, le=1000)] = 10
+    coverage: Annotated[float, Field(ge=0.5, le=0.9999)] = 0.95
+
+    @model_validator(mode="after")
+    def _angles_run_upwards(self) -> Self:
+        if self.start_deg >= self.stop_deg:
+            raise ValueError("start_deg must be below stop_deg")
+        if len(set(self.exposures_ms)) != len(self.exposures_ms):
+            raise ValueError("exposures_ms must differ from each other")
+        if len(set(self.lasers)) != len(self.lasers):
+            raise ValueError("lasers must differ from each other")
+        if len({m % 360.0 for m in self.mounts_deg}) != len(self.mounts_deg):
+            raise ValueError("mounts_deg must differ from each other")
+        return self

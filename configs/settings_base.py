@@ -1,0 +1,21 @@
+"""The rules every settings model follows, and number types with their range."""
+
+from typing import Annotated
+
+from pydantic import BaseModel, ConfigDict, Field
+
+
+class Settings(BaseModel):
+    """A frozen settings block: unknown keys, wrong types and NaN are refused."""
+
+    model_config = ConfigDict(
+        frozen=True, extra="forbid", strict=True, allow_inf_nan=False
+    )
+
+
+Name = Annotated[str, Field(pattern=r"^[A-Za-z0-9][A-Za-z0-9._-]{0,63}$")]
+Text = Annotated[str, Field(min_length=1, max_length=400)]
+AngleDeg = Annotated[float, Field(ge=-360.0, le=360.0)]
+NonNegative = Annotated[float, Field(ge=0.0, le=1e9)]
+Positive = Annotated[float, Field(gt=0.0, le=1e9)]
+Fraction = Annotated[float, Field(ge=0.0, le=1.0)]

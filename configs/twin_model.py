@@ -1,0 +1,61 @@
+"""Sizes of what the simulated bench does to a sweep; each effect has its own size.
+
+Zero switches an effect off. What the fit carries (distance, tilts, offsets, zero,
+harmonics, map, repeatability) is drawn by the twin from the bench's own priors.
+"""
+
+from typing import Annotated, Literal
+
+from pydantic import Field
+
+from pitchsweep.configs.settings_base import Fraction, NonNegative, Settings
+
+Seed = Annotated[int, Field(ge=0, le=2**63 - 1)]
+Arcsec = Annotated[float, Field(ge=0.0, le=3600.0)]
+
+
+class TwinEffects(Settings):
+    """Effects that can be switched on, each alone, with its size."""
+
+    stage_harmonics_arcsec: tuple[Arcsec, Arcsec, Arcsec, Arcsec] = (
+        60.0,
+        10.0,
+        10.0,
+        10.0,
+    )
+    worm_arcsec: Arcsec = 0.0
+    worm_per_turn: Annotated[int, Field(ge=2, le=1000)] = 180
+    backlash_deg: Annotated[float, Field(ge=0.0, le=5.0)] = 0.05
+    wobble_arcsec: Arcsec = 0.0
+    scale_ppm: Annotated[float, Field(ge=-10000.0, le=10000.0)] = 0.0
+    map_error_mm: Annotated[float, Field(ge=0.0, le=20.0)] = 0.5
+    screen_bow_mm: Annotated[float, Field(ge=-20.0, le=20.0)] = 0.0
+    distortion_mm: Annotated[float, Field(ge=-20.0, le=20.0)] = 0.0
+    camera_shift_um_per_h: Annotated[float, Field(ge=-1e5, le=1e5)] = 0.0
+    camera_scale_ppm_per_h: Annotated[float, Field(ge=-1e5, le=1e5)] = 0.0
+    pointing_urad_per_h: Annotated[float, Field(ge=-1e5, le=1e5)] = 0.0
+    wavelength_drift_pm_per_h: Annotated[float, Field(ge=-1e5, le=1e5)] = 0.0
+    part_radius_m: Annotated[float, Field(ge=0.0, le=1e6)] = 0.0
+    cover_thickness_mm: Annotated[float, Field(ge=0.0, le=10.0)] = 0.0
+    cover_index: Annotated[float, Field(ge=1.0, le=3.0)] = 1.55
+    speckle_contrast: Fraction = 1.0
+    speckle_grain_px: Annotated[float, Field(gt=0.0, le=50.0)] = 2.0
+    halo_fraction: Fraction = 0.0
+    lopsided_fraction: Fraction = 0.0
+    ghost_fraction: Fraction = 0.0
+    hot_pixels: Annotated[int, Field(ge=0, le=100000)] = 20
+    room_light_dn_per_s: NonNegative = 20.0
+    room_light_step_dn_per_s: NonNegative = 0.0
+    missing_fraction: Fraction = 0.0
+    wild_fraction: Fraction = 0.0
+    wild_mm: Annotated[float, Field(ge=0.0, le=1000.0)] = 10.0
+
+
+class TwinSettings(Settings):
+    """How the twin runs: its seed, its clock, the size of every effect."""
+
+    seed: Seed = 0
+    speed: Literal["rehearsal", "real"] = "rehearsal"
+    pitch_off_percent: Annotated[float, Field(ge=0.0, le=20.0)] = 1.0
+    spot_reading_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1
+    effects: TwinEffects = TwinEffects()

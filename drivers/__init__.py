@@ -1,0 +1,1 @@
+"""Devices: transports, dialects (bytes in, events out), clients."""

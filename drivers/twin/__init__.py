@@ -1,0 +1,1 @@
+"""The simulated bench: a process of its own with its own optics."""
