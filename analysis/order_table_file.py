@@ -1,0 +1,309 @@
+"""Order tables as CSV text: reading with refusals that say where, writing exactly.
+
+Rules of the file: a header names the columns (any order); ``#`` starts a comment line;
+fields are separated by commas and numbers use a decimal point. ``order``,
+``mount_deg``, ``ux_mm`` and ``uy_mm`` may be blank or absent, ``laser`` only where one
+laser is known. The covariance of x and y is not in the file: it reads as zero.
+"""
+
+import csv
+import io
+import math
+import re
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass
+from typing import TypeVar
+
+import numpy as np
+
+from pitchsweep.analysis.analysis_errors import InputRefused
+from pitchsweep.analysis.records import UNKNOWN_ORDER, OrderTable
+
+COLUMNS = (
+    "step",
+    "stage_deg",
+    "mount_deg",
+    "laser",
+    "order",
+    "x_mm",
+    "y_mm",
+    "ux_mm",
+    "uy_mm",
+)
+REQUIRED = ("step", "stage_deg", "x_mm", "y_mm")
+MAX_STEP = 2**31 - 1
+MAX_ORDER = 1000
+MAX_ANGLE_DEG = 3600.0
+MAX_MM = 1.0e5
+
+_T = TypeVar("_T")
+_WHOLE = re.compile(r"[+-]?[0-9]{1,10}")
+_NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?")
+_DECIMAL_COMMA = re.compile(r"[+-]?[0-9]+,[0-9]+([eE][+-]?[0-9]+)?")
+
+
+@dataclass(frozen=True)
+class TableSource:
+    """What a table is read with.
+
+    ``file`` is the name to show in refusals, ``laser_names`` the lasers that the
+    bench knows, ``reading_u_mm`` the standard uncertainty where the table has none.
+    """
+
+    file: str
+    laser_names: tuple[str, ...]
+    reading_u_mm: float
+
+
+@dataclass(frozen=True)
+class _Field:
+    """One cell with its place."""
+
+    text: str
+    column: str
+    line: int
+    file: str
+
+    def refused(self, problem: str, allowed: str) -> InputRefused:
+        return InputRefused(
+            problem,
+            allowed=allowed,
+            file=self.file,
+            line=self.line,
+            column=self.column,
+            value=self.text,
+        )
+
+
+def decode_order_table(raw: bytes, file: str) -> str:
+    """``raw`` bytes of a CSV file as text (UTF-8, with or without a byte-order mark).
+
+    Raises InputRefused for any other encoding.
+    """
+    try:
+        return raw.decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        raise InputRefused(
+            f"not UTF-8 text (byte {error.start + 1})",
+            allowed="a CSV file saved as UTF-8; spreadsheets call it 'CSV UTF-8'",
+            file=file,
+        ) from error
+
+
+def read_order_table(text: str, source: TableSource) -> OrderTable:
+    """The order table that ``text`` (a whole CSV file) holds, rows in file order.
+
+    Orders that are not given are UNKNOWN_ORDER, mounts 0, uncertainties
+    ``source.reading_u_mm``. ``laser`` indexes ``source.laser_names``. Repeated rows
+    are kept as they are.
+
+    Raises InputRefused with file, line, column, value and what is allowed.
+    """
+    rows = list(_rows(text.removeprefix("\ufeff"), source.file))
+    if not rows:
+        raise InputRefused(
+            "the table is blank",
+            allowed=f"a header line ({','.join(COLUMNS)}) and at least one row",
+            file=source.file,
+        )
+    header = _checked_header(rows[0][1], rows[0][0], source)
+    cells = [_cells(fields, line, header, source.file) for line, fields in rows[1:]]
+    if not cells:
+        raise InputRefused(
+            "the table has a header and no rows",
+            allowed="at least one row below the header",
+            file=source.file,
+        )
+    return _table(cells, source)
+
+
+def write_order_table(table: OrderTable, *, comments: Sequence[str] = ()) -> str:
+    """``table`` as CSV text that reads back to the same bits (x-y covariance apart).
+
+    ``comments`` become ``#`` lines above the header.
+    """
+    out = io.StringIO()
+    for comment in comments:
+        out.write("".join(f"# {line}\n" for line in comment.splitlines()))
+    writer = csv.writer(out, lineterminator="\n")
+    writer.writerow(COLUMNS)
+    columns = (
+        table.step.tolist(),
+        map(repr, table.stage_deg.tolist()),
+        map(repr, table.mount_deg.tolist()),
+        [table.laser_names[index] for index in table.laser.tolist()],
+        ["" if m == UNKNOWN_ORDER else m for m in table.order.tolist()],
+        map(repr, table.x_mm.tolist()),
+        map(repr, table.y_mm.tolist()),
+        map(repr, table.ux_mm.tolist()),
+        map(repr, table.uy_mm.tolist()),
+    )
+    writer.writerows(zip(*columns, strict=True))
+    return out.getvalue()
+
+
+def _rows(text: str, file: str) -> Iterable[tuple[int, list[str]]]:
+    """Line number and fields of every line that is neither blank nor a comment."""
+    for number, line in enumerate(re.split(r"\r\n|\n|\r", text), start=1):
+        if not line.strip() or line.lstrip().startswith("#"):
+            continue
+        try:
+            fields = next(csv.reader([line], strict=True))
+        except csv.Error as error:
+            raise InputRefused(
+                f"the line cannot be split into fields ({error})",
+                allowed="fields separated by commas, quotes closed on the same line",
+                file=file,
+                line=number,
+            ) from error
+        fields = [field.strip() for field in fields]
+        if any(fields):  # spreadsheets leave rows of nothing but commas
+            yield number, fields
+
+
+def _checked_header(names: list[str], line: int, source: TableSource) -> list[str]:
+    _check_separator(names, line, source.file)
+    for name in names:
+        if name not in COLUMNS:
+            raise InputRefused(
+                "unknown column" if name else "a column has no name",
+                allowed=f"the columns {', '.join(COLUMNS)}",
+                file=source.file,
+                line=line,
+                value=name,
+            )
+        if names.count(name) > 1:
+            raise InputRefused(
+                "the column is there twice",
+                allowed="each column once",
+                file=source.file,
+                line=line,
+                column=name,
+            )
+    needed = REQUIRED if len(source.laser_names) == 1 else (*REQUIRED, "laser")
+    missing = [name for name in needed if name not in names]
+    if missing:
+        raise InputRefused(
+            f"the header lacks {', '.join(missing)}",
+            allowed=f"a first line that names {', '.join(needed)} (all: "
+            f"{','.join(COLUMNS)})",
+            file=source.file,
+            line=line,
+        )
+    return names
+
+
+def _check_separator(names: list[str], line: int, file: str) -> None:
+    for mark, word in ((";", "semicolons"), ("\t", "tabs")):
+        if len(names) == 1 and mark in names[0]:
+            raise InputRefused(
+                f"the fields are separated by {word}",
+                allowed="commas between fields and decimal points in numbers; "
+                "save the table again as comma-separated CSV with an English locale",
+                file=file,
+                line=line,
+            )
+
+
+def _cells(
+    fields: list[str], line: int, header: list[str], file: str
+) -> dict[str, _Field]:
+    if len(fields) != len(header):
+        hint = "; decimal commas?" if len(fields) > len(header) else ""
+        raise InputRefused(
+            f"the row has {len(fields)} fields, the header {len(header)}{hint}",
+            allowed="one field for each column, decimal points in numbers",
+            file=file,
+            line=line,
+        )
+    return {
+        name: _Field(text, name, line, file)
+        for name, text in zip(header, fields, strict=True)
+    }
+
+
+def _table(cells: list[dict[str, _Field]], source: TableSource) -> OrderTable:
+    def column(name: str, read: Callable[[_Field], _T], blank: _T) -> list[_T]:
+        values = (row.get(name) for row in cells)
+        return [read(v) if v is not None and v.text else blank for v in values]
+
+    def needed(name: str, read: Callable[[_Field], _T]) -> list[_T]:
+        return [read(row[name]) for row in cells]
+
+    u_mm = float(source.reading_u_mm)
+    return OrderTable(
+        step=np.array(needed("step", _step), dtype=np.int64),
+        stage_deg=np.array(needed("stage_deg", _angle), dtype=np.float64),
+        mount_deg=np.array(column("mount_deg", _angle, 0.0), dtype=np.float64),
+        laser=np.array([_laser(row, source) for row in cells], dtype=np.int64),
+        laser_names=source.laser_names,
+        order=np.array(column("order", _order, UNKNOWN_ORDER), dtype=np.int64),
+        x_mm=np.array(needed("x_mm", _place), dtype=np.float64),
+        y_mm=np.array(needed("y_mm", _place), dtype=np.float64),
+        ux_mm=np.array(column("ux_mm", _uncertainty, u_mm), dtype=np.float64),
+        uy_mm=np.array(column("uy_mm", _uncertainty, u_mm), dtype=np.float64),
+        cxy_mm2=np.zeros(len(cells)),
+    )
+
+
+def _step(field: _Field) -> int:
+    return _whole(field, 0, MAX_STEP)
+
+
+def _order(field: _Field) -> int:
+    return _whole(field, -MAX_ORDER, MAX_ORDER)
+
+
+def _whole(field: _Field, low: int, high: int) -> int:
+    allowed = f"a whole number from {low} to {high}"
+    if not _WHOLE.fullmatch(field.text):
+        raise field.refused("not a whole number" if field.text else "blank", allowed)
+    number = int(field.text)
+    if not low <= number <= high:
+        raise field.refused("out of range", allowed)
+    return number
+
+
+def _angle(field: _Field) -> float:
+    return _number(field, -MAX_ANGLE_DEG, MAX_ANGLE_DEG, "degrees")
+
+
+def _place(field: _Field) -> float:
+    return _number(field, -MAX_MM, MAX_MM, "mm")
+
+
+def _uncertainty(field: _Field) -> float:
+    number = _number(field, 0.0, MAX_MM, "mm")
+    if number <= 0.0:
+        raise field.refused(
+            "an uncertainty must be above zero",
+            f"a number of mm above 0 to {MAX_MM:g}, or blank for the bench's own",
+        )
+    return number
+
+
+def _number(field: _Field, low: float, high: float, unit: str) -> float:
+    allowed = f"a finite number of {unit} from {low:g} to {high:g}"
+    if not field.text:
+        raise field.refused("blank", allowed)
+    if _DECIMAL_COMMA.fullmatch(field.text):
+        raise field.refused("decimal comma", f"{allowed}, with a decimal point")
+    if not _NUMBER.fullmatch(field.text):
+        raise field.refused("not a finite number", allowed)
+    number = float(field.text)
+    if not math.isfinite(number) or not low <= number <= high:
+        raise field.refused("out of range", allowed)
+    return number
+
+
+def _laser(row: dict[str, _Field], source: TableSource) -> int:
+    field = row.get("laser")
+    known = source.laser_names
+    if field is None or not field.text:
+        if len(known) == 1:
+            return 0
+        assert field is not None  # the header check needs the column here
+        raise field.refused("blank", f"one of the bench's lasers: {', '.join(known)}")
+    if field.text not in known:
+        raise field.refused("unknown laser", f"one of {', '.join(known)}")
+    return known.index(field.text)

@@ -1,0 +1,146 @@
+"""A fit result as the dictionary of result.json, and as lines for a terminal."""
+
+import json
+import math
+from typing import Any
+
+from pitchsweep.analysis.analysis_errors import NoResult
+from pitchsweep.analysis.number_text import percent, plain_percent, relative, rounded
+from pitchsweep.analysis.records import (
+    BudgetLine,
+    Decision,
+    Nuisance,
+    PitchResult,
+    PitchSeen,
+)
+
+DECISION_WORDS = {
+    "conforms": "conforms",
+    "does-not-conform": "does not conform",
+    "undecided": "undecided: too near a limit for this uncertainty",
+}
+NO_DECISION = "no decision: no tolerance was given"
+
+
+def result_dict(result: PitchResult) -> dict[str, Any]:
+    """Every key of result.json, in plain Python types that JSON can hold.
+
+    Lengths in nm. ``dof`` and other side values that are not finite become None (an
+    infinite ``dof`` means that no finite number limits k). ``decision`` is an object:
+    ``outcome`` (None without a tolerance), ``rule``, ``conformance_probability``,
+    ``lower_nm``, ``upper_nm``.
+
+    Raises NoResult where the pitch or its uncertainty is not a finite number.
+    """
+    _check_finite(result)
+    return {
+        "pitch_nm": float(result.pitch_nm),
+        "u_pitch_nm": float(result.u_pitch_nm),
+        "U_pitch_nm": float(result.U_pitch_nm),
+        "k": float(result.k),
+        "coverage": float(result.coverage),
+        "dof": _number(result.dof),
+        "pitch_at_C": _number(result.pitch_at_C),
+        "reduced_chi2": _number(result.reduced_chi2),
+        "steps_used": int(result.steps_used),
+        "spots_used": int(result.spots_used),
+        "orders_used": [int(order) for order in result.orders_used],
+        "rejected": result.rejected_counts(),
+        "budget": [_budget(line) for line in result.budget],
+        "nuisance": [_nuisance(item) for item in result.nuisance],
+        "pitches_seen": [_pitch_seen(seen) for seen in result.pitches_seen],
+        "decision": _decision(result.decision),
+        "warnings": list(result.warnings),
+        "software": result.software,
+        "inputs_sha256": result.inputs_sha256,
+    }
+
+
+def result_json(result: PitchResult) -> str:
+    """The text of result.json: indented, no NaN or infinity, newline at the end.
+
+    Raises NoResult where the pitch or its uncertainty is not a finite number.
+    """
+    text = json.dumps(
+        result_dict(result), indent=2, ensure_ascii=False, allow_nan=False
+    )
+    return text + "\n"
+
+
+def summary_lines(result: PitchResult) -> list[str]:
+    """What a terminal shows: pitch, U, k, decision, what was used, warnings."""
+    pitch = rounded(result.pitch_nm, result.U_pitch_nm)
+    used = ", ".join(order_text(order) for order in result.orders_used)
+    lines = [
+        f"Pitch      {pitch.value} nm +/- {pitch.u} nm at {result.pitch_at_C:g} C",
+        f"           k = {result.k:.2f}, coverage {plain_percent(result.coverage)},"
+        f" U/pitch = {relative(result.U_pitch_nm, result.pitch_nm)}",
+        f"Decision   {decision_words(result.decision)}",
+        f"Used       {result.spots_used} spots of {result.steps_used} steps,"
+        f" orders {used}; {len(result.rejected)} spots not used",
+        f"Agreement  reduced chi-squared {result.reduced_chi2:.2f}",
+    ]
+    lines += [f"Warning    {warning}" for warning in result.warnings]
+    return [line.replace("\N{MINUS SIGN}", "-") for line in lines]
+
+
+def decision_words(decision: Decision) -> str:
+    """The decision in words with the probability that the part conforms."""
+    if decision.outcome is None:
+        return NO_DECISION
+    words = DECISION_WORDS.get(decision.outcome, decision.outcome)
+    if decision.conformance_probability is None:
+        return words
+    return f"{words} (probability {percent(decision.conformance_probability)})"
+
+
+def order_text(order: int) -> str:
+    """An order with its sign: -1, 0, +2 (with a true minus sign)."""
+    return f"{order:+d}".replace("-", "\N{MINUS SIGN}") if order else "0"
+
+
+def _check_finite(result: PitchResult) -> None:
+    for name in ("pitch_nm", "u_pitch_nm", "U_pitch_nm", "k", "coverage"):
+        if not math.isfinite(getattr(result, name)):
+            raise NoResult(f"The fit gave no finite {name}.")
+
+
+def _number(value: float | None) -> float | None:
+    return float(value) if value is not None and math.isfinite(value) else None
+
+
+def _budget(line: BudgetLine) -> dict[str, Any]:
+    row = {"source": line.source, "kind": line.kind, "u_nm": _number(line.u_nm)}
+    return {**row, "detail": line.detail} if line.detail else row
+
+
+def _nuisance(item: Nuisance) -> dict[str, Any]:
+    return {
+        "name": item.name,
+        "value": _number(item.value),
+        "u": _number(item.u),
+        "unit": item.unit,
+        "prior": _number(item.prior),
+        "u_prior": _number(item.u_prior),
+    }
+
+
+def _pitch_seen(seen: PitchSeen) -> dict[str, Any]:
+    return {
+        "subset": seen.subset,
+        "pitch_nm": _number(seen.pitch_nm),
+        "u_nm": _number(seen.u_nm),
+        "deviation_nm": _number(seen.deviation_nm),
+        "u_deviation_nm": _number(seen.u_deviation_nm),
+        "spots": int(seen.spots),
+    }
+
+
+def _decision(decision: Decision) -> dict[str, Any]:
+    return {
+        "outcome": decision.outcome,
+        "rule": decision.rule,
+        "conformance_probability": _number(decision.conformance_probability),
+        "lower_nm": _number(decision.lower_nm),
+        "upper_nm": _number(decision.upper_nm),
+    }
