@@ -21,7 +21,7 @@ class InputRefused(AnalysisError):
         self,
         problem: str,
         *,
-        allowed: str,
+        allowed: str = "",
         file: str = "",
         line: int | None = None,
         column: str | None = None,
@@ -33,7 +33,8 @@ class InputRefused(AnalysisError):
         self.line = line
         self.column = column
         self.value = value
-        super().__init__(f"{self._place()}{problem}\nAllowed: {allowed}")
+        ending = f"\nAllowed: {allowed}" if allowed else ""
+        super().__init__(f"{self._place()}{problem}{ending}")
 
     def _place(self) -> str:
         parts = [self.file] if self.file else []
