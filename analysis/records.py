@@ -194,6 +194,7 @@ class PitchResult:
     fitted_y_mm: FloatArray
     residual_x: FloatArray
     residual_y: FloatArray
+    assumed_absent: tuple[str, ...] = ()
     software: str = ""
     inputs_sha256: str = ""
 

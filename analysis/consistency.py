@@ -1,0 +1,82 @@
+"""The pitch that parts of a sweep see: what chi-squared cannot tell, differences can.
+
+Each subset is solved for by one Gauss-Newton step from the common minimum, with all
+priors. For nested data var(subset - whole) = var(subset) - var(whole).
+"""
+
+from collections.abc import Iterator
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pitchsweep.analysis.fit_parameters import FitProblem
+from pitchsweep.analysis.joint_fit import JointFit, one_step
+from pitchsweep.analysis.records import IntArray, OrderTable, PitchSeen
+
+LIMIT = 4.0
+"""Deviation in its own u beyond which a subset is said to disagree."""
+
+
+def subsets(
+    table: OrderTable, order: IntArray, incidence_rad: "np.ndarray[tuple[int, ...], np.dtype[np.float64]]"
+) -> Iterator[tuple[str, NDArray[np.bool_]]]:
+    """Named parts of the sweep: orders (each with the zero order), sides, halves."""
+    zero = order == 0
+    present = [int(m) for m in np.unique(order) if m != 0]
+    if len(present) > 1:
+        for m in present:
+            yield f"order {m:+d}", zero | (order == m)
+    positive = incidence_rad > 0.0
+    if positive.any() and (~positive).any():
+        yield "incidence above zero", positive
+        yield "incidence below zero", ~positive
+    middle = np.median(table.step)
+    early = table.step <= middle
+    if early.any() and (~early).any():
+        yield "first half of the steps", early
+        yield "second half of the steps", ~early
+    mounts = np.unique(table.mount_deg)
+    if len(mounts) > 1:
+        for mount in mounts:
+            yield f"mount {mount:g} deg", table.mount_deg == mount
+    if len(table.laser_names) > 1:
+        for index, name in enumerate(table.laser_names):
+            yield f"laser {name}", table.laser == index
+
+
+def pitches_seen(
+    problem: FitProblem, order: IntArray, fit: JointFit, pitch_nm: float
+) -> tuple[PitchSeen, ...]:
+    """The pitch of every subset that determines one."""
+    seen = []
+    for name, part in subsets(problem.table, order, fit.incidence_rad):
+        use = part & fit.used
+        if not (order[use] != 0).any():
+            continue
+        move, covariance = one_step(problem, order, fit.state, use.astype(np.float64))
+        variance, whole = float(covariance[0, 0]), float(fit.covariance[0, 0])
+        if not np.isfinite(variance) or variance > 0.01**2:
+            continue
+        apart = max(variance - whole, 1e-6 * variance)
+        seen.append(
+            PitchSeen(
+                subset=name,
+                pitch_nm=pitch_nm * (1.0 + float(move[0])),
+                u_nm=pitch_nm * float(np.sqrt(variance)),
+                deviation_nm=pitch_nm * float(move[0]),
+                u_deviation_nm=pitch_nm * float(np.sqrt(apart)),
+                spots=int(use.sum()),
+            )
+        )
+    return tuple(seen)
+
+
+def disagreements(seen: tuple[PitchSeen, ...]) -> list[str]:
+    """Warnings for subsets that disagree with the whole."""
+    return [
+        f"{s.subset} sees a pitch {s.deviation_nm:+.3g} nm from the whole, "
+        f"{abs(s.deviation_nm) / s.u_deviation_nm:.1f} times what chance explains: "
+        "something that the fit does not carry moves with it"
+        for s in seen
+        if abs(s.deviation_nm) > LIMIT * s.u_deviation_nm
+    ]

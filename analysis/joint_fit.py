@@ -1,0 +1,329 @@
+"""The joint least squares over all steps and orders, with exact elimination of steps.
+
+The normal matrix is a small dense block (the parameters) bordered by one diagonal entry
+a step (its angle error); the steps are eliminated by the Schur complement, so cost is
+linear in the number of steps. Damped Gauss-Newton; priors are extra residuals.
+"""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pitchsweep.analysis.bench_geometry import Local, landing
+from pitchsweep.analysis.fit_parameters import FitProblem, Kind
+from pitchsweep.analysis.records import FloatArray, IntArray
+from pitchsweep.analysis.screen_map import TERMS, map_basis
+
+MAX_ITERATIONS = 40
+CONVERGED = 1e-9
+"""A step is the last when every parameter moves less than this many posterior u."""
+
+
+@dataclass(frozen=True)
+class FitState:
+    """Parameter values (P,) as offsets from their prior means, and step errors (S,)."""
+
+    values: FloatArray
+    step_error_rad: FloatArray
+
+
+@dataclass(frozen=True)
+class Prediction:
+    """Model at a state: positions (N,), derivatives (N, 2, P) and by the step error."""
+
+    x_mm: FloatArray
+    y_mm: FloatArray
+    jacobian: FloatArray
+    by_step: FloatArray
+    valid: NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class JointFit:
+    """The minimum: state, covariance (P, P), and what the spots say there.
+
+    ``residual`` (N, 2) whitened, measured minus fitted; ``used`` (N,) which spots
+    carried weight; ``step_pull`` (P, S) covariance of the parameters with each step's
+    error; ``step_variance`` (S,) variance of the step errors; ``objective`` the sum of squares with priors.
+    """
+
+    state: FitState
+    covariance: FloatArray
+    residual: FloatArray
+    x_mm: FloatArray
+    y_mm: FloatArray
+    incidence_rad: FloatArray
+    used: NDArray[np.bool_]
+    step_pull: FloatArray
+    step_variance: FloatArray
+    objective: float
+    iterations: int
+    converged: bool
+
+
+def initial_state(problem: FitProblem) -> FitState:
+    """Everything at its prior mean."""
+    return FitState(np.zeros(len(problem.parameters)), np.zeros(problem.n_steps))
+
+
+def local_quantities(
+    problem: FitProblem, order: IntArray, state: FitState
+) -> FloatArray:
+    """Local quantities (N, 14) of the spots for given orders and state."""
+    local = problem.base.copy()
+    log_q = np.zeros(local.shape[0])
+    for parameter, value in zip(problem.parameters, state.values, strict=True):
+        if parameter.kind is Kind.LOCAL and parameter.coefficient is not None:
+            local[:, parameter.column] += value * parameter.coefficient
+        elif parameter.kind is Kind.PITCH:
+            log_q -= value
+        elif parameter.kind is Kind.WAVELENGTH and parameter.coefficient is not None:
+            log_q += value * parameter.coefficient
+    local[:, Local.Q] *= order * np.exp(log_q)
+    local[:, Local.INCIDENCE] += (
+        problem.direction * state.step_error_rad[problem.step_group]
+    )
+    return local
+
+
+def predict(problem: FitProblem, order: IntArray, state: FitState) -> Prediction:
+    """Positions and derivatives of all spots; invalid rows are told, not NaN."""
+    local = local_quantities(problem, order, state)
+    there = landing(local)
+    basis = map_basis(
+        there.x_mm, there.y_mm, problem.half_width_mm, problem.half_height_mm
+    )
+    map_x, map_y = _map_values(problem, state.values)
+    stretch = np.empty((local.shape[0], 2, 2))
+    for axis, terms in enumerate((map_x, map_y)):
+        stretch[:, axis, 0] = basis.by_x @ terms
+        stretch[:, axis, 1] = basis.by_y @ terms
+    slopes = there.jacobian + np.einsum("nij,njk->nik", stretch, there.jacobian)
+    jacobian = np.zeros((local.shape[0], 2, len(problem.parameters)))
+    for index, parameter in enumerate(problem.parameters):
+        if parameter.kind is Kind.LOCAL and parameter.coefficient is not None:
+            jacobian[:, :, index] = (
+                slopes[:, :, parameter.column] * parameter.coefficient[:, None]
+            )
+        elif parameter.kind is Kind.PITCH:
+            jacobian[:, :, index] = -slopes[:, :, Local.Q] * local[:, None, Local.Q]
+        elif parameter.kind is Kind.WAVELENGTH and parameter.coefficient is not None:
+            weight = local[:, Local.Q] * parameter.coefficient
+            jacobian[:, :, index] = slopes[:, :, Local.Q] * weight[:, None]
+        elif parameter.kind is Kind.MAP_X:
+            jacobian[:, 0, index] = basis.value[:, parameter.column]
+        elif parameter.kind is Kind.MAP_Y:
+            jacobian[:, 1, index] = basis.value[:, parameter.column]
+    return Prediction(
+        x_mm=there.x_mm + basis.value @ map_x,
+        y_mm=there.y_mm + basis.value @ map_y,
+        jacobian=jacobian,
+        by_step=slopes[:, :, Local.INCIDENCE] * problem.direction,
+        valid=there.valid,
+    )
+
+
+def _map_values(
+    problem: FitProblem, values: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    terms = {Kind.MAP_X: np.zeros(TERMS), Kind.MAP_Y: np.zeros(TERMS)}
+    for parameter, value in zip(problem.parameters, values, strict=True):
+        if parameter.kind in terms:
+            terms[parameter.kind][parameter.column] = value
+    return terms[Kind.MAP_X], terms[Kind.MAP_Y]
+
+
+@dataclass(frozen=True)
+class _Normal:
+    """The bordered normal equations at a state, steps still in."""
+
+    dense: FloatArray  # (P, P) without priors
+    border: FloatArray  # (P, S)
+    diagonal: FloatArray  # (S,) with the step prior
+    right: FloatArray  # (P,)
+    right_step: FloatArray  # (S,)
+    residual: FloatArray  # (N, 2) whitened, unweighted
+    prediction: Prediction
+    used: NDArray[np.bool_]
+    objective: float
+
+
+def _prior_weight(problem: FitProblem) -> FloatArray:
+    u = np.array([parameter.u_prior for parameter in problem.parameters])
+    return np.where(np.isfinite(u), 1.0 / u**2, 0.0)
+
+
+def whitened(problem: FitProblem, vectors: FloatArray) -> FloatArray:
+    """Whitened copies of (N, 2) or (N, 2, K) screen vectors."""
+    if vectors.ndim == 2:
+        return np.einsum("nij,nj->ni", problem.whitener, vectors)
+    return np.matmul(problem.whitener, vectors)
+
+
+def _normal(
+    problem: FitProblem, order: IntArray, state: FitState, weight: FloatArray
+) -> _Normal:
+    there = predict(problem, order, state)
+    measured = np.stack([problem.table.x_mm, problem.table.y_mm], axis=1)
+    residual = whitened(
+        problem, measured - np.stack([there.x_mm, there.y_mm], axis=1)
+    )
+    used = there.valid & (weight > 0.0)
+    root = np.sqrt(np.where(used, weight, 0.0))[:, None]
+    jac = whitened(problem, there.jacobian) * root[:, :, None]
+    by_step = whitened(problem, there.by_step) * root
+    res = residual * root
+    n, p = jac.shape[0], jac.shape[2]
+    flat = jac.reshape(2 * n, p)
+    prior = _prior_weight(problem)
+    border = np.zeros((problem.n_steps, p))
+    np.add.at(border, problem.step_group, np.einsum("nip,ni->np", jac, by_step))
+    step_weight = 1.0 / problem.u_step_rad**2
+    diagonal = step_weight + np.bincount(
+        problem.step_group, np.sum(by_step**2, axis=1), problem.n_steps
+    )
+    right_step = np.bincount(
+        problem.step_group, np.sum(by_step * res, axis=1), problem.n_steps
+    )
+    return _Normal(
+        dense=flat.T @ flat,
+        border=border.T,
+        diagonal=diagonal,
+        right=flat.T @ res.reshape(-1) - prior * state.values,
+        right_step=right_step - step_weight * state.step_error_rad,
+        residual=residual,
+        prediction=there,
+        used=used,
+        objective=float(
+            np.sum(res**2)
+            + np.sum(prior * state.values**2)
+            + step_weight * np.sum(state.step_error_rad**2)
+        ),
+    )
+
+
+def _solve(
+    normal: _Normal, prior: FloatArray, damping: float
+) -> tuple[FloatArray, FloatArray]:
+    """Parameter and step moves for one damped step."""
+    scaled_border = normal.border / normal.diagonal
+    reduced = normal.dense + np.diag(prior) - scaled_border @ normal.border.T
+    right = normal.right - scaled_border @ normal.right_step
+    scale = 1.0 / np.sqrt(np.maximum(np.diag(reduced), 1e-300))
+    scaled = reduced * np.outer(scale, scale)
+    scaled[np.diag_indices_from(scaled)] += damping
+    move = scale * np.linalg.solve(scaled, scale * right)
+    step_move = (normal.right_step - normal.border.T @ move) / normal.diagonal
+    return move, step_move
+
+
+def _inverse(information: FloatArray) -> FloatArray:
+    """Inverse of a symmetric positive matrix, scaled to unit diagonal first."""
+    scale = 1.0 / np.sqrt(np.maximum(np.diag(information), 1e-300))
+    inverse = np.linalg.inv(information * np.outer(scale, scale))
+    inverse = 0.5 * (inverse + inverse.T)
+    return np.asarray(inverse * np.outer(scale, scale))
+
+
+def solve_joint_fit(
+    problem: FitProblem,
+    order: IntArray,
+    weight: FloatArray,
+    start: FitState | None = None,
+) -> JointFit:
+    """The minimum over parameters and step errors for given orders and weights.
+
+    ``order`` (N,) diffraction orders; ``weight`` (N,) multiplies each spot's squared
+    residual, 0 leaves it out. Spots whose order does not leave at the trial state are
+    left out of that iteration and come back. Raises numpy.linalg.LinAlgError when
+    the information is singular.
+    """
+    state = start or initial_state(problem)
+    prior = _prior_weight(problem)
+    normal = _normal(problem, order, state, weight)
+    damping, iterations, converged = 0.0, 0, False
+    while iterations < MAX_ITERATIONS and not converged:
+        iterations += 1
+        move, step_move = _solve(normal, prior, damping)
+        trial = FitState(state.values + move, state.step_error_rad + step_move)
+        candidate = _normal(problem, order, trial, weight)
+        same = bool(np.array_equal(candidate.used, normal.used))
+        better = candidate.objective <= normal.objective * (1.0 + 1e-12)
+        if not (better or not same) and damping < 1e6:
+            small = _scaled_size(normal, prior, move)
+            if small < 1e-6:
+                converged = True
+                continue
+            damping = max(10.0 * damping, 1e-3)
+            continue
+        size = _scaled_size(normal, prior, move)
+        state, normal = trial, candidate
+        damping = damping / 10.0 if damping > 1e-6 else 0.0
+        converged = size < CONVERGED and damping == 0.0
+    return _finish(problem, order, state, normal, prior, iterations, converged)
+
+
+def one_step(
+    problem: FitProblem, order: IntArray, state: FitState, weight: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """One undamped step from ``state`` and the covariance there: (P,), (P, P)."""
+    prior = _prior_weight(problem)
+    normal = _normal(problem, order, state, weight)
+    move, _ = _solve(normal, prior, 0.0)
+    scaled_border = normal.border / normal.diagonal
+    information = normal.dense + np.diag(prior) - scaled_border @ normal.border.T
+    return move, _inverse(information)
+
+
+def _scaled_size(normal: _Normal, prior: FloatArray, move: FloatArray) -> float:
+    """Largest move of any parameter in units of its information-scaled width."""
+    return float(np.max(np.abs(move) * np.sqrt(np.diag(normal.dense) + prior)))
+
+
+def _finish(
+    problem: FitProblem,
+    order: IntArray,
+    state: FitState,
+    normal: _Normal,
+    prior: FloatArray,
+    iterations: int,
+    converged: bool,
+) -> JointFit:
+    scaled_border = normal.border / normal.diagonal
+    information = normal.dense + np.diag(prior) - scaled_border @ normal.border.T
+    covariance = _inverse(information)
+    local = local_quantities(problem, order, state)
+    step_variance = 1.0 / normal.diagonal + np.einsum(
+        "ps,pq,qs->s", scaled_border, covariance, scaled_border, optimize=True
+    )
+    return JointFit(
+        state=state,
+        covariance=covariance,
+        residual=normal.residual,
+        x_mm=normal.prediction.x_mm,
+        y_mm=normal.prediction.y_mm,
+        incidence_rad=local[:, Local.INCIDENCE],
+        used=normal.used,
+        step_pull=-covariance @ scaled_border,
+        step_variance=step_variance,
+        objective=normal.objective,
+        iterations=iterations,
+        converged=converged,
+    )
+
+
+def with_table(problem: FitProblem, keep: NDArray[np.bool_]) -> FitProblem:
+    """The same problem for some of its spots (steps keep their numbers)."""
+    parameters = tuple(
+        replace(p, coefficient=None if p.coefficient is None else p.coefficient[keep])
+        for p in problem.parameters
+    )
+    return replace(
+        problem,
+        table=problem.table.take(keep),
+        parameters=parameters,
+        base=problem.base[keep],
+        step_group=problem.step_group[keep],
+        whitener=problem.whitener[keep],
+    )

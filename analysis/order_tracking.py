@@ -1,0 +1,167 @@
+"""Which order every spot is: prediction with its own uncertainty, then the fit itself.
+
+A spot is compared with every order that could leave at its angle. The distance is
+counted in units of the predicted uncertainty (what the bench file does not know about
+the geometry, the pitch's range, the reading), so that the gate is wide before a fit
+and narrow after one.
+"""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pitchsweep.analysis.fit_parameters import FitProblem, Kind
+from pitchsweep.analysis.joint_fit import FitState, initial_state, predict, whitened
+from pitchsweep.analysis.records import (
+    UNKNOWN_ORDER,
+    FloatArray,
+    IntArray,
+    OrderTable,
+    Rejection,
+)
+
+GATE_2 = 30.0
+"""Squared distance beyond which a spot is no order (2 degrees of freedom: 3e-7)."""
+CLEARLY_SECOND_2 = 30.0
+"""A second order closer than this makes the spot ambiguous."""
+FAR_2 = 1e6
+
+
+@dataclass(frozen=True)
+class Assignment:
+    """Orders (N,), which spots have one, squared distances, and reasons without."""
+
+    order: IntArray
+    assigned: NDArray[np.bool_]
+    distance_2: FloatArray
+    reasons: dict[int, Rejection]
+
+
+def candidate_orders(problem: FitProblem) -> list[int]:
+    """Orders that can leave at some angle: abs(m) * lambda / d < 2."""
+    smallest = float(np.min(problem.base[:, 0]))
+    most = int(np.floor(2.0 / smallest))
+    return list(range(-most, most + 1))
+
+
+def assign_orders(
+    problem: FitProblem,
+    *,
+    state: FitState | None = None,
+    covariance: FloatArray | None = None,
+    pitch_u: float,
+    scale_2: float = 1.0,
+) -> Assignment:
+    """Orders by prediction from ``state`` (prior means if None).
+
+    ``covariance`` (P, P) of the parameters, None for the priors with ``pitch_u`` as
+    the relative uncertainty of the pitch. ``scale_2`` multiplies the reading's
+    variance. Orders given in the table are kept; a given order that cannot leave is
+    refused a place.
+    """
+    at = state or initial_state(problem)
+    if covariance is None:
+        covariance = _prior_covariance(problem, pitch_u)
+    orders = candidate_orders(problem)
+    distance_2 = np.full((len(orders), len(problem.table)), FAR_2)
+    for row, order in enumerate(orders):
+        distance_2[row] = _distance_2(problem, order, at, covariance, scale_2)
+    given = problem.table.order != UNKNOWN_ORDER
+    for row, order in enumerate(orders):
+        distance_2[row, given & (problem.table.order != order)] = FAR_2
+    return _choose(problem, np.array(orders, dtype=np.int64), distance_2)
+
+
+def _choose(
+    problem: FitProblem, orders: IntArray, distance_2: FloatArray
+) -> Assignment:
+    ranked = np.argsort(distance_2, axis=0, kind="stable")
+    everyone = np.arange(distance_2.shape[1])
+    best = distance_2[ranked[0], everyone]
+    second = distance_2[ranked[1], everyone] if len(orders) > 1 else best + FAR_2
+    order = orders[ranked[0]]
+    reasons: dict[int, Rejection] = {}
+    assigned = best < GATE_2
+    for index in np.flatnonzero(~assigned):
+        reasons[int(index)] = Rejection.NO_ORDER
+    for index in np.flatnonzero(assigned & (second < CLEARLY_SECOND_2)):
+        assigned[index] = False
+        reasons[int(index)] = Rejection.TWO_ORDERS
+    for index in _second_best(problem.step_group, order, best, assigned):
+        assigned[index] = False
+        reasons[index] = Rejection.SECOND_BEST
+    return Assignment(order, assigned, best, reasons)
+
+
+def _second_best(
+    group: IntArray,
+    order: IntArray,
+    distance_2: FloatArray,
+    assigned: NDArray[np.bool_],
+) -> list[int]:
+    """Spots of a step that compete with a nearer one for the same order."""
+    taken: set[tuple[int, int]] = set()
+    losers = []
+    for index in np.argsort(distance_2, kind="stable"):
+        if not assigned[index]:
+            continue
+        key = (int(group[index]), int(order[index]))
+        if key in taken:
+            losers.append(int(index))
+        taken.add(key)
+    return losers
+
+
+def _prior_covariance(problem: FitProblem, pitch_u: float) -> FloatArray:
+    u = np.array(
+        [
+            pitch_u if p.kind is Kind.PITCH else min(p.u_prior, 1e6)
+            for p in problem.parameters
+        ]
+    )
+    return np.diag(u**2)
+
+
+def _distance_2(
+    problem: FitProblem,
+    order: int,
+    state: FitState,
+    covariance: FloatArray,
+    scale_2: float,
+) -> FloatArray:
+    """Squared distance (N,) of every spot from one order, in predicted variances."""
+    there = predict(problem, np.full(len(problem.table), order), state)
+    measured = np.stack([problem.table.x_mm, problem.table.y_mm], axis=1)
+    off = whitened(problem, measured - np.stack([there.x_mm, there.y_mm], axis=1))
+    jac = whitened(problem, there.jacobian)
+    by_step = whitened(problem, there.by_step) * problem.u_step_rad
+    spread = np.einsum("nip,pq,njq->nij", jac, covariance, jac, optimize=True)
+    spread += by_step[:, :, None] * by_step[:, None, :] + scale_2 * np.eye(2)
+    solved = np.linalg.solve(spread, off[:, :, None])[:, :, 0]
+    distance_2 = np.sum(off * solved, axis=1)
+    return np.where(there.valid, np.minimum(distance_2, FAR_2), FAR_2)
+
+
+def mirrored(table: OrderTable) -> OrderTable:
+    """The table with x turned over, as a person facing the screen would type it."""
+    return replace(table, x_mm=-table.x_mm, cxy_mm2=-table.cxy_mm2)
+
+
+def looks_mirrored(problem: FitProblem, pitch_u: float) -> bool:
+    """True when the spots make no sense as they are and do when x is turned over.
+
+    The zero order moves to +x by twice the angle whatever the pitch; it is what
+    tells. A table of one angle near normal incidence cannot tell and gives False.
+    """
+    straight = _misfit(problem, pitch_u)
+    if straight < 0.2:
+        return False
+    turned = replace(problem, table=mirrored(problem.table))
+    return _misfit(turned, pitch_u) < 0.3 * straight
+
+
+def _misfit(problem: FitProblem, pitch_u: float) -> float:
+    """Share of spots without an order at the nominal geometry, 0 to 1."""
+    found = assign_orders(problem, pitch_u=pitch_u)
+    return float(np.mean(found.distance_2 > GATE_2))
