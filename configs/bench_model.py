@@ -13,6 +13,7 @@ from pitchsweep.configs.settings_base import (
     Fraction,
     Name,
     NonNegative,
+    NotTruth,
     Positive,
     Settings,
     Text,
@@ -53,7 +54,7 @@ class Beam(Settings):
 class Stage(Settings):
     """The rotation stage: sense, travel, and what is known of its errors."""
 
-    direction: Literal[1, -1] = 1
+    direction: Annotated[Literal[1, -1], NotTruth] = 1
     travel_min_deg: AngleDeg = -180.0
     travel_max_deg: AngleDeg = 180.0
     speed_deg_per_s: Annotated[float, Field(gt=0.0, le=720.0)] = 10.0

@@ -38,6 +38,7 @@ class TwinEffects(Settings):
     part_radius_m: Annotated[float, Field(ge=0.0, le=1e6)] = 0.0
     cover_thickness_mm: Annotated[float, Field(ge=0.0, le=10.0)] = 0.0
     cover_index: Annotated[float, Field(ge=1.0, le=3.0)] = 1.55
+    screen_blur_mm: Annotated[float, Field(ge=0.0, le=50.0)] = 0.8
     speckle_contrast: Fraction = 1.0
     speckle_grain_px: Annotated[float, Field(gt=0.0, le=50.0)] = 2.0
     halo_fraction: Fraction = 0.0
@@ -58,4 +59,5 @@ class TwinSettings(Settings):
     speed: Literal["rehearsal", "real"] = "rehearsal"
     pitch_off_percent: Annotated[float, Field(ge=0.0, le=20.0)] = 1.0
     spot_reading_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1
+    light_e_per_ms_per_mw: Annotated[float, Field(gt=0.0, le=1e9)] = 1e5
     effects: TwinEffects = TwinEffects()
