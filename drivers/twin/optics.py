@@ -1,0 +1,163 @@
+"""The rays of the twin: from the beam through the part to the screen, every order.
+
+Both doors, spots and photons, are fed from here. The formulation is the twin's own:
+rotation matrices and vectors throughout, no closed forms.
+"""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pitchsweep.configs.bench_model import Bench
+from pitchsweep.drivers.twin.effects import (
+    Steps,
+    air_wavelength_mm,
+    beam_direction,
+    incidence_rad,
+    wobble_rad,
+)
+from pitchsweep.drivers.twin.order_brightness import FAINTEST, order_share
+from pitchsweep.drivers.twin.rays import (
+    BoolArray,
+    FloatArray,
+    diffract,
+    dot,
+    meet_sphere,
+    rotation,
+    sideways_in_cover,
+    unit,
+)
+from pitchsweep.drivers.twin.screen import bow_per_mm, land, reported, within_map
+from pitchsweep.drivers.twin.truth import MountTruth, Truth, twin_settings
+
+
+@dataclass(frozen=True)
+class Landing:
+    """Where the orders of S steps land; arrays (S, M) but for ``order`` (M,).
+
+    ``place_mm`` (S, M, 2) is what the nominal map reports; ``share`` the part of the
+    beam's power; ``visible`` is false where an order does not leave the part, misses
+    the screen by far or is too faint. Values there are finite and mean nothing.
+    """
+
+    order: NDArray[np.int64]
+    place_mm: FloatArray
+    share: FloatArray
+    visible: BoolArray
+
+
+@dataclass(frozen=True)
+class _Pose:
+    """Part at S steps: axes (S, 3, 3) with columns across, along grooves, normal."""
+
+    axes: FloatArray
+    surface_offset_mm: float
+    bend_per_mm: float
+    cover_mm: float
+    cover_index: float
+
+
+@dataclass(frozen=True)
+class _Beam:
+    """Ray of the beam at S steps: a point (S, 3) on it and its direction (S, 3)."""
+
+    point: FloatArray
+    direction: FloatArray
+
+
+def part_axes(incidence: FloatArray, mount: MountTruth) -> FloatArray:
+    """Axes (S, 3, 3) of a part turned by ``incidence`` (S,) rad about +y.
+
+    Columns: grating vector, groove direction, normal. The part is tilted about x and
+    its grooves are turned about its own normal.
+    """
+    seated = rotation(0, mount.part_tilt_rad) @ rotation(2, mount.groove_azimuth_rad)
+    return np.asarray(rotation(1, incidence) @ seated)
+
+
+def possible_orders(truth: Truth, laser: str) -> NDArray[np.int64]:
+    """All orders (M,) that can leave at some incidence, ascending, -m to m."""
+    ratio = truth.air_wavelength_mm(laser) / truth.grating_period_mm()
+    highest = max(1, int(np.floor(2.0 / ratio)))
+    return np.arange(-highest, highest + 1)
+
+
+def trace_orders(truth: Truth, bench: Bench, steps: Steps) -> Landing:
+    """Every possible order of ``steps.laser`` at every step, on the screen."""
+    return _trace(truth, bench, steps, _beam_of(truth, bench, steps))
+
+
+def trace_bundle(
+    truth: Truth, bench: Bench, steps: Steps, *, apart_mm: float = 0.05
+) -> tuple[Landing, FloatArray]:
+    """The landing, and how the beam's cross-section maps to the screen (S, M, 2, 2).
+
+    Column 0 of each matrix is the movement on the screen per mm of beam moved along x,
+    column 1 along y: three rays traced, no closed form.
+    """
+    beam = _beam_of(truth, bench, steps)
+    chief = _trace(truth, bench, steps, beam)
+    columns = []
+    for step_mm in ((apart_mm, 0.0, 0.0), (0.0, apart_mm, 0.0)):
+        moved = replace(beam, point=beam.point + np.array(step_mm))
+        aside = _trace(truth, bench, steps, moved)
+        columns.append((aside.place_mm - chief.place_mm) / apart_mm)
+    return chief, np.stack(columns, axis=-1)
+
+
+def _beam_of(truth: Truth, bench: Bench, steps: Steps) -> _Beam:
+    direction = beam_direction(truth, bench, steps.planned_s)
+    point = np.array([truth.beam.offset_mm, truth.beam.height_mm, 0.0])
+    return _Beam(np.broadcast_to(point, direction.shape), direction)
+
+
+def _pose_of(truth: Truth, bench: Bench, steps: Steps) -> _Pose:
+    effects = twin_settings(bench).effects
+    mount = truth.mounts[steps.mount]
+    axes = part_axes(incidence_rad(truth, bench, steps), mount)
+    about_x, about_z = wobble_rad(truth, bench, steps.stage_deg)
+    radius_mm = effects.part_radius_m * 1e3
+    return _Pose(
+        axes=rotation(0, about_x) @ rotation(2, about_z) @ axes,
+        surface_offset_mm=mount.surface_offset_mm,
+        bend_per_mm=1.0 / radius_mm if radius_mm > 0.0 else 0.0,
+        cover_mm=effects.cover_thickness_mm,
+        cover_index=effects.cover_index,
+    )
+
+
+def _surface_at(pose: _Pose, beam: _Beam) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Where the beam meets the part, and normal and grating vector there, (S, 3)."""
+    across, normal = pose.axes[..., :, 0], pose.axes[..., :, 2]
+    apex = pose.surface_offset_mm * normal
+    point = meet_sphere(beam.point, beam.direction, apex, normal, pose.bend_per_mm)
+    there = unit(normal + pose.bend_per_mm * (point - apex))
+    return point, there, unit(across - dot(across, there) * there)
+
+
+def _trace(truth: Truth, bench: Bench, steps: Steps, beam: _Beam) -> Landing:
+    order = possible_orders(truth, steps.laser)
+    pose = _pose_of(truth, bench, steps)
+    point, normal, grating = (a[:, None, :] for a in _surface_at(pose, beam))
+    incoming = beam.direction[:, None, :]
+    wavelength = air_wavelength_mm(truth, bench, steps.laser, steps.planned_s)
+    ratio = order[None, :] * (wavelength / truth.grating_period_mm())[:, None]
+    leaving, leaves = diffract(incoming, normal, grating, ratio[..., None])
+    if pose.cover_mm > 0.0:
+        inward = sideways_in_cover(incoming, normal, pose.cover_index)
+        outward = sideways_in_cover(leaving, normal, pose.cover_index)
+        point = point + pose.cover_mm * (inward + outward)
+    place, there = land(point, leaving, truth.screen, bow_per_mm(bench))
+    share = order_share(
+        order[None, :],
+        cos_in=np.abs(dot(incoming, normal)[..., 0]),
+        cos_out=dot(leaving, normal)[..., 0],
+        wavelength_nm=truth.vacuum_wavelength_nm[steps.laser],
+        relief=truth.phases.relief,
+        lean=truth.phases.relief_lean,
+    )
+    lit = dot(incoming, normal)[..., 0] < 0.0
+    seen = leaves & there & lit & within_map(bench, place) & (share > FAINTEST)
+    planned = np.broadcast_to(steps.planned_s[:, None], place.shape[:-1])
+    return Landing(order, reported(truth, bench, place, planned), share, seen)
