@@ -6,7 +6,7 @@ by the guard process. Nothing POSIX-only is imported at module level.
 
 from collections.abc import Callable
 from types import TracebackType
-from typing import Self, TypeVar, cast
+from typing import Self, TypeVar
 
 import serial
 
@@ -98,4 +98,4 @@ def open_serial(port: str, *, baud: int = 115200) -> SerialTransport:
         raise AskedIllegal("port", port, f"a device path or URL ({error})") from error
     except library_errors() as error:
         raise LineBroke(port, "opening", error) from error
-    return SerialTransport(cast(serial.Serial, opened), port)
+    return SerialTransport(opened, port)

@@ -1,0 +1,65 @@
+"""Firmware of the simulated emission unit: lines in, lines out."""
+
+import hashlib
+import hmac
+
+from pitchsweep.drivers.twin.emission_unit import EmissionUnit
+from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
+from pitchsweep.drivers.twin.firmware_lines import LineCutter, Reply
+
+LONGEST_CHALLENGE_BYTES = 32
+
+
+class UnitFirmware:
+    """Answers WHO, PROVE, KEEP, DARK and STATE."""
+
+    def __init__(
+        self, unit: EmissionUnit, *, identity: str, key: bytes, faults: FaultSchedule
+    ) -> None:
+        self._unit = unit
+        self._identity = identity
+        self._key = key
+        self._faults = faults
+        self._lines = LineCutter("unit-ask", faults, self._answer)
+
+    def receive(self, data: bytes) -> list[Reply]:
+        """Replies to what arrived."""
+        return self._lines.receive(data)
+
+    def due_in_s(self) -> float | None:
+        """Goes dark when due; seconds until that is due."""
+        return self._unit.lapse_due_in_s()
+
+    def _answer(self, words: list[str]) -> str | None:
+        if words == ["KEEP"]:
+            return self._keep()
+        if words == ["DARK"]:
+            self._unit.dark()
+            return self._unit.standing()
+        if words == ["STATE"]:
+            return self._unit.standing()
+        if words == ["WHO"]:
+            return f"NAMED {self._identity}"
+        if len(words) == 2 and words[0] == "PROVE":
+            return self._prove(words[1])
+        return "DECLINED UNREADABLE"
+
+    def _keep(self) -> str | None:
+        fault = self._faults.due("unit-keep")
+        if fault is not None and fault.does == "door-opens":
+            self._unit.set_door(closed=False)
+        self._unit.keep()
+        if fault is not None and fault.does == "light-stuck":
+            self._unit.stick()
+        if fault is not None and fault.does == "silent":
+            return None
+        return self._unit.standing()
+
+    def _prove(self, challenge: str) -> str:
+        try:
+            nonce = bytes.fromhex(challenge)
+        except ValueError:
+            return "DECLINED UNREADABLE"
+        if not 0 < len(nonce) <= LONGEST_CHALLENGE_BYTES:
+            return "DECLINED UNREADABLE"
+        return "PROOF " + hmac.new(self._key, nonce, hashlib.sha256).hexdigest()

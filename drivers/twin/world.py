@@ -1,0 +1,215 @@
+"""The one world of the twin: stage, light, part, bench time (acts).
+
+Firmware and camera share it, from several threads. The renderer reads the truth, the
+bench, the label and what is here; nothing from job, recipe or controller.
+"""
+
+import threading
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pitchsweep.configs.bench_model import Bench
+from pitchsweep.drivers.devices import AirReading, Label, SpotReading
+from pitchsweep.drivers.twin.bench_time import BenchTime
+from pitchsweep.drivers.twin.emission_unit import EmissionUnit
+from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
+from pitchsweep.drivers.twin.kept_state import KeptState, read_state, write_state
+from pitchsweep.drivers.twin.keyed_noise import keyed_generator
+from pitchsweep.drivers.twin.photons_door import render
+from pitchsweep.drivers.twin.spots_door import spots
+from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics
+from pitchsweep.drivers.twin.truth import Truth, twin_settings
+
+STALL_SHARE = 0.4
+ASTRAY_DEG = 0.3
+
+
+@dataclass(frozen=True)
+class Seat:
+    """How the part is seated: index of the mount and its angle."""
+
+    mount: int
+    mount_deg: float
+
+
+class World:
+    """State that firmware, camera and the person on the spot share."""
+
+    def __init__(
+        self,
+        truth: Truth,
+        bench: Bench,
+        unit: EmissionUnit,
+        *,
+        faults: FaultSchedule,
+        state_path: Path,
+    ) -> None:
+        kept = read_state(state_path) or _first_state(truth.seed)
+        settings = twin_settings(bench)
+        self.truth = truth
+        self.bench = bench
+        self.unit = unit
+        self.time = BenchTime(kept.bench_s, settings.speed)
+        self._faults = faults
+        self._state_path = state_path
+        self._lock = threading.RLock()
+        self._stage = StageMechanics(
+            kept.stage, backlash_deg=settings.effects.backlash_deg
+        )
+        self._saved = kept.stage
+        self._seat = Seat(0, 0.0)
+
+    # The stage, as its firmware sees it. Angles are readings.
+
+    def stage_place(self) -> tuple[float, bool, bool, bool]:
+        """Reading in degrees, turning, stalled, zero known."""
+        with self._lock:
+            now_s = self.time.now_s()
+            self._save_at_rest(now_s)
+            turning = self._stage.turning(now_s)
+            stalled = self._stage.stalled and not turning
+            homed = self._stage.homed(now_s)
+            return self._stage.reading_deg(now_s), turning, stalled, homed
+
+    def stage_travel_deg(self) -> tuple[float, float]:
+        """Lowest and highest angle."""
+        stage = self.bench.stage
+        return stage.travel_min_deg, stage.travel_max_deg
+
+    def stage_move(self, angle_deg: float, feed_deg_per_min: float) -> None:
+        """Sets off; a fault on schedule may stop it, mislead it, cost it its zero."""
+        with self._lock:
+            now_s = self.time.now_s()
+            fault = self._faults.due("stage-move")
+            does = "" if fault is None else fault.does
+            if does == "zero-lost":
+                self._stage.lose_zero(now_s, _power_up_error_deg(self.truth.seed))
+                return
+            here_deg = self._stage.motor_deg(now_s)
+            if does == "stall":
+                angle_deg = here_deg + STALL_SHARE * (angle_deg - here_deg)
+            if does == "wrong-place":
+                angle_deg += ASTRAY_DEG
+            speed = min(feed_deg_per_min / 60.0, self.bench.stage.speed_deg_per_s)
+            self._stage.move(angle_deg, speed, now_s)
+            self._stage.stalled = does == "stall"
+
+    def stage_seek_zero(self) -> None:
+        """Sets off to the zero mark."""
+        with self._lock:
+            speed = self.bench.stage.speed_deg_per_s
+            self._stage.seek_zero(speed, self.time.now_s())
+
+    def stage_halt(self) -> None:
+        """Stops the stage where it is."""
+        with self._lock:
+            self._stage.halt(self.time.now_s())
+
+    # What the controller asks of the bench.
+
+    def wait(self, seconds: float) -> float:
+        """Lets bench time pass; returns the bench time."""
+        now_s = self.time.wait(seconds)
+        with self._lock:
+            self._save_at_rest(now_s)
+        return now_s
+
+    def seat(self, mount: int, mount_deg: float) -> None:
+        """The person on the spot seats the part anew."""
+        with self._lock:
+            self._seat = Seat(mount, mount_deg)
+
+    def cut_power(self) -> None:
+        """The stage loses its zero and the unit its light, as in a power cut."""
+        with self._lock:
+            wrong_deg = _power_up_error_deg(self.truth.seed)
+            self._stage.lose_zero(self.time.now_s(), wrong_deg)
+            self.unit.dark("power cut")
+            self._save_at_rest(self.time.now_s())
+
+    def read_air(self) -> AirReading:
+        """The true air; the twin's sensor has no error of its own."""
+        air = self.truth.air
+        return AirReading(
+            temperature_C=air.temperature_C,
+            pressure_hPa=air.pressure_hPa,
+            humidity_percent=air.humidity_percent,
+            part_temperature_C=self.truth.part_temperature_C,
+        )
+
+    def see_spots(self, label: Label) -> list[SpotReading]:
+        """Spots of this moment: none in the dark, none while the stage turns."""
+        with self._lock:
+            now_s = self.time.now_s()
+            stage_deg, seat = self._stage.table_deg(now_s), self._seat
+            if self._stage.turning(now_s) or not self.unit.is_lit():
+                return []
+        label = _seated(label, seat)
+        return spots(
+            self.truth, self.bench, label, stage_deg=stage_deg, mount_deg=seat.mount_deg
+        )
+
+    def expose(self, exposure_ms: float, label: Label) -> NDArray[np.uint16]:
+        """A frame exposed from now on; bench time passes for exposure and readout.
+
+        Light that is not there from the first to the last moment gives a dark frame;
+        a stage that turns meanwhile smears.
+        """
+        fault = self._faults.due("exposure")
+        if fault is not None:
+            raise ValueError("the camera refuses this exposure: fault on schedule")
+        with self._lock:
+            seat = self._seat
+            start_s = self.time.now_s()
+            start_deg = self._stage.table_deg(start_s)
+            end_deg = self._stage.table_deg(start_s + exposure_ms * 1e-3)
+            lit = self.unit.is_lit()
+        self.wait(exposure_ms * 1e-3 + self.bench.camera.readout_s)
+        lit = lit and self.unit.is_lit()
+        return render(
+            self.truth,
+            self.bench,
+            _seated(label, seat),
+            exposure_ms=exposure_ms,
+            light_on=lit,
+            stage_deg=start_deg,
+            mount_deg=seat.mount_deg,
+            motion_deg=end_deg - start_deg,
+        )
+
+    def save(self) -> None:
+        """Keeps the present state durably."""
+        with self._lock:
+            now_s = self.time.now_s()
+            self._saved = self._stage.rest(now_s)
+            write_state(self._state_path, KeptState(self._saved, now_s))
+
+    def _save_at_rest(self, now_s: float) -> None:
+        if self._stage.turning(now_s):
+            return
+        if self._stage.rest(now_s) != self._saved:
+            self.save()
+
+
+def _seated(label: Label, seat: Seat) -> Label:
+    return Label(
+        mount=seat.mount,
+        laser=label.laser,
+        repeat=label.repeat,
+        step=label.step,
+        exposure=label.exposure,
+        planned_s=label.planned_s,
+    )
+
+
+def _first_state(seed: int) -> KeptState:
+    """A stage that nobody has homed: it stands somewhere and shows zero."""
+    somewhere_deg = float(keyed_generator(seed, "stage at first").uniform(-20.0, 20.0))
+    return KeptState(Rest(somewhere_deg, 0.0, False, somewhere_deg), 0.0)
+
+
+def _power_up_error_deg(seed: int) -> float:
+    return float(keyed_generator(seed, "stage after power cut").uniform(-90.0, 90.0))

@@ -1,0 +1,153 @@
+"""The twin's own door: JSON lines over a loopback socket, with a token (acts).
+
+The first line of a connection is ``{"token": ...}``; each further line
+``{"number": n, "ask": name, ...}`` is answered by ``{"number": n, "answer": ...}`` or
+``{"number": n, "refused": why}``. Frames travel by file: raw uint16, row by row.
+"""
+
+import hmac
+import json
+import shutil
+import socket
+import tempfile
+import threading
+import zlib
+from collections.abc import Callable
+from dataclasses import asdict
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from pitchsweep.drivers.devices import Label
+from pitchsweep.drivers.twin.world import World
+
+LONGEST_LINE_BYTES = 65536
+SHARED_MEMORY = Path("/dev/shm")
+
+Message = dict[str, Any]
+
+
+class WorldServer:
+    """Serves ``world`` at ``address`` until ``close``."""
+
+    def __init__(self, world: World, *, token: str, directory: Path) -> None:
+        self._asks = WorldAsks(world, _make_spool(directory))
+        self._token = token
+        self._socket = socket.create_server(("127.0.0.1", 0))
+        host, port = self._socket.getsockname()
+        self.address: tuple[str, int] = (host, port)
+        threading.Thread(target=self._accept, name="world", daemon=True).start()
+
+    def close(self) -> None:
+        """Takes no further connections and removes what is left in the spool."""
+        self._socket.close()
+        shutil.rmtree(self._asks.spool, ignore_errors=True)
+
+    def _accept(self) -> None:
+        while True:
+            try:
+                connection, _ = self._socket.accept()
+            except OSError:
+                return
+            threading.Thread(
+                target=self._serve, args=(connection,), daemon=True
+            ).start()
+
+    def _serve(self, connection: socket.socket) -> None:
+        connection.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
+        with connection, connection.makefile("rwb") as stream:
+            try:
+                if not self._admits(stream.readline(LONGEST_LINE_BYTES)):
+                    return
+                while line := stream.readline(LONGEST_LINE_BYTES):
+                    answer = json.dumps(self._asks.answer(json.loads(line)))
+                    stream.write(answer.encode("utf-8") + b"\n")
+                    stream.flush()
+            except (OSError, ValueError):
+                return  # whoever spoke has gone, or does not speak JSON lines
+
+    def _admits(self, line: bytes) -> bool:
+        given = json.loads(line)
+        token = given.get("token") if isinstance(given, dict) else None
+        return isinstance(token, str) and hmac.compare_digest(token, self._token)
+
+
+class WorldAsks:
+    """What can be asked of the world; each ask is a method in ``_asks``."""
+
+    def __init__(self, world: World, spool: Path) -> None:
+        self.spool = spool
+        self._world = world
+        self._frames = 0
+        self._lock = threading.Lock()
+        self._asks: dict[str, Callable[[Message], Any]] = {
+            "now": lambda m: world.time.now_s(),
+            "wait": lambda m: world.wait(float(m["seconds"])),
+            "seat": lambda m: world.seat(int(m["mount"]), float(m["mount_deg"])),
+            "door": lambda m: world.unit.set_door(bool(m["closed"])),
+            "press-reset": lambda m: world.unit.press_reset(),
+            "cut-power": lambda m: world.cut_power(),
+            "air": lambda m: asdict(world.read_air()),
+            "spots": self._spots,
+            "camera": self._camera,
+            "expose": self._expose,
+        }
+
+    def answer(self, message: Message) -> Message:
+        """The answer to one message; never raises on a bad one."""
+        number = message.get("number")
+        try:
+            ask = self._asks[str(message.get("ask"))]
+            return {"number": number, "answer": ask(message)}
+        except KeyError as error:
+            return {"number": number, "refused": f"unknown or missing: {error}"}
+        except (ValueError, TypeError) as error:
+            return {"number": number, "refused": str(error)}
+
+    def _spots(self, message: Message) -> list[Message]:
+        return [asdict(s) for s in self._world.see_spots(_label(message))]
+
+    def _camera(self, message: Message) -> Message:
+        camera = self._world.bench.camera
+        return {
+            "camera": "twin-camera",
+            "width_px": camera.width_px,
+            "height_px": camera.height_px,
+            "bits": camera.bits,
+        }
+
+    def _expose(self, message: Message) -> Message:
+        frame = self._world.expose(float(message["exposure_ms"]), _label(message))
+        data = np.ascontiguousarray(frame, dtype="<u2").tobytes()
+        with self._lock:
+            self._frames += 1
+            path = self.spool / f"frame-{self._frames:06d}.raw"
+        path.write_bytes(data)
+        return {
+            "file": str(path),
+            "rows": int(frame.shape[0]),
+            "columns": int(frame.shape[1]),
+            "crc32": zlib.crc32(data),
+        }
+
+
+def _label(message: Message) -> Label:
+    values = message["label"]
+    return Label(
+        mount=int(values["mount"]),
+        laser=str(values["laser"]),
+        repeat=int(values["repeat"]),
+        step=int(values["step"]),
+        exposure=int(values["exposure"]),
+        planned_s=float(values["planned_s"]),
+    )
+
+
+def _make_spool(directory: Path) -> Path:
+    """A folder for frames in passing: in memory where the machine offers it."""
+    beside = SHARED_MEMORY if SHARED_MEMORY.is_dir() else directory
+    try:
+        return Path(tempfile.mkdtemp(prefix="pitchsweep-twin-", dir=beside))
+    except OSError:
+        return Path(tempfile.mkdtemp(prefix="spool-", dir=directory))

@@ -1,0 +1,50 @@
+"""What only a simulated bench offers: its clock, spots, air, the person on the spot."""
+
+from dataclasses import asdict
+
+from pitchsweep.drivers.devices import AirReading, Label, SpotReading
+from pitchsweep.drivers.twin_link import ANSWER_TIMEOUT_S, TwinAddress, TwinLink
+
+
+class TwinWorldClient:
+    """The twin's bench clock (a BenchClock), spots door, air, door and reset button."""
+
+    def __init__(self, address: TwinAddress) -> None:
+        self._link = TwinLink(address)
+
+    def now_s(self) -> float:
+        """Bench time."""
+        return float(self._link.ask("now"))
+
+    def wait(self, seconds: float) -> None:
+        """Lets bench time pass: at once in rehearsal, by sleeping at real speed."""
+        self._link.ask("wait", seconds=seconds, timeout_s=seconds + ANSWER_TIMEOUT_S)
+
+    def seat_part(self, mount: int, mount_deg: float) -> None:
+        """The person on the spot seats the part as mount number ``mount``."""
+        self._link.ask("seat", mount=mount, mount_deg=mount_deg)
+
+    def spots(self, label: Label) -> list[SpotReading]:
+        """Spots of this moment; none without light and none while the stage turns."""
+        rows = self._link.ask("spots", label=asdict(label))
+        return [SpotReading(**row) for row in rows]
+
+    def read_air(self) -> AirReading:
+        """Air and part temperature now."""
+        return AirReading(**self._link.ask("air"))
+
+    def set_door(self, *, closed: bool) -> None:
+        """The person on the spot closes or opens the door."""
+        self._link.ask("door", closed=closed)
+
+    def press_reset(self) -> None:
+        """The person on the spot presses the unit's reset button."""
+        self._link.ask("press-reset")
+
+    def cut_power(self) -> None:
+        """The stage loses its zero and the unit its light."""
+        self._link.ask("cut-power")
+
+    def close(self) -> None:
+        """Closes the connection; the twin goes on."""
+        self._link.close()
