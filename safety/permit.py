@@ -1,0 +1,104 @@
+"""Permits: what allows a run to ask for light, and the refusal of everything else.
+
+Pure. At this stage there is one permit, the rehearsal, which is worth nothing except
+on a unit that answers a challenge with the key made when this very twin was started.
+Port names and addresses prove nothing.
+"""
+
+import hashlib
+import hmac
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, ClassVar
+
+from pitchsweep.safety.safety_errors import GateRefused
+
+if TYPE_CHECKING:
+    # The guard process reads this module and must stay free of pydantic.
+    from pitchsweep.configs.bench_model import Bench
+
+KEY_BYTES = 32
+NONCE_BYTES = 16
+
+
+@dataclass(frozen=True)
+class RehearsalPermit:
+    """Allows light on the twin whose key it carries, within a window of UTC seconds."""
+
+    kind: ClassVar[str] = "rehearsal"
+    key: bytes = field(repr=False)
+    valid_from_utc_s: float
+    valid_until_utc_s: float
+
+    def __post_init__(self) -> None:
+        if len(self.key) < KEY_BYTES:
+            raise ValueError(f"a rehearsal key has at least {KEY_BYTES} bytes")
+        window = (self.valid_from_utc_s, self.valid_until_utc_s)
+        if not all(map(math.isfinite, window)) or window[0] >= window[1]:
+            raise ValueError("a permit's window needs a finite start before its end")
+
+
+Permit = RehearsalPermit
+"""The permits that exist so far."""
+
+
+def permit_as_mapping(permit: Permit) -> dict[str, object]:
+    """The permit as JSON values; the key travels in hexadecimal, over a pipe only."""
+    return {
+        "kind": permit.kind,
+        "key": permit.key.hex(),
+        "valid_from_utc_s": permit.valid_from_utc_s,
+        "valid_until_utc_s": permit.valid_until_utc_s,
+    }
+
+
+def permit_from_mapping(values: Mapping[str, object]) -> Permit:
+    """The permit in ``values``; ValueError for any other kind, key or window."""
+    kind = values.get("kind")
+    if kind != RehearsalPermit.kind:
+        raise ValueError(f"permit of kind {kind!r}: only 'rehearsal' exists so far")
+    key = values.get("key")
+    start, end = values.get("valid_from_utc_s"), values.get("valid_until_utc_s")
+    if not isinstance(key, str):
+        raise ValueError("a rehearsal permit carries its key in hexadecimal")
+    if not isinstance(start, int | float) or not isinstance(end, int | float):
+        raise ValueError("a permit needs valid_from_utc_s and valid_until_utc_s")
+    return RehearsalPermit(bytes.fromhex(key), float(start), float(end))
+
+
+def why_permit_lapsed(
+    permit: Permit, *, utc_s: float, utc_by_monotonic_s: float
+) -> str | None:
+    """None while the permit is valid, otherwise the reason.
+
+    ``utc_by_monotonic_s`` is the UTC at the guard's start plus monotonic seconds since,
+    so that a clock set back does not lengthen a permit.
+    """
+    latest = max(utc_s, utc_by_monotonic_s)
+    if not permit.valid_from_utc_s <= min(utc_s, utc_by_monotonic_s):
+        return "the permit's window has not begun (or the clock was set back)"
+    if not latest < permit.valid_until_utc_s:
+        return f"the permit ended {latest - permit.valid_until_utc_s:.1f} s ago"
+    return None
+
+
+def challenge_answer(key: bytes, nonce: bytes) -> bytes:
+    """HMAC-SHA256 of the nonce: what only the twin that holds ``key`` can answer."""
+    return hmac.new(key, nonce, hashlib.sha256).digest()
+
+
+def answers_challenge(permit: Permit, nonce: bytes, answer: bytes) -> bool:
+    """True when ``answer`` proves the key, compared in constant time."""
+    return hmac.compare_digest(challenge_answer(permit.key, nonce), answer)
+
+
+def refuse_hardware(bench: "Bench") -> None:
+    """Returns for a twin; raises GateRefused for a bench with ports."""
+    if bench.ports is None:
+        return
+    raise GateRefused(
+        f"bench '{bench.bench}' has ports: emission there needs a sign-off, which this"
+        " version cannot give yet",
+        "use a bench with 'twin:', or 'fit' a table or frames taken elsewhere",
+    )

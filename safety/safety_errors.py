@@ -1,0 +1,80 @@
+"""What can go wrong in this folder.
+
+SafetyError
+ +-- GateRefused         not allowed to begin; nothing was switched on
+ +-- GateTripped         emission was dropped and stays off until acknowledged
+ |    +-- GuardLost      the guard process itself ended or fell silent
+ +-- LedgerBroken        an entry of the ledger does not follow from the one before
+ +-- GateTableGap        the gate has no entry for what happened (state unchanged)
+"""
+
+from typing import ClassVar
+
+CAUTION = (
+    "this program is no safety function: the hard-wired interlock, the local rules and"
+    " the laser safety officer decide"
+)
+
+
+class SafetyError(Exception):
+    """Base of this folder's errors; ``exit_code`` is what the command line returns."""
+
+    exit_code: ClassVar[int] = 3
+
+
+class GateRefused(SafetyError):
+    """Raised when emission may not begin; nothing was switched on."""
+
+    def __init__(self, what: str, remedy: str) -> None:
+        self.what = what
+        self.remedy = remedy
+        super().__init__(f"{what}; nothing was switched on\n{remedy} ({CAUTION})")
+
+
+class GateTripped(SafetyError):
+    """Raised when the guard has dropped emission and latched.
+
+    ``event`` names the fault as the gate table does, ``reason`` says it in words.
+    """
+
+    def __init__(self, event: str, reason: str) -> None:
+        self.event = event
+        self.reason = reason
+        super().__init__(
+            f"the gate tripped ({event}): {reason}; dark was commanded\nlook at the"
+            f" bench, then 'pitchsweep ack RUN' and 'sweep --resume RUN' ({CAUTION})"
+        )
+
+
+class GuardLost(GateTripped):
+    """Raised when the guard ended unasked or stopped answering.
+
+    The unit then drops out by itself when its keep-alive runs out.
+    """
+
+    def __init__(self, reason: str) -> None:
+        super().__init__("guard-lost", reason)
+
+
+class LedgerBroken(SafetyError):
+    """Raised when the ledger's chain does not hold; ``entry`` counts from 1."""
+
+    def __init__(self, path: str, entry: int, reason: str) -> None:
+        self.path = path
+        self.entry = entry
+        self.reason = reason
+        super().__init__(
+            f"{path}: entry {entry} of the ledger is broken: {reason}\n"
+            "keep the file as it is, show it to the safety officer, begin a new one"
+        )
+
+
+class GateTableGap(SafetyError):
+    """Raised when the gate's table has no entry; the state is left as it was."""
+
+    def __init__(self, state: object, event: object) -> None:
+        self.state = state
+        self.event = event
+        super().__init__(
+            f"the gate has no entry for event {event!r} in state {state!r}"
+        )
