@@ -59,5 +59,5 @@ class TwinSettings(Settings):
     speed: Literal["rehearsal", "real"] = "rehearsal"
     pitch_off_percent: Annotated[float, Field(ge=0.0, le=20.0)] = 1.0
     spot_reading_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1
-    light_e_per_ms_per_mw: Annotated[float, Field(gt=0.0, le=1e9)] = 1e5
+    light_e_per_ms_per_mw: Annotated[float, Field(gt=0.0, le=1e9)] = 6e4
     effects: TwinEffects = TwinEffects()

@@ -31,6 +31,9 @@ from pitchsweep.drivers.twin.rays import (
 from pitchsweep.drivers.twin.screen import bow_per_mm, land, reported, within_map
 from pitchsweep.drivers.twin.truth import MountTruth, Truth, twin_settings
 
+_GRAZING = 0.02
+"""Cosine of the incidence beyond which the beam passes the part by."""
+
 
 @dataclass(frozen=True)
 class Landing:
@@ -157,7 +160,7 @@ def _trace(truth: Truth, bench: Bench, steps: Steps, beam: _Beam) -> Landing:
         relief=truth.phases.relief,
         lean=truth.phases.relief_lean,
     )
-    lit = dot(incoming, normal)[..., 0] < 0.0
+    lit = dot(incoming, normal)[..., 0] < -_GRAZING
     seen = leaves & there & lit & within_map(bench, place) & (share > FAINTEST)
     planned = np.broadcast_to(steps.planned_s[:, None], place.shape[:-1])
     return Landing(order, reported(truth, bench, place, planned), share, seen)
