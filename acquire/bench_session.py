@@ -1,0 +1,190 @@
+"""Opens a simulated bench for a session: twin, guard, stage, camera. Acts (processes).
+
+The twin is started before the guard; the guard proves on the emission line that it
+speaks to this very twin. The rehearsal permit carries the key made at that start.
+"""
+
+import threading
+import time
+from collections.abc import Iterator, Sequence
+from contextlib import ExitStack, contextmanager
+
+from pitchsweep.acquire.bench_devices import BenchDevices
+from pitchsweep.acquire.journal_rows import GateRow
+from pitchsweep.acquire.sweep_plan import SweepPlan
+from pitchsweep.acquire.sweep_session import BenchRequest
+from pitchsweep.configs.bench_model import Bench
+from pitchsweep.drivers.camera_client import TwinCameraClient
+from pitchsweep.drivers.dialect_files import shipped_dialect, shipped_dialect_mapping
+from pitchsweep.drivers.line_client import LineClient
+from pitchsweep.drivers.serial_transport import open_serial
+from pitchsweep.drivers.stage_client import StageClient
+from pitchsweep.drivers.twin_launcher import TwinHandle, start_twin
+from pitchsweep.drivers.twin_world_client import TwinWorldClient
+from pitchsweep.safety.gate_event import GateEvent
+from pitchsweep.safety.guard_client import GuardClient, StageReport, start_guard
+from pitchsweep.safety.guard_config import GuardConfig, GuardLimits, UnitSettings
+from pitchsweep.safety.permit import RehearsalPermit
+from pitchsweep.safety.permitted_steps import PermittedSteps
+from pitchsweep.safety.safety_errors import GateRefused, GateTripped
+
+STAGE_DIALECT = "rotary-line"
+UNIT_DIALECT = "emission-line"
+BAUD = 115200
+LEDGER = "ledger.jsonl"
+PERSON = "rehearsal"
+PERMIT_HOURS = 24.0
+READ_AGE_SLACK_S = 10.0
+LOOK_AGAIN_S = 0.05
+ACKNOWLEDGE_WITHIN_S = 3.0
+
+
+class GateHistory:
+    """Collects the gate's events from the guard's thread until the journal asks."""
+
+    def __init__(self) -> None:
+        self._rows: list[GateRow] = []
+        self._lock = threading.Lock()
+
+    def add(self, event: GateEvent) -> None:
+        """Takes in one event; called by the guard client's reading thread."""
+        row = GateRow(event.utc, None, event.state, event.event, event.reason)
+        with self._lock:
+            self._rows.append(row)
+
+    def take(self) -> Sequence[GateRow]:
+        """What came in since the last call."""
+        with self._lock:
+            rows, self._rows = self._rows, []
+        return rows
+
+
+class GuardGate:
+    """The guard as a sweep's gate."""
+
+    def __init__(self, guard: GuardClient) -> None:
+        self._guard = guard
+
+    def light_on(self, *, step: int, commanded_deg: float, readback_deg: float) -> None:
+        """Light at ``step``. Raises GateTripped or GateRefused."""
+        self._guard.light_on(step, commanded_deg, readback_deg)
+
+    def still_at(self, *, step: int, commanded_deg: float, readback_deg: float) -> None:
+        """A fresh reading of the stage, for the next heartbeats."""
+        self._guard.check()
+        self._guard.report_stage(
+            StageReport(
+                step, commanded_deg, readback_deg, time.monotonic(), turning=False
+            )
+        )
+
+    def dark(self) -> None:
+        """Dark, returned from when the unit was asked. Raises GateTripped."""
+        self._guard.dark()
+
+    def trip(self, reason: str) -> None:
+        """Dark and latched."""
+        self._guard.trip(reason)
+
+    def end(self) -> None:
+        """Dark, and the guard ends."""
+        self._guard.stop()
+
+
+@contextmanager
+def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
+    """A twin with its guard armed and dark; both end with the block.
+
+    Raises DriverError where a device does not answer, GateRefused or GateTripped where
+    the gate cannot be armed.
+    """
+    job, folder = request.folder.job, request.folder
+    bench = job.bench
+    with ExitStack() as stack:
+        request.say("starting the simulated bench")
+        seed = bench.twin.seed if bench.twin else 0
+        twin = stack.enter_context(start_twin(folder.twin, bench, job.part, seed))
+        world = TwinWorldClient(twin.address)
+        stack.callback(world.close)
+        camera = TwinCameraClient(twin.address)
+        stack.callback(camera.close)
+        request.stop.check()
+        history = GateHistory()
+        config = guard_config(request, twin)
+        guard = stack.enter_context(start_guard(config, on_event=history.add))
+        request.stop.on_request = guard.dark
+        if request.resumed:
+            _acknowledge(guard, world)
+        guard.arm()
+        line = LineClient(
+            open_serial(twin.stage_port, baud=BAUD),
+            shipped_dialect(STAGE_DIALECT),
+            device="stage",
+        )
+        stage = StageClient(line, world, bench.stage)
+        stack.callback(stage.close)
+        yield BenchDevices(
+            stage=stage,
+            camera=camera,
+            clock=world,
+            world=world,
+            gate=GuardGate(guard),
+            gate_history=history.take,
+        )
+
+
+def guard_config(request: BenchRequest, twin: TwinHandle) -> GuardConfig:
+    """What the guard works from: unit, rehearsal permit, permitted steps."""
+    folder, emission = request.folder, request.folder.job.bench.emission
+    dialect = shipped_dialect_mapping(UNIT_DIALECT)
+    if not isinstance(dialect, dict):
+        raise GateRefused(f"dialect {UNIT_DIALECT} is no mapping", "reinstall")
+    now_s = time.time()
+    return GuardConfig(
+        unit=UnitSettings(
+            port=twin.unit_port,
+            baud=BAUD,
+            dialect=dialect,
+            identity=emission.unit_identity,
+            keep_alive_ms=emission.keep_alive_ms,
+        ),
+        permit=RehearsalPermit(
+            key=twin.proof_key,
+            valid_from_utc_s=now_s - 1.0,
+            valid_until_utc_s=now_s + PERMIT_HOURS * 3600.0,
+        ),
+        limits=GuardLimits(),
+        permitted=permitted_steps(request.plan, folder.job.bench),
+        ledger_path=str(folder.path / LEDGER),
+        run=folder.path.name,
+        resumed=request.resumed,
+    )
+
+
+def permitted_steps(plan: SweepPlan, bench: Bench) -> PermittedSteps:
+    """The stage angle of every step and zero check of ``plan``."""
+    longest_s = max(max(s.exposures_ms) for s in plan.steps) / 1000.0
+    return PermittedSteps(
+        angles_deg={s.step: s.stage_deg for s in (*plan.steps, *plan.zero_checks)},
+        tolerance_deg=bench.stage.angle_tolerance_deg,
+        read_age_limit_s=min(60.0, longest_s + READ_AGE_SLACK_S),
+    )
+
+
+def _acknowledge(guard: GuardClient, world: TwinWorldClient) -> None:
+    """The twin's person presses the reset button, then the trip is acknowledged."""
+    deadline_s = time.monotonic() + ACKNOWLEDGE_WITHIN_S
+    while True:
+        # The guard counts a press only if it saw the button's counter before it.
+        time.sleep(LOOK_AGAIN_S)
+        world.press_reset()
+        time.sleep(LOOK_AGAIN_S)
+        try:
+            guard.acknowledge(PERSON)
+        except GateTripped:
+            raise
+        except GateRefused:
+            if time.monotonic() > deadline_s:
+                raise
+        else:
+            return

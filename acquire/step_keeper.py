@@ -1,0 +1,199 @@
+"""Keeps what a step gave while the stage moves on. This module acts (thread, disk).
+
+One worker thread takes exposed steps from a bounded queue: frames durable, then the
+step acknowledged, then its spots found and recorded, then the zero order watched. A
+failure there reaches the sweep at its next call.
+"""
+
+import queue
+import threading
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Self
+
+from pitchsweep.acquire.bench_devices import FindSpots, Gate, Shot
+from pitchsweep.acquire.frame_store import FrameStore
+from pitchsweep.acquire.journal_rows import (
+    FrameRow,
+    GateRow,
+    IntentRow,
+    SpotRow,
+    StepSpots,
+)
+from pitchsweep.acquire.run_journal import RunJournal
+from pitchsweep.acquire.stored_spots import dark_shots, light_shots
+from pitchsweep.acquire.sweep_plan import Step
+from pitchsweep.acquire.zero_order_watch import WatchState, after_exposure
+from pitchsweep.configs.job_model import Job
+from pitchsweep.drivers.devices import SpotReading
+from pitchsweep.safety.safety_errors import GateTripped
+
+DEPTH = 2
+"""Steps that may wait: bounds memory to a few frames."""
+
+
+@dataclass(frozen=True)
+class TakenStep:
+    """What was exposed at a step; ``readings`` is None unless spots were recorded."""
+
+    step: Step
+    intent: int
+    readback_deg: float
+    bench_s: float
+    first_frame: int
+    darks: tuple[Shot, ...]
+    lights: tuple[Shot, ...]
+    readings: tuple[SpotReading, ...] | None
+
+
+@dataclass(frozen=True)
+class KeeperTools:
+    """What the keeper works with; ``on_kept`` is told of every step kept."""
+
+    job: Job
+    journal: RunJournal
+    store: FrameStore
+    find: FindSpots
+    gate: Gate
+    gate_history: Callable[[], Sequence[GateRow]]
+    on_kept: Callable[[Step, StepSpots], None]
+
+
+class StepKeeper:
+    """The worker; use it in a ``with`` block, call ``drain`` before trusting it."""
+
+    def __init__(self, tools: KeeperTools) -> None:
+        self._tools = tools
+        self._queue: queue.Queue[TakenStep | IntentRow | None] = queue.Queue(DEPTH)
+        self._failure: BaseException | None = None
+        self._darks: tuple[Shot, ...] | None = None
+        self._watch = WatchState()
+        self._thread = threading.Thread(target=self._serve, name="keeper", daemon=True)
+
+    def __enter__(self) -> Self:
+        self._thread.start()
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self._queue.put(None)
+        self._thread.join()
+
+    def put(self, taken: TakenStep) -> None:
+        """Hands a step over; waits while the queue is full. Raises what went wrong."""
+        self.raise_failure()
+        self._queue.put(taken)
+
+    def find_again(self, row: IntentRow) -> None:
+        """Finds the spots of an acknowledged step again, from its stored frames."""
+        self.raise_failure()
+        self._queue.put(row)
+
+    def drain(self) -> None:
+        """Returns when everything handed over is kept. Raises what went wrong."""
+        self._queue.join()
+        self.raise_failure()
+
+    def raise_failure(self) -> None:
+        """Raises what the worker met, if anything."""
+        if self._failure is not None:
+            raise self._failure
+
+    def _serve(self) -> None:
+        while (item := self._queue.get()) is not None:
+            try:
+                # After a failure nothing more is acknowledged; it stays in doubt.
+                if self._failure is None:
+                    self._handle(item)
+            except BaseException as error:
+                self._failure = error
+            finally:
+                self._queue.task_done()
+        self._queue.task_done()
+
+    def _handle(self, item: TakenStep | IntentRow) -> None:
+        if isinstance(item, TakenStep):
+            self._keep(item)
+        else:
+            found = self._find_stored(item)
+            self._tools.journal.record_spots(item.intent, found)
+
+    def _keep(self, taken: TakenStep) -> None:
+        tools, step = self._tools, taken.step
+        numbered = list(enumerate(taken.darks + taken.lights, taken.first_frame))
+        rows = [
+            self._stored(number, shot, "dark" if index < len(taken.darks) else "light")
+            for index, (number, shot) in enumerate(numbered)
+        ]
+        found = spots_from_door(taken.readings)
+        with tools.journal.transaction():
+            for event in tools.gate_history():
+                tools.journal.record_gate(event)
+            tools.journal.acknowledge(
+                taken.intent,
+                readback_deg=taken.readback_deg,
+                bench_s=taken.bench_s,
+                frames=rows,
+                spots=found,
+            )
+        if taken.darks:
+            self._darks = taken.darks
+        if found is None:
+            found = tools.find(step.step, taken.lights, self._darks_for(step))
+            tools.journal.record_spots(taken.intent, found)
+        tools.on_kept(step, found)
+        self._watch_zero_order(step, found)
+
+    def _darks_for(self, step: Step) -> tuple[Shot, ...]:
+        if step.kind != "step":
+            return ()
+        if self._darks is None:
+            # This session began in mid-course: an earlier one took them.
+            self._darks = dark_shots(self._tools.journal, self._tools.store, step)
+        return self._darks
+
+    def _stored(self, number: int, shot: Shot, kind: str) -> FrameRow:
+        stored = self._tools.store.keep(number, shot.frame)
+        label = shot.label
+        return FrameRow(
+            file=stored.file,
+            sha256=stored.sha256,
+            kind=kind,
+            exposure_ms=shot.exposure_ms,
+            mount=label.mount,
+            laser=label.laser,
+            repeat=label.repeat,
+            step=label.step,
+            exposure=label.exposure,
+            planned_s=label.planned_s,
+        )
+
+    def _find_stored(self, row: IntentRow) -> StepSpots:
+        tools = self._tools
+        darks = dark_shots(tools.journal, tools.store, row)
+        return tools.find(row.step, light_shots(tools.journal, tools.store, row), darks)
+
+    def _watch_zero_order(self, step: Step, found: StepSpots) -> None:
+        first = step.kind == "zero-check"
+        self._watch = after_exposure(
+            WatchState() if first else self._watch,
+            bench=self._tools.job.bench,
+            part=self._tools.job.part,
+            incidence_deg=step.incidence_deg,
+            spots_mm=[(spot.x_mm, spot.y_mm) for spot in found.spots],
+            first_after_homing=first,
+        )
+        if self._watch.trip_reason:
+            self._tools.gate.trip(self._watch.trip_reason)
+            raise GateTripped("zero-order", self._watch.trip_reason)
+
+
+def spots_from_door(readings: Sequence[SpotReading] | None) -> StepSpots | None:
+    """Readings of the spots door as journal rows; None stays None."""
+    if readings is None:
+        return None
+    return StepSpots(
+        tuple(
+            SpotRow(r.x_mm, r.y_mm, r.ux_mm, r.uy_mm, 0.0, r.brightness)
+            for r in readings
+        )
+    )
