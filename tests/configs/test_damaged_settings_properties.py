@@ -67,7 +67,7 @@ def _assert_clear(refused: SettingsRefused, key: str) -> None:
 
 
 @pytest.mark.parametrize(("model", "field"), _cases())
-@settings(max_examples=6, deadline=None, suppress_health_check=list(HealthCheck))
+@settings(max_examples=6, suppress_health_check=list(HealthCheck))
 @given(data=st.data())
 def test_one_damaged_value_is_refused(
     model: type[Settings], field: Field, data: st.DataObject
@@ -83,7 +83,7 @@ def test_one_damaged_value_is_refused(
 @pytest.mark.parametrize(
     "field", [f for f in fields(Bench) if "ports" in f.path], ids=str
 )
-@settings(max_examples=4, deadline=None, suppress_health_check=list(HealthCheck))
+@settings(max_examples=4, suppress_health_check=list(HealthCheck))
 @given(data=st.data())
 def test_one_damaged_value_of_a_bench_with_ports_is_refused(
     field: Field, data: st.DataObject
@@ -105,7 +105,7 @@ def test_a_damaged_frozen_job_is_refused() -> None:
         thaw(plain_yaml(values), "job.yaml")
 
 
-@settings(max_examples=150, deadline=None)
+@settings(max_examples=150)
 @given(data=st.one_of(st.binary(max_size=200), st.text(max_size=200)))
 def test_any_bytes_give_a_document_or_a_refusal(data: bytes | str) -> None:
     try:
@@ -123,7 +123,7 @@ YAML_PIECES = st.sampled_from(
 )
 
 
-@settings(max_examples=300, deadline=None)
+@settings(max_examples=300)
 @given(pieces=st.lists(YAML_PIECES, max_size=25))
 def test_any_yaml_gives_a_bench_or_a_refusal(pieces: list[str]) -> None:
     with pytest.raises(SettingsRefused, match="any.yaml"):

@@ -95,7 +95,7 @@ def test_a_frozen_job_is_read_by_path_like_a_job(tmp_path: Path) -> None:
     assert set(loaded.files.values()) == {path}
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40)
 @given(
     note=st.text(min_size=1, max_size=60).filter(lambda t: t.isprintable())
     | st.sampled_from(
