@@ -1,0 +1,183 @@
+"""The report as one HTML page that needs nothing but itself.
+
+Style and pictures are inside the page; it works without scripts and prints on A4.
+"""
+
+import base64
+from dataclasses import dataclass
+from typing import Any
+
+from jinja2 import Environment, PackageLoader, StrictUndefined
+
+from pitchsweep.analysis.budget_picture import budget_shares, budget_svg
+from pitchsweep.analysis.frame_strip import frames_png
+from pitchsweep.analysis.number_text import (
+    percent,
+    plain_percent,
+    rounded,
+    significant,
+)
+from pitchsweep.analysis.pitch_seen_picture import pitches_seen_svg
+from pitchsweep.analysis.records import Decision, PitchResult
+from pitchsweep.analysis.report_context import ReportContext
+from pitchsweep.analysis.report_rows import (
+    budget_row,
+    nuisance_rows,
+    part_rows,
+    reason_rows,
+    rejected_rows,
+    result_facts,
+    run_rows,
+    seen_rows,
+)
+from pitchsweep.analysis.residual_picture import residuals_svg
+from pitchsweep.analysis.track_picture import tracks_svg
+
+TEMPLATE = "report.html"
+REJECTED_SHOWN = 100
+FOLDED = "screen map"
+"""Nuisances whose names begin so are many and alike: they come folded."""
+
+STANDING_CAUTIONS = (
+    "The program is an administrative control and no safety function: hard-wired"
+    " interlocks, local rules and the local laser safety officer decide.",
+    "Nothing in this report classifies a laser or authorises its use.",
+)
+DECISION_MARKS = {
+    "conforms": "Conforms.",
+    "does-not-conform": "Does not conform.",
+    "undecided": "Undecided: too near a limit for this uncertainty.",
+    None: "No decision: no tolerance was given.",
+}
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A picture inside the page: its data address, what it shows, its caption."""
+
+    address: str
+    alt: str
+    caption: str
+
+
+def report_page(result: PitchResult, context: ReportContext) -> str:
+    """The complete HTML text of the report; equal input gives equal text."""
+    environment = Environment(
+        loader=PackageLoader("pitchsweep.analysis", "templates"),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+    )
+    return environment.get_template(TEMPLATE).render(_values(result, context))
+
+
+def _values(result: PitchResult, context: ReportContext) -> dict[str, Any]:
+    pitch = rounded(result.pitch_nm, result.U_pitch_nm)
+    decision = result.decision
+    nuisances = nuisance_rows(result)
+    return {
+        "part": context.part,
+        "simulated": context.simulated,
+        "pitch": pitch.value,
+        "expanded": pitch.u,
+        "k": f"{result.k:.2f}",
+        "coverage": plain_percent(result.coverage),
+        "at_c": f"{result.pitch_at_C:g}",
+        "decision_mark": DECISION_MARKS[decision.outcome],
+        "decision_class": decision.outcome or "none",
+        "probability": _probability(decision),
+        "rule": decision.rule,
+        "warnings": result.warnings,
+        "cautions": (*STANDING_CAUTIONS, *context.cautions),
+        "facts": result_facts(result),
+        "part_rows": part_rows(context.part),
+        "bench_rows": context.bench_facts,
+        "run_rows": run_rows(result, context),
+        "tracks": _tracks(result, context),
+        "residuals": _residuals(result),
+        "pitches": _pitches(result) if result.pitches_seen else None,
+        "budget_picture": _budget(result),
+        "strip": _strip(context),
+        "budget": [
+            budget_row(line.source, line.kind, line.u_nm, share, line.detail)
+            for line, share in budget_shares(result.budget)
+        ],
+        "u_pitch": significant(result.u_pitch_nm),
+        "seen": seen_rows(result),
+        "nuisances": [n for n in nuisances if not n.name.startswith(FOLDED)],
+        "more_nuisances": [n for n in nuisances if n.name.startswith(FOLDED)],
+        "reasons": reason_rows(result),
+        "rejected": rejected_rows(result, REJECTED_SHOWN),
+        "rejected_total": len(result.rejected),
+        "gate": context.gate_history,
+    }
+
+
+def _probability(decision: Decision) -> str:
+    probability = decision.conformance_probability
+    return "" if probability is None else percent(probability)
+
+
+def _tracks(result: PitchResult, context: ReportContext) -> Picture:
+    return Picture(
+        _svg_address(tracks_svg(result, context.screen)),
+        "Tracks of all orders on the screen against stage angle",
+        "Where every beam met the screen while the stage turned. Markers are readings,"
+        " lines the one fit to all of them, numbers the diffraction order. Grey crosses"
+        " are spots that were not used; the grey band is the hole through which the"
+        " beam comes. Reflection (order 0) obeys its law whatever the pitch and so"
+        " calibrates screen, camera and stage for the others.",
+    )
+
+
+def _residuals(result: PitchResult) -> Picture:
+    return Picture(
+        _svg_address(residuals_svg(result)),
+        "Residuals of the fit against incidence and by order",
+        "What the fit leaves over, in units of each reading's stated uncertainty. A"
+        " sound fit scatters about zero without a pattern, about 95 of 100 points in"
+        " the grey band, and with an rms near 1 in every order.",
+    )
+
+
+def _pitches(result: PitchResult) -> Picture:
+    return Picture(
+        _svg_address(pitches_seen_svg(result)),
+        "Pitch seen by each order, side and half of the sweep",
+        "The pitch that parts of the data give, as difference from the result (in"
+        " brackets the number of spots). Thick bars are one, thin bars two standard"
+        " uncertainties of that difference; the green band is the result's expanded"
+        " uncertainty U. Parts that disagree would show an error that the fit does"
+        " not know.",
+    )
+
+
+def _budget(result: PitchResult) -> Picture:
+    return Picture(
+        _svg_address(budget_svg(result)),
+        "Uncertainty budget as bars",
+        "What the uncertainty is made of. Hatched bars (kind A) come from the scatter"
+        " of the readings, plain bars (kind B) from what is known beforehand. Shares"
+        " are of the variance and add up to 100 %.",
+    )
+
+
+def _strip(context: ReportContext) -> Picture | None:
+    if not context.frames:
+        return None
+    return Picture(
+        _address(frames_png(context.frames), "image/png"),
+        "Six frames of the camera with spots marked",
+        "Frames of the camera, brightness on a logarithmic scale, dark is bright."
+        " Circles: spots used, with their order. Crosses: candidates not used, with"
+        " the reason.",
+    )
+
+
+def _svg_address(svg: str) -> str:
+    return _address(svg.encode("utf-8"), "image/svg+xml")
+
+
+def _address(content: bytes, media_type: str) -> str:
+    return f"data:{media_type};base64,{base64.b64encode(content).decode('ascii')}"

@@ -1,0 +1,109 @@
+"""result.json: the keys that are promised, in JSON that any reader takes."""
+
+import json
+import math
+from dataclasses import replace
+
+import pytest
+from result_builder import build_result, build_table_result
+
+from pitchsweep.analysis.analysis_errors import NoResult
+from pitchsweep.analysis.records import BudgetLine, Decision
+from pitchsweep.analysis.result_file import (
+    decision_words,
+    order_text,
+    result_dict,
+    result_json,
+    summary_lines,
+)
+
+PROMISED = {
+    "pitch_nm",
+    "u_pitch_nm",
+    "U_pitch_nm",
+    "k",
+    "coverage",
+    "dof",
+    "pitch_at_C",
+    "reduced_chi2",
+    "steps_used",
+    "spots_used",
+    "orders_used",
+    "rejected",
+    "budget",
+    "nuisance",
+    "decision",
+    "warnings",
+    "software",
+    "inputs_sha256",
+}
+
+
+def refuse_constant(name: str) -> float:
+    raise AssertionError(f"{name} is no JSON")
+
+
+def test_every_promised_key_is_there() -> None:
+    assert set(result_dict(build_result())) >= PROMISED
+
+
+def test_the_text_reads_back_to_the_same_values() -> None:
+    result = build_result()
+    back = json.loads(result_json(result), parse_constant=refuse_constant)
+    assert back == result_dict(result)
+    assert back["pitch_nm"] == result.pitch_nm
+    assert back["budget"][0] == {
+        "source": "stage: harmonics and repeatability",
+        "kind": "B",
+        "u_nm": 0.0231,
+    }
+    assert back["rejected"][0] == {"reason": "no-order-there", "count": 12}
+    assert back["nuisance"][0]["unit"] == "mm"
+    assert back["decision"]["outcome"] == "conforms"
+    assert back["decision"]["rule"].startswith("guarded acceptance")
+
+
+def test_what_is_not_finite_becomes_null() -> None:
+    result = replace(
+        build_result(),
+        dof=math.inf,
+        reduced_chi2=math.nan,
+        budget=(BudgetLine("unknown", "B", math.nan),),
+    )
+    back = json.loads(result_json(result), parse_constant=refuse_constant)
+    assert back["dof"] is None
+    assert back["reduced_chi2"] is None
+    assert back["budget"][0]["u_nm"] is None
+
+
+@pytest.mark.parametrize("name", ["pitch_nm", "u_pitch_nm", "U_pitch_nm"])
+def test_a_pitch_that_is_no_number_is_no_result(name: str) -> None:
+    with pytest.raises(NoResult, match=name):
+        result_json(replace(build_result(), **{name: math.nan}))
+
+
+def test_the_summary_shows_pitch_k_decision_and_warnings() -> None:
+    lines = summary_lines(replace(build_result(), warnings=("air was not read",)))
+    text = "\n".join(lines)
+    assert "830.417 nm +/- 0.063 nm at 20 C" in text
+    assert "k = 2.03, coverage 95 %" in text
+    assert "conforms (probability > 99.9 %)" in text
+    assert lines[-1] == "Warning    air was not read"
+    assert text.isascii()
+
+
+def test_the_summary_of_a_coarse_result_claims_no_decimals() -> None:
+    text = "\n".join(summary_lines(build_table_result()))
+    assert "833 nm +/- 26 nm" in text
+    assert "no decision: no tolerance was given" in text
+
+
+def test_decisions_in_words() -> None:
+    undecided = Decision("undecided", "guarded", 0.912, 1.0, 2.0)
+    assert decision_words(undecided) == (
+        "undecided: too near a limit for this uncertainty (probability 91.2 %)"
+    )
+
+
+def test_orders_carry_their_sign() -> None:
+    assert [order_text(m) for m in (-1, 0, 2)] == ["\N{MINUS SIGN}1", "0", "+2"]
