@@ -1,5 +1,6 @@
 """Starts the twin as a process of its own, in a session of its own (acts)."""
 
+import contextlib
 import json
 import secrets
 import select
@@ -40,11 +41,8 @@ class TwinHandle:
         """Tells the twin to end; its exit code. NoAnswerInTime if it must be killed."""
         stdin = self.process.stdin
         if stdin is not None and not stdin.closed:
-            try:
+            with stdin, contextlib.suppress(OSError):  # it may have ended already
                 stdin.write(b"end\n")
-                stdin.close()
-            except OSError:
-                pass  # it has ended already
         try:
             code = self.process.wait(timeout_s)
         except subprocess.TimeoutExpired:

@@ -70,17 +70,20 @@ class TwinConfiguration:
 def main() -> int:
     """Runs the twin to its end; returns the exit code."""
     sys.setswitchinterval(SWITCH_INTERVAL_S)
+    asked_to_end = threading.Event()
+    for number in (signal.SIGTERM, signal.SIGINT, signal.SIGHUP):
+        signal.signal(number, lambda *_: asked_to_end.set())
     try:
         configuration = TwinConfiguration.from_line(sys.stdin.readline())
         hold_folder(configuration.directory)
     except (FolderInUse, ValueError, KeyError, OSError) as error:
         _say({"refused": str(error)})
         return 2
-    _run(configuration)
+    _run(configuration, asked_to_end)
     return 0
 
 
-def _run(configuration: TwinConfiguration) -> None:
+def _run(configuration: TwinConfiguration, asked_to_end: threading.Event) -> None:
     bench, directory = configuration.bench, configuration.directory
     log = UnitLog(directory / "unit.log")
     log.write("unit", "start", f"process {os.getpid()}")
@@ -116,7 +119,7 @@ def _run(configuration: TwinConfiguration) -> None:
             "address": list(server.address),
         }
     )
-    why = _watch_controller(unit, directory)
+    why = _watch_controller(unit, directory, asked_to_end)
     unit.dark(why)
     server.close()
     stage_port.close()
@@ -126,11 +129,10 @@ def _run(configuration: TwinConfiguration) -> None:
     log.close()
 
 
-def _watch_controller(unit: EmissionUnit, directory: Path) -> str:
+def _watch_controller(
+    unit: EmissionUnit, directory: Path, asked_to_end: threading.Event
+) -> str:
     """Returns when the twin is to end, and says why."""
-    asked_to_end = threading.Event()
-    for number in (signal.SIGTERM, signal.SIGINT, signal.SIGHUP):
-        signal.signal(number, lambda *_: asked_to_end.set())
     held = b""
     while not asked_to_end.is_set():
         if not select.select([sys.stdin], [], [], POLL_S)[0]:

@@ -5,11 +5,11 @@ The first line of a connection is ``{"token": ...}``; each further line
 ``{"number": n, "refused": why}``. Frames travel by file: raw uint16, row by row.
 """
 
+import hashlib
 import hmac
 import json
 import shutil
 import socket
-import tempfile
 import threading
 import zlib
 from collections.abc import Callable
@@ -145,9 +145,18 @@ def _label(message: Message) -> Label:
 
 
 def _make_spool(directory: Path) -> Path:
-    """A folder for frames in passing: in memory where the machine offers it."""
-    beside = SHARED_MEMORY if SHARED_MEMORY.is_dir() else directory
-    try:
-        return Path(tempfile.mkdtemp(prefix="pitchsweep-twin-", dir=beside))
-    except OSError:
-        return Path(tempfile.mkdtemp(prefix="spool-", dir=directory))
+    """An empty folder for frames in passing: in memory where the machine offers it.
+
+    Its name follows from ``directory``, so that what a killed twin left is removed by
+    the next one there.
+    """
+    mark = hashlib.sha256(str(directory.resolve()).encode()).hexdigest()[:16]
+    for beside in (SHARED_MEMORY, directory):
+        spool = beside / f"pitchsweep-twin-{mark}"
+        shutil.rmtree(spool, ignore_errors=True)
+        try:
+            spool.mkdir(mode=0o700)
+        except OSError:
+            continue  # not there, full, or somebody else's
+        return spool
+    raise OSError(f"no folder for frames can be made in {directory}")

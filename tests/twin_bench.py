@@ -1,0 +1,94 @@
+"""A small bench with a twin, and clients on its ports, for tests of the process."""
+
+import json
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from builders import demo_job
+
+from pitchsweep.configs.job_model import Job
+from pitchsweep.drivers.camera_client import TwinCameraClient
+from pitchsweep.drivers.devices import Label
+from pitchsweep.drivers.dialect_files import shipped_dialect
+from pitchsweep.drivers.emission_client import EmissionClient
+from pitchsweep.drivers.line_client import LineClient
+from pitchsweep.drivers.serial_transport import open_serial
+from pitchsweep.drivers.stage_client import StageClient
+from pitchsweep.drivers.twin.fault_schedule import Fault
+from pitchsweep.drivers.twin_launcher import TwinHandle, start_twin
+from pitchsweep.drivers.twin_world_client import TwinWorldClient
+
+UNIT_TIMEOUT_S = 2.0
+"""Longer than the guard's, so that a busy machine does not fail these tests."""
+
+
+@dataclass(frozen=True)
+class Clients:
+    """A running twin and one client for each of its devices."""
+
+    handle: TwinHandle
+    job: Job
+    stage: StageClient
+    unit: EmissionClient
+    camera: TwinCameraClient
+    world: TwinWorldClient
+
+
+def small_job() -> Job:
+    """The shipped shim on a bench with a long keep-alive and a small camera."""
+    job = demo_job("shims-spots")
+    camera = job.bench.camera
+    smaller = {
+        "width_px": 320,
+        "height_px": 128,
+        "mm_per_px": camera.mm_per_px * camera.width_px / 320,
+        "centre_column_px": 160.0,
+        "centre_row_px": 64.0,
+    }
+    return demo_job("shims-spots", bench={"camera": camera.model_copy(update=smaller)})
+
+
+@contextmanager
+def running_twin(directory: Path, *faults: Fault, seed: int = 5) -> Iterator[Clients]:
+    """A twin with clients on real ports; all closed, and the twin ended, at exit."""
+    job = small_job()
+    with start_twin(directory, job.bench, job.part, seed, faults=faults) as handle:
+        world = TwinWorldClient(handle.address)
+        camera = TwinCameraClient(handle.address)
+        stage = StageClient(
+            LineClient(
+                open_serial(handle.stage_port),
+                shipped_dialect("rotary-line"),
+                device="stage",
+            ),
+            world,
+            job.bench.stage,
+        )
+        unit = EmissionClient(
+            LineClient(
+                open_serial(handle.unit_port),
+                shipped_dialect("emission-line"),
+                device="unit",
+            ),
+            timeout_s=UNIT_TIMEOUT_S,
+        )
+        try:
+            yield Clients(handle, job, stage, unit, camera, world)
+        finally:
+            for client in (stage, unit, camera, world):
+                client.close()
+
+
+def unit_log(directory: Path) -> list[dict[str, Any]]:
+    """The rows of the unit's log."""
+    text = (directory / "unit.log").read_text(encoding="utf-8")
+    return [json.loads(line) for line in text.splitlines()]
+
+
+def label(step: int = 0, exposure: int = 0) -> Label:
+    """A label of mount 0, the job's first laser."""
+    laser = small_job().recipe.lasers[0]
+    return Label(0, laser, 0, step, exposure, 3.0 * step)
