@@ -8,9 +8,11 @@ import threading
 import time
 from collections.abc import Iterator, Sequence
 from contextlib import ExitStack, contextmanager
+from pathlib import Path
 
 from pitchsweep.acquire.bench_devices import BenchDevices
 from pitchsweep.acquire.journal_rows import GateRow
+from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.sweep_plan import SweepPlan
 from pitchsweep.acquire.sweep_session import BenchRequest
 from pitchsweep.configs.bench_model import Bench
@@ -24,6 +26,7 @@ from pitchsweep.drivers.twin_world_client import TwinWorldClient
 from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.guard_client import GuardClient, StageReport, start_guard
 from pitchsweep.safety.guard_config import GuardConfig, GuardLimits, UnitSettings
+from pitchsweep.safety.ledger import verify
 from pitchsweep.safety.permit import RehearsalPermit
 from pitchsweep.safety.permitted_steps import PermittedSteps
 from pitchsweep.safety.safety_errors import GateRefused, GateTripped
@@ -60,10 +63,12 @@ class GateHistory:
 
 
 class GuardGate:
-    """The guard as a sweep's gate."""
+    """The guard as a sweep's gate; the ledger's head goes into the journal."""
 
-    def __init__(self, guard: GuardClient) -> None:
+    def __init__(self, guard: GuardClient, journal: RunJournal, ledger: Path) -> None:
         self._guard = guard
+        self._journal = journal
+        self._ledger = ledger
 
     def light_on(self, *, step: int, commanded_deg: float, readback_deg: float) -> None:
         """Light at ``step``. Raises GateTripped or GateRefused."""
@@ -87,8 +92,11 @@ class GuardGate:
         self._guard.trip(reason)
 
     def end(self) -> None:
-        """Dark, and the guard ends."""
+        """Dark, and the guard ends; its ledger's count and head are noted."""
         self._guard.stop()
+        found = verify(self._ledger)
+        self._journal.set_meta("ledger_entries", str(found.count))
+        self._journal.set_meta("ledger_head", found.head)
 
 
 @contextmanager
@@ -128,7 +136,7 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
             camera=camera,
             clock=world,
             world=world,
-            gate=GuardGate(guard),
+            gate=GuardGate(guard, request.journal, folder.path / LEDGER),
             gate_history=history.take,
         )
 

@@ -24,6 +24,9 @@ from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.stored_spots import dark_shots, light_shots
 from pitchsweep.acquire.sweep_plan import Step
 from pitchsweep.acquire.zero_order_watch import WatchState, after_exposure
+from pitchsweep.analysis.pixel_map import screen_from_pixels
+from pitchsweep.analysis.records import Rejection
+from pitchsweep.configs.bench_model import Camera
 from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.devices import SpotReading
 from pitchsweep.safety.safety_errors import GateTripped
@@ -179,12 +182,25 @@ class StepKeeper:
             bench=self._tools.job.bench,
             part=self._tools.job.part,
             incidence_deg=step.incidence_deg,
-            spots_mm=[(spot.x_mm, spot.y_mm) for spot in found.spots],
+            spots_mm=light_seen_mm(found, self._tools.job.bench.camera),
             first_after_homing=first,
         )
         if self._watch.trip_reason:
             self._tools.gate.trip(self._watch.trip_reason)
             raise GateTripped("zero-order", self._watch.trip_reason)
+
+
+def light_seen_mm(found: StepSpots, camera: Camera) -> list[tuple[float, float]]:
+    """Where light was seen, measurable or not: a lopsided zero order is not lost."""
+    seen = [(spot.x_mm, spot.y_mm) for spot in found.spots]
+    seen += [
+        screen_from_pixels(item.x, item.y, camera)
+        if item.unit == "px"
+        else (item.x, item.y)
+        for item in found.rejected
+        if item.reason != Rejection.TOO_FAINT.value
+    ]
+    return seen
 
 
 def spots_from_door(readings: Sequence[SpotReading] | None) -> StepSpots | None:

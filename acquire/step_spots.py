@@ -39,28 +39,31 @@ def on_screen(found: SpotSearch, camera: Camera) -> StepSpots:
     return StepSpots(
         spots=tuple(_row(spot, camera) for spot in found.spots),
         rejected=tuple(
-            RejectedRow(item.x, item.y, item.unit, item.reason.value, item.detail)
+            RejectedRow(
+                float(item.x), float(item.y), item.unit, item.reason.value, item.detail
+            )
             for item in found.rejected
         ),
-        background_dn=found.background_dn,
-        noise_dn=found.noise_dn,
+        background_dn=float(found.background_dn),
+        noise_dn=float(found.noise_dn),
     )
 
 
 def _row(spot: Spot, camera: Camera) -> SpotRow:
+    # Plain Python numbers: the journal stores nothing else.
     place = spot_on_screen(spot, camera)
     return SpotRow(
-        x_mm=place.x_mm,
-        y_mm=place.y_mm,
-        ux_mm=place.ux_mm,
-        uy_mm=place.uy_mm,
-        cxy_mm2=place.cxy_mm2,
-        brightness=spot.peak_dn_per_ms,
-        column_px=spot.column_px,
-        row_px=spot.row_px,
-        sigma_major_px=spot.sigma_px[0],
-        sigma_minor_px=spot.sigma_px[1],
-        snr=spot.snr,
-        exposure_ms=spot.exposure_ms,
-        saturated=spot.saturated,
+        x_mm=float(place.x_mm),
+        y_mm=float(place.y_mm),
+        ux_mm=float(place.ux_mm),
+        uy_mm=float(place.uy_mm),
+        cxy_mm2=float(place.cxy_mm2),
+        brightness=float(spot.peak_dn_per_ms),
+        column_px=float(spot.column_px),
+        row_px=float(spot.row_px),
+        sigma_major_px=float(spot.sigma_px[0]),
+        sigma_minor_px=float(spot.sigma_px[1]),
+        snr=float(spot.snr),
+        exposure_ms=float(spot.exposure_ms),
+        saturated=bool(spot.saturated),
     )

@@ -202,7 +202,7 @@ def _ending(
     except StopRequested as error:
         _note_ending(journal, session, f"stopped: {error}")
         raise SweepStopped(folder.path, str(error)) from None
-    except (StorageFailed, sqlite3.Error, OSError) as error:
+    except (StorageFailed, sqlite3.OperationalError, OSError) as error:
         _note_ending(journal, session, f"stopped: {error}")
         if isinstance(error, StorageFailed) and not _out_of_space(error):
             raise

@@ -1,0 +1,136 @@
+"""What a fit is made from, whatever it was read from; several joined (pure)."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from pitchsweep.analysis.records import (
+    UNKNOWN_ORDER,
+    OrderTable,
+    RejectedSpot,
+)
+from pitchsweep.configs.bench_model import Bench
+from pitchsweep.configs.part_model import Part
+
+TURN_DEG = 360.0
+
+
+@dataclass(frozen=True)
+class FitInput:
+    """Spots with the bench and part they belong to; ``name`` says where from."""
+
+    name: str
+    table: OrderTable
+    bench: Bench
+    part: Part
+    coverage: float
+    rejected: tuple[RejectedSpot, ...] = ()
+    warnings: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class SpotPlace:
+    """One spot on its way into a table: step, angles, laser, place, covariance."""
+
+    step: int
+    stage_deg: float
+    mount_deg: float
+    laser: str
+    x_mm: float
+    y_mm: float
+    ux_mm: float
+    uy_mm: float
+    cxy_mm2: float
+
+
+def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> OrderTable:
+    """The rows as a table of unknown orders; every laser must be in ``laser_names``."""
+
+    def column(name: str) -> np.ndarray[tuple[int], np.dtype[np.float64]]:
+        return np.array([getattr(row, name) for row in rows], dtype=np.float64)
+
+    return OrderTable(
+        step=np.array([row.step for row in rows], dtype=np.int64),
+        stage_deg=column("stage_deg"),
+        mount_deg=column("mount_deg"),
+        laser=np.array([laser_names.index(row.laser) for row in rows], dtype=np.int64),
+        laser_names=laser_names,
+        order=np.full(len(rows), UNKNOWN_ORDER, dtype=np.int64),
+        x_mm=column("x_mm"),
+        y_mm=column("y_mm"),
+        ux_mm=column("ux_mm"),
+        uy_mm=column("uy_mm"),
+        cxy_mm2=column("cxy_mm2"),
+    )
+
+
+def joined(inputs: Sequence[FitInput]) -> FitInput:
+    """One input from several of the same bench and part.
+
+    Steps are numbered on; every input's mounts count as seatings of their own: they
+    are told apart by whole turns of ``mount_deg``, which change no angle. Raises
+    ValueError for an empty list or where bench or part differ.
+    """
+    if not inputs:
+        raise ValueError("nothing to fit")
+    first = inputs[0]
+    if len(inputs) == 1:
+        return first
+    for other in inputs[1:]:
+        if other.bench.model_copy(update={"twin": None}) != first.bench.model_copy(
+            update={"twin": None}
+        ):
+            raise ValueError(f"{other.name} and {first.name} are of different benches")
+        if other.part != first.part:
+            raise ValueError(f"{other.name} and {first.name} are of different parts")
+    tables, rejected = [], []
+    steps = 0
+    for turn, item in enumerate(inputs):
+        tables.append(_moved(item.table, steps, turn))
+        rejected += [_numbered_on(spot, steps) for spot in item.rejected]
+        steps += 1 + max(
+            int(item.table.step.max(initial=0)),
+            max((spot.step for spot in item.rejected), default=0),
+        )
+    return FitInput(
+        name=" + ".join(item.name for item in inputs),
+        table=_stacked(tables),
+        bench=first.bench,
+        part=first.part,
+        coverage=first.coverage,
+        rejected=tuple(rejected),
+        warnings=tuple(w for item in inputs for w in item.warnings),
+    )
+
+
+def _moved(table: OrderTable, steps: int, turn: int) -> OrderTable:
+    return OrderTable(
+        **{
+            **table.__dict__,
+            "step": table.step + steps,
+            "mount_deg": table.mount_deg + TURN_DEG * turn,
+        }
+    )
+
+
+def _numbered_on(spot: RejectedSpot, steps: int) -> RejectedSpot:
+    return RejectedSpot(
+        spot.step + steps, spot.x, spot.y, spot.unit, spot.reason, spot.detail
+    )
+
+
+def _stacked(tables: Sequence[OrderTable]) -> OrderTable:
+    names = tuple(dict.fromkeys(n for table in tables for n in table.laser_names))
+    columns: dict[str, object] = {"laser_names": names}
+    for name in tables[0].__dict__:
+        if name == "laser":
+            columns[name] = np.concatenate(
+                [
+                    np.array([names.index(n) for n in t.laser_names], np.int64)[t.laser]
+                    for t in tables
+                ]
+            )
+        elif name != "laser_names":
+            columns[name] = np.concatenate([getattr(t, name) for t in tables])
+    return OrderTable(**columns)  # type: ignore[arg-type]

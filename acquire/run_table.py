@@ -1,0 +1,148 @@
+"""A run's acknowledged spots as a fit input. This module acts (disk).
+
+Works from ``job.yaml``, ``run.db`` and ``frames/`` alone; a twin's folder is never
+looked into.
+"""
+
+from dataclasses import dataclass
+from pathlib import Path
+
+from pitchsweep.acquire.acquire_errors import RunRefused
+from pitchsweep.acquire.fit_input import FitInput, SpotPlace, order_table
+from pitchsweep.acquire.frame_store import FrameStore
+from pitchsweep.acquire.journal_file import open_journal
+from pitchsweep.acquire.journal_rows import FaultRow, GateRow, IntentRow, StepSpots
+from pitchsweep.acquire.resume import standing
+from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
+from pitchsweep.acquire.run_journal import RunJournal
+from pitchsweep.acquire.step_spots import spot_finder
+from pitchsweep.acquire.stored_spots import spots_of
+from pitchsweep.acquire.sweep_plan import plan_sweep
+from pitchsweep.analysis.analysis_errors import NoResult
+from pitchsweep.analysis.records import RejectedSpot, Rejection
+from pitchsweep.configs.fingerprint import fingerprint
+
+
+@dataclass(frozen=True)
+class KeptStep:
+    """An acknowledged step and its spots; ``frames`` are its light frame files."""
+
+    row: IntentRow
+    found: StepSpots
+    frames: tuple[tuple[str, str, float], ...]
+
+    @property
+    def stage_deg(self) -> float:
+        """Where the stage said it stood."""
+        read = self.row.readback_deg
+        return self.row.stage_deg if read is None else read
+
+
+@dataclass(frozen=True)
+class RunRecord:
+    """Everything a report needs of a run."""
+
+    folder: RunFolder
+    steps: tuple[KeptStep, ...]
+    planned: int
+    meta: dict[str, str]
+    sessions: list[tuple[int, str, str, str | None, str | None]]
+    gate: list[GateRow]
+    faults: list[FaultRow]
+
+
+def read_run(path: Path) -> RunRecord:
+    """The record of the run at ``path``.
+
+    Raises RunRefused, SettingsRefused, StorageFailed (a frame that must be searched
+    again is missing or changed).
+    """
+    folder = open_run_folder(path)
+    plan = plan_sweep(folder.job, fingerprint(folder.job))
+    with open_journal(folder.journal, read_only=True) as journal:
+        try:
+            now = standing(plan, journal.intents())
+        except ValueError as error:
+            raise RunRefused(path, str(error)) from None
+        store = FrameStore(folder.path)
+        find = spot_finder(folder.job.bench.camera)
+        steps = tuple(
+            KeptStep(row, spots_of(journal, store, row, find), _lights(journal, row))
+            for row in now.done.values()
+        )
+        return RunRecord(
+            folder=folder,
+            steps=steps,
+            planned=len(plan.steps),
+            meta=journal.meta(),
+            sessions=journal.sessions(),
+            gate=journal.gate_events(),
+            faults=journal.faults(),
+        )
+
+
+def input_from_run(record: RunRecord) -> FitInput:
+    """The run's spots as a fit input. Raises NoResult if no step is acknowledged."""
+    job = record.folder.job
+    if not record.steps:
+        raise NoResult(
+            f"{record.folder.path}: no step of this run is acknowledged yet",
+            remedy=f"go on with: pitchsweep sweep --resume {record.folder.path}",
+        )
+    warnings = []
+    if len(record.steps) < record.planned:
+        warnings.append(
+            f"the sweep is incomplete: {len(record.steps)} of {record.planned} steps"
+        )
+    warnings += [
+        f"fault met during the sweep: {fault.detail}" for fault in record.faults
+    ]
+    places = [place for step in record.steps for place in _places(step)]
+    return FitInput(
+        name=str(record.folder.path),
+        table=order_table(places, job.recipe.lasers),
+        bench=job.bench,
+        part=job.part,
+        coverage=job.recipe.coverage,
+        rejected=tuple(r for step in record.steps for r in _rejected(step)),
+        warnings=tuple(warnings),
+    )
+
+
+def _places(step: KeptStep) -> list[SpotPlace]:
+    return [
+        SpotPlace(
+            step=step.row.step,
+            stage_deg=step.stage_deg,
+            mount_deg=step.row.mount_deg,
+            laser=step.row.laser,
+            x_mm=spot.x_mm,
+            y_mm=spot.y_mm,
+            ux_mm=spot.ux_mm,
+            uy_mm=spot.uy_mm,
+            cxy_mm2=spot.cxy_mm2,
+        )
+        for spot in step.found.spots
+    ]
+
+
+def _rejected(step: KeptStep) -> list[RejectedSpot]:
+    return [
+        RejectedSpot(
+            step.row.step,
+            item.x,
+            item.y,
+            item.unit,
+            Rejection(item.reason),
+            item.detail,
+        )
+        for item in step.found.rejected
+    ]
+
+
+def _lights(journal: RunJournal, row: IntentRow) -> tuple[tuple[str, str, float], ...]:
+    return tuple(
+        (frame.file, frame.sha256, frame.exposure_ms)
+        for frame in journal.frames(row.intent)
+        if frame.kind == "light"
+    )
