@@ -4,6 +4,7 @@ import hashlib
 import hmac
 import json
 import os
+import time
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -21,7 +22,6 @@ from pitchsweep.drivers.serial_transport import open_serial
 from pitchsweep.drivers.twin.fault_schedule import Fault
 from pitchsweep.drivers.twin.truth import draw_truth
 from pitchsweep.drivers.twin_link import TwinAddress, TwinLink
-
 
 EXPOSURE = {"exposure_ms": 1.0, "label": dict(label(3).__dict__)}
 
@@ -200,3 +200,12 @@ def test_a_power_cut_loses_the_zero(tmp_path: Path) -> None:
         assert not twin.stage.where().homed
         twin.stage.home()
         assert twin.stage.move_to(4.0).angle_deg == pytest.approx(4.0)
+
+
+def test_at_real_speed_waits_sleep_and_time_passes_by_itself(tmp_path: Path) -> None:
+    with running_twin(tmp_path, speed="real") as twin:
+        bench_s, real_s = twin.world.now_s(), time.monotonic()
+        twin.world.wait(0.1)
+        real_passed_s = time.monotonic() - real_s
+        assert real_passed_s >= 0.1
+        assert twin.world.now_s() - bench_s >= 0.1
