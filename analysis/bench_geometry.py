@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from enum import IntEnum
 
 import numpy as np
+from numpy.typing import NDArray
 
 from pitchsweep.analysis.records import FloatArray
 
@@ -40,12 +41,17 @@ GRAZING = 1e-3
 
 @dataclass(frozen=True)
 class Landing:
-    """Where spots land: x, y (N,) mm, derivatives (N, 2, 14), valid (N,) bool."""
+    """Where spots land: x, y (N,) mm, derivatives (N, 2, 14), valid (N,) bool.
+
+    ``leaving`` (N,) is the cosine between the order and the part's normal, 0 where
+    the order does not leave.
+    """
 
     x_mm: FloatArray
     y_mm: FloatArray
     jacobian: FloatArray
-    valid: "np.ndarray[tuple[int, ...], np.dtype[np.bool_]]"
+    valid: NDArray[np.bool_]
+    leaving: FloatArray
 
 
 @dataclass(frozen=True)
@@ -58,7 +64,7 @@ class _Frame:
 
 
 def _dot(a: FloatArray, b: FloatArray) -> FloatArray:
-    return np.einsum("ij,ij->i", a, b)
+    return np.asarray(np.einsum("ij,ij->i", a, b))
 
 
 def _stack(x: FloatArray, y: FloatArray, z: FloatArray) -> FloatArray:
@@ -100,13 +106,30 @@ def order_direction(local: FloatArray) -> tuple[FloatArray, FloatArray]:
     Where the squared cosine is not positive the order does not leave and the
     direction is meaningless (finite all the same).
     """
-    frame = _part_frame(local)[0]
-    k = _beam(local)
-    kt = _dot(k, frame.g) + local[:, Local.Q]
-    kh = _dot(k, frame.h)
-    kn2 = 1.0 - kt**2 - kh**2
-    kn = np.sqrt(np.maximum(kn2, GRAZING**2))
-    return kt[:, None] * frame.g + kh[:, None] * frame.h + kn[:, None] * frame.n, kn2
+    trace = _trace(local)
+    return trace.out, trace.kn2
+
+
+@dataclass(frozen=True)
+class _Trace:
+    """One ray a spot, from the beam to the screen: everything the tangents need."""
+
+    k: FloatArray  # beam
+    frames: tuple[_Frame, _Frame, _Frame, _Frame]
+    kt: FloatArray
+    kh: FloatArray
+    kn: FloatArray
+    kn2: FloatArray
+    out: FloatArray
+    start: FloatArray  # where the beam crosses the plane of the stage axis
+    reach: FloatArray
+    facing: FloatArray
+    axes: FloatArray
+    axes_by: list[FloatArray]
+    towards: FloatArray
+    flight: FloatArray
+    hit: FloatArray  # from the screen origin
+    valid: NDArray[np.bool_]
 
 
 def _beam(local: FloatArray) -> FloatArray:
@@ -141,14 +164,9 @@ def _turn(angle: FloatArray, axis: int) -> tuple[FloatArray, FloatArray]:
     return turn, slope
 
 
-def landing(local: FloatArray) -> Landing:
-    """Reported screen position of spots with local quantities ``local`` (N, 14).
-
-    Invalid rows (order not leaving, or missing the screen plane) hold finite
-    numbers that mean nothing; ``valid`` tells them.
-    """
-    frame, by_incidence, by_azimuth, by_tilt = _part_frame(local)
-    k = _beam(local)
+def _trace(local: FloatArray) -> _Trace:
+    frames = _part_frame(local)
+    frame, k = frames[0], _beam(local)
     kt = _dot(k, frame.g) + local[:, Local.Q]
     kh = _dot(k, frame.h)
     kn2 = 1.0 - kt**2 - kh**2
@@ -158,84 +176,135 @@ def landing(local: FloatArray) -> Landing:
     start = _stack(local[:, Local.BEAM_X], local[:, Local.BEAM_Y], zero)
     facing = _dot(frame.n, k)
     reach = (local[:, Local.SURFACE] - _dot(frame.n, start)) / facing
-    origin = start + reach[:, None] * k
     axes, axes_by = _screen_axes(local)
-    ex, ey, ez = axes[:, 0], axes[:, 1], axes[:, 2]
-    centre = _stack(zero, zero, local[:, Local.DISTANCE])
-    towards = _dot(out, ez)
+    towards = _dot(out, axes[:, 2])
     valid = (kn2 > GRAZING**2) & (towards > GRAZING) & (facing < -GRAZING)
     towards = np.where(np.abs(towards) > GRAZING, towards, GRAZING)
-    flight = _dot(centre - origin, ez) / towards
-    hit = origin + flight[:, None] * out - centre
+    from_centre = start + reach[:, None] * k
+    from_centre[:, 2] -= local[:, Local.DISTANCE]
+    flight = -_dot(from_centre, axes[:, 2]) / towards
+    return _Trace(
+        k=k,
+        frames=frames,
+        kt=kt,
+        kh=kh,
+        kn=kn,
+        kn2=kn2,
+        out=out,
+        start=start,
+        reach=reach,
+        facing=facing,
+        axes=axes,
+        axes_by=axes_by,
+        towards=towards,
+        flight=flight,
+        hit=from_centre + flight[:, None] * out,
+        valid=valid,
+    )
 
+
+def landing(local: FloatArray) -> Landing:
+    """Reported screen position of spots with local quantities ``local`` (N, 14).
+
+    Invalid rows (order not leaving, or missing the screen plane) hold finite
+    numbers that mean nothing; ``valid`` tells them.
+    """
+    trace = _trace(local)
     jacobian = np.zeros((local.shape[0], 2, N_LOCAL))
+    _put_part_tangents(trace, jacobian)
+    _put_beam_tangents(trace, local, jacobian)
+    _put_screen_tangents(trace, jacobian)
+    return Landing(
+        x_mm=_dot(trace.hit, trace.axes[:, 0]) + local[:, Local.SCREEN_X],
+        y_mm=_dot(trace.hit, trace.axes[:, 1]) + local[:, Local.SCREEN_Y],
+        jacobian=jacobian,
+        valid=trace.valid,
+        leaving=np.sqrt(np.maximum(trace.kn2, 0.0)),
+    )
 
-    def put_ray(column: int, d_out: FloatArray, d_origin: FloatArray) -> None:
-        d_flight = -(_dot(d_origin, ez) + flight * _dot(d_out, ez)) / towards
-        d_hit = d_origin + flight[:, None] * d_out + d_flight[:, None] * out
-        jacobian[:, 0, column] = _dot(d_hit, ex)
-        jacobian[:, 1, column] = _dot(d_hit, ey)
 
-    def out_tangent(
-        d_kt: FloatArray, d_kh: FloatArray, d_frame: _Frame | None
-    ) -> FloatArray:
-        d_kn = -(kt * d_kt + kh * d_kh) / kn
-        moved = (
-            d_kt[:, None] * frame.g + d_kh[:, None] * frame.h + d_kn[:, None] * frame.n
-        )
-        if d_frame is not None:
-            moved = moved + (
-                kt[:, None] * d_frame.g
-                + kh[:, None] * d_frame.h
-                + kn[:, None] * d_frame.n
-            )
-        return moved
+def _put(trace: _Trace, jacobian: FloatArray, column: int, d_hit: FloatArray) -> None:
+    jacobian[:, 0, column] = _dot(d_hit, trace.axes[:, 0])
+    jacobian[:, 1, column] = _dot(d_hit, trace.axes[:, 1])
 
-    def origin_tangent(
-        d_n: FloatArray, d_k: FloatArray, d_start: FloatArray, d_s: float
-    ) -> FloatArray:
-        d_facing = _dot(d_n, k) + _dot(frame.n, d_k)
-        top = d_s - _dot(d_n, start) - _dot(frame.n, d_start)
-        d_reach = (top - reach * d_facing) / facing
-        return d_start + d_reach[:, None] * k + reach[:, None] * d_k
 
-    still = np.zeros_like(k)
-    put_ray(Local.Q, out_tangent(zero + 1.0, zero, None), still)
-    for column, d_frame in (
-        (Local.INCIDENCE, by_incidence),
-        (Local.AZIMUTH, by_azimuth),
-        (Local.TILT, by_tilt),
-    ):
-        d_out = out_tangent(_dot(k, d_frame.g), _dot(k, d_frame.h), d_frame)
-        put_ray(column, d_out, origin_tangent(d_frame.n, still, still, 0.0))
+def _hit_tangent(trace: _Trace, d_out: FloatArray, d_origin: FloatArray) -> FloatArray:
+    """How the hit moves when the ray's direction and origin do."""
+    ez = trace.axes[:, 2]
+    d_flight = -(_dot(d_origin, ez) + trace.flight * _dot(d_out, ez)) / trace.towards
+    moved = d_origin + trace.flight[:, None] * d_out + d_flight[:, None] * trace.out
+    return np.asarray(moved)
+
+
+def _out_tangent(
+    trace: _Trace, d_kt: FloatArray, d_kh: FloatArray, d_frame: _Frame | None
+) -> FloatArray:
+    """How the order's direction moves with its components and the part's frame."""
+    frame = trace.frames[0]
+    d_kn = -(trace.kt * d_kt + trace.kh * d_kh) / trace.kn
+    moved = d_kt[:, None] * frame.g + d_kh[:, None] * frame.h + d_kn[:, None] * frame.n
+    if d_frame is not None:
+        moved = moved + trace.kt[:, None] * d_frame.g + trace.kh[:, None] * d_frame.h
+        moved = moved + trace.kn[:, None] * d_frame.n
+    return np.asarray(moved)
+
+
+def _origin_tangent(
+    trace: _Trace,
+    d_n: FloatArray,
+    d_k: FloatArray,
+    d_start: FloatArray,
+    d_surface: float = 0.0,
+) -> FloatArray:
+    """How the point where the beam meets the part moves."""
+    n = trace.frames[0].n
+    d_facing = _dot(d_n, trace.k) + _dot(n, d_k)
+    top = d_surface - _dot(d_n, trace.start) - _dot(n, d_start)
+    d_reach = (top - trace.reach * d_facing) / trace.facing
+    moved = d_start + d_reach[:, None] * trace.k + trace.reach[:, None] * d_k
+    return np.asarray(moved)
+
+
+def _put_part_tangents(trace: _Trace, jacobian: FloatArray) -> None:
+    zero, still = np.zeros_like(trace.kt), np.zeros_like(trace.k)
+    d_out = _out_tangent(trace, zero + 1.0, zero, None)
+    _put(trace, jacobian, Local.Q, _hit_tangent(trace, d_out, still))
+    columns = (Local.INCIDENCE, Local.AZIMUTH, Local.TILT)
+    for column, d_frame in zip(columns, trace.frames[1:], strict=True):
+        d_kt, d_kh = _dot(trace.k, d_frame.g), _dot(trace.k, d_frame.h)
+        d_out = _out_tangent(trace, d_kt, d_kh, d_frame)
+        d_origin = _origin_tangent(trace, d_frame.n, still, still)
+        _put(trace, jacobian, column, _hit_tangent(trace, d_out, d_origin))
+    d_origin = _origin_tangent(trace, still, still, still, 1.0)
+    _put(trace, jacobian, Local.SURFACE, _hit_tangent(trace, still, d_origin))
+
+
+def _put_beam_tangents(trace: _Trace, local: FloatArray, jacobian: FloatArray) -> None:
+    still, frame = np.zeros_like(trace.k), trace.frames[0]
     e = local[:, Local.ELEVATION]
-    d_k = _stack(zero, np.cos(e), np.sin(e))
-    d_out = out_tangent(_dot(d_k, frame.g), _dot(d_k, frame.h), None)
-    put_ray(Local.ELEVATION, d_out, origin_tangent(still, d_k, still, 0.0))
+    d_k = _stack(np.zeros_like(e), np.cos(e), np.sin(e))
+    d_out = _out_tangent(trace, _dot(d_k, frame.g), _dot(d_k, frame.h), None)
+    d_origin = _origin_tangent(trace, still, d_k, still)
+    _put(trace, jacobian, Local.ELEVATION, _hit_tangent(trace, d_out, d_origin))
     for column, axis in ((Local.BEAM_X, 0), (Local.BEAM_Y, 1)):
         d_start = still.copy()
         d_start[:, axis] = 1.0
-        put_ray(column, still, origin_tangent(still, still, d_start, 0.0))
-    put_ray(Local.SURFACE, still, origin_tangent(still, still, still, 1.0))
+        d_origin = _origin_tangent(trace, still, still, d_start)
+        _put(trace, jacobian, column, _hit_tangent(trace, still, d_origin))
 
-    d_centre = _stack(zero, zero, zero + 1.0)
-    d_hit = (_dot(d_centre, ez) / towards)[:, None] * out - d_centre
-    jacobian[:, 0, Local.DISTANCE] = _dot(d_hit, ex)
-    jacobian[:, 1, Local.DISTANCE] = _dot(d_hit, ey)
-    for column, slope in zip(
-        (Local.SCREEN_TX, Local.SCREEN_TY, Local.SCREEN_TZ), axes_by, strict=True
-    ):
+
+def _put_screen_tangents(trace: _Trace, jacobian: FloatArray) -> None:
+    away = np.zeros_like(trace.k)
+    away[:, 2] = -1.0  # the hit is counted from the screen origin
+    still = np.zeros_like(trace.k)
+    _put(trace, jacobian, Local.DISTANCE, _hit_tangent(trace, still, away))
+    columns = (Local.SCREEN_TX, Local.SCREEN_TY, Local.SCREEN_TZ)
+    for column, slope in zip(columns, trace.axes_by, strict=True):
         # The plane turns about its own centre: only the component of the hit
         # along the turned normal moves the point along the ray.
-        d_flight = -_dot(hit, slope[:, 2]) / towards
-        d_hit = d_flight[:, None] * out
-        jacobian[:, 0, column] = _dot(d_hit, ex) + _dot(hit, slope[:, 0])
-        jacobian[:, 1, column] = _dot(d_hit, ey) + _dot(hit, slope[:, 1])
+        d_flight = -_dot(trace.hit, slope[:, 2]) / trace.towards
+        _put(trace, jacobian, column, d_flight[:, None] * trace.out)
+        jacobian[:, 0, column] += _dot(trace.hit, slope[:, 0])
+        jacobian[:, 1, column] += _dot(trace.hit, slope[:, 1])
     jacobian[:, 0, Local.SCREEN_X] = 1.0
     jacobian[:, 1, Local.SCREEN_Y] = 1.0
-    return Landing(
-        x_mm=_dot(hit, ex) + local[:, Local.SCREEN_X],
-        y_mm=_dot(hit, ey) + local[:, Local.SCREEN_Y],
-        jacobian=jacobian,
-        valid=valid,
-    )

@@ -65,7 +65,9 @@ def after_fit_budget(
 ) -> list[BudgetLine]:
     """Air index, temperature and expansion, in nm."""
     u_air = AirState(
-        bench.air.u_temperature_C, bench.air.u_pressure_hPa, bench.air.u_humidity_percent
+        bench.air.u_temperature_C,
+        bench.air.u_pressure_hPa,
+        bench.air.u_humidity_percent,
     )
     wavelength = bench.lasers[laser].vacuum_wavelength_nm
     index = air_index(wavelength, air)

@@ -18,7 +18,9 @@ LIMIT = 4.0
 
 
 def subsets(
-    table: OrderTable, order: IntArray, incidence_rad: "np.ndarray[tuple[int, ...], np.dtype[np.float64]]"
+    table: OrderTable,
+    order: IntArray,
+    incidence_rad: "np.ndarray[tuple[int, ...], np.dtype[np.float64]]",
 ) -> Iterator[tuple[str, NDArray[np.bool_]]]:
     """Named parts of the sweep: orders (each with the zero order), sides, halves."""
     zero = order == 0

@@ -131,14 +131,10 @@ def wrapped_deg(angle_deg: FloatArray) -> FloatArray:
     return (angle_deg + 180.0) % 360.0 - 180.0
 
 
-def parameter_set(
-    table: OrderTable, bench: Bench, part: Part
-) -> tuple[Parameter, ...]:
+def parameter_set(table: OrderTable, bench: Bench, part: Part) -> tuple[Parameter, ...]:
     """The table of unknowns: scope and prior of each, for these spots."""
     everything = np.ones(len(table))
-    unknowns = [
-        Parameter("pitch", "part", Source.PITCH, Kind.PITCH, np.inf, "1", 1.0)
-    ]
+    unknowns = [Parameter("pitch", "part", Source.PITCH, Kind.PITCH, np.inf, "1", 1.0)]
     for index, name in enumerate(table.laser_names):
         laser = bench.lasers[name]
         unknowns.append(

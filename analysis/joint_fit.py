@@ -16,8 +16,10 @@ from pitchsweep.analysis.records import FloatArray, IntArray
 from pitchsweep.analysis.screen_map import TERMS, map_basis
 
 MAX_ITERATIONS = 40
-CONVERGED = 1e-9
-"""A step is the last when every parameter moves less than this many posterior u."""
+SETTLED = 1e-14
+"""The last step promised to lower the sum of squares by less than this, that is, it
+moved no combination of unknowns by more than the root of it, in its own u."""
+ROUGHLY_SETTLED = 1e-5
 
 
 @dataclass(frozen=True)
@@ -30,13 +32,17 @@ class FitState:
 
 @dataclass(frozen=True)
 class Prediction:
-    """Model at a state: positions (N,), derivatives (N, 2, P) and by the step error."""
+    """Model at a state: positions (N,), derivatives (N, 2, P) and by the step error.
+
+    ``valid`` and ``leaving`` as in bench_geometry.Landing.
+    """
 
     x_mm: FloatArray
     y_mm: FloatArray
     jacobian: FloatArray
     by_step: FloatArray
     valid: NDArray[np.bool_]
+    leaving: FloatArray
 
 
 @dataclass(frozen=True)
@@ -45,7 +51,8 @@ class JointFit:
 
     ``residual`` (N, 2) whitened, measured minus fitted; ``used`` (N,) which spots
     carried weight; ``step_pull`` (P, S) covariance of the parameters with each step's
-    error; ``step_variance`` (S,) variance of the step errors; ``objective`` the sum of squares with priors.
+    error; ``step_variance`` (S,) variance of the step errors; ``objective`` the
+    sum of squares with priors.
     """
 
     state: FitState
@@ -121,6 +128,7 @@ def predict(problem: FitProblem, order: IntArray, state: FitState) -> Prediction
         jacobian=jacobian,
         by_step=slopes[:, :, Local.INCIDENCE] * problem.direction,
         valid=there.valid,
+        leaving=there.leaving,
     )
 
 
@@ -157,8 +165,16 @@ def _prior_weight(problem: FitProblem) -> FloatArray:
 def whitened(problem: FitProblem, vectors: FloatArray) -> FloatArray:
     """Whitened copies of (N, 2) or (N, 2, K) screen vectors."""
     if vectors.ndim == 2:
-        return np.einsum("nij,nj->ni", problem.whitener, vectors)
-    return np.matmul(problem.whitener, vectors)
+        return np.asarray(np.einsum("nij,nj->ni", problem.whitener, vectors))
+    return np.asarray(np.matmul(problem.whitener, vectors))
+
+
+def distances_2(problem: FitProblem, order: IntArray, state: FitState) -> FloatArray:
+    """Squared whitened distances (N,) of the spots from their orders at a state."""
+    there = predict(problem, order, state)
+    measured = np.stack([problem.table.x_mm, problem.table.y_mm], axis=1)
+    off = whitened(problem, measured - np.stack([there.x_mm, there.y_mm], axis=1))
+    return np.asarray(np.sum(off**2, axis=1))
 
 
 def _normal(
@@ -166,9 +182,7 @@ def _normal(
 ) -> _Normal:
     there = predict(problem, order, state)
     measured = np.stack([problem.table.x_mm, problem.table.y_mm], axis=1)
-    residual = whitened(
-        problem, measured - np.stack([there.x_mm, there.y_mm], axis=1)
-    )
+    residual = whitened(problem, measured - np.stack([there.x_mm, there.y_mm], axis=1))
     used = there.valid & (weight > 0.0)
     root = np.sqrt(np.where(used, weight, 0.0))[:, None]
     jac = whitened(problem, there.jacobian) * root[:, :, None]
@@ -189,7 +203,7 @@ def _normal(
     return _Normal(
         dense=flat.T @ flat,
         border=border.T,
-        diagonal=diagonal,
+        diagonal=np.asarray(diagonal, dtype=np.float64),
         right=flat.T @ res.reshape(-1) - prior * state.values,
         right_step=right_step - step_weight * state.step_error_rad,
         residual=residual,
@@ -231,13 +245,14 @@ def solve_joint_fit(
     order: IntArray,
     weight: FloatArray,
     start: FitState | None = None,
+    settled: float = SETTLED,
 ) -> JointFit:
     """The minimum over parameters and step errors for given orders and weights.
 
     ``order`` (N,) diffraction orders; ``weight`` (N,) multiplies each spot's squared
     residual, 0 leaves it out. Spots whose order does not leave at the trial state are
-    left out of that iteration and come back. Raises numpy.linalg.LinAlgError when
-    the information is singular.
+    left out of that iteration and come back. ``settled``: see SETTLED. Raises
+    numpy.linalg.LinAlgError when the information is singular.
     """
     state = start or initial_state(problem)
     prior = _prior_weight(problem)
@@ -246,22 +261,47 @@ def solve_joint_fit(
     while iterations < MAX_ITERATIONS and not converged:
         iterations += 1
         move, step_move = _solve(normal, prior, damping)
+        gain = float(move @ normal.right + step_move @ normal.right_step)
         trial = FitState(state.values + move, state.step_error_rad + step_move)
         candidate = _normal(problem, order, trial, weight)
-        same = bool(np.array_equal(candidate.used, normal.used))
-        better = candidate.objective <= normal.objective * (1.0 + 1e-12)
-        if not (better or not same) and damping < 1e6:
-            small = _scaled_size(normal, prior, move)
-            if small < 1e-6:
-                converged = True
-                continue
+        if not _no_worse(problem, state, normal, trial, candidate, weight):
+            # Rounding alone may keep the last digits from going down any further.
+            converged = gain < 1e-6
             damping = max(10.0 * damping, 1e-3)
             continue
-        size = _scaled_size(normal, prior, move)
         state, normal = trial, candidate
         damping = damping / 10.0 if damping > 1e-6 else 0.0
-        converged = size < CONVERGED and damping == 0.0
+        converged = gain < settled and damping == 0.0
     return _finish(problem, order, state, normal, prior, iterations, converged)
+
+
+LOST_SHARE = 0.05
+"""A step that makes more than this share of the spots evanescent is too long."""
+
+
+def _no_worse(
+    problem: FitProblem,
+    state: FitState,
+    normal: _Normal,
+    trial: FitState,
+    candidate: _Normal,
+    weight: FloatArray,
+) -> bool:
+    """Whether a trial lowers the sum of squares over the spots both states have.
+
+    Losing spots lowers a plain sum; the common ones alone tell.
+    """
+    both = normal.used & candidate.used
+    if both.sum() < (1.0 - LOST_SHARE) * normal.used.sum():
+        return False
+    shared = weight * both
+
+    def objective(at: FitState, there: _Normal) -> float:
+        prior = float(np.sum(_prior_weight(problem) * at.values**2))
+        steps = float(np.sum(at.step_error_rad**2)) / problem.u_step_rad**2
+        return prior + steps + float(shared @ np.sum(there.residual**2, axis=1))
+
+    return objective(trial, candidate) <= objective(state, normal) * (1.0 + 1e-12)
 
 
 def one_step(
@@ -274,11 +314,6 @@ def one_step(
     scaled_border = normal.border / normal.diagonal
     information = normal.dense + np.diag(prior) - scaled_border @ normal.border.T
     return move, _inverse(information)
-
-
-def _scaled_size(normal: _Normal, prior: FloatArray, move: FloatArray) -> float:
-    """Largest move of any parameter in units of its information-scaled width."""
-    return float(np.max(np.abs(move) * np.sqrt(np.diag(normal.dense) + prior)))
 
 
 def _finish(

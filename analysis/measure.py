@@ -168,7 +168,8 @@ def _with_honest_scatter(
             "share of the uncertainty is enlarged by that"
         )
         problem = rescaled(problem, factor)
-        fit = solve_joint_fit(problem, clean.order, clean.used * 1.0, fit.state)
+        weight = clean.used.astype(np.float64)
+        fit = solve_joint_fit(problem, clean.order, weight, fit.state)
     return problem, fit, scatter, warnings
 
 

@@ -23,9 +23,14 @@ from pitchsweep.analysis.records import (
 
 GATE_2 = 30.0
 """Squared distance beyond which a spot is no order (2 degrees of freedom: 3e-7)."""
+FIRST_GATE_2 = 16.0
+"""The same before any fit, when a wrong order costs more than a spot (3e-4)."""
 CLEARLY_SECOND_2 = 30.0
 """A second order closer than this makes the spot ambiguous."""
 FAR_2 = 1e6
+NEAR_GRAZING = 0.05
+"""Orders leaving closer to the surface than this cosine (87 deg) are not used: there
+the place on the screen bends too sharply for a linear uncertainty."""
 
 
 @dataclass(frozen=True)
@@ -70,11 +75,24 @@ def assign_orders(
     given = problem.table.order != UNKNOWN_ORDER
     for row, order in enumerate(orders):
         distance_2[row, given & (problem.table.order != order)] = FAR_2
-    return _choose(problem, np.array(orders, dtype=np.int64), distance_2)
+    gate_2 = FIRST_GATE_2 if state is None else GATE_2
+    found = _choose(problem, np.array(orders, dtype=np.int64), distance_2, gate_2)
+    return _without_grazing(problem, found, at)
+
+
+def _without_grazing(
+    problem: FitProblem, found: Assignment, state: FitState
+) -> Assignment:
+    leaving = predict(problem, found.order, state).leaving
+    grazing = found.assigned & (leaving < NEAR_GRAZING)
+    reasons = dict(found.reasons)
+    for index in np.flatnonzero(grazing):
+        reasons[int(index)] = Rejection.GRAZING
+    return replace(found, assigned=found.assigned & ~grazing, reasons=reasons)
 
 
 def _choose(
-    problem: FitProblem, orders: IntArray, distance_2: FloatArray
+    problem: FitProblem, orders: IntArray, distance_2: FloatArray, gate_2: float
 ) -> Assignment:
     ranked = np.argsort(distance_2, axis=0, kind="stable")
     everyone = np.arange(distance_2.shape[1])
@@ -82,15 +100,15 @@ def _choose(
     second = distance_2[ranked[1], everyone] if len(orders) > 1 else best + FAR_2
     order = orders[ranked[0]]
     reasons: dict[int, Rejection] = {}
-    assigned = best < GATE_2
-    for index in np.flatnonzero(~assigned):
-        reasons[int(index)] = Rejection.NO_ORDER
-    for index in np.flatnonzero(assigned & (second < CLEARLY_SECOND_2)):
-        assigned[index] = False
-        reasons[int(index)] = Rejection.TWO_ORDERS
-    for index in _second_best(problem.step_group, order, best, assigned):
-        assigned[index] = False
-        reasons[index] = Rejection.SECOND_BEST
+    assigned = best < gate_2
+    for row in np.flatnonzero(~assigned).tolist():
+        reasons[row] = Rejection.NO_ORDER
+    for row in np.flatnonzero(assigned & (second < CLEARLY_SECOND_2)).tolist():
+        assigned[row] = False
+        reasons[row] = Rejection.TWO_ORDERS
+    for row in _second_best(problem.step_group, order, best, assigned):
+        assigned[row] = False
+        reasons[row] = Rejection.SECOND_BEST
     return Assignment(order, assigned, best, reasons)
 
 
@@ -141,6 +159,17 @@ def _distance_2(
     solved = np.linalg.solve(spread, off[:, :, None])[:, :, 0]
     distance_2 = np.sum(off * solved, axis=1)
     return np.where(there.valid, np.minimum(distance_2, FAR_2), FAR_2)
+
+
+def lowest_orders(found: Assignment) -> Assignment:
+    """Only the zero order and the lowest other order of an assignment.
+
+    An error of the nominal pitch moves order m by m times as much: the lowest are
+    the safest to start from.
+    """
+    others = np.abs(found.order[found.assigned & (found.order != 0)])
+    lowest = int(others.min(initial=2**31))
+    return replace(found, assigned=found.assigned & (np.abs(found.order) <= lowest))
 
 
 def mirrored(table: OrderTable) -> OrderTable:

@@ -32,7 +32,7 @@ class Rejection(StrEnum):
     SATURATED = "saturated-in-every-exposure"
     EDGE = "cut-by-frame-edge"
     FIT_FAILED = "spot-fit-did-not-converge"
-    EVANESCENT = "order-not-leaving-at-this-angle"
+    GRAZING = "order-too-near-grazing"
 
 
 @dataclass(frozen=True)
@@ -70,12 +70,18 @@ class RejectedSpot:
 
 @dataclass(frozen=True)
 class SpotSearch:
-    """What one step's frames gave: accepted spots and refused candidates."""
+    """What one step's frames gave: accepted spots and refused candidates.
+
+    ``speckle_contrast`` and ``grain_fwhm_px`` are the speckle that the stated
+    covariances allow for (contrast 0: none seen).
+    """
 
     spots: tuple[Spot, ...]
     rejected: tuple[RejectedSpot, ...]
     background_dn: float
     noise_dn: float
+    speckle_contrast: float = 0.0
+    grain_fwhm_px: float = 0.0
 
 
 @dataclass(frozen=True)

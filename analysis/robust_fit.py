@@ -1,5 +1,6 @@
 """From an order table to a clean joint fit: assign, down-weight, reject, repeat."""
 
+import math
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -7,11 +8,19 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.analysis_errors import InputRefused, NoResult
 from pitchsweep.analysis.fit_parameters import FitProblem
-from pitchsweep.analysis.joint_fit import FitState, JointFit, solve_joint_fit
+from pitchsweep.analysis.joint_fit import (
+    ROUGHLY_SETTLED,
+    FitState,
+    JointFit,
+    distances_2,
+    initial_state,
+    solve_joint_fit,
+)
 from pitchsweep.analysis.order_tracking import (
     Assignment,
     assign_orders,
     looks_mirrored,
+    lowest_orders,
 )
 from pitchsweep.analysis.records import FloatArray, IntArray, Rejection
 
@@ -19,7 +28,7 @@ GATE = 5.0
 """Spots further off their fitted place than this many (scaled) u are left out."""
 SOFT = 3.0
 ROUNDS = 6
-MEDIAN_2 = 2.0 * np.log(2.0)
+MEDIAN_2 = 2.0 * math.log(2.0)
 """Median of chi-squared with two degrees of freedom."""
 
 
@@ -47,7 +56,7 @@ def clean_fit(problem: FitProblem, pitch_u: float) -> CleanFit:
         )
     found = assign_orders(problem, pitch_u=pitch_u)
     require_orders(problem, found.order, found.assigned)
-    fit, scale_2 = _soft_fit(problem, found)
+    fit, scale_2 = _soft_fit(problem, lowest_orders(found), initial_state(problem))
     for _ in range(ROUNDS):
         previous = found
         found = assign_orders(
@@ -96,25 +105,31 @@ def _scale_2(distance_2: FloatArray, used: NDArray[np.bool_]) -> float:
     """Robust variance factor of the readings from the median residual, at least 1."""
     if used.sum() < 8:
         return 1.0
-    return max(1.0, float(np.median(distance_2[used])) / MEDIAN_2)
+    return max(1.0, float(np.median(distance_2[used]) / MEDIAN_2))
 
 
 def _soft_fit(
-    problem: FitProblem, found: Assignment, start: FitState | None = None
+    problem: FitProblem, found: Assignment, start: FitState
 ) -> tuple[JointFit, float]:
     """Fit with weights that fade with distance, so that wild spots do not steer."""
-    weight = found.assigned.astype(np.float64)
-    fit = solve_joint_fit(problem, found.order, weight, start)
+    distance_2 = distances_2(problem, found.order, start)
+    weight, _ = _faded(distance_2, found.assigned)
+    fit = solve_joint_fit(problem, found.order, weight, start, ROUGHLY_SETTLED)
     scale_2 = 1.0
     for _ in range(ROUNDS):
-        distance_2 = residual_2(fit)
-        scale_2 = _scale_2(distance_2, found.assigned & fit.used)
-        faded = found.assigned / (1.0 + distance_2 / (SOFT**2 * scale_2))
-        if np.max(np.abs(faded - weight), initial=0.0) < 1e-3:
+        faded, scale_2 = _faded(residual_2(fit), found.assigned & fit.used)
+        faded = np.where(fit.used, faded, found.assigned * 1.0)
+        if np.max(np.abs(faded - weight), initial=0.0) < 0.02:
             break
-        weight = np.asarray(faded, dtype=np.float64)
-        fit = solve_joint_fit(problem, found.order, weight, fit.state)
+        weight = faded
+        fit = solve_joint_fit(problem, found.order, weight, fit.state, ROUGHLY_SETTLED)
     return fit, scale_2
+
+
+def _faded(distance_2: FloatArray, used: NDArray[np.bool_]) -> tuple[FloatArray, float]:
+    """Weights (N,) fading with the distance, and the variance factor they rest on."""
+    scale_2 = _scale_2(distance_2, used)
+    return np.asarray(used / (1.0 + distance_2 / (SOFT**2 * scale_2))), scale_2
 
 
 def _gated(problem: FitProblem, found: Assignment, fit: JointFit) -> CleanFit:
@@ -128,12 +143,12 @@ def _gated(problem: FitProblem, found: Assignment, fit: JointFit) -> CleanFit:
             break
         keep = inside
         require_orders(problem, found.order, keep)
-        fit = solve_joint_fit(problem, found.order, keep * 1.0, fit.state)
+        fit = solve_joint_fit(problem, found.order, keep.astype(np.float64), fit.state)
     reasons = dict(found.reasons)
     for index in np.flatnonzero(found.assigned & ~keep):
         reasons[int(index)] = Rejection.OFF_TRACK
     for index in np.flatnonzero(keep & ~fit.used):
-        reasons[int(index)] = Rejection.EVANESCENT
+        reasons[int(index)] = Rejection.GRAZING
     return CleanFit(fit, found.order, fit.used & keep, reasons)
 
 

@@ -35,12 +35,12 @@ def map_basis(
 
 
 def _products(tx: FloatArray, ty: FloatArray) -> FloatArray:
-    return np.einsum("ni,nj->nij", tx, ty).reshape(tx.shape[0], TERMS)
+    return np.asarray(tx[:, :, None] * ty[:, None, :]).reshape(tx.shape[0], TERMS)
 
 
 def _chebyshev(t: FloatArray, degree: int) -> tuple[FloatArray, FloatArray]:
     """T_0..T_degree and derivatives at t (N,), each (N, degree + 1)."""
-    value = np.polynomial.chebyshev.chebvander(t, degree)
+    value = np.asarray(np.polynomial.chebyshev.chebvander(t, degree), dtype=np.float64)
     slope = np.zeros_like(value)
     u = np.ones_like(value)  # Chebyshev polynomials of the second kind
     if degree >= 1:
