@@ -4,6 +4,7 @@
 everywhere.
 """
 
+import contextlib
 import heapq
 import os
 import select
@@ -29,6 +30,7 @@ class PtyPort:
         self._firmware = firmware
         self._near_fd, self._far_fd = pty.openpty()
         tty.setraw(self._far_fd)
+        os.set_blocking(self._near_fd, False)
         self._wake_read_fd, self._wake_write_fd = os.pipe()
         self._outgoing: list[tuple[float, int, bytes]] = []
         self._count = 0
@@ -68,7 +70,10 @@ class PtyPort:
 
     def _send_due(self) -> None:
         while self._outgoing and self._outgoing[0][0] <= time.monotonic():
-            os.write(self._near_fd, heapq.heappop(self._outgoing)[2])
+            data = heapq.heappop(self._outgoing)[2]
+            with contextlib.suppress(BlockingIOError):
+                # What nobody reads is lost; waiting here would hold up the light.
+                os.write(self._near_fd, data)
 
     def _sleep_s(self) -> float:
         due_s = self._firmware.due_in_s()

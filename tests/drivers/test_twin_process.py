@@ -148,6 +148,19 @@ def test_the_light_lapses_within_250_ms_of_the_last_keep_alive(twin: Clients) ->
     assert 0.0 < off["monotonic_s"] - on["monotonic_s"] <= 0.25
 
 
+def test_a_line_that_nobody_reads_does_not_hold_up_the_light(twin: Clients) -> None:
+    transport = twin.unit._line._transport
+    for _ in range(300):
+        transport.send(b"N1 KEEP\n" + b"N1 STATE\n" * 4)
+    directory = twin.handle.directory
+    limit_s = time.monotonic() + 5.0
+    while unit_log(directory)[-1]["value"] != "off":
+        assert time.monotonic() < limit_s
+    while transport.receive(0.05):
+        pass
+    assert unit_log(directory)[-1]["why"] == "keep-alive ran out"
+
+
 def test_questions_that_make_no_sense_are_refused_in_words(twin: Clients) -> None:
     link = TwinLink(twin.handle.address)
     for ask, fields in (
