@@ -1,0 +1,73 @@
+"""The model of the fit: signs of the lab frame, and derivatives against differences."""
+
+import numpy as np
+import pytest
+
+from pitchsweep.analysis.bench_geometry import N_LOCAL, Local, landing
+
+
+def local_rows(n: int = 60, seed: int = 3) -> np.ndarray:
+    rng = np.random.default_rng(seed)
+    local = np.zeros((n, N_LOCAL))
+    local[:, Local.Q] = rng.choice([-2, -1, 0, 1, 2], n) * 0.5
+    local[:, Local.INCIDENCE] = rng.uniform(-0.6, 0.6, n)
+    for column in (Local.AZIMUTH, Local.TILT, Local.ELEVATION):
+        local[:, column] = rng.normal(0.0, 0.03, n)
+    for column in (Local.BEAM_X, Local.BEAM_Y, Local.SURFACE):
+        local[:, column] = rng.normal(0.0, 1.0, n)
+    local[:, Local.DISTANCE] = rng.normal(250.0, 5.0, n)
+    for column in (Local.SCREEN_TX, Local.SCREEN_TY, Local.SCREEN_TZ):
+        local[:, column] = rng.normal(0.0, 0.05, n)
+    local[:, Local.SCREEN_X] = rng.normal(0.0, 3.0, n)
+    local[:, Local.SCREEN_Y] = rng.normal(0.0, 3.0, n)
+    return local
+
+
+def plain(incidence_deg: float, q: float) -> np.ndarray:
+    local = np.zeros((1, N_LOCAL))
+    local[0, Local.INCIDENCE] = np.deg2rad(incidence_deg)
+    local[0, Local.Q] = q
+    local[0, Local.DISTANCE] = 250.0
+    return local
+
+
+@pytest.mark.parametrize("column", list(Local))
+def test_derivatives_equal_central_differences(column: Local) -> None:
+    local = local_rows()
+    there = landing(local)
+    step = 1e-5 if column is Local.DISTANCE else 1e-6
+    up, down = local.copy(), local.copy()
+    up[:, column] += step
+    down[:, column] -= step
+    ahead, behind = landing(up), landing(down)
+    slope = np.stack([ahead.x_mm - behind.x_mm, ahead.y_mm - behind.y_mm], axis=1)
+    slope /= 2.0 * step
+    keep = there.valid
+    assert keep.sum() > 40
+    np.testing.assert_allclose(
+        there.jacobian[keep][:, :, column], slope[keep], rtol=1e-6, atol=2e-5
+    )
+
+
+def test_zero_order_moves_to_plus_x_by_twice_the_angle() -> None:
+    there = landing(plain(10.0, 0.0))
+    assert there.x_mm[0] == pytest.approx(250.0 * np.tan(np.deg2rad(20.0)), abs=1e-9)
+    assert there.y_mm[0] == pytest.approx(0.0, abs=1e-12)
+
+
+def test_positive_orders_lie_on_the_plus_x_side_of_the_zero_order() -> None:
+    zero, plus = landing(plain(5.0, 0.0)), landing(plain(5.0, 0.4))
+    assert plus.x_mm[0] > zero.x_mm[0]
+
+
+def test_littrow_order_returns_along_the_beam() -> None:
+    q = 0.7
+    littrow = np.rad2deg(np.arcsin(q / 2.0))
+    assert landing(plain(littrow, -q)).x_mm[0] == pytest.approx(0.0, abs=1e-9)
+
+
+def test_order_that_does_not_leave_is_told_and_finite() -> None:
+    there = landing(plain(30.0, 0.8))
+    assert not there.valid[0]
+    assert there.leaving[0] == 0.0
+    assert np.isfinite(there.x_mm[0]) and np.isfinite(there.jacobian).all()
