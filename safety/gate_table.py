@@ -88,7 +88,6 @@ _NO_TRIP_READY = Move(GateState.READY, "there is no trip to acknowledge")
 _NO_TRIP_LIT = Move(GateState.LIT, "there is no trip to acknowledge")
 _ARMED_READY = Move(GateState.READY, "the gate is armed already")
 _ARMED_LIT = Move(GateState.LIT, "the gate is armed and lit already")
-_BEGUN_READY = Move(GateState.READY, "a run is declared as resumed before arming")
 _LATCHED = Move(GateState.TRIPPED, "tripped: acknowledge at the bench first")
 _LATCHED_TWICE = Move(GateState.TRIPPED, "tripped already")
 _OVER = Move(GateState.ENDED, "this guard has ended")
@@ -126,7 +125,7 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.READY, Event.LIGHT_REQUESTED): _LIT,
         (GateState.READY, Event.DARK_REQUESTED): Move(GateState.READY, "dark already"),
         (GateState.READY, Event.ACKNOWLEDGED): _NO_TRIP_READY,
-        (GateState.READY, Event.RESUMED): _BEGUN_READY,
+        (GateState.READY, Event.RESUMED): _TRIP,
         (GateState.READY, Event.END_REQUESTED): _END,
         (GateState.READY, Event.HEARTBEAT_STALE): _TRIP,
         (GateState.READY, Event.INTERLOCK_OPEN): _TRIP,

@@ -7,11 +7,7 @@ sinks are handed in. It is an administrative control and no safety function.
 
 from collections.abc import Callable
 
-from pitchsweep.drivers.driver_errors import (
-    AnsweredNonsense,
-    DeviceRefused,
-    DriverError,
-)
+from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.drivers.emission_client import UnitState
 from pitchsweep.safety.ack_evidence import (
     Evidence,
@@ -25,11 +21,11 @@ from pitchsweep.safety.gate_table import Event, GateState
 from pitchsweep.safety.guard_checks import Beat, Fault, UnitReading, View, first_fault
 from pitchsweep.safety.guard_config import GuardConfig
 from pitchsweep.safety.guard_messages import Command, Request
-from pitchsweep.safety.guard_world import GuardWorld, Reply, UnitLine, unit_fault
+from pitchsweep.safety.guard_world import GuardWorld, Reply, UnitLine
 from pitchsweep.safety.ledger import utc_text
 from pitchsweep.safety.light_time import LightMeter, StepLight
-from pitchsweep.safety.permit import answers_challenge
 from pitchsweep.safety.safety_errors import GateTableGap
+from pitchsweep.safety.unit_checks import find_no_proof, find_stranger, unit_fault
 
 KEEPS_PER_LIFE = 5
 """Keep-alive messages sent within one keep-alive time of the unit."""
@@ -82,7 +78,7 @@ class Guard:
         if command.request is Request.LIGHT:
             return self._light()
         if command.request is Request.DARK:
-            return self._simple(Event.DARK_REQUESTED, "asked by the controller")
+            return self._dark()
         if command.request is Request.TRIP:
             return self._simple(Event.CONTROLLER_FAULT, command.words)
         if command.request is Request.STOP:
@@ -154,6 +150,11 @@ class Guard:
             self._gate.emission, "" if self._gate.emission else self._last_reason
         )
 
+    def _dark(self) -> Reply:
+        if not self._gate.emission:
+            self._darken()
+        return self._simple(Event.DARK_REQUESTED, "asked by the controller")
+
     def _switch_on(self, view: View) -> None:
         assert view.beat is not None and view.beat.step is not None and view.unit
         self._lit_step = view.beat.step
@@ -181,8 +182,12 @@ class Guard:
         outcome = self._gate.apply(event)
         self._last_reason = reason or outcome.refusal
         if outcome.moved and outcome.state is GateState.TRIPPED:
-            self._evidence = Evidence()
+            self._evidence = self._evidence_at_trip()
         self._explain(outcome.was, event)
+
+    def _evidence_at_trip(self) -> Evidence:
+        says = None if self._reading is None else self._reading.says
+        return Evidence() if says is None else observe(Evidence(), says)
 
     def _explain(self, was: GateState, event: Event) -> None:
         now_s, state = self._world.now(), self.state
@@ -240,25 +245,10 @@ class Guard:
         return None
 
     def _check_identity(self) -> Fault | None:
-        says, wanted = self._unit.identify(), self._config.unit.identity
-        if says == wanted:
-            return None
-        return Fault(
-            Event.UNIT_STRANGE, f"the unit is '{says}', the bench file says '{wanted}'"
-        )
+        return find_stranger(self._unit, self._config.unit.identity)
 
     def _check_proof(self) -> Fault | None:
-        nonce = self._world.nonce()
-        try:
-            answer = self._unit.prove(nonce)
-        except (DeviceRefused, AnsweredNonsense) as error:
-            return Fault(Event.PROOF_FAILED, f"no proof of the twin: {error}")
-        if answers_challenge(self._config.permit, nonce, answer):
-            return None
-        return Fault(
-            Event.PROOF_FAILED,
-            "the unit does not know this rehearsal's key: not the twin of this run",
-        )
+        return find_no_proof(self._unit, self._config.permit, self._world.nonce())
 
     def _took(self, asked_s: float, says: UnitState) -> None:
         self._reading = UnitReading(asked_s, says)
@@ -279,8 +269,10 @@ class Guard:
         """Asks for dark; without an answer the unit's own keep-alive ends the light."""
         asked_s = self._world.now()
         try:
-            self._reading = UnitReading(asked_s, self._unit.dark())
-        except (DriverError, KeyError, TypeError, ValueError):
+            self._took(asked_s, self._unit.dark())
+        except Exception:
+            # Whatever failed, the state must still move to dark; the next look at the
+            # unit names what is wrong with it.
             self._reading = None
 
     def _view(self) -> View:
@@ -299,4 +291,5 @@ class Guard:
             lit_lapses=self._lit_lapses,
             dark_since_s=self._dark_since_s,
             keep_alive_s=self._config.unit.keep_alive_ms / 1000.0,
+            has_shutter=self._config.unit.has_shutter,
         )

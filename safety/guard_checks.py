@@ -65,6 +65,7 @@ class View:
     lit_lapses: int
     dark_since_s: float
     keep_alive_s: float
+    has_shutter: bool
 
 
 @dataclass(frozen=True)
@@ -174,7 +175,7 @@ def light_is_off(view: View) -> Fault | None:
     if view.unit is None:
         return None
     says = view.unit.says
-    if not (says.light_on or says.shutter_open):
+    if not (says.light_on or (view.has_shutter and says.shutter_open)):
         return None
     since_s = view.unit.at_s - view.dark_since_s
     if 0.0 <= since_s <= view.keep_alive_s:

@@ -12,7 +12,6 @@ import threading
 import time
 from collections.abc import Callable, Mapping
 from contextlib import suppress
-from dataclasses import dataclass
 from types import TracebackType
 from typing import IO, Self
 
@@ -22,23 +21,13 @@ from pitchsweep.safety.gate_table import GateState
 from pitchsweep.safety.guard_config import GuardConfig, config_as_mapping
 from pitchsweep.safety.ledger_chain import canonical_json
 from pitchsweep.safety.safety_errors import GateRefused, GateTripped, GuardLost
+from pitchsweep.safety.stage_report import StageReport, beat_fields
 
 BEAT_PERIOD_S = 0.05
 REPLY_LIMIT_S = 3.0
 START_LIMIT_S = 10.0
 EXIT_DEVICE = 4
 GUARD_COMMAND = (sys.executable, "-m", "pitchsweep.safety.guard_process")
-
-
-@dataclass(frozen=True)
-class StageReport:
-    """What the controller knows of the stage; ``read_at_s`` on its monotonic clock."""
-
-    step: int
-    commanded_deg: float
-    readback_deg: float
-    read_at_s: float
-    turning: bool
 
 
 class GuardClient:
@@ -113,7 +102,10 @@ class GuardClient:
 
     def dark(self) -> None:
         """Asks for dark; returns when the guard has asked the unit."""
-        self._ask_or_raise("dark")
+        if self.lost.is_set():
+            self._raise_if_stopped()
+        self._ask("dark")
+        self._raise_if_stopped()
 
     def trip(self, reason: str) -> None:
         """Trips the gate for a fault that the controller saw."""
@@ -129,21 +121,34 @@ class GuardClient:
 
     def stop(self) -> None:
         """Dark, and the guard ends; harmless when it has ended already."""
-        if self._process.poll() is None and not self.lost.is_set():
-            self._ending.set()
-            self._send({"command": "stop"}, wait_s=0.5)
         self._ending.set()
+        self._send({"command": "stop"}, wait_s=0.5)
+        self._close_stdin()
         try:
             self._process.wait(REPLY_LIMIT_S)
         except subprocess.TimeoutExpired:
             self._process.kill()
             self._process.wait()
         for thread in (self._beater, self._reader):
-            thread.join(REPLY_LIMIT_S)
-        for pipe in (self._process.stdin, self._process.stdout):
-            if pipe is not None:
-                with suppress(OSError):
-                    pipe.close()
+            if thread.ident is not None:
+                thread.join(REPLY_LIMIT_S)
+        if self._process.stdout is not None:
+            self._process.stdout.close()
+
+    def _close_stdin(self) -> None:
+        """The end of its input means dark and the end to the guard, whatever else."""
+        pipe = self._process.stdin
+        if pipe is None or not self._sending.acquire(timeout=BEAT_PERIOD_S):
+            return
+        try:
+            with suppress(OSError):
+                pipe.close()
+        finally:
+            self._sending.release()
+
+    def end(self) -> None:
+        """The same as ``stop``."""
+        self.stop()
 
     def __enter__(self) -> Self:
         return self
@@ -218,17 +223,7 @@ class GuardClient:
         return f"the guard is gone or silent: {how}"
 
     def _stage_fields(self) -> dict[str, object]:
-        now_s, stage = self._now(), self._stage
-        if stage is None:
-            return {"sent_s": now_s, "step": None}
-        return {
-            "sent_s": now_s,
-            "step": stage.step,
-            "commanded_deg": stage.commanded_deg,
-            "readback_deg": stage.readback_deg,
-            "read_age_s": now_s - stage.read_at_s,
-            "turning": stage.turning,
-        }
+        return beat_fields(self._stage, self._now())
 
     def _send_beat(self) -> None:
         self._send({"command": "beat", **self._stage_fields()}, wait_s=BEAT_PERIOD_S)

@@ -18,7 +18,8 @@ class UnitSettings:
     """Where the emission unit is, how it is spoken to and who it must be.
 
     ``dialect`` is the dialect's own mapping; ``keep_alive_ms`` is the time after which
-    the unit drops out by itself.
+    the unit drops out by itself; ``has_shutter`` says whether its shutter position
+    counts (a unit that switches the laser itself has none).
     """
 
     port: str
@@ -26,6 +27,7 @@ class UnitSettings:
     dialect: Mapping[str, object]
     identity: str
     keep_alive_ms: int
+    has_shutter: bool = True
 
 
 @dataclass(frozen=True)
@@ -77,9 +79,6 @@ def config_as_mapping(config: GuardConfig) -> dict[str, object]:
 
 def config_from_mapping(values: Mapping[str, object]) -> GuardConfig:
     """The configuration in ``values``; ValueError names the field that is wrong."""
-    resumed = values.get("resumed")
-    if not isinstance(resumed, bool):
-        raise ValueError("resumed: true or false")
     return GuardConfig(
         unit=_unit(block(values, "unit")),
         permit=permit_from_mapping(block(values, "permit")),
@@ -91,7 +90,7 @@ def config_from_mapping(values: Mapping[str, object]) -> GuardConfig:
         permitted=_permitted(block(values, "permitted")),
         ledger_path=text(values, "ledger_path"),
         run=text(values, "run"),
-        resumed=resumed,
+        resumed=flag(values, "resumed"),
     )
 
 
@@ -129,6 +128,14 @@ def whole(values: Mapping[str, object], key: str) -> int:
     return value
 
 
+def flag(values: Mapping[str, object], key: str) -> bool:
+    """True or false under ``key``; ValueError when it is something else."""
+    value = values.get(key)
+    if not isinstance(value, bool):
+        raise ValueError(f"{key}: true or false is missing")
+    return value
+
+
 def _unit(values: Mapping[str, object]) -> UnitSettings:
     keep_alive_ms = whole(values, "keep_alive_ms")
     _in_range("unit.keep_alive_ms", keep_alive_ms, 50, KEEP_ALIVE_LIMIT_MS)
@@ -138,6 +145,7 @@ def _unit(values: Mapping[str, object]) -> UnitSettings:
         dialect=block(values, "dialect"),
         identity=text(values, "identity"),
         keep_alive_ms=keep_alive_ms,
+        has_shutter=flag(values, "has_shutter"),
     )
 
 

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from enum import Enum
 
 from pitchsweep.safety.guard_checks import Beat
-from pitchsweep.safety.guard_config import number, text, whole
+from pitchsweep.safety.guard_config import flag, number, text, whole
 
 LONGEST_LINE = 1_000_000
 
@@ -65,14 +65,11 @@ def _beat(values: Mapping[str, object], request: Request, received_s: float) -> 
     sent_s = min(received_s, number(values, "sent_s"))
     if request is Request.BEAT and values.get("step") is None:
         return Beat(sent_s=sent_s)
-    turning = values.get("turning", False)
-    if not isinstance(turning, bool):
-        raise ValueError("turning: true or false")
     return Beat(
         sent_s=sent_s,
         step=whole(values, "step"),
         commanded_deg=number(values, "commanded_deg"),
         readback_deg=number(values, "readback_deg"),
         read_at_s=sent_s - number(values, "read_age_s"),
-        turning=turning,
+        turning=flag(values, "turning"),
     )

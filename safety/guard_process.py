@@ -27,7 +27,7 @@ from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.gate_table import Event, GateState
 from pitchsweep.safety.guard import Guard
 from pitchsweep.safety.guard_config import GuardConfig, config_from_mapping
-from pitchsweep.safety.guard_messages import read_command, read_object
+from pitchsweep.safety.guard_messages import LONGEST_LINE, read_command, read_object
 from pitchsweep.safety.guard_world import GuardWorld
 from pitchsweep.safety.ledger import Ledger
 from pitchsweep.safety.ledger_chain import canonical_json
@@ -189,7 +189,7 @@ def _end_on_signals(inbox: Inbox) -> None:
 
 
 def _read_stdin(inbox: Inbox) -> None:
-    for data in sys.stdin.buffer:
+    for data in iter(lambda: sys.stdin.buffer.readline(LONGEST_LINE + 1), b""):
         inbox.put(Line(data, time.monotonic()))
         while inbox.qsize() > INBOX_LIMIT:
             time.sleep(0.005)

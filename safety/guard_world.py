@@ -5,21 +5,14 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Protocol
 
-from pitchsweep.drivers.driver_errors import (
-    AnsweredNonsense,
-    AskedIllegal,
-    DeviceRefused,
-    DriverError,
-)
 from pitchsweep.drivers.emission_client import UnitState
 from pitchsweep.safety.gate_event import GateEvent
-from pitchsweep.safety.gate_table import Event, GateState
+from pitchsweep.safety.gate_table import GateState
 from pitchsweep.safety.guard_checks import (
     BEFORE_ARMING,
     BEFORE_LIGHT,
     CHECKS,
     Check,
-    Fault,
 )
 from pitchsweep.safety.permit import NONCE_BYTES
 
@@ -72,12 +65,3 @@ class Reply:
 
     done: bool
     reason: str = ""
-
-
-def unit_fault(error: DriverError) -> Fault:
-    """The gate's name for a failure of the unit or of its line."""
-    if isinstance(error, DeviceRefused):
-        return Fault(Event.UNIT_REFUSED, str(error))
-    if isinstance(error, AnsweredNonsense | AskedIllegal):
-        return Fault(Event.UNIT_NONSENSE, str(error))
-    return Fault(Event.UNIT_SILENT, str(error))

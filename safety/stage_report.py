@@ -1,0 +1,28 @@
+"""What the controller tells the guard of the stage, inside every heartbeat. Pure."""
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True)
+class StageReport:
+    """What the controller knows of the stage; ``read_at_s`` on its monotonic clock."""
+
+    step: int
+    commanded_deg: float
+    readback_deg: float
+    read_at_s: float
+    turning: bool
+
+
+def beat_fields(stage: StageReport | None, now_s: float) -> dict[str, object]:
+    """The fields of a heartbeat or light request sent at ``now_s`` (monotonic)."""
+    if stage is None:
+        return {"sent_s": now_s, "step": None}
+    return {
+        "sent_s": now_s,
+        "step": stage.step,
+        "commanded_deg": stage.commanded_deg,
+        "readback_deg": stage.readback_deg,
+        "read_age_s": now_s - stage.read_at_s,
+        "turning": stage.turning,
+    }
