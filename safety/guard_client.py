@@ -305,3 +305,6 @@ def start_guard(
         client.stop()
         raise
     return client
+
+
+__all__ = ["GuardClient", "StageReport", "start_guard"]
