@@ -1,0 +1,192 @@
+"""Contrast and grain of speckle, measured in the residuals of fitted spots.
+
+The fit takes the long waves of speckle for a change of the spot, so the residuals'
+autocorrelation is lower than that of the speckle. What it takes is computed from the
+fit's own modes: with weighted residuals z = (1 - Q Q^T) W^(1/2) e and Cov e known for
+a trial grain, the expected products at every lag are convolutions.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import cv2
+import numpy as np
+
+from pitchsweep.analysis.records import FloatArray
+from pitchsweep.analysis.speckle_grain import FWHM_PER_W, NO_SPECKLE, Speckle
+
+_LAGS = 6
+_CENTRE = (0, _LAGS)
+_LEAST_LIGHT = 0.05
+_GRID_W = np.geomspace(0.6, 5.0, 50)
+
+
+@dataclass(frozen=True)
+class GrainSample:
+    """What one fitted spot shows of speckle; arrays (H, W), all weighted by W^(1/2).
+
+    ``residual`` data minus model, ``signal`` the spot, ``noise`` the variance of shot
+    and read noise (times W), ``rounding`` rms of rounding errors that neighbours
+    share; ``modes`` (P, H, W) the orthonormal basis of what the fit can follow;
+    ``bright`` 1 where the spot is bright enough to count, else 0.
+    """
+
+    residual: FloatArray
+    signal: FloatArray
+    noise: FloatArray
+    rounding: FloatArray
+    modes: FloatArray
+    bright: FloatArray
+
+
+@dataclass(frozen=True)
+class _Products:
+    """Sums over pairs of pixels at lags (0..L, -L..L): seen, and what to expect."""
+
+    seen: FloatArray
+    signal: FloatArray
+    error_square: FloatArray
+    rounding: float
+
+
+def measure_speckle(samples: Sequence[GrainSample]) -> Speckle | None:
+    """Speckle of the pooled ``samples``; None if they hold too little light to tell.
+
+    ``NO_SPECKLE`` if there is enough light and neighbours show nothing in common above
+    four standard deviations of the noise and the shared rounding.
+    """
+    if not samples:
+        return None
+    products = [_products(sample) for sample in samples]
+    seen = np.sum([p.seen for p in products], axis=0)
+    signal = np.sum([p.signal for p in products], axis=0)
+    error = np.sqrt(np.sum([p.error_square for p in products], axis=0))
+    light = float(signal[_CENTRE])
+    if light <= 0.0 or float(error[_CENTRE]) > 0.1 * light:
+        return None
+    floor = sum(p.rounding for p in products)
+    near = float(seen[0, _LAGS + 1] + seen[1, _LAGS])
+    near_u = float(np.hypot(error[0, _LAGS + 1], error[1, _LAGS]))
+    alone = float(seen[_CENTRE]) < max(0.03 * light, 4.0 * float(error[_CENTRE]))
+    if near < 4.0 * near_u + 4.0 * floor and alone:
+        return NO_SPECKLE
+    return _fitted(samples, seen, signal)
+
+
+def pooled_speckle(seen: Sequence[Speckle]) -> Speckle | None:
+    """One speckle for a run from what its steps gave (medians); None for none given.
+
+    Steps that saw none count with contrast 0; grain is that of those that saw some.
+    """
+    if not seen:
+        return None
+    contrast = float(np.median([s.contrast for s in seen]))
+    grains = [s.grain_fwhm_px for s in seen if s.contrast > 0.0]
+    if contrast == 0.0 or not grains:
+        return NO_SPECKLE
+    return Speckle(contrast, float(np.median(grains)))
+
+
+def _products(sample: GrainSample) -> _Products:
+    mask = sample.bright
+    quiet = mask * sample.noise
+    seen = _pairs((mask * sample.residual)[None])
+    seen[_CENTRE] -= float(quiet.sum())
+    error_square = _pairs(quiet[None])
+    error_square[_CENTRE] *= 2.0
+    return _Products(
+        seen=seen,
+        signal=_pairs((mask * sample.signal)[None]),
+        error_square=np.maximum(error_square, 0.0),
+        rounding=float(((mask * sample.rounding) ** 2).sum()),
+    )
+
+
+def _fitted(
+    samples: Sequence[GrainSample], seen: FloatArray, signal: FloatArray
+) -> Speckle:
+    """Contrast and grain that explain the products, the fit's share put back."""
+    # Noise of dim pixels reaches bright ones through the fit, at all lags.
+    seen = seen + np.sum([_taken(s, s.noise * s.modes) for s in samples], axis=0)
+    answer = _best(seen, signal, np.zeros_like(seen), 1.0)
+    for _ in range(3):
+        w = answer.w_px
+        loss = np.sum([_loss(sample, w) for sample in samples], axis=0)
+        answer = _best(seen, signal, loss, w)
+    return answer
+
+
+def _best(
+    seen: FloatArray, signal: FloatArray, loss: FloatArray, loss_w: float
+) -> Speckle:
+    """Least squares of seen = C^2 (rho signal - loss) over a grid of w.
+
+    ``loss`` was computed for ``loss_w`` and is taken to grow with the grain's area.
+    """
+    down = np.arange(_LAGS + 1)[:, None]
+    right = np.arange(-_LAGS, _LAGS + 1)[None, :]
+    square = (down**2 + right**2).astype(np.float64)
+    once = np.where((down == 0) & (right < 0), 0.0, 1.0)
+    best, answer = np.inf, NO_SPECKLE
+    for w in _GRID_W:
+        shape = np.exp(-square / w**2) * signal - loss * (w / loss_w) ** 2
+        power = float((once * shape * seen).sum() / (once * shape**2).sum())
+        left = float((once * (seen - power * shape) ** 2).sum())
+        if left < best and power > 0.0:
+            best = left
+            answer = Speckle(float(np.sqrt(power)), float(w * FWHM_PER_W))
+    return answer
+
+
+def _loss(sample: GrainSample, w: float) -> FloatArray:
+    """What the fit takes from the products at contrast 1 and grain ``w``."""
+    # Cov e = signal_i rho_ij signal_j; the blur is rho over its own sum.
+    area = np.exp(-((np.arange(-30.0, 31.0) / w) ** 2)).sum() ** 2
+    pulled = sample.signal * sample.modes
+    width = max(w / 2.0**0.5, 0.1)
+    blurred = np.stack([cv2.GaussianBlur(p, (0, 0), width) for p in pulled])
+    return _taken(sample, area * sample.signal * blurred)
+
+
+def _taken(sample: GrainSample, moved: FloatArray) -> FloatArray:
+    """Products lost by the projection (1 - Q Q^T), given ``moved`` = Cov(e) Q."""
+    modes, mask = sample.modes, sample.bright
+    flat = modes.reshape(modes.shape[0], -1)
+    inner = flat @ moved.reshape(modes.shape[0], -1).T
+    values, vectors = np.linalg.eigh(0.5 * (inner + inner.T))
+    turned = np.sqrt(np.maximum(values, 0.0))[:, None] * vectors.T
+    own = (turned @ flat).reshape(modes.shape)
+    box = _box(mask)
+    both = _pairs((mask * moved)[box], (mask * modes)[box])
+    return both - _pairs((mask * own)[box])
+
+
+def _box(mask: FloatArray) -> tuple[slice, slice, slice]:
+    """The part of a stack of images where the mask is not zero."""
+    rows, columns = np.nonzero(mask.sum(axis=1))[0], np.nonzero(mask.sum(axis=0))[0]
+    if rows.size == 0:
+        return slice(None), slice(0, 1), slice(0, 1)
+    return (
+        slice(None),
+        slice(int(rows[0]), int(rows[-1]) + 1),
+        slice(int(columns[0]), int(columns[-1]) + 1),
+    )
+
+
+def _pairs(images: FloatArray, others: FloatArray | None = None) -> FloatArray:
+    """Sum over images and pixels of image[i] image[i + lag]; lags (0..L, -L..L).
+
+    With ``others``: image[i] other[i + lag] + other[i] image[i + lag].
+    """
+    rows, columns = images.shape[1:]
+    shape = (
+        cv2.getOptimalDFTSize(rows + _LAGS),
+        cv2.getOptimalDFTSize(columns + 2 * _LAGS),
+    )
+    one = np.fft.rfft2(images, shape)
+    if others is None:
+        power = (np.abs(one) ** 2).sum(axis=0)
+    else:
+        power = 2.0 * (one * np.conj(np.fft.rfft2(others, shape))).real.sum(axis=0)
+    full = np.fft.irfft2(power, shape)[: _LAGS + 1]
+    return np.concatenate([full[:, -_LAGS:], full[:, : _LAGS + 1]], axis=1)

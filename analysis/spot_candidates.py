@@ -1,0 +1,197 @@
+"""Where there may be spots: components above the noise in averaged-down frames."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import cv2
+import numpy as np
+
+from pitchsweep.analysis.camera_noise import (
+    ROUNDING_VARIANCE_DN2,
+    CameraNoise,
+    correlated_rounding_dn,
+)
+from pitchsweep.analysis.frame_background import (
+    Float32Array,
+    averaged_down,
+    background_map,
+    robust_width,
+)
+from pitchsweep.analysis.spot_window import FrameLayer, Plane
+
+_CORE = 0.2
+_WIDEN = 1.294
+"""1/sqrt(0.597): rms of a Gaussian from the rms of its part above a fifth."""
+
+
+@dataclass(frozen=True)
+class SmallFrame:
+    """One exposure averaged down: background and light over it, DN; noise, DN."""
+
+    factor: int
+    exposure_ms: float
+    background: Float32Array
+    excess: Float32Array
+    noise: Float32Array
+    clipped: Float32Array | None
+
+    def plane_at(self, column_px: float, row_px: float, reach_px: float) -> Plane:
+        """The background around a place of the full frame, from samples at reach."""
+        reach = max(reach_px, 2.0 * self.factor)
+        left, right = column_px - reach, column_px + reach
+        up, down = row_px - reach, row_px + reach
+        return Plane(
+            level=self._sample(column_px, row_px),
+            per_column=(self._sample(right, row_px) - self._sample(left, row_px))
+            / (2.0 * reach),
+            per_row=(self._sample(column_px, down) - self._sample(column_px, up))
+            / (2.0 * reach),
+        )
+
+    def _sample(self, column_px: float, row_px: float) -> float:
+        rows, columns = self.background.shape
+        row = min(max(int(row_px / self.factor), 0), rows - 1)
+        column = min(max(int(column_px / self.factor), 0), columns - 1)
+        return float(self.background[row, column])
+
+
+@dataclass(frozen=True)
+class LightMap:
+    """All exposures in one averaged-down map, DN a millisecond.
+
+    Where an exposure is saturated the next shorter one stands; ``snr`` is light over
+    noise of the exposure that stands.
+    """
+
+    factor: int
+    rate: Float32Array
+    noise: Float32Array
+
+    @property
+    def snr(self) -> Float32Array:
+        """Light over noise."""
+        return self.rate / self.noise
+
+
+@dataclass(frozen=True)
+class Candidate:
+    """A bright patch: place and rms radius in full-frame px, height DN a ms."""
+
+    column_px: float
+    row_px: float
+    sigma_px: float
+    height: float
+    snr: float
+
+
+def small_frame(layer: FrameLayer, factor: int) -> SmallFrame:
+    """``layer`` averaged down by ``factor`` with background and noise."""
+    small = averaged_down(layer.frame, factor)
+    background = background_map(small)
+    excess = small - background
+    noise = _noise_map(background, excess, layer.noise)
+    return SmallFrame(
+        factor=factor,
+        exposure_ms=layer.exposure_ms,
+        background=background,
+        excess=excess,
+        noise=noise,
+        clipped=_clipped_share(layer, factor),
+    )
+
+
+def light_map(smalls: Sequence[SmallFrame]) -> LightMap:
+    """The exposures, longest first, joined into one map."""
+    first = smalls[0]
+    rate = first.excess / np.float32(first.exposure_ms)
+    noise = first.noise / np.float32(first.exposure_ms)
+    clipped = first.clipped
+    for small in smalls[1:]:
+        if clipped is None:
+            break
+        lost = clipped > 0.0
+        rate = np.where(lost, small.excess / np.float32(small.exposure_ms), rate)
+        noise = np.where(lost, small.noise / np.float32(small.exposure_ms), noise)
+        clipped = None if small.clipped is None else small.clipped * lost
+    return LightMap(first.factor, rate, noise)
+
+
+def candidates(
+    light: LightMap, *, threshold: float = 5.0, at_most: int = 60
+) -> list[Candidate]:
+    """Patches above ``threshold`` times the noise, brightest first.
+
+    Each patch is measured in the part above a fifth of its own height that hangs
+    together with its brightest place; gaps of a small pixel or two are bridged.
+    """
+    snr = light.snr
+    mask = (snr > threshold).astype(np.uint8)
+    if not mask.any():
+        return []
+    bridged = cv2.morphologyEx(mask, cv2.MORPH_CLOSE, np.ones((3, 3), np.uint8))
+    count, labels, stats, _ = cv2.connectedComponentsWithStats(bridged, connectivity=8)
+    smooth = cv2.GaussianBlur(light.rate, (3, 3), 0)
+    found = []
+    order = np.argsort(-stats[1:count, cv2.CC_STAT_AREA], kind="stable")[: 4 * at_most]
+    for label in order + 1:
+        left, top, wide, high, area = (int(v) for v in stats[label])
+        box = (slice(top, top + high), slice(left, left + wide))
+        own = labels[box] == label
+        patch = np.where(own, smooth[box], 0.0)
+        best = float(snr[box][own].max())
+        if area < 2 and best < 2.0 * threshold:
+            continue
+        found.append(_measured(patch, best, (left, top), light.factor))
+    found.sort(key=lambda c: -c.height)
+    return found[:at_most]
+
+
+def _measured(
+    patch: Float32Array, snr: float, corner: tuple[int, int], factor: int
+) -> Candidate:
+    peak = float(patch.max())
+    _, labels = cv2.connectedComponents(
+        (patch > _CORE * peak).astype(np.uint8), connectivity=8
+    )
+    row, column = np.unravel_index(int(np.argmax(patch)), patch.shape)
+    core = np.where(labels == labels[row, column], patch, 0.0)
+    total = float(core.sum())
+    rows = np.arange(core.shape[0]) - 0.0
+    columns = np.arange(core.shape[1]) - 0.0
+    along, down = core.sum(axis=0) / total, core.sum(axis=1) / total
+    x, y = float(along @ columns), float(down @ rows)
+    spread = float(along @ (columns - x) ** 2 + down @ (rows - y) ** 2) / 2.0
+    variance = factor**2 * max(spread * _WIDEN**2 - 1.0 / 12.0, 0.1)
+    middle = (factor - 1) / 2.0
+    return Candidate(
+        column_px=(x + corner[0]) * factor + middle,
+        row_px=(y + corner[1]) * factor + middle,
+        sigma_px=variance**0.5,
+        height=peak,
+        snr=snr,
+    )
+
+
+def _noise_map(
+    background: Float32Array, excess: Float32Array, noise: CameraNoise
+) -> Float32Array:
+    """Noise of each small pixel: the model's shape, the frame's own size."""
+    signal = np.maximum(background - noise.black_level_dn, 0.0)
+    model = np.sqrt(noise.gain_dn_per_e * signal + noise.read_noise_dn**2)
+    size = robust_width(excess / model)
+    # The median of 3 x 3 leaves about 1/2.5 of the noise to dither the rounding.
+    read = max(noise.read_noise_dn**2 - ROUNDING_VARIANCE_DN2, 0.0) ** 0.5
+    least = correlated_rounding_dn(read / 2.5)
+    return np.asarray(np.maximum(model * size, max(least, 1e-3)), dtype=np.float32)
+
+
+def _clipped_share(layer: FrameLayer, factor: int) -> Float32Array | None:
+    """Share of saturated pixels in each small pixel; None if there is none."""
+    frame = layer.frame
+    if float(frame.max()) < layer.noise.saturation_dn:
+        return None
+    rows, columns = frame.shape[0] // factor, frame.shape[1] // factor
+    mask = frame[: rows * factor, : columns * factor] >= layer.noise.saturation_dn
+    light = mask.astype(np.float32)
+    share = cv2.resize(light, (columns, rows), interpolation=cv2.INTER_AREA)
+    return np.asarray(share, dtype=np.float32)

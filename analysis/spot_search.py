@@ -1,0 +1,248 @@
+"""One step's exposures in, its spots out.
+
+Candidates are found on all exposures together, averaged down; each is fitted in full
+frames over the unsaturated pixels of every exposure at once, so nothing has to be
+deduplicated between exposures. A second look, with the found spots taken off, finds
+faint ones beside bright ones. Speckle is measured in the residuals unless given.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pitchsweep.analysis.camera_noise import CameraNoise, measured_noise_dn
+from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
+from pitchsweep.analysis.speckle_grain import NO_SPECKLE, Speckle
+from pitchsweep.analysis.speckle_measure import GrainSample, measure_speckle
+from pitchsweep.analysis.spot_candidates import (
+    Candidate,
+    LightMap,
+    candidates,
+    light_map,
+)
+from pitchsweep.analysis.spot_fit import Shape
+from pitchsweep.analysis.spot_judgement import (
+    SpotLimits,
+    judged,
+    light_over_noise,
+    misfit,
+)
+from pitchsweep.analysis.spot_scene import (
+    Exposure,
+    FittedCandidate,
+    StepScene,
+    fit_candidate,
+    refit,
+    step_scene,
+)
+from pitchsweep.analysis.spot_window import shared_rounding
+
+__all__ = ["Exposure", "SearchSettings", "find_spots"]
+
+_SKIRTS = ((5.0, 0.1), (10.0, 0.04))
+"""Within so many radii of a spot, what is fainter than this share is part of it."""
+_COARSEST_GRAIN_PX = 8.0
+
+
+@dataclass(frozen=True)
+class SearchSettings:
+    """How to search: averaging factor, detection threshold (in noise), limits."""
+
+    factor: int = 4
+    threshold: float = 5.0
+    limits: SpotLimits = SpotLimits()
+
+
+def find_spots(
+    exposures: Sequence[Exposure],
+    dark: NDArray[np.float32] | NDArray[np.uint16] | None,
+    camera: CameraNoise,
+    step: int,
+    *,
+    speckle: Speckle | None = None,
+    settings: SearchSettings | None = None,
+) -> SpotSearch:
+    """Spots and refused candidates of one step, brightest first.
+
+    ``exposures`` (at least one, same shape, any order) are a bracket of one scene.
+    ``dark`` is a mean dark frame of that shape or None: it tells hot pixels; its noise
+    never enters. ``speckle`` None: measured here (see ``SpotSearch.speckle_contrast``).
+    ``background_dn`` and ``noise_dn`` are those of the longest exposure.
+
+    Raises ValueError where ``exposures`` is empty or shapes differ.
+    """
+    settings = settings or SearchSettings()
+    scene = step_scene(exposures, dark, camera, settings.factor)
+    light = light_map(scene.smalls)
+    grain = speckle or NO_SPECKLE
+    found = _fit_all(scene, candidates(light, threshold=settings.threshold), grain, [])
+    rest = _without(light, found)
+    late = candidates(rest, threshold=settings.threshold)
+    found += _fit_all(scene, late, grain, found)
+    if speckle is None:
+        grain, found = _with_speckle(scene, found)
+    return _answer(scene, _distinct(found), grain, settings.limits, step)
+
+
+def _fit_all(
+    scene: StepScene,
+    found: Sequence[Candidate],
+    speckle: Speckle,
+    before: Sequence[FittedCandidate],
+) -> list[FittedCandidate]:
+    """Fits of the candidates, leaving out what lies on a spot already fitted."""
+    out: list[FittedCandidate] = []
+    for item in found:
+        taken = any(_covers(f.fit.shape, item) for f in (*before, *out))
+        if not taken:
+            out.append(fit_candidate(scene, item, speckle))
+    return out
+
+
+def _covers(shape: Shape, item: Candidate) -> bool:
+    """Whether a candidate lies within 3.5 radii of a brighter fitted spot."""
+    dx, dy = item.column_px - shape.column_px, item.row_px - shape.row_px
+    square = shape.a * dx * dx + 2 * shape.b * dx * dy + shape.c * dy * dy
+    return square < 3.5**2 and item.height < shape.height
+
+
+def _with_speckle(
+    scene: StepScene, found: list[FittedCandidate]
+) -> tuple[Speckle, list[FittedCandidate]]:
+    """Speckle seen, and the fits renewed with it; twice, as weights matter to both."""
+    grain = NO_SPECKLE
+    for _ in range(2):
+        grain = _measured(found)
+        if grain.contrast == 0.0:
+            break
+        found = [refit(scene, item, grain) for item in found]
+    return grain, found
+
+
+def _without(light: LightMap, found: Sequence[FittedCandidate]) -> LightMap:
+    """The map with fitted spots taken off and their leftovers counted as noise."""
+    rows, columns = light.rate.shape
+    middle = (light.factor - 1) / 2.0
+    x = (np.arange(columns, dtype=np.float64) * light.factor + middle)[None, :]
+    y = (np.arange(rows, dtype=np.float64) * light.factor + middle)[:, None]
+    rate, variance = light.rate.copy(), light.noise**2
+    for item in found:
+        box = _box(item.fit.shape, light)
+        signal = item.fit.shape.signal(x[:, box[1]], y[box[0]])
+        rate[box] -= signal.astype(np.float32)
+        variance[box] += ((0.2 * signal) ** 2).astype(np.float32)
+    return replace(light, rate=rate, noise=np.sqrt(variance))
+
+
+def _box(shape: Shape, light: LightMap) -> tuple[slice, slice]:
+    wide, high = shape.half_sides(6.0)
+    f = light.factor
+    return (
+        slice(
+            max(int((shape.row_px - high) / f), 0), int((shape.row_px + high) / f) + 2
+        ),
+        slice(
+            max(int((shape.column_px - wide) / f), 0),
+            int((shape.column_px + wide) / f) + 2,
+        ),
+    )
+
+
+def _measured(found: Sequence[FittedCandidate]) -> Speckle:
+    """Speckle from the four brightest fits; none where there is too little light.
+
+    In binned windows the grain is seen in bins; contrast and grain of bins stand for
+    the same noise per area.
+    """
+    good = [f for f in found if f.fit.converged]
+    good.sort(key=lambda f: -light_over_noise(f.fit))
+    binning = good[0].fit.binning if good else 1
+    good = [f for f in good if f.fit.binning == binning]
+    seen = measure_speckle([_sample(f) for f in good[:4]]) or NO_SPECKLE
+    seen = replace(seen, grain_fwhm_px=seen.grain_fwhm_px * binning)
+    minor = [f.fit.shape.widths()[1] for f in good[:4]]
+    # Coarse, or pale and as wide as the spots: no grain, but beams of another form.
+    pale = seen.contrast < 0.3 and minor
+    wide = pale and seen.grain_fwhm_px > 0.8 * float(np.median(minor))
+    return NO_SPECKLE if wide or seen.grain_fwhm_px > _COARSEST_GRAIN_PX else seen
+
+
+def _sample(item: FittedCandidate) -> GrainSample:
+    fit = item.fit
+    bright = (fit.weight > 0.0) & (fit.signal > 0.05 * fit.shape.height)
+    root = np.sqrt(fit.weight)
+    return GrainSample(
+        residual=root * fit.residual,
+        signal=root * fit.signal,
+        noise=fit.weight * fit.variance,
+        rounding=root * shared_rounding(item.window, fit.signal),
+        modes=fit.modes,
+        bright=bright.astype(np.float64),
+    )
+
+
+def _distinct(found: Sequence[FittedCandidate]) -> list[FittedCandidate]:
+    """Brightest first; fits that slid onto a brighter spot are left out."""
+    ordered = sorted(found, key=lambda f: (not f.fit.converged, -f.fit.shape.height))
+    out: list[FittedCandidate] = []
+    for item in ordered:
+        shape = item.fit.shape
+        if not any(_nearer(k.fit.shape, shape, 2.0) for k in out):
+            out.append(item)
+    return out
+
+
+def _nearer(shape: Shape, other: Shape, sigmas: float) -> bool:
+    away = np.hypot(other.column_px - shape.column_px, other.row_px - shape.row_px)
+    return bool(away < sigmas * shape.widths()[0])
+
+
+def _answer(
+    scene: StepScene,
+    found: Sequence[FittedCandidate],
+    speckle: Speckle,
+    limits: SpotLimits,
+    step: int,
+) -> SpotSearch:
+    spots: list[Spot] = []
+    rejected: list[RejectedSpot] = []
+    bright: list[Shape] = []
+    for item in found:
+        seen = misfit(item.fit, speckle)
+        answer = judged(item.window, item.fit, seen, scene.side, limits, step)
+        shape = item.fit.shape
+        if isinstance(answer, Spot) and _in_skirt(shape, bright):
+            answer = RejectedSpot(
+                step,
+                shape.column_px,
+                shape.row_px,
+                "px",
+                Rejection.SHAPE,
+                "faint, in the skirts of a much brighter spot",
+            )
+        if isinstance(answer, Spot):
+            spots.append(answer)
+        else:
+            rejected.append(answer)
+        if item.fit.converged:
+            bright.append(shape)
+    first = scene.smalls[0]
+    return SpotSearch(
+        spots=tuple(spots),
+        rejected=tuple(rejected),
+        background_dn=float(np.median(first.background)),
+        noise_dn=measured_noise_dn(scene.layers[0].frame),
+        speckle_contrast=speckle.contrast,
+        grain_fwhm_px=speckle.grain_fwhm_px,
+    )
+
+
+def _in_skirt(shape: Shape, bright: Sequence[Shape]) -> bool:
+    """Whether a much brighter spot is so near that this is a part of it."""
+    return any(
+        shape.height < share * other.height and _nearer(other, shape, sigmas)
+        for other in bright
+        for sigmas, share in _SKIRTS
+    )
