@@ -83,6 +83,7 @@ class SweepRunner:
         devices.stage.move_to(step.stage_deg)
         self._wait(self._context.job.bench.stage.settle_s)
         reading = devices.stage.where()
+        self._keeper.raise_failure()
         try:
             devices.gate.light_on(
                 step=step.step,
