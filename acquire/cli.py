@@ -162,12 +162,14 @@ def run(arguments: Sequence[str] | None = None) -> int:
     """Runs the command line; its exit code."""
     command = typer.main.get_command(app)
     try:
-        outcome = command.main(
-            args=None if arguments is None else list(arguments),
-            prog_name="pitchsweep",
-            standalone_mode=False,
-        )
-        return outcome if isinstance(outcome, int) else DONE
+        # Not command.main: it turns Ctrl-C and a broken pipe into codes of its own.
+        given = sys.argv[1:] if arguments is None else list(arguments)
+        with command.make_context("pitchsweep", given) as context:
+            command.invoke(context)
+        sys.stdout.flush()
+        return DONE
+    except typer.Exit as exit_request:
+        return exit_request.exit_code
     except BrokenPipeError:
         return _reader_gone()
     except BaseException as error:

@@ -2,11 +2,13 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
 from pitchsweep.analysis.records import (
     UNKNOWN_ORDER,
+    IntArray,
     OrderTable,
     RejectedSpot,
 )
@@ -42,6 +44,7 @@ class SpotPlace:
     ux_mm: float
     uy_mm: float
     cxy_mm2: float
+    brightness: float
 
 
 def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> OrderTable:
@@ -62,6 +65,7 @@ def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> Orde
         ux_mm=column("ux_mm"),
         uy_mm=column("uy_mm"),
         cxy_mm2=column("cxy_mm2"),
+        brightness=column("brightness"),
     )
 
 
@@ -122,15 +126,18 @@ def _numbered_on(spot: RejectedSpot, steps: int) -> RejectedSpot:
 
 def _stacked(tables: Sequence[OrderTable]) -> OrderTable:
     names = tuple(dict.fromkeys(n for table in tables for n in table.laser_names))
-    columns: dict[str, object] = {"laser_names": names}
+    columns: dict[str, Any] = {"laser_names": names}
     for name in tables[0].__dict__:
         if name == "laser":
-            columns[name] = np.concatenate(
-                [
-                    np.array([names.index(n) for n in t.laser_names], np.int64)[t.laser]
-                    for t in tables
-                ]
-            )
+            columns[name] = np.concatenate([_laser_index(t, names) for t in tables])
         elif name != "laser_names":
-            columns[name] = np.concatenate([getattr(t, name) for t in tables])
-    return OrderTable(**columns)  # type: ignore[arg-type]
+            parts = [getattr(table, name) for table in tables]
+            # A column that one table does not know is not known.
+            known = all(part is not None for part in parts)
+            columns[name] = np.concatenate(parts) if known else None
+    return OrderTable(**columns)
+
+
+def _laser_index(table: OrderTable, names: tuple[str, ...]) -> IntArray:
+    place = np.array([names.index(name) for name in table.laser_names], np.int64)
+    return place[table.laser]

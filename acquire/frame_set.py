@@ -71,6 +71,7 @@ def input_from_frames(
                 ux_mm=spot.ux_mm,
                 uy_mm=spot.uy_mm,
                 cxy_mm2=spot.cxy_mm2,
+                brightness=spot.brightness,
             )
             for spot in found.spots
         ]

@@ -121,6 +121,7 @@ def _places(step: KeptStep) -> list[SpotPlace]:
             ux_mm=spot.ux_mm,
             uy_mm=spot.uy_mm,
             cxy_mm2=spot.cxy_mm2,
+            brightness=spot.brightness,
         )
         for spot in step.found.spots
     ]

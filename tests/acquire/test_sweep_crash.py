@@ -47,9 +47,7 @@ def acknowledged(run: Path) -> list[int]:
         ]
 
 
-SPOTS = small_job(
-    mounts_deg=(0.0, 90.0), start_deg=-10.0, stop_deg=10.0, step_deg=10.0
-)
+SPOTS = small_job(mounts_deg=(0.0, 90.0), start_deg=-10.0, stop_deg=10.0, step_deg=10.0)
 FRAMES = small_job(
     record="frames",
     start_deg=-15.0,
