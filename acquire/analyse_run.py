@@ -113,6 +113,8 @@ def inputs_sha256(given: FitInput) -> str:
     digest = hashlib.sha256()
     digest.update(write_order_table(given.table).encode("utf-8"))
     digest.update(given.table.cxy_mm2.tobytes())
+    if given.table.brightness is not None:
+        digest.update(given.table.brightness.tobytes())
     bench = given.bench.model_copy(update={"twin": None})
     digest.update(fingerprint(bench).encode("ascii"))
     digest.update(fingerprint(given.part).encode("ascii"))

@@ -1,6 +1,6 @@
 """Where an order lands on the screen, with its derivatives: the model of the fit.
 
-Every spot has fourteen *local* quantities (``Local``); everything the fit can vary acts
+Every spot has fifteen *local* quantities (``Local``); everything the fit can vary acts
 through them. Conical grating equation in direction cosines: along the grating vector g
 the tangential component becomes k.g + q with q = m*lambda/d, along the grooves h it is
 conserved, and the rest is normal to the surface.
@@ -12,6 +12,7 @@ from enum import IntEnum
 import numpy as np
 from numpy.typing import NDArray
 
+from pitchsweep.analysis.cover_walk import one_way, one_way_tangent
 from pitchsweep.analysis.records import FloatArray
 
 
@@ -32,6 +33,7 @@ class Local(IntEnum):
     SCREEN_TZ = 11
     SCREEN_X = 12  # reported x of the screen origin
     SCREEN_Y = 13
+    COVER = 14  # thickness of a clear layer through which the part is read
 
 
 N_LOCAL = len(Local)
@@ -41,7 +43,7 @@ GRAZING = 1e-3
 
 @dataclass(frozen=True)
 class Landing:
-    """Where spots land: x, y (N,) mm, derivatives (N, 2, 14), valid (N,) bool.
+    """Where spots land: x, y (N,) mm, derivatives (N, 2, 15), valid (N,) bool.
 
     ``leaving`` (N,) is the cosine between the order and the part's normal, 0 where
     the order does not leave.
@@ -130,6 +132,8 @@ class _Trace:
     flight: FloatArray
     hit: FloatArray  # from the screen origin
     valid: NDArray[np.bool_]
+    cover: FloatArray  # (N, 1)
+    walk: FloatArray  # of the exit point, a unit of cover
 
 
 def _beam(local: FloatArray) -> FloatArray:
@@ -180,7 +184,9 @@ def _trace(local: FloatArray) -> _Trace:
     towards = _dot(out, axes[:, 2])
     valid = (kn2 > GRAZING**2) & (towards > GRAZING) & (facing < -GRAZING)
     towards = np.where(np.abs(towards) > GRAZING, towards, GRAZING)
-    from_centre = start + reach[:, None] * k
+    walk = one_way(k, frame.n) + one_way(out, frame.n)
+    cover = local[:, Local.COVER, None]
+    from_centre = start + reach[:, None] * k + cover * walk
     from_centre[:, 2] -= local[:, Local.DISTANCE]
     flight = -_dot(from_centre, axes[:, 2]) / towards
     return _Trace(
@@ -200,11 +206,13 @@ def _trace(local: FloatArray) -> _Trace:
         flight=flight,
         hit=from_centre + flight[:, None] * out,
         valid=valid,
+        cover=cover,
+        walk=walk,
     )
 
 
 def landing(local: FloatArray) -> Landing:
-    """Reported screen position of spots with local quantities ``local`` (N, 14).
+    """Reported screen position of spots with local quantities ``local`` (N, 15).
 
     Invalid rows (order not leaving, or missing the screen plane) hold finite
     numbers that mean nothing; ``valid`` tells them.
@@ -265,18 +273,30 @@ def _origin_tangent(
     return np.asarray(moved)
 
 
+def _walk_tangent(
+    trace: _Trace, d_k: FloatArray, d_out: FloatArray, d_n: FloatArray
+) -> FloatArray:
+    """How the exit point moves inside the cover."""
+    n = trace.frames[0].n
+    moved = one_way_tangent(trace.k, n, d_k, d_n)
+    return trace.cover * (moved + one_way_tangent(trace.out, n, d_out, d_n))
+
+
 def _put_part_tangents(trace: _Trace, jacobian: FloatArray) -> None:
     zero, still = np.zeros_like(trace.kt), np.zeros_like(trace.k)
     d_out = _out_tangent(trace, zero + 1.0, zero, None)
-    _put(trace, jacobian, Local.Q, _hit_tangent(trace, d_out, still))
+    d_exit = _walk_tangent(trace, still, d_out, still)
+    _put(trace, jacobian, Local.Q, _hit_tangent(trace, d_out, d_exit))
     columns = (Local.INCIDENCE, Local.AZIMUTH, Local.TILT)
     for column, d_frame in zip(columns, trace.frames[1:], strict=True):
         d_kt, d_kh = _dot(trace.k, d_frame.g), _dot(trace.k, d_frame.h)
         d_out = _out_tangent(trace, d_kt, d_kh, d_frame)
         d_origin = _origin_tangent(trace, d_frame.n, still, still)
+        d_origin = d_origin + _walk_tangent(trace, still, d_out, d_frame.n)
         _put(trace, jacobian, column, _hit_tangent(trace, d_out, d_origin))
     d_origin = _origin_tangent(trace, still, still, still, 1.0)
     _put(trace, jacobian, Local.SURFACE, _hit_tangent(trace, still, d_origin))
+    _put(trace, jacobian, Local.COVER, _hit_tangent(trace, still, trace.walk))
 
 
 def _put_beam_tangents(trace: _Trace, local: FloatArray, jacobian: FloatArray) -> None:
@@ -285,6 +305,7 @@ def _put_beam_tangents(trace: _Trace, local: FloatArray, jacobian: FloatArray) -
     d_k = _stack(np.zeros_like(e), np.cos(e), np.sin(e))
     d_out = _out_tangent(trace, _dot(d_k, frame.g), _dot(d_k, frame.h), None)
     d_origin = _origin_tangent(trace, still, d_k, still)
+    d_origin = d_origin + _walk_tangent(trace, d_k, d_out, still)
     _put(trace, jacobian, Local.ELEVATION, _hit_tangent(trace, d_out, d_origin))
     for column, axis in ((Local.BEAM_X, 0), (Local.BEAM_Y, 1)):
         d_start = still.copy()

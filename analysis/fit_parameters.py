@@ -40,6 +40,7 @@ class Source(StrEnum):
     MAP = "screen map"
     BEAM = "beam height, offset and elevation"
     SEAT = "seat of the part (zero, azimuth, tilt, surface)"
+    COVER = "cover through which the part is read"
     HARMONICS = "stage errors, 1 to 4 per turn"
     STEPS = "stage repeatability"
 
@@ -68,7 +69,7 @@ class Parameter:
 class FitProblem:
     """Everything the solver needs besides the orders; made by ``fit_problem``.
 
-    ``base`` (N, 14) local quantities with every parameter at its prior mean (column
+    ``base`` (N, 15) local quantities with every parameter at its prior mean (column
     Q holds lambda/d for the nominal pitch, without the order). ``step_group`` (N,)
     numbers the steps; ``whitener`` (N, 2, 2) turns residuals into independent
     unit-variance ones.
@@ -103,6 +104,7 @@ def fit_problem(
         bench.stage.direction * wrapped_deg(table.stage_deg - table.mount_deg)
     )
     base[:, Local.DISTANCE] = bench.screen.distance_mm
+    base[:, Local.COVER] = part.cover_mm
     keys = np.stack([table.step, table.laser, np.round(table.mount_deg * 1e6)], axis=1)
     _, group = np.unique(keys, axis=0, return_inverse=True)
     group = group.reshape(-1).astype(np.int64)
@@ -175,6 +177,18 @@ def parameter_set(table: OrderTable, bench: Bench, part: Part) -> tuple[Paramete
                 label, "bench", source, Kind.LOCAL, u, unit, scale, column, everything
             )
         )
+    cover = Parameter(
+        "cover thickness",
+        "part",
+        Source.COVER,
+        Kind.LOCAL,
+        part.u_cover_mm,
+        "mm",
+        1.0,
+        Local.COVER,
+        everything,
+    )
+    unknowns.append(cover)
     unknowns += _seat_parameters(table, bench, part)
     unknowns += _harmonics(table, bench)
     u_term = screen.u_map_mm / np.sqrt(TERMS)

@@ -77,7 +77,7 @@ def initial_state(problem: FitProblem) -> FitState:
 def local_quantities(
     problem: FitProblem, order: IntArray, state: FitState
 ) -> FloatArray:
-    """Local quantities (N, 14) of the spots for given orders and state."""
+    """Local quantities (N, 15) of the spots for given orders and state."""
     local = problem.base.copy()
     log_q = np.zeros(local.shape[0])
     for parameter, value in zip(problem.parameters, state.values, strict=True):

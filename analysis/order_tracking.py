@@ -106,28 +106,38 @@ def _choose(
     for row in np.flatnonzero(assigned & (second < CLEARLY_SECOND_2)).tolist():
         assigned[row] = False
         reasons[row] = Rejection.TWO_ORDERS
-    for row in _second_best(problem.step_group, order, best, assigned):
+    for row in _second_best(problem, order, best, assigned):
         assigned[row] = False
         reasons[row] = Rejection.SECOND_BEST
     return Assignment(order, assigned, best, reasons)
 
 
+CLEARLY_BRIGHTER = 3.0
+
+
 def _second_best(
-    group: IntArray,
+    problem: FitProblem,
     order: IntArray,
     distance_2: FloatArray,
     assigned: NDArray[np.bool_],
 ) -> list[int]:
-    """Spots of a step that compete with a nearer one for the same order."""
-    taken: set[tuple[int, int]] = set()
+    """Spots of a step that compete with a better one for the same order.
+
+    A ghost runs beside its order all the way; only its faintness tells it. So a
+    clearly brighter spot wins, and among equals the nearer.
+    """
+    group, brightness = problem.step_group, problem.table.brightness
+    rivals: dict[tuple[int, int], list[int]] = {}
+    for row in np.flatnonzero(assigned).tolist():
+        rivals.setdefault((int(group[row]), int(order[row])), []).append(row)
     losers = []
-    for index in np.argsort(distance_2, kind="stable"):
-        if not assigned[index]:
-            continue
-        key = (int(group[index]), int(order[index]))
-        if key in taken:
-            losers.append(int(index))
-        taken.add(key)
+    for rows in rivals.values():
+        kept = rows
+        if brightness is not None:
+            most = max(float(brightness[row]) for row in rows)
+            kept = [row for row in rows if brightness[row] * CLEARLY_BRIGHTER >= most]
+        best = min(kept, key=lambda row: float(distance_2[row]))
+        losers += [row for row in rows if row != best]
     return losers
 
 

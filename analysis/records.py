@@ -90,8 +90,8 @@ class OrderTable:
 
     ``laser`` holds indices into ``laser_names``. ``order`` holds UNKNOWN_ORDER where
     it is not known. ``ux_mm``/``uy_mm`` are standard uncertainties; ``cxy_mm2`` is the
-    covariance of x and y. ``air`` is None or an (N, 3) array of temperature_C,
-    pressure_hPa, humidity_percent at each spot.
+    covariance of x and y. ``brightness`` (any one unit) tells an order from its ghosts
+    where it is known.
     """
 
     step: IntArray
@@ -105,6 +105,7 @@ class OrderTable:
     ux_mm: FloatArray
     uy_mm: FloatArray
     cxy_mm2: FloatArray
+    brightness: FloatArray | None = None
 
     def __len__(self) -> int:
         return int(self.step.shape[0])
@@ -113,7 +114,7 @@ class OrderTable:
         """The rows that ``keep`` (boolean mask or indices, length N) selects."""
         return OrderTable(
             **{
-                name: (value if name == "laser_names" else value[keep])
+                name: value[keep] if isinstance(value, np.ndarray) else value
                 for name, value in self.__dict__.items()
             }
         )

@@ -39,6 +39,7 @@ class Speckle:
 
 
 NO_SPECKLE = Speckle(0.0, 2.0)
+TYPICAL_SPECKLE = Speckle(0.8, 2.0)
 
 
 def position_covariance(

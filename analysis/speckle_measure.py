@@ -17,7 +17,8 @@ from pitchsweep.analysis.speckle_grain import FWHM_PER_W, NO_SPECKLE, Speckle
 
 _LAGS = 6
 _CENTRE = (0, _LAGS)
-_LEAST_LIGHT = 0.05
+_MOST_CONTRAST = 1.2
+"""Fully developed speckle has 1; few grains may show a little more."""
 _GRID_W = np.geomspace(0.6, 5.0, 50)
 
 
@@ -131,6 +132,7 @@ def _best(
     for w in _GRID_W:
         shape = np.exp(-square / w**2) * signal - loss * (w / loss_w) ** 2
         power = float((once * shape * seen).sum() / (once * shape**2).sum())
+        power = min(power, _MOST_CONTRAST**2)
         left = float((once * (seen - power * shape) ** 2).sum())
         if left < best and power > 0.0:
             best = left

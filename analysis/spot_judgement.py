@@ -11,6 +11,11 @@ from pitchsweep.analysis.spot_fit import SpotFit
 from pitchsweep.analysis.spot_window import BoolArray, Window
 
 
+_FEW_GRAINS = 3.0
+"""Variance grows by this over the number of grains in a spot's area 4 pi s1 s2: the
+weights come from a shape that was fitted to few grains (measured on drawn speckle)."""
+
+
 @dataclass(frozen=True)
 class SpotLimits:
     """What a spot must be; lengths in px.
@@ -117,13 +122,14 @@ class FrameSide:
 def judged(
     window: Window,
     fit: SpotFit,
-    seen: Misfit,
+    speckle: Speckle,
     side: FrameSide,
     limits: SpotLimits,
     step: int,
 ) -> Spot | RejectedSpot:
     """The spot as it is stated, or the first reason not to use it."""
-    spot = _stated(window, fit, seen)
+    seen = misfit(fit, speckle)
+    spot = _stated(window, fit, seen, speckle)
     refusal = _refusal(window, fit, spot, seen, side, limits)
     if refusal is None:
         return spot
@@ -131,12 +137,13 @@ def judged(
     return RejectedSpot(step, spot.column_px, spot.row_px, "px", reason, detail)
 
 
-def _stated(window: Window, fit: SpotFit, seen: Misfit) -> Spot:
+def _stated(window: Window, fit: SpotFit, seen: Misfit, speckle: Speckle) -> Spot:
     major, minor, angle = fit.shape.widths()
     exposure = exposure_used_ms(window, fit)
     used = next(k for k in window.layers if k.exposure_ms == exposure)
     noise = (used.quiet_variance * window.binning**2) ** 0.5 / exposure
-    (cc, cr), (_, rr) = fit.covariance * seen.ratio
+    few = 1.0 + _FEW_GRAINS * speckle.noise_area() / (4.0 * np.pi * major * minor)
+    (cc, cr), (_, rr) = fit.covariance * (seen.ratio * few)
     return Spot(
         column_px=fit.shape.column_px,
         row_px=fit.shape.row_px,

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.camera_noise import CameraNoise, measured_noise_dn
 from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
-from pitchsweep.analysis.speckle_grain import NO_SPECKLE, Speckle
+from pitchsweep.analysis.speckle_grain import NO_SPECKLE, TYPICAL_SPECKLE, Speckle
 from pitchsweep.analysis.speckle_measure import GrainSample, measure_speckle
 from pitchsweep.analysis.spot_candidates import (
     Candidate,
@@ -27,7 +27,6 @@ from pitchsweep.analysis.spot_judgement import (
     SpotLimits,
     judged,
     light_over_noise,
-    misfit,
 )
 from pitchsweep.analysis.spot_scene import (
     Exposure,
@@ -112,13 +111,17 @@ def _with_speckle(
     scene: StepScene, found: list[FittedCandidate]
 ) -> tuple[Speckle, list[FittedCandidate]]:
     """Speckle seen, and the fits renewed with it; twice, as weights matter to both."""
-    grain = NO_SPECKLE
-    for _ in range(2):
-        grain = _measured(found)
-        if grain.contrast == 0.0:
-            break
-        found = [refit(scene, item, grain) for item in found]
-    return grain, found
+    grain, renewed = _measured(found), found
+    if grain.contrast == 0.0 and not all(f.fit.converged for f in found):
+        # Weights without speckle may be what kept them from converging.
+        grain = TYPICAL_SPECKLE
+        renewed = [f if f.fit.converged else refit(scene, f, grain) for f in found]
+        grain = _measured(renewed)
+    if grain.contrast == 0.0:
+        return grain, found
+    renewed = [refit(scene, item, grain) for item in renewed]
+    grain = _measured(renewed)
+    return grain, [refit(scene, item, grain) for item in renewed]
 
 
 def _without(light: LightMap, found: Sequence[FittedCandidate]) -> LightMap:
@@ -156,7 +159,7 @@ def _measured(found: Sequence[FittedCandidate]) -> Speckle:
     In binned windows the grain is seen in bins; contrast and grain of bins stand for
     the same noise per area.
     """
-    good = [f for f in found if f.fit.converged]
+    good = [f for f in found if _shows_grain(f)]
     good.sort(key=lambda f: -light_over_noise(f.fit))
     binning = good[0].fit.binning if good else 1
     good = [f for f in good if f.fit.binning == binning]
@@ -167,6 +170,14 @@ def _measured(found: Sequence[FittedCandidate]) -> Speckle:
     pale = seen.contrast < 0.3 and minor
     wide = pale and seen.grain_fwhm_px > 0.8 * float(np.median(minor))
     return NO_SPECKLE if wide or seen.grain_fwhm_px > _COARSEST_GRAIN_PX else seen
+
+
+def _shows_grain(item: FittedCandidate) -> bool:
+    """Whether a fit is a clear spot, not a streak or a leftover."""
+    if not item.fit.converged or light_over_noise(item.fit) < 20.0:
+        return False
+    major, minor, _ = item.fit.shape.widths()
+    return major < 4.0 * minor
 
 
 def _sample(item: FittedCandidate) -> GrainSample:
@@ -210,8 +221,7 @@ def _answer(
     rejected: list[RejectedSpot] = []
     bright: list[Shape] = []
     for item in found:
-        seen = misfit(item.fit, speckle)
-        answer = judged(item.window, item.fit, seen, scene.side, limits, step)
+        answer = judged(item.window, item.fit, speckle, scene.side, limits, step)
         shape = item.fit.shape
         if isinstance(answer, Spot) and _in_skirt(shape, bright):
             answer = RejectedSpot(

@@ -83,5 +83,6 @@ def twin_sweep(
         ux_mm=column("ux_mm"),
         uy_mm=column("uy_mm"),
         cxy_mm2=np.zeros(n),
+        brightness=column("brightness"),
     )
     return TwinSweep(table, truth, column("order"))
