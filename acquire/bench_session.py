@@ -155,6 +155,7 @@ def guard_config(request: BenchRequest, twin: TwinHandle) -> GuardConfig:
             dialect=dialect,
             identity=emission.unit_identity,
             keep_alive_ms=emission.keep_alive_ms,
+            has_shutter=emission.switches == "head-shutter",
         ),
         permit=RehearsalPermit(
             key=twin.proof_key,

@@ -20,7 +20,6 @@ from pitchsweep.analysis.report_context import GateRow as GateShown
 from pitchsweep.analysis.result_file import order_text
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
-from pitchsweep.safety.safety_errors import CAUTION
 
 MOST_FRAMES = 6
 PER_STEP = ("light-requested", "dark-requested")
@@ -33,7 +32,6 @@ def context_of_table(bench: Bench, part: Part) -> ReportContext:
         screen=screen_facts(bench),
         simulated=bench.twin is not None,
         bench_facts=bench_facts(bench),
-        cautions=(CAUTION,),
     )
 
 
@@ -49,7 +47,6 @@ def context_of_run(record: RunRecord, result: PitchResult) -> ReportContext:
         run_facts=_facts(record),
         gate_history=gate_shown(record.gate),
         frames=_frames(record, result),
-        cautions=(CAUTION,),
         ledger_entries=int(count) if count else None,
         ledger_head=record.meta.get("ledger_head", ""),
     )

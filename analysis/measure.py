@@ -38,7 +38,7 @@ ASSUMED_ABSENT = (
     "camera shift or scale drift during the sweep",
     "drift of the beam's direction and of the wavelength",
     "wobble of the stage axis, worm period, leftover backlash",
-    "curvature of the part, a cover layer, grooves curved across the beam",
+    "curvature of the part, grooves curved across the beam",
     "pitch gradient across the beam's footprint",
 )
 

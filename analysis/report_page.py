@@ -105,6 +105,7 @@ def _values(result: PitchResult, context: ReportContext) -> dict[str, Any]:
         ],
         "u_pitch": significant(result.u_pitch_nm),
         "seen": seen_rows(result),
+        "absent": result.assumed_absent,
         "nuisances": [n for n in nuisances if not n.name.startswith(FOLDED)],
         "more_nuisances": [n for n in nuisances if n.name.startswith(FOLDED)],
         "reasons": reason_rows(result),
