@@ -73,7 +73,8 @@ class SpotSearch:
     """What one step's frames gave: accepted spots and refused candidates.
 
     ``speckle_contrast`` and ``grain_fwhm_px`` are the speckle that the stated
-    covariances allow for (contrast 0: none seen).
+    covariances allow for (contrast 0: none seen); ``speckle_measured`` whether these
+    frames themselves told it.
     """
 
     spots: tuple[Spot, ...]
@@ -82,6 +83,7 @@ class SpotSearch:
     noise_dn: float
     speckle_contrast: float = 0.0
     grain_fwhm_px: float = 0.0
+    speckle_measured: bool = False
 
 
 @dataclass(frozen=True)

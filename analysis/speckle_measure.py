@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import cv2
 import numpy as np
 
-from pitchsweep.analysis.records import FloatArray
+from pitchsweep.analysis.records import FloatArray, SpotSearch
 from pitchsweep.analysis.speckle_grain import FWHM_PER_W, NO_SPECKLE, Speckle
 
 _LAGS = 6
@@ -63,7 +63,7 @@ def measure_speckle(samples: Sequence[GrainSample]) -> Speckle | None:
     signal = np.sum([p.signal for p in products], axis=0)
     error = np.sqrt(np.sum([p.error_square for p in products], axis=0))
     light = float(signal[_CENTRE])
-    if light <= 0.0 or float(error[_CENTRE]) > 0.1 * light:
+    if light <= 0.0 or float(error[_CENTRE]) > 0.2 * light:
         return None
     floor = sum(p.rounding for p in products)
     near = float(seen[0, _LAGS + 1] + seen[1, _LAGS])
@@ -74,15 +74,17 @@ def measure_speckle(samples: Sequence[GrainSample]) -> Speckle | None:
     return _fitted(samples, seen, signal)
 
 
-def pooled_speckle(seen: Sequence[Speckle]) -> Speckle | None:
-    """One speckle for a run from what its steps gave (medians); None for none given.
+def pooled_speckle(searches: Sequence[SpotSearch]) -> Speckle | None:
+    """One speckle for a run: medians over the steps that measured it, None if none did.
 
-    Steps that saw none count with contrast 0; grain is that of those that saw some.
+    Few grains a step make single measurements uncertain by a fifth: search again with
+    this, or give it to the steps that follow.
     """
+    seen = [s for s in searches if s.speckle_measured]
     if not seen:
         return None
-    contrast = float(np.median([s.contrast for s in seen]))
-    grains = [s.grain_fwhm_px for s in seen if s.contrast > 0.0]
+    contrast = float(np.median([s.speckle_contrast for s in seen]))
+    grains = [s.grain_fwhm_px for s in seen if s.speckle_contrast > 0.0]
     if contrast == 0.0 or not grains:
         return NO_SPECKLE
     return Speckle(contrast, float(np.median(grains)))

@@ -10,7 +10,6 @@ from pitchsweep.analysis.speckle_grain import Speckle
 from pitchsweep.analysis.spot_fit import SpotFit
 from pitchsweep.analysis.spot_window import BoolArray, Window
 
-
 _FEW_GRAINS = 3.0
 """Variance grows by this over the number of grains in a spot's area 4 pi s1 s2: the
 weights come from a shape that was fitted to few grains (measured on drawn speckle)."""
@@ -130,7 +129,7 @@ def judged(
     """The spot as it is stated, or the first reason not to use it."""
     seen = misfit(fit, speckle)
     spot = _stated(window, fit, seen, speckle)
-    refusal = _refusal(window, fit, spot, seen, side, limits)
+    refusal = _refusal(window, fit, spot, seen, speckle, side, limits)
     if refusal is None:
         return spot
     reason, detail = refusal
@@ -162,6 +161,7 @@ def _refusal(
     fit: SpotFit,
     spot: Spot,
     seen: Misfit,
+    speckle: Speckle,
     side: FrameSide,
     limits: SpotLimits,
 ) -> tuple[Rejection, str] | None:
@@ -175,7 +175,8 @@ def _refusal(
         return Rejection.EDGE, f"{room:.1f} px from the edge"
     if light_over_noise(fit) < limits.least_light_over_noise:
         return Rejection.TOO_FAINT, f"light {light_over_noise(fit):.1f} of its noise"
-    problem = _shape_problem(spot, seen, limits)
+    most = limits.largest_misfit_share * (1.0 + speckle.contrast)
+    problem = _shape_problem(spot, seen, limits, most)
     if problem is not None:
         return Rejection.SHAPE, problem
     (var_column, _), (_, var_row) = spot.covariance_px2
@@ -185,12 +186,14 @@ def _refusal(
     return None
 
 
-def _shape_problem(spot: Spot, seen: Misfit, limits: SpotLimits) -> str | None:
+def _shape_problem(
+    spot: Spot, seen: Misfit, limits: SpotLimits, most: float
+) -> str | None:
     major, minor = spot.sigma_px
     if minor < limits.least_sigma_px or major > limits.largest_sigma_px:
         return f"radii {major:.1f} and {minor:.1f} px"
     if major > limits.largest_aspect * minor:
         return f"{major / minor:.1f} times as long as wide"
-    if seen.share > limits.largest_misfit_share:
+    if seen.share > most:
         return f"{100 * seen.share:.0f} % of it is not a Gaussian"
     return None

@@ -75,14 +75,17 @@ def find_spots(
     settings = settings or SearchSettings()
     scene = step_scene(exposures, dark, camera, settings.factor)
     light = light_map(scene.smalls)
-    grain = speckle or NO_SPECKLE
+    grain, measured = speckle or NO_SPECKLE, False
     found = _fit_all(scene, candidates(light, threshold=settings.threshold), grain, [])
     rest = _without(light, found)
     late = candidates(rest, threshold=settings.threshold)
     found += _fit_all(scene, late, grain, found)
     if speckle is None:
-        grain, found = _with_speckle(scene, found)
-    return _answer(scene, _distinct(found), grain, settings.limits, step)
+        seen, found = _with_speckle(scene, found)
+        grain = seen or TYPICAL_SPECKLE
+        measured = seen is not None
+    answer = _answer(scene, _distinct(found), grain, settings.limits, step)
+    return replace(answer, speckle_measured=measured)
 
 
 def _fit_all(
@@ -109,19 +112,28 @@ def _covers(shape: Shape, item: Candidate) -> bool:
 
 def _with_speckle(
     scene: StepScene, found: list[FittedCandidate]
-) -> tuple[Speckle, list[FittedCandidate]]:
-    """Speckle seen, and the fits renewed with it; twice, as weights matter to both."""
+) -> tuple[Speckle | None, list[FittedCandidate]]:
+    """Speckle seen, and the fits renewed with it; twice, as weights matter to both.
+
+    None where there is too little light to see any: the fits then allow for the
+    speckle that is typical of a diffusing screen.
+    """
     grain, renewed = _measured(found), found
-    if grain.contrast == 0.0 and not all(f.fit.converged for f in found):
+    if _none_seen(grain) and not all(f.fit.converged for f in found):
         # Weights without speckle may be what kept them from converging.
-        grain = TYPICAL_SPECKLE
-        renewed = [f if f.fit.converged else refit(scene, f, grain) for f in found]
+        renewed = [
+            f if f.fit.converged else refit(scene, f, TYPICAL_SPECKLE) for f in found
+        ]
         grain = _measured(renewed)
-    if grain.contrast == 0.0:
+    if grain is not None and grain.contrast == 0.0:
         return grain, found
-    renewed = [refit(scene, item, grain) for item in renewed]
+    renewed = [refit(scene, item, grain or TYPICAL_SPECKLE) for item in renewed]
     grain = _measured(renewed)
-    return grain, [refit(scene, item, grain) for item in renewed]
+    return grain, [refit(scene, item, grain or TYPICAL_SPECKLE) for item in renewed]
+
+
+def _none_seen(speckle: Speckle | None) -> bool:
+    return speckle is None or speckle.contrast == 0.0
 
 
 def _without(light: LightMap, found: Sequence[FittedCandidate]) -> LightMap:
@@ -153,8 +165,8 @@ def _box(shape: Shape, light: LightMap) -> tuple[slice, slice]:
     )
 
 
-def _measured(found: Sequence[FittedCandidate]) -> Speckle:
-    """Speckle from the four brightest fits; none where there is too little light.
+def _measured(found: Sequence[FittedCandidate]) -> Speckle | None:
+    """Speckle from the four brightest fits; None where there is too little light.
 
     In binned windows the grain is seen in bins; contrast and grain of bins stand for
     the same noise per area.
@@ -163,7 +175,9 @@ def _measured(found: Sequence[FittedCandidate]) -> Speckle:
     good.sort(key=lambda f: -light_over_noise(f.fit))
     binning = good[0].fit.binning if good else 1
     good = [f for f in good if f.fit.binning == binning]
-    seen = measure_speckle([_sample(f) for f in good[:4]]) or NO_SPECKLE
+    seen = measure_speckle([_sample(f) for f in good[:4]])
+    if seen is None:
+        return None
     seen = replace(seen, grain_fwhm_px=seen.grain_fwhm_px * binning)
     minor = [f.fit.shape.widths()[1] for f in good[:4]]
     # Coarse, or pale and as wide as the spots: no grain, but beams of another form.
