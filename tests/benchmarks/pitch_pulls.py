@@ -111,7 +111,7 @@ def main() -> None:
     parser.add_argument("--job", nargs="*", default=EIGHT)
     options = parser.parse_args()
     print(
-        "job                rms pull  expected      coverage  u/d      u/bound wrong refused"
+        f"{'job':18} rms pull  expected      coverage  u/d      u/bound wrong refused"
     )
     everything = []
     for name in options.job:
