@@ -114,12 +114,11 @@ class OrderTable:
 
     def take(self, keep: NDArray[np.bool_] | IntArray) -> "OrderTable":
         """The rows that ``keep`` (boolean mask or indices, length N) selects."""
-        return OrderTable(
-            **{
-                name: value[keep] if isinstance(value, np.ndarray) else value
-                for name, value in self.__dict__.items()
-            }
-        )
+        columns: dict[str, Any] = {
+            name: value[keep] if isinstance(value, np.ndarray) else value
+            for name, value in self.__dict__.items()
+        }
+        return OrderTable(**columns)
 
 
 @dataclass(frozen=True)
