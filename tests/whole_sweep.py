@@ -1,4 +1,4 @@
-"""Runs the program as its user does: a whole sweep in an empty folder, and its truth."""
+"""Runs the program as its user does: a whole sweep in an empty folder, its truth."""
 
 import json
 import shutil
