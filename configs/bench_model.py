@@ -6,8 +6,9 @@ nominal values and their uncertainties are the priors of the joint fit.
 
 from typing import Annotated, Literal, Self
 
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
+from pitchsweep.configs.enclosure_model import Enclosure
 from pitchsweep.configs.settings_base import (
     AngleDeg,
     Fraction,
@@ -96,13 +97,35 @@ class Camera(Settings):
     readout_s: Annotated[float, Field(ge=0.0, le=60.0)] = 0.03
 
 
+class InfraredFilter(Settings):
+    """What keeps a doubled laser's infrared in, and what was measured behind it."""
+
+    description: Text
+    residual_mw: Annotated[float, Field(ge=0.0, le=1000.0)]
+    measured_on: Annotated[str, Field(pattern=r"^\d{4}-\d{2}-\d{2}$")]
+
+
 class Laser(Settings):
-    """One laser: vacuum wavelength with its standard uncertainty, power at the part."""
+    """One laser: vacuum wavelength with its standard uncertainty, power at the part.
+
+    ``full_drive_mw`` is what reaches the part at full drive with every attenuator out
+    (``power_mw`` where it is not given); ``divergence_mrad`` the full 1/e2 angle (the
+    smallest that diffraction allows where it is not given).
+    """
 
     vacuum_wavelength_nm: Annotated[float, Field(ge=400.0, le=700.0)]
     u_wavelength_nm: Annotated[float, Field(gt=0.0, le=20.0)]
     power_mw: Annotated[float, Field(gt=0.0, le=500.0)]
+    full_drive_mw: Annotated[float, Field(gt=0.0, le=1e5)] | None = None
+    divergence_mrad: Annotated[float, Field(gt=0.0, le=500.0)] | None = None
     frequency_doubled: bool = False
+    infrared_filter: InfraredFilter | None = None
+
+    @model_validator(mode="after")
+    def _full_drive_is_the_most(self) -> Self:
+        if self.full_drive_mw is not None and self.full_drive_mw < self.power_mw:
+            raise ValueError("full_drive_mw must not be below power_mw")
+        return self
 
 
 class Air(Settings):
@@ -117,13 +140,32 @@ class Air(Settings):
     co2_ppm: Annotated[float, Field(ge=0.0, le=2000.0)] = 450.0
 
 
-class Emission(Settings):
-    """The unit that switches light. A static control line is refused by design."""
+LINES = ("keep-alive", "pulses")
 
-    line: Literal["keep-alive"] = "keep-alive"
+
+class Emission(Settings):
+    """The unit that switches light. A static control line is refused by design.
+
+    ``keep-alive``: a unit that is spoken to and drops out by itself. ``pulses``: a
+    time-out relay fed over a modem control line, which closes after several pulses.
+    """
+
+    line: Literal["keep-alive", "pulses"] = "keep-alive"
     switches: Literal["head-shutter", "laser"] = "head-shutter"
     keep_alive_ms: Annotated[int, Field(ge=50, le=250)] = 200
     unit_identity: Name = "bench-unit-1"
+    interlock_channels: Annotated[Literal[1, 2], NotTruth] = 1
+
+    @field_validator("line", mode="before")
+    @classmethod
+    def _never_a_static_level(cls, value: object) -> object:
+        if value in LINES:
+            return value
+        raise ValueError(
+            f"'{value}' may not hold light: a static level stays up when a program"
+            " hangs, and RTS and DTR rise when a port is merely opened; allowed "
+            + " or ".join(LINES)
+        )
 
 
 class SerialPort(Settings):
@@ -154,6 +196,7 @@ class Bench(Settings):
     lasers: Annotated[dict[Name, Laser], Field(min_length=1, max_length=8)]
     air: Air = Air()
     emission: Emission = Emission()
+    enclosure: Enclosure | None = None
     reading_u_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1
     twin: TwinSettings | None = None
     ports: Ports | None = None
@@ -171,8 +214,10 @@ __all__ = [
     "Bench",
     "Camera",
     "Emission",
+    "Enclosure",
     "Fraction",
     "Hole",
+    "InfraredFilter",
     "Laser",
     "NonNegative",
     "Ports",

@@ -9,6 +9,7 @@ from pitchsweep.drivers.dialect import Answer
 from pitchsweep.drivers.line_client import LineClient
 
 DEFAULT_TIMEOUT_S = 0.1
+_SECOND: dict[str, bool | None] = {"SHUT": True, "AJAR": False, "ABSENT": None}
 
 
 @dataclass(frozen=True)
@@ -16,7 +17,8 @@ class UnitState:
     """What the unit says of itself in one answer.
 
     ``reset_count`` counts presses of its reset button, ``lapse_count`` how often the
-    light went out because no keep-alive came in time, both since the unit started.
+    keep-alive time ran out (also in a trial in the dark), both since the unit started.
+    ``second_closed`` is None where the unit has one interlock channel only.
     """
 
     light_on: bool
@@ -24,6 +26,22 @@ class UnitState:
     shutter_open: bool
     reset_count: int
     lapse_count: int
+    second_closed: bool | None = None
+
+    @property
+    def interlock_closed(self) -> bool:
+        """True when every channel that the unit reports is closed."""
+        return self.door_closed and self.second_closed is not False
+
+    @property
+    def interlock_open(self) -> bool:
+        """True when every channel that the unit reports is open."""
+        return not self.door_closed and self.second_closed is not True
+
+    @property
+    def channels_agree(self) -> bool:
+        """False when two channels contradict each other."""
+        return self.interlock_closed or self.interlock_open
 
 
 class EmissionClient:
@@ -55,6 +73,13 @@ class EmissionClient:
         """Asks for light, or holds it for one more keep-alive time."""
         return _read_state(self._ask("keep"))
 
+    def try_time_out(self) -> UnitState:
+        """Starts the keep-alive time once with the shutter held shut: stays dark.
+
+        ``lapse_count`` rises by one when it has run out. DeviceRefused while lit.
+        """
+        return _read_state(self._ask("try"))
+
     def dark(self) -> UnitState:
         """Takes the light away at once."""
         return _read_state(self._ask("dark"))
@@ -78,4 +103,5 @@ def _read_state(answer: Answer) -> UnitState:
         shutter_open=answer.word("shutter") == "CLEAR",
         reset_count=int(answer.number_of("resets")),
         lapse_count=int(answer.number_of("lapses")),
+        second_closed=_SECOND[answer.word("second")],
     )

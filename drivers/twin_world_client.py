@@ -33,9 +33,9 @@ class TwinWorldClient:
         """Air and part temperature now."""
         return AirReading(**self._link.ask("air"))
 
-    def set_door(self, *, closed: bool) -> None:
-        """The person on the spot closes or opens the door."""
-        self._link.ask("door", closed=closed)
+    def set_door(self, *, closed: bool, channel: int | None = None) -> None:
+        """The person on the spot closes or opens the door (or one contact of it)."""
+        self._link.ask("door", closed=closed, channel=channel)
 
     def press_reset(self) -> None:
         """The person on the spot presses the unit's reset button."""

@@ -13,7 +13,10 @@ from pitchsweep.drivers.twin.unit_log import UnitLog
 
 
 class EmissionUnit:
-    """Light held by keep-alive, door contact, shutter position, reset counter."""
+    """Light held by keep-alive, door contacts, shutter position, reset counter.
+
+    With ``channels`` 2 the door has a second contact, read and set apart.
+    """
 
     def __init__(
         self,
@@ -21,6 +24,7 @@ class EmissionUnit:
         *,
         keep_alive_s: float,
         has_shutter: bool,
+        channels: int = 1,
         clock: Callable[[], float] = time.monotonic,
     ) -> None:
         self.keep_alive_s = keep_alive_s
@@ -30,8 +34,10 @@ class EmissionUnit:
         self._lock = threading.Lock()
         self._lit = False
         self._lit_until_s = 0.0
+        self._tried_until_s: float | None = None
         self._stuck = False
-        self._door_closed = True
+        self._jammed = False
+        self._closed = {number: True for number in range(1, channels + 1)}
         self._resets = 0
         self._lapses = 0
 
@@ -39,16 +45,28 @@ class EmissionUnit:
         """Lights up, or stays lit for one more keep-alive time."""
         with self._lock:
             self._lapse_if_due()
+            self._tried_until_s = None
             self._lit_until_s = self._clock() + self.keep_alive_s
             if not self._lit:
                 self._lit = True
                 self._log.write("light", "on", "keep-alive")
+
+    def try_time_out(self) -> bool:
+        """Lets the keep-alive time run once without light; False while lit."""
+        with self._lock:
+            self._lapse_if_due()
+            if self._lit:
+                return False
+            self._tried_until_s = self._clock() + self.keep_alive_s
+            self._log.write("time-out", "tried", "shutter held shut")
+            return True
 
     def dark(self, why: str = "asked") -> None:
         """Goes dark, unless stuck."""
         with self._lock:
             self._lapse_if_due()
             self._lit_until_s = 0.0
+            self._tried_until_s = None
             if self._lit and not self._stuck:
                 self._lit = False
                 self._log.write("light", "off", why)
@@ -57,6 +75,8 @@ class EmissionUnit:
         """Goes dark when the keep-alive has run out; seconds left, None when dark."""
         with self._lock:
             self._lapse_if_due()
+            if self._tried_until_s is not None:
+                return max(self._tried_until_s - self._clock(), 0.0)
             if not self._lit or self._stuck:
                 return None
             return max(self._lit_until_s - self._clock(), 0.0)
@@ -73,12 +93,27 @@ class EmissionUnit:
             self._stuck = True
             self._log.write("shutter", "stuck", "fault on schedule")
 
-    def set_door(self, closed: bool) -> None:
-        """The person on the spot closes or opens the door."""
+    def jam_shutter(self) -> None:
+        """Fault: the shutter stays clear whatever is asked; its contact says so."""
         with self._lock:
-            if closed != self._door_closed:
-                self._door_closed = closed
-                self._log.write("door", "closed" if closed else "open", "person")
+            self._stuck = self._jammed = True
+            self._log.write("shutter", "stuck", "fault on schedule")
+
+    def set_door(self, closed: bool, channel: int | None = None) -> None:
+        """The person on the spot closes or opens the door, or one contact of it."""
+        with self._lock:
+            before = dict(self._closed)
+            for number in self._closed if channel is None else (channel,):
+                if number in self._closed:
+                    self._closed[number] = closed
+            if self._closed != before:
+                why = "person" if channel is None else f"channel {channel} only"
+                self._log.write("door", "closed" if closed else "open", why)
+
+    def interlock(self) -> tuple[bool, bool | None]:
+        """Whether each contact is closed; None for a second one that is not there."""
+        with self._lock:
+            return self._closed[1], self._closed.get(2)
 
     def press_reset(self) -> None:
         """The person on the spot presses the reset button."""
@@ -86,20 +121,39 @@ class EmissionUnit:
             self._resets += 1
             self._log.write("reset", str(self._resets), "person")
 
+    def resets(self) -> int:
+        """How often the reset button was pressed."""
+        with self._lock:
+            return self._resets
+
     def standing(self) -> str:
         """The line that every answer about the light carries."""
         with self._lock:
             self._lapse_if_due()
             clear = self._lit or not self._has_shutter
+            held = self._lit and not (
+                self._jammed and self._clock() >= self._lit_until_s
+            )
+            second = self._closed.get(2)
             return (
-                f"LIGHT {'LIT' if self._lit else 'DARK'}"
-                f" DOOR {'SHUT' if self._door_closed else 'AJAR'}"
+                f"LIGHT {'LIT' if held else 'DARK'}"
+                f" DOOR {_contact(self._closed[1])}"
+                f" SECOND {'ABSENT' if second is None else _contact(second)}"
                 f" SHUTTER {'CLEAR' if clear else 'SHUT'}"
                 f" RESETS {self._resets} LAPSES {self._lapses}"
             )
 
     def _lapse_if_due(self) -> None:
-        if self._lit and not self._stuck and self._clock() >= self._lit_until_s:
+        now_s = self._clock()
+        if self._tried_until_s is not None and now_s >= self._tried_until_s:
+            self._tried_until_s = None
+            self._lapses += 1
+            self._log.write("time-out", "shown", "keep-alive ran out, stayed dark")
+        if self._lit and not self._stuck and now_s >= self._lit_until_s:
             self._lit = False
             self._lapses += 1
             self._log.write("light", "off", "keep-alive ran out")
+
+
+def _contact(closed: bool) -> str:
+    return "SHUT" if closed else "AJAR"

@@ -9,7 +9,13 @@ ACTIONS_AT: dict[str, tuple[str, ...]] = {
     "stage-ask": ("silent", "garbage", "late"),
     "stage-move": ("stall", "wrong-place", "zero-lost"),
     "unit-ask": ("silent", "garbage", "late"),
-    "unit-keep": ("silent", "light-stuck", "door-opens"),
+    "unit-keep": (
+        "silent",
+        "light-stuck",
+        "shutter-stuck",
+        "door-opens",
+        "one-channel-opens",
+    ),
     "exposure": ("refused",),
 }
 

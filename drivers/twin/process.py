@@ -91,6 +91,7 @@ def _run(configuration: TwinConfiguration, asked_to_end: threading.Event) -> Non
         log,
         keep_alive_s=bench.emission.keep_alive_ms * 1e-3,
         has_shutter=bench.emission.switches == "head-shutter",
+        channels=bench.emission.interlock_channels,
     )
     truth = draw_truth(bench, configuration.part, configuration.seed)
     truth_text = json.dumps(truth.to_json(), indent=1) + "\n"

@@ -11,7 +11,7 @@ LONGEST_CHALLENGE_BYTES = 32
 
 
 class UnitFirmware:
-    """Answers WHO, PROVE, KEEP, DARK and STATE."""
+    """Answers WHO, PROVE, KEEP, TRY, DARK and STATE."""
 
     def __init__(
         self, unit: EmissionUnit, *, identity: str, key: bytes, faults: FaultSchedule
@@ -36,6 +36,9 @@ class UnitFirmware:
         if words == ["DARK"]:
             self._unit.dark()
             return self._unit.standing()
+        if words == ["TRY"]:
+            tried = self._unit.try_time_out()
+            return self._unit.standing() if tried else "DECLINED LIT"
         if words == ["STATE"]:
             return self._unit.standing()
         if words == ["WHO"]:
@@ -46,14 +49,17 @@ class UnitFirmware:
 
     def _keep(self) -> str | None:
         fault = self._faults.due("unit-keep")
-        if fault is not None and fault.does == "door-opens":
+        does = "" if fault is None else fault.does
+        if does == "door-opens":
             self._unit.set_door(closed=False)
+        if does == "one-channel-opens":
+            self._unit.set_door(closed=False, channel=2)
         self._unit.keep()
-        if fault is not None and fault.does == "light-stuck":
+        if does == "light-stuck":
             self._unit.stick()
-        if fault is not None and fault.does == "silent":
-            return None
-        return self._unit.standing()
+        if does == "shutter-stuck":
+            self._unit.jam_shutter()
+        return None if does == "silent" else self._unit.standing()
 
     def _prove(self, challenge: str) -> str:
         try:

@@ -85,7 +85,9 @@ class WorldAsks:
             "now": lambda m: world.time.now_s(),
             "wait": lambda m: world.wait(float(m["seconds"])),
             "seat": lambda m: world.seat(int(m["mount"]), float(m["mount_deg"])),
-            "door": lambda m: world.unit.set_door(bool(m["closed"])),
+            "door": lambda m: world.unit.set_door(
+                bool(m["closed"]), channel=m.get("channel")
+            ),
             "press-reset": lambda m: world.unit.press_reset(),
             "cut-power": lambda m: world.cut_power(),
             "air": lambda m: asdict(world.read_air()),

@@ -72,7 +72,9 @@ def _refused_bench(tmp_path: Path, old: str, new: str) -> tuple[str, int]:
         (
             "line: keep-alive",
             "line: rts",
-            "emission.line = rts: allowed keep-alive",
+            "emission.line: 'rts' may not hold light: a static level stays up when a"
+            " program hangs, and RTS and DTR rise when a port is merely opened;"
+            " allowed keep-alive or pulses",
         ),
         (
             "travel_min_deg: -180.0",

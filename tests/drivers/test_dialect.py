@@ -36,8 +36,15 @@ ANSWERS: list[tuple[Dialect, str, dict[str, Any], bytes]] = [
     (
         UNIT,
         "standing",
-        {"light": "LIT", "door": "AJAR", "shutter": "CLEAR", "resets": 2, "lapses": 0},
-        b"N7 LIGHT LIT DOOR AJAR SHUTTER CLEAR RESETS 2 LAPSES 0\n",
+        {
+            "light": "LIT",
+            "door": "AJAR",
+            "second": "ABSENT",
+            "shutter": "CLEAR",
+            "resets": 2,
+            "lapses": 0,
+        },
+        b"N7 LIGHT LIT DOOR AJAR SECOND ABSENT SHUTTER CLEAR RESETS 2 LAPSES 0\n",
     ),
 ]
 

@@ -46,13 +46,13 @@ def unit(tmp_path: Path) -> Iterator[_Unit]:
 
 
 def test_light_lapses_without_keep_alive(unit: _Unit) -> None:
-    answer = b"N1 LIGHT LIT DOOR SHUT SHUTTER CLEAR RESETS 0 LAPSES 0\n"
+    answer = b"N1 LIGHT LIT DOOR SHUT SECOND ABSENT SHUTTER CLEAR RESETS 0 LAPSES 0\n"
     assert unit.say(b"N1 KEEP\n") == [answer]
     unit.time_s += 0.19
     assert unit.firmware.due_in_s() == pytest.approx(0.01)
     unit.time_s += 0.02
     assert unit.firmware.due_in_s() is None
-    answer = b"N2 LIGHT DARK DOOR SHUT SHUTTER SHUT RESETS 0 LAPSES 1\n"
+    answer = b"N2 LIGHT DARK DOOR SHUT SECOND ABSENT SHUTTER SHUT RESETS 0 LAPSES 1\n"
     assert unit.say(b"N2 STATE\n") == [answer]
     assert unit.rows() == [("light", "on"), ("light", "off")]
 
@@ -69,7 +69,7 @@ def test_an_open_door_is_told_but_does_not_cut_the_light(unit: _Unit) -> None:
     unit.say(b"N1 KEEP\n")
     unit.unit.set_door(closed=False)
     unit.unit.press_reset()
-    answer = b"N2 LIGHT LIT DOOR AJAR SHUTTER CLEAR RESETS 1 LAPSES 0\n"
+    answer = b"N2 LIGHT LIT DOOR AJAR SECOND ABSENT SHUTTER CLEAR RESETS 1 LAPSES 0\n"
     assert unit.say(b"N2 KEEP\n") == [answer]
     assert b"LIGHT DARK" in unit.say(b"N3 DARK\n")[0]
     assert unit.rows()[-1] == ("light", "off")
