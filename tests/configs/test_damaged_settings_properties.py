@@ -35,6 +35,11 @@ def _whole(model: type[Settings]) -> dict[str, Any]:
         "u_pitch_nm": 0.1,
         "certificate": "invented 1",
     }
+    job["bench"]["lasers"]["red"]["infrared_filter"] = {
+        "description": "invented",
+        "residual_mw": 0.001,
+        "measured_on": "2026-01-15",
+    }
     if model is Job:
         return job
     return dict(job[{Bench: "bench", Part: "part"}.get(model, "recipe")])
