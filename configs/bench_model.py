@@ -6,7 +6,7 @@ nominal values and their uncertainties are the priors of the joint fit.
 
 from typing import Annotated, Literal, Self
 
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from pitchsweep.configs.enclosure_model import Enclosure
 from pitchsweep.configs.settings_base import (
@@ -138,6 +138,9 @@ class Air(Settings):
     humidity_percent: Annotated[float, Field(ge=0.0, le=100.0)] = 50.0
     u_humidity_percent: Annotated[float, Field(gt=0.0, le=50.0)] = 10.0
     co2_ppm: Annotated[float, Field(ge=0.0, le=2000.0)] = 450.0
+
+
+LINES = ("keep-alive", "pulses")
 
 
 class Emission(Settings):
