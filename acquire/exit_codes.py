@@ -28,13 +28,14 @@ def exit_table() -> tuple[tuple[type[BaseException], int], ...]:
     )
     from pitchsweep.configs.config_errors import ConfigError
     from pitchsweep.drivers.driver_errors import DriverError
-    from pitchsweep.safety.safety_errors import SafetyError
+    from pitchsweep.safety.safety_errors import SafetyError, SignerRefused
 
     return (
         (ConfigError, REFUSED),
         (JobRefused, REFUSED),
         (RunRefused, REFUSED),
         (InputRefused, REFUSED),
+        (SignerRefused, REFUSED),
         (SafetyError, GATE),
         (DriverError, DEVICE),
         (StorageFailed, DEVICE),

@@ -15,7 +15,9 @@ from typing import Any, TypeVar
 from pydantic import ValidationError
 
 from pitchsweep.configs.allowed_values import allowed_keys, allowed_text
+from pitchsweep.configs.answers_model import Answers
 from pitchsweep.configs.bench_model import Bench
+from pitchsweep.configs.checklist_model import Checklist
 from pitchsweep.configs.config_errors import Problem, SettingsRefused
 from pitchsweep.configs.job_model import Job, JobFile
 from pitchsweep.configs.part_model import Part
@@ -56,6 +58,16 @@ def read_part(place: Place) -> Part:
 def read_recipe(place: Place) -> Recipe:
     """The recipe at ``place``. Raises SettingsRefused."""
     return read_settings(find(place, "recipes"), Recipe)
+
+
+def read_checklist(place: Place) -> Checklist:
+    """The checklist at ``place``. Raises SettingsRefused."""
+    return read_settings(find(place, "checklists"), Checklist)
+
+
+def read_answers(path: Path) -> Answers:
+    """The answers in the file at ``path``. Raises SettingsRefused."""
+    return read_settings(path, Answers)
 
 
 def read_job(place: Place) -> LoadedJob:

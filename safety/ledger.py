@@ -8,15 +8,18 @@ LedgerBroken.
 
 import hashlib
 import os
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
+from dataclasses import replace
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import IO
 
 from pitchsweep.safety.ledger_chain import (
     Entry,
+    Judge,
     LedgerCheck,
+    Signed,
     check_lines,
     entry_line,
     next_entry,
@@ -25,6 +28,8 @@ from pitchsweep.safety.ledger_chain import (
 from pitchsweep.safety.safety_errors import LedgerBroken
 
 _CHUNK = 65536
+Sign = Callable[[str], Sequence[Signed]]
+"""An entry's hash -> the signatures over it."""
 
 
 class Ledger:
@@ -34,32 +39,47 @@ class Ledger:
         self.path = path
 
     def append(
-        self, kind: str, data: Mapping[str, object], utc: str | None = None
+        self,
+        kind: str,
+        data: Mapping[str, object],
+        utc: str | None = None,
+        *,
+        sign: Sign | None = None,
+        before_write: Callable[[Entry], None] | None = None,
     ) -> Entry:
         """Adds an entry, durable on return, and gives it back.
 
-        ``data`` holds JSON values; ``utc`` defaults to now. Raises OSError when the
-        disk refuses, LedgerBroken when the last whole line is wrong.
+        ``data`` holds JSON values; ``utc`` defaults to now; ``sign`` gives the
+        signatures; ``before_write`` sees the entry while no other program can write,
+        and keeps it out by raising. Raises OSError when the disk refuses, LedgerBroken
+        when the last whole line is wrong.
         """
         self.path.parent.mkdir(parents=True, exist_ok=True)
         is_new = not self.path.exists()
         with _locked(self.path), open(self.path, "a+b") as file:
             last = self._repaired_tail(file)
             entry = next_entry(last, kind=kind, data=data, utc=utc or utc_text())
+            if sign is not None:
+                entry = replace(entry, signed=tuple(sign(entry.hash)))
+            if before_write is not None:
+                before_write(entry)
             _write_durably(file, entry_line(entry))
         if is_new:
             _sync_folder(self.path.parent)
         return entry
 
-    def verify(self, known: Mapping[int, str] | None = None) -> LedgerCheck:
+    def verify(
+        self, known: Mapping[int, str] | None = None, judge: Judge | None = None
+    ) -> LedgerCheck:
         """Walks the whole file; an absent file is an empty ledger.
 
-        ``known``: heads kept elsewhere, entry number -> hash, that must be met.
+        ``known``: heads kept elsewhere, entry number -> hash, that must be met;
+        ``judge`` is asked about every entry.
         """
         if not self.path.exists():
             return check_lines([], known=known)
         with open(self.path, "rb") as file:
-            return _check_file(file, known)
+            return _check_file(file, known, judge)
 
     def _repaired_tail(self, file: IO[bytes]) -> Entry | None:
         line, torn = _tail(file)
@@ -109,7 +129,9 @@ def utc_text(utc_s: float | None = None) -> str:
     return when.isoformat(timespec="milliseconds").replace("+00:00", "Z")
 
 
-def _check_file(file: IO[bytes], known: Mapping[int, str] | None) -> LedgerCheck:
+def _check_file(
+    file: IO[bytes], known: Mapping[int, str] | None, judge: Judge | None
+) -> LedgerCheck:
     torn = 0
 
     def whole_lines() -> Iterator[bytes]:
@@ -120,7 +142,7 @@ def _check_file(file: IO[bytes], known: Mapping[int, str] | None) -> LedgerCheck
                 return
             yield line[:-1]
 
-    check = check_lines(whole_lines(), known=known)
+    check = check_lines(whole_lines(), known=known, judge=judge)
     return LedgerCheck(check.count, check.head, check.broken_entry, check.reason, torn)
 
 

@@ -2,21 +2,35 @@
 
 Each line is the canonical JSON of an entry; its ``hash`` is the SHA-256 of the hash
 before it followed by the canonical JSON of the entry without ``hash``. Whoever can
-rewrite the whole file can make a consistent one: only heads kept elsewhere show that.
+rewrite the whole file can make a consistent one: only heads kept elsewhere show that,
+or signatures: where people act, ``signed`` holds their signatures over ``hash``. It
+stands outside the hash; who must have signed is inside (``people_ledger``).
 """
 
 import hashlib
 import json
-from collections.abc import Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 
 GENESIS = "0" * 64
 FIELDS = frozenset({"n", "utc", "kind", "data", "prev", "hash"})
+SIGNED = "signed"
+
+
+@dataclass(frozen=True)
+class Signed:
+    """A public key and its Ed25519 signature, both in hexadecimal."""
+
+    key: str
+    signature: str
 
 
 @dataclass(frozen=True)
 class Entry:
-    """One line: number from 1, UTC text, kind, data, hash before and own hash."""
+    """One line: number from 1, UTC text, kind, data, hash before and own hash.
+
+    ``signed`` holds the signatures over ``hash``, none where no person acted.
+    """
 
     n: int
     utc: str
@@ -24,6 +38,11 @@ class Entry:
     data: Mapping[str, object]
     prev: str
     hash: str
+    signed: tuple[Signed, ...] = ()
+
+
+Judge = Callable[[Entry], str | None]
+"""None for an entry that may stand where it does, otherwise the reason."""
 
 
 @dataclass(frozen=True)
@@ -76,7 +95,10 @@ def next_entry(
 
 def entry_line(entry: Entry) -> bytes:
     """The entry as its line, line feed included."""
-    return canonical_json(vars(entry)) + b"\n"
+    values = {key: value for key, value in vars(entry).items() if key != SIGNED}
+    if entry.signed:
+        values[SIGNED] = [vars(signed) for signed in entry.signed]
+    return canonical_json(values) + b"\n"
 
 
 def read_entry(line: bytes) -> Entry:
@@ -88,7 +110,7 @@ def read_entry(line: bytes) -> Entry:
         values = json.loads(line)
     except ValueError as error:
         raise ValueError("not JSON") from error
-    if not isinstance(values, dict) or set(values) != FIELDS:
+    if not isinstance(values, dict) or set(values) - {SIGNED} != FIELDS:
         raise ValueError("not an entry with its six fields")
     if not isinstance(values["n"], int) or not isinstance(values["data"], dict):
         raise ValueError("fields of the wrong type")
@@ -96,10 +118,23 @@ def read_entry(line: bytes) -> Entry:
         raise ValueError("fields of the wrong type")
     if canonical_json(values) != line:
         raise ValueError("not in canonical spelling")
+    signed = _signatures(values.pop(SIGNED)) if SIGNED in values else ()
     body = {key: value for key, value in values.items() if key != "hash"}
     if entry_hash(values["prev"], body) != values["hash"]:
         raise ValueError("its hash does not fit its content")
-    return Entry(**values)
+    return Entry(**values, signed=signed)
+
+
+def _signatures(values: object) -> tuple[Signed, ...]:
+    fields = {"key", "signature"}
+    if not isinstance(values, list) or not values:
+        raise ValueError("its signatures are no list")
+    for value in values:
+        if not isinstance(value, dict) or set(value) != fields:
+            raise ValueError("a signature of it lacks key or signature")
+        if not all(isinstance(text, str) for text in value.values()):
+            raise ValueError("a signature of it is no text")
+    return tuple(Signed(**value) for value in values)
 
 
 def why_not_next(prev: Entry | None, entry: Entry) -> str | None:
@@ -113,12 +148,16 @@ def why_not_next(prev: Entry | None, entry: Entry) -> str | None:
 
 
 def check_lines(
-    lines: Iterable[bytes], torn_bytes: int = 0, known: Mapping[int, str] | None = None
+    lines: Iterable[bytes],
+    torn_bytes: int = 0,
+    known: Mapping[int, str] | None = None,
+    judge: Judge | None = None,
 ) -> LedgerCheck:
     """Walks whole lines (without line feeds) and stops at the first broken entry.
 
     ``known`` holds heads that were kept elsewhere, entry number -> hash; an entry that
-    differs from its own, or is missing at the end, is broken too.
+    differs from its own, or is missing at the end, is broken too. ``judge`` is asked
+    about every entry whose place in the chain is right, in order.
     """
     kept = dict(known or {})
     last: Entry | None = None
@@ -127,6 +166,8 @@ def check_lines(
         try:
             entry = read_entry(line)
             reason = why_not_next(last, entry) or _why_not_kept(entry, kept)
+            if reason is None and judge is not None:
+                reason = judge(entry)
         except ValueError as error:
             reason = str(error)
         if reason is not None:

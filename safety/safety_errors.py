@@ -4,6 +4,7 @@ SafetyError
  +-- GateRefused         not allowed to begin; nothing was switched on
  +-- GateTripped         emission was dropped and stays off until acknowledged
  |    +-- GuardLost      the guard process itself ended or fell silent
+ +-- SignerRefused       a signer, key, passphrase or answer cannot be used (exit 2)
  +-- LedgerBroken        an entry of the ledger does not follow from the one before
  +-- GateTableGap        the gate has no entry for what happened (state unchanged)
 """
@@ -54,6 +55,17 @@ class GuardLost(GateTripped):
 
     def __init__(self, reason: str) -> None:
         super().__init__("guard-lost", reason)
+
+
+class SignerRefused(SafetyError):
+    """Raised when a signer, key or passphrase cannot be used; nothing was signed."""
+
+    exit_code: ClassVar[int] = 2
+
+    def __init__(self, name: str, what: str, remedy: str) -> None:
+        self.name = name
+        self.what = what
+        super().__init__(f"signer '{name}': {what}; nothing was signed\n  {remedy}")
 
 
 class LedgerBroken(SafetyError):
