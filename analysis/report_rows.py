@@ -18,7 +18,7 @@ from pitchsweep.analysis.records import (
     RejectedSpot,
 )
 from pitchsweep.analysis.report_context import Fact, PartFacts, ReportContext
-from pitchsweep.analysis.result_file import order_text
+from pitchsweep.analysis.result_file import agreement_words, order_text, used_words
 
 FAR_IN_U = 2.0
 """A subset or a nuisance further off than this many of its own u is pointed out."""
@@ -131,10 +131,10 @@ def result_facts(result: PitchResult) -> list[Fact]:
         Fact("Coverage factor k", f"{result.k:.2f} ({dof} degrees of freedom)"),
         Fact("Coverage", plain_percent(result.coverage)),
         Fact("Stated for", f"{result.pitch_at_C:g} °C"),
-        Fact("Used", f"{result.spots_used} spots of {result.steps_used} steps"),
+        Fact("Used", used_words(result)),
         Fact("Orders", used or "none"),
         Fact("Not used", f"{len(result.rejected)} spots"),
-        Fact("Reduced chi-squared", f"{result.reduced_chi2:.2f}"),
+        Fact("Reduced chi-squared", agreement_words(result)),
     ]
 
 

@@ -26,9 +26,8 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
     """Every key of result.json, in plain Python types that JSON can hold.
 
     Lengths in nm. ``dof`` and other side values that are not finite become None (an
-    infinite ``dof`` means that no finite number limits k). ``decision`` is an object:
-    ``outcome`` (None without a tolerance), ``rule``, ``conformance_probability``,
-    ``lower_nm``, ``upper_nm``.
+    infinite ``dof`` means that no finite number limits k). ``decision`` is the
+    outcome (None without a tolerance); its rule, probability and limits stand beside.
 
     Raises NoResult where the pitch or its uncertainty is not a finite number.
     """
@@ -49,7 +48,8 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
         "budget": [_budget(line) for line in result.budget],
         "nuisance": [_nuisance(item) for item in result.nuisance],
         "pitches_seen": [_pitch_seen(seen) for seen in result.pitches_seen],
-        "decision": _decision(result.decision),
+        **_decision(result.decision),
+        "assumed_absent": list(result.assumed_absent),
         "warnings": list(result.warnings),
         "software": result.software,
         "inputs_sha256": result.inputs_sha256,
@@ -67,6 +67,19 @@ def result_json(result: PitchResult) -> str:
     return text + "\n"
 
 
+def used_words(result: PitchResult) -> str:
+    """How many spots of how many steps the fit used."""
+    steps = "step" if result.steps_used == 1 else "steps"
+    return f"{result.spots_used} spots of {result.steps_used} {steps}"
+
+
+def agreement_words(result: PitchResult) -> str:
+    """Reduced chi-squared, or that there are too few spots for one."""
+    if not math.isfinite(result.reduced_chi2):
+        return "not known: no more spots than unknowns"
+    return f"{result.reduced_chi2:.2f}"
+
+
 def summary_lines(result: PitchResult) -> list[str]:
     """What a terminal shows: pitch, U, k, decision, what was used, warnings."""
     pitch = rounded(result.pitch_nm, result.U_pitch_nm)
@@ -76,9 +89,9 @@ def summary_lines(result: PitchResult) -> list[str]:
         f"           k = {result.k:.2f}, coverage {plain_percent(result.coverage)},"
         f" U/pitch = {relative(result.U_pitch_nm, result.pitch_nm)}",
         f"Decision   {decision_words(result.decision)}",
-        f"Used       {result.spots_used} spots of {result.steps_used} steps,"
+        f"Used       {used_words(result)},"
         f" orders {used}; {len(result.rejected)} spots not used",
-        f"Agreement  reduced chi-squared {result.reduced_chi2:.2f}",
+        f"Agreement  reduced chi-squared {agreement_words(result)}",
     ]
     lines += [f"Warning    {warning}" for warning in result.warnings]
     return [line.replace("\N{MINUS SIGN}", "-") for line in lines]
@@ -138,9 +151,10 @@ def _pitch_seen(seen: PitchSeen) -> dict[str, Any]:
 
 def _decision(decision: Decision) -> dict[str, Any]:
     return {
-        "outcome": decision.outcome,
-        "rule": decision.rule,
+        "decision": decision.outcome,
+        "decision_rule": decision.rule,
         "conformance_probability": _number(decision.conformance_probability),
-        "lower_nm": _number(decision.lower_nm),
-        "upper_nm": _number(decision.upper_nm),
+        "tolerance_nm": None
+        if decision.lower_nm is None or decision.upper_nm is None
+        else [_number(decision.lower_nm), _number(decision.upper_nm)],
     }

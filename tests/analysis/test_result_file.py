@@ -59,8 +59,8 @@ def test_the_text_reads_back_to_the_same_values() -> None:
     }
     assert back["rejected"][0] == {"reason": "no-order-there", "count": 12}
     assert back["nuisance"][0]["unit"] == "mm"
-    assert back["decision"]["outcome"] == "conforms"
-    assert back["decision"]["rule"].startswith("guarded acceptance")
+    assert back["decision"] == "conforms"
+    assert back["decision_rule"].startswith("guarded acceptance")
 
 
 def test_what_is_not_finite_becomes_null() -> None:
