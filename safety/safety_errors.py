@@ -2,10 +2,12 @@
 
 SafetyError
  +-- GateRefused         not allowed to begin; nothing was switched on
+ |    +-- OutsideHazardLimits  no published limit holds there, so no figure is given
  +-- GateTripped         emission was dropped and stays off until acknowledged
  |    +-- GuardLost      the guard process itself ended or fell silent
  +-- SignerRefused       a signer, key, passphrase or answer cannot be used (exit 2)
  +-- LedgerBroken        an entry of the ledger does not follow from the one before
+ +-- RecordForged        a register or signed record is not what the ledger has
  +-- GateTableGap        the gate has no entry for what happened (state unchanged)
 """
 
@@ -30,6 +32,19 @@ class GateRefused(SafetyError):
         self.what = what
         self.remedy = remedy
         super().__init__(f"{what}; nothing was switched on\n{remedy} ({CAUTION})")
+
+
+class OutsideHazardLimits(GateRefused):
+    """Raised when a hazard figure is asked for where the limits do not reach."""
+
+    def __init__(self, quantity: str, value: str, allowed: str) -> None:
+        self.quantity = quantity
+        self.value = value
+        self.allowed = allowed
+        super().__init__(
+            f"{quantity} {value} lies outside what the hazard limits cover",
+            f"allowed: {allowed}; otherwise the officer works the figures out",
+        )
 
 
 class GateTripped(SafetyError):
@@ -79,6 +94,15 @@ class LedgerBroken(SafetyError):
             f"{path}: entry {entry} of the ledger is broken: {reason}\n"
             "keep the file as it is, show it to the safety officer, begin a new one"
         )
+
+
+class RecordForged(SafetyError):
+    """Raised when a file beside the ledger says otherwise than the ledger."""
+
+    def __init__(self, path: str, what: str, remedy: str) -> None:
+        self.path = path
+        self.what = what
+        super().__init__(f"{path}: {what}\n  {remedy}")
 
 
 class GateTableGap(SafetyError):
