@@ -35,6 +35,10 @@ class SmallFrame:
     noise: Float32Array
     clipped: Float32Array | None
 
+    def level(self) -> float:
+        """The middle of the background, DN."""
+        return float(np.median(self.background[::4, ::4]))
+
     def plane_at(self, column_px: float, row_px: float, reach_px: float) -> Plane:
         """The background around a place of the full frame, from samples at reach."""
         reach = max(reach_px, 2.0 * self.factor)
@@ -129,7 +133,9 @@ def candidates(
     if not mask.any():
         return []
     bridged = cv2.morphologyEx(mask, cv2.MORPH_CLOSE, np.ones((3, 3), np.uint8))
-    count, labels, stats, _ = cv2.connectedComponentsWithStats(bridged, connectivity=8)
+    count, labels, stats, _ = cv2.connectedComponentsWithStatsWithAlgorithm(
+        bridged, 8, cv2.CV_32S, cv2.CCL_GRANA
+    )
     smooth = cv2.GaussianBlur(light.rate, (3, 3), 0)
     found = []
     order = np.argsort(-stats[1:count, cv2.CC_STAT_AREA], kind="stable")[: 4 * at_most]
@@ -176,13 +182,17 @@ def _noise_map(
     background: Float32Array, excess: Float32Array, noise: CameraNoise
 ) -> Float32Array:
     """Noise of each small pixel: the model's shape, the frame's own size."""
-    signal = np.maximum(background - noise.black_level_dn, 0.0)
-    model = np.sqrt(noise.gain_dn_per_e * signal + noise.read_noise_dn**2)
-    size = robust_width(excess / model)
+    model = background - np.float32(noise.black_level_dn)
+    np.maximum(model, np.float32(0.0), out=model)
+    model *= np.float32(noise.gain_dn_per_e)
+    model += np.float32(noise.read_noise_dn**2)
+    np.sqrt(model, out=model)
+    size = robust_width(excess[::4, ::4] / model[::4, ::4])
     # The median of 3 x 3 leaves about 1/2.5 of the noise to dither the rounding.
     read = max(noise.read_noise_dn**2 - ROUNDING_VARIANCE_DN2, 0.0) ** 0.5
     least = correlated_rounding_dn(read / 2.5)
-    return np.asarray(np.maximum(model * size, max(least, 1e-3)), dtype=np.float32)
+    model *= np.float32(size)
+    return np.maximum(model, np.float32(max(least, 1e-3)), out=model)
 
 
 def _clipped_share(layer: FrameLayer, factor: int) -> Float32Array | None:

@@ -10,6 +10,7 @@ Parameters, in this order: height (DN a ms), x, y (px from the window's referenc
 a, b, c (1/px^2), plane level (DN a ms), its slopes per column and per row.
 """
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -46,10 +47,10 @@ class Shape:
 
     def widths(self) -> tuple[float, float, float]:
         """rms radii (major, minor) in px, angle of the major axis from +column, rad."""
-        values, vectors = np.linalg.eigh(np.array([[self.a, self.b], [self.b, self.c]]))
-        major, minor = 1.0 / np.sqrt(values)
-        angle = float(np.arctan2(vectors[1, 0], vectors[0, 0]))
-        return float(major), float(minor), angle
+        middle, half = 0.5 * (self.a + self.c), 0.5 * (self.a - self.c)
+        spread = math.hypot(half, self.b)
+        major, minor = (middle - spread) ** -0.5, (middle + spread) ** -0.5
+        return major, minor, 0.5 * math.atan2(-self.b, -half)
 
     def half_sides(self, sigmas: float) -> tuple[float, float]:
         """Half the sides (column, row) of the box that holds ``sigmas`` of it, px."""
@@ -125,7 +126,8 @@ def fit_spot(
             continue
         converged = float(delta @ slope) < _DECREMENT * max(1.0, _chi2(state))
         state, damping = trial, damping * 0.03
-        normal, slope = _normal(state, x, y)
+        if not converged:
+            normal, slope = _normal(state, x, y)
     shape = _shape(state.parameters, reference)
     covariance, modes = _covariance(window, state, x, y, speckle)
     return SpotFit(

@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from pitchsweep.analysis.camera_noise import CameraNoise, measured_noise_dn
+from pitchsweep.analysis.camera_noise import CameraNoise
 from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
 from pitchsweep.analysis.speckle_grain import NO_SPECKLE, TYPICAL_SPECKLE, Speckle
 from pitchsweep.analysis.speckle_measure import GrainSample, measure_speckle
@@ -33,6 +33,7 @@ from pitchsweep.analysis.spot_scene import (
     FittedCandidate,
     StepScene,
     fit_candidate,
+    lost_in_unevenness,
     refit,
     step_scene,
 )
@@ -246,6 +247,15 @@ def _answer(
                 Rejection.SHAPE,
                 "faint, in the skirts of a much brighter spot",
             )
+        if isinstance(answer, Spot) and lost_in_unevenness(scene, item.fit):
+            answer = RejectedSpot(
+                step,
+                shape.column_px,
+                shape.row_px,
+                "px",
+                Rejection.TOO_FAINT,
+                "the background around it is as uneven",
+            )
         if isinstance(answer, Spot):
             spots.append(answer)
         else:
@@ -256,8 +266,8 @@ def _answer(
     return SpotSearch(
         spots=tuple(spots),
         rejected=tuple(rejected),
-        background_dn=float(np.median(first.background)),
-        noise_dn=measured_noise_dn(scene.layers[0].frame),
+        background_dn=first.level(),
+        noise_dn=scene.noise_dn[0],
         speckle_contrast=speckle.contrast,
         grain_fwhm_px=speckle.grain_fwhm_px,
     )
