@@ -5,7 +5,6 @@ an eye is the enclosure's business. Skin limits are compared with the beam's mea
 irradiance over its own 1/e2 disc.
 """
 
-import textwrap
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -35,7 +34,6 @@ from pitchsweep.safety.hazard_records import CHECK
 from pitchsweep.safety.laser_class import ClassEstimate, estimate_class
 
 LENS_FOCAL_MM = 50.0
-WIDTH = 88
 EYEWEAR = (
     "optical density alone does not choose eyewear: what it withstands, fit, colour"
     " vision and the officer's judgement belong to it"
@@ -163,45 +161,6 @@ def summed_hazard(
             photochemical += seen / limit.photochemical_w_m2
         skin += disc_irradiance_w_m2(full_drive_mw(laser), beam_mm) / skin_w_m2
     return SummedHazard(exposure_s, thermal, photochemical, skin)
-
-
-def figures_lines(figures: HazardFigures) -> tuple[str, ...]:
-    """The figures as lines of plain text, at most 88 characters each."""
-    smallest = " (smallest possible, assumed)" if figures.divergence_assumed else ""
-    estimate = figures.estimate
-    head = (
-        f"{figures.laser}: {figures.wavelength_nm:g} nm, {figures.power_mw:.3g} mW at"
-        f" full drive, beam {figures.beam_mm:g} mm",
-        f"  divergence {figures.divergence_mrad:.2f} mrad{smallest}",
-        f"  {figures.pupil_power_mw:.3g} mW through 7 mm,"
-        f" {figures.pupil_irradiance_w_m2:.3g} W/m2 over it",
-        f"  class {estimate.laser_class} estimated;"
-        f" an accidental look counts {figures.accidental_s:g} s",
-        f"  because {estimate.reason}",
-        "  exposure   eye limit (rule)             x limit  x skin  density"
-        "   direct    lens    matt",
-    )
-    rows = tuple(_time_line(times) for times in figures.times)
-    cautions = dict.fromkeys((*figures.estimate.cautions, *figures.remarks))
-    return _wrapped((*head, *rows, *(f"  {caution}" for caution in cautions)))
-
-
-def _wrapped(lines: Sequence[str]) -> tuple[str, ...]:
-    wrap = textwrap.TextWrapper(WIDTH, subsequent_indent="    ")
-    return tuple(
-        part
-        for line in lines
-        for part in ([line] if len(line) <= WIDTH else wrap.wrap(line))
-    )
-
-
-def _time_line(times: TimeFigures) -> str:
-    limit = f"{times.eye.irradiance_w_m2:.3g} W/m2 {times.eye.rule}"
-    return (
-        f"  {times.exposure_s:7g} s  {limit:<27}  {times.times_limit:7.3g}"
-        f" {times.skin_times_limit:7.2g}  {times.density:7.2f}"
-        f" {times.direct_m:6.1f} m {times.lens_m:5.1f} m {times.diffuse_m:3.2f} m"
-    )
 
 
 def _time_figures(laser: Laser, beam_mm: float, exposure_s: float) -> TimeFigures:
