@@ -32,6 +32,7 @@ from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.safety.permit import refuse_hardware
+from pitchsweep.safety.run_refusals import refuse_unsafe
 from pitchsweep.safety.safety_errors import SafetyError
 
 
@@ -60,6 +61,7 @@ def sweep_job(
     """
     refuse_hardware(job.bench)
     plan = plan_sweep(job, fingerprint(job))
+    refuse_unsafe(job)
     folder = create_run_folder(runs, job)
     progress.say(
         f"{len(plan.steps)} steps, {clock_text(plan.duration_s)} of bench time; "
@@ -84,6 +86,7 @@ def resume_run(path: Path, progress: Progress, open_bench: OpenBench) -> RunFold
     folder = open_run_folder(path)
     refuse_hardware(folder.job.bench)
     plan = plan_sweep(folder.job, fingerprint(folder.job))
+    refuse_unsafe(folder.job)
     lock = take_run_lock(folder.path)
     try:
         with _journal_to_go_on(folder) as journal:
