@@ -57,6 +57,7 @@ def analyse(sources: Sequence[FitSource]) -> Analysed:
         given.table,
         bench=given.bench,
         part=given.part,
+        references=given.references,
         coverage=given.coverage,
         rejected=given.rejected,
     )

@@ -20,7 +20,11 @@ TURN_DEG = 360.0
 
 @dataclass(frozen=True)
 class FitInput:
-    """Spots with the bench and part they belong to; ``name`` says where from."""
+    """Spots with the bench and part they belong to; ``name`` says where from.
+
+    ``part`` is what the fit is about; ``references`` are the other parts among the
+    spots, numbered from 1 in the table's ``part`` column.
+    """
 
     name: str
     table: OrderTable
@@ -29,6 +33,7 @@ class FitInput:
     coverage: float
     rejected: tuple[RejectedSpot, ...] = ()
     warnings: tuple[str, ...] = ()
+    references: tuple[Part, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -45,6 +50,7 @@ class SpotPlace:
     uy_mm: float
     cxy_mm2: float
     brightness: float
+    time_s: float | None = None
 
 
 def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> OrderTable:
@@ -66,15 +72,17 @@ def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> Orde
         uy_mm=column("uy_mm"),
         cxy_mm2=column("cxy_mm2"),
         brightness=column("brightness"),
+        time_s=None if any(r.time_s is None for r in rows) else column("time_s"),
     )
 
 
 def joined(inputs: Sequence[FitInput]) -> FitInput:
-    """One input from several of the same bench and part.
+    """One input from several of the same bench.
 
     Steps are numbered on; every input's mounts count as seatings of their own: they
-    are told apart by whole turns of ``mount_deg``, which change no angle. Raises
-    ValueError for an empty list or where bench or part differ.
+    are told apart by whole turns of ``mount_deg``, which change no angle. Where parts
+    differ, the fit is about the first that has no certified pitch. Raises ValueError
+    for an empty list, where benches differ, or for two parts without certificate.
     """
     if not inputs:
         raise ValueError("nothing to fit")
@@ -86,12 +94,11 @@ def joined(inputs: Sequence[FitInput]) -> FitInput:
             update={"twin": None}
         ):
             raise ValueError(f"{other.name} and {first.name} are of different benches")
-        if other.part != first.part:
-            raise ValueError(f"{other.name} and {first.name} are of different parts")
+    parts = _parts([item.part for item in inputs])
     tables, rejected = [], []
     steps = 0
     for turn, item in enumerate(inputs):
-        tables.append(_moved(item.table, steps, turn))
+        tables.append(_moved(item.table, steps, turn, parts.index(item.part)))
         rejected += [_numbered_on(spot, steps) for spot in item.rejected]
         steps += 1 + max(
             int(item.table.step.max(initial=0)),
@@ -101,21 +108,34 @@ def joined(inputs: Sequence[FitInput]) -> FitInput:
         name=" + ".join(item.name for item in inputs),
         table=_stacked(tables),
         bench=first.bench,
-        part=first.part,
+        part=parts[0],
+        references=parts[1:],
         coverage=first.coverage,
         rejected=tuple(rejected),
         warnings=tuple(w for item in inputs for w in item.warnings),
     )
 
 
-def _moved(table: OrderTable, steps: int, turn: int) -> OrderTable:
-    return OrderTable(
-        **{
-            **table.__dict__,
-            "step": table.step + steps,
-            "mount_deg": table.mount_deg + TURN_DEG * turn,
-        }
-    )
+def _parts(each: Sequence[Part]) -> tuple[Part, ...]:
+    """The different parts, the one that the fit is about first."""
+    different = list(dict.fromkeys(each))
+    open_ones = [part for part in different if part.certified is None]
+    if len(open_ones) > 1:
+        names = " and ".join(part.part for part in open_ones)
+        raise ValueError(f"{names} are different parts, neither with a certified pitch")
+    target = open_ones[0] if open_ones else different[0]
+    return (target, *(part for part in different if part != target))
+
+
+def _moved(table: OrderTable, steps: int, turn: int, part: int) -> OrderTable:
+    columns: dict[str, Any] = {
+        **table.__dict__,
+        "step": table.step + steps,
+        "mount_deg": table.mount_deg + TURN_DEG * turn,
+        "run": np.full(len(table), turn, dtype=np.int64),
+        "part": np.full(len(table), part, dtype=np.int64),
+    }
+    return OrderTable(**columns)
 
 
 def _numbered_on(spot: RejectedSpot, steps: int) -> RejectedSpot:

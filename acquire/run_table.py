@@ -122,6 +122,7 @@ def _places(step: KeptStep) -> list[SpotPlace]:
             uy_mm=spot.uy_mm,
             cxy_mm2=spot.cxy_mm2,
             brightness=spot.brightness,
+            time_s=step.row.planned_s,
         )
         for spot in step.found.spots
     ]

@@ -9,7 +9,7 @@ from collections.abc import Iterator
 import numpy as np
 from numpy.typing import NDArray
 
-from pitchsweep.analysis.fit_parameters import FitProblem
+from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.joint_fit import JointFit, one_step
 from pitchsweep.analysis.records import IntArray, OrderTable, PitchSeen
 

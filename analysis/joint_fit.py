@@ -5,13 +5,14 @@ a step (its angle error); the steps are eliminated by the Schur complement, so c
 linear in the number of steps. Damped Gauss-Newton; priors are extra residuals.
 """
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.analysis.bench_geometry import Local, landing
-from pitchsweep.analysis.fit_parameters import FitProblem, Kind
+from pitchsweep.analysis.fit_parameters import Kind
+from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.records import FloatArray, IntArray
 from pitchsweep.analysis.screen_map import TERMS, map_basis
 
@@ -77,17 +78,15 @@ def initial_state(problem: FitProblem) -> FitState:
 def local_quantities(
     problem: FitProblem, order: IntArray, state: FitState
 ) -> FloatArray:
-    """Local quantities (N, 15) of the spots for given orders and state."""
+    """Local quantities (N, N_LOCAL) of the spots for given orders and state."""
     local = problem.base.copy()
-    log_q = np.zeros(local.shape[0])
+    log_ratio = np.zeros(local.shape[0])
     for parameter, value in zip(problem.parameters, state.values, strict=True):
-        if parameter.kind is Kind.LOCAL and parameter.coefficient is not None:
+        if parameter.kind is Kind.LOCAL:
             local[:, parameter.column] += value * parameter.coefficient
-        elif parameter.kind is Kind.PITCH:
-            log_q -= value
-        elif parameter.kind is Kind.WAVELENGTH and parameter.coefficient is not None:
-            log_q += value * parameter.coefficient
-    local[:, Local.Q] *= order * np.exp(log_q)
+        elif parameter.kind is Kind.LOG_RATIO:
+            log_ratio += value * parameter.coefficient
+    local[:, Local.Q] *= order * np.exp(log_ratio)
     local[:, Local.INCIDENCE] += (
         problem.direction * state.step_error_rad[problem.step_group]
     )
@@ -101,30 +100,29 @@ def predict(problem: FitProblem, order: IntArray, state: FitState) -> Prediction
     basis = map_basis(
         there.x_mm, there.y_mm, problem.half_width_mm, problem.half_height_mm
     )
-    map_x, map_y = _map_values(problem, state.values)
-    stretch = np.empty((local.shape[0], 2, 2))
-    for axis, terms in enumerate((map_x, map_y)):
-        stretch[:, axis, 0] = basis.by_x @ terms
-        stretch[:, axis, 1] = basis.by_y @ terms
-    slopes = there.jacobian + np.einsum("nij,njk->nik", stretch, there.jacobian)
+    terms = _map_terms(problem, state.values)
+    slopes = there.jacobian.copy()
+    moved = []
+    for axis, weight in enumerate(terms):
+        by_x = np.einsum("nt,nt->n", basis.by_x, weight)
+        by_y = np.einsum("nt,nt->n", basis.by_y, weight)
+        slopes[:, axis] += by_x[:, None] * there.jacobian[:, 0]
+        slopes[:, axis] += by_y[:, None] * there.jacobian[:, 1]
+        moved.append(np.einsum("nt,nt->n", basis.value, weight))
     jacobian = np.zeros((local.shape[0], 2, len(problem.parameters)))
     for index, parameter in enumerate(problem.parameters):
-        if parameter.kind is Kind.LOCAL and parameter.coefficient is not None:
-            jacobian[:, :, index] = (
-                slopes[:, :, parameter.column] * parameter.coefficient[:, None]
-            )
-        elif parameter.kind is Kind.PITCH:
-            jacobian[:, :, index] = -slopes[:, :, Local.Q] * local[:, None, Local.Q]
-        elif parameter.kind is Kind.WAVELENGTH and parameter.coefficient is not None:
-            weight = local[:, Local.Q] * parameter.coefficient
+        feels = parameter.coefficient
+        if parameter.kind is Kind.LOCAL:
+            jacobian[:, :, index] = slopes[:, :, parameter.column] * feels[:, None]
+        elif parameter.kind is Kind.LOG_RATIO:
+            weight = local[:, Local.Q] * feels
             jacobian[:, :, index] = slopes[:, :, Local.Q] * weight[:, None]
-        elif parameter.kind is Kind.MAP_X:
-            jacobian[:, 0, index] = basis.value[:, parameter.column]
-        elif parameter.kind is Kind.MAP_Y:
-            jacobian[:, 1, index] = basis.value[:, parameter.column]
+        else:
+            axis = 0 if parameter.kind is Kind.MAP_X else 1
+            jacobian[:, axis, index] = basis.value[:, parameter.column] * feels
     return Prediction(
-        x_mm=there.x_mm + basis.value @ map_x,
-        y_mm=there.y_mm + basis.value @ map_y,
+        x_mm=there.x_mm + moved[0],
+        y_mm=there.y_mm + moved[1],
         jacobian=jacobian,
         by_step=slopes[:, :, Local.INCIDENCE] * problem.direction,
         valid=there.valid,
@@ -132,13 +130,16 @@ def predict(problem: FitProblem, order: IntArray, state: FitState) -> Prediction
     )
 
 
-def _map_values(
+def _map_terms(
     problem: FitProblem, values: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
-    terms = {Kind.MAP_X: np.zeros(TERMS), Kind.MAP_Y: np.zeros(TERMS)}
+    """Weight of every map term at every spot, (N, TERMS) for x and for y."""
+    shape = (problem.base.shape[0], TERMS)
+    terms = {Kind.MAP_X: np.zeros(shape), Kind.MAP_Y: np.zeros(shape)}
     for parameter, value in zip(problem.parameters, values, strict=True):
         if parameter.kind in terms:
-            terms[parameter.kind][parameter.column] = value
+            weight = terms[parameter.kind]
+            weight[:, parameter.column] += value * parameter.coefficient
     return terms[Kind.MAP_X], terms[Kind.MAP_Y]
 
 
@@ -191,8 +192,7 @@ def _normal(
     n, p = jac.shape[0], jac.shape[2]
     flat = jac.reshape(2 * n, p)
     prior = _prior_weight(problem)
-    border = np.zeros((problem.n_steps, p))
-    np.add.at(border, problem.step_group, np.einsum("nip,ni->np", jac, by_step))
+    border = problem.sum_by_step(np.einsum("nip,ni->np", jac, by_step))
     step_weight = 1.0 / problem.u_step_rad**2
     diagonal = step_weight + np.bincount(
         problem.step_group, np.sum(by_step**2, axis=1), problem.n_steps
@@ -345,20 +345,4 @@ def _finish(
         objective=normal.objective,
         iterations=iterations,
         converged=converged,
-    )
-
-
-def with_table(problem: FitProblem, keep: NDArray[np.bool_]) -> FitProblem:
-    """The same problem for some of its spots (steps keep their numbers)."""
-    parameters = tuple(
-        replace(p, coefficient=None if p.coefficient is None else p.coefficient[keep])
-        for p in problem.parameters
-    )
-    return replace(
-        problem,
-        table=problem.table.take(keep),
-        parameters=parameters,
-        base=problem.base[keep],
-        step_group=problem.step_group[keep],
-        whitener=problem.whitener[keep],
     )

@@ -7,19 +7,14 @@ import numpy as np
 
 from pitchsweep.analysis.air_index import AirState
 from pitchsweep.analysis.analysis_errors import InputRefused, NoResult
-from pitchsweep.analysis.budget import (
-    READINGS,
-    REFERENCE_C,
-    after_fit_budget,
-    at_reference,
-    combined_u,
-    fit_budget,
-)
+from pitchsweep.analysis.budget import READINGS, combined_u, fit_budget
 from pitchsweep.analysis.consistency import disagreements, pitches_seen
 from pitchsweep.analysis.decision import coverage_factor, decide, effective_dof
-from pitchsweep.analysis.fit_parameters import FitProblem, Kind, fit_problem
+from pitchsweep.analysis.fit_parameters import Kind
+from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
 from pitchsweep.analysis.joint_fit import JointFit, solve_joint_fit
 from pitchsweep.analysis.order_visibility import why_no_order
+from pitchsweep.analysis.parameter_table import REFERENCE_C, base_pitch_nm
 from pitchsweep.analysis.records import (
     Nuisance,
     OrderTable,
@@ -35,10 +30,9 @@ WORST_RELATIVE_U = 0.1
 """A pitch known worse than this is no result."""
 PERCENT_LEVEL = 2e-3
 ASSUMED_ABSENT = (
-    "camera shift or scale drift during the sweep",
-    "drift of the beam's direction and of the wavelength",
-    "wobble of the stage axis, worm period, leftover backlash",
-    "curvature of the part, grooves curved across the beam",
+    "jumps of camera, beam or wavelength during the sweep",
+    "wobble of the stage axis, leftover backlash, a worm period that is not declared",
+    "grooves curved across the beam, clipping of the beam by the part's edge",
     "pitch gradient across the beam's footprint",
 )
 
@@ -56,13 +50,16 @@ def measure_pitch(
     *,
     bench: Bench,
     part: Part,
+    references: tuple[Part, ...] = (),
     coverage: float = 0.95,
     air: AirState | None = None,
     rejected: tuple[RejectedSpot, ...] = (),
 ) -> PitchResult:
-    """The pitch at 20 deg C that all spots of ``table`` give together.
+    """The pitch of ``part`` at 20 deg C that all spots of ``table`` give together.
 
-    ``air`` is the mean state during the sweep (the bench file's if None);
+    ``references`` are further parts swept on the same bench, index 1 and up in the
+    table's ``part`` column; certified ones carry the wavelength. ``air`` is
+    the mean state during the sweep (the bench file's if None);
     ``rejected`` lists candidates refused before. Raises InputRefused for a mirrored
     or empty table or a laser the bench does not have; NoResult when the data do not
     determine a pitch.
@@ -75,7 +72,7 @@ def measure_pitch(
     table = _on_screen(table, bench, refused)
     if len(table) == 0:
         raise NoResult("no spot lies on the screen outside the beam hole")
-    problem = fit_problem(table, bench, part, air)
+    problem = fit_problem(table, bench, (part, *references), air)
     try:
         clean = clean_fit(problem, part.nominal_within_percent / 100.0)
         problem, fit, scatter, warnings = _with_honest_scatter(problem, clean)
@@ -85,9 +82,7 @@ def measure_pitch(
         raise NoResult(_with_reason(str(error), table, bench, part)) from None
     for index, reason in sorted(clean.reasons.items()):
         refused.append(_rejected_row(table, index, reason))
-    return _result(
-        problem, clean, fit, scatter, bench, part, air, coverage, warnings, refused
-    )
+    return _result(problem, clean, fit, scatter, coverage, warnings, refused)
 
 
 def _check(table: OrderTable, bench: Bench) -> None:
@@ -178,19 +173,13 @@ def _result(
     clean: CleanFit,
     fit: JointFit,
     scatter: _Scatter,
-    bench: Bench,
-    part: Part,
-    air: AirState,
     coverage: float,
     warnings: list[str],
     refused: list[RejectedSpot],
 ) -> PitchResult:
-    reference = at_reference(part.material)
-    swept_nm = part.nominal_pitch_nm * math.exp(fit.state.values[0])
-    pitch_nm = swept_nm * reference.factor
+    part = problem.parts[0]
+    pitch_nm = base_pitch_nm(part) * math.exp(fit.state.values[0])
     budget = fit_budget(problem, fit, pitch_nm)
-    laser = problem.table.laser_names[0]
-    budget += after_fit_budget(pitch_nm, bench, laser, air, part.material)
     u_nm = combined_u(budget)
     if not math.isfinite(u_nm) or u_nm > WORST_RELATIVE_U * pitch_nm:
         raise NoResult(
@@ -270,19 +259,17 @@ def _plain_warnings(
 
 def _nuisances(problem: FitProblem, fit: JointFit) -> tuple[Nuisance, ...]:
     rows = []
-    for index, parameter in enumerate(problem.parameters):
-        if parameter.kind is Kind.PITCH:
-            continue
-        scale = parameter.shown_scale
-        mean = 0.0
-        if parameter.kind is Kind.WAVELENGTH:
-            mean = scale
-        elif parameter.name == "screen distance":
-            mean = float(problem.base[0, 8])
+    for index, parameter in enumerate(problem.parameters[1:], start=1):
+        scale, mean = parameter.shown_scale, parameter.mean
+        value = float(fit.state.values[index])
+        if parameter.kind is Kind.LOG_RATIO and mean:
+            value = mean * math.exp(value)
+        else:
+            value = mean + value * scale
         rows.append(
             Nuisance(
                 name=parameter.name,
-                value=mean + float(fit.state.values[index]) * scale,
+                value=value,
                 u=math.sqrt(max(0.0, float(fit.covariance[index, index]))) * scale,
                 unit=parameter.unit,
                 prior=mean,

@@ -11,7 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from pitchsweep.analysis.fit_parameters import FitProblem, Kind
+from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.joint_fit import FitState, initial_state, predict, whitened
 from pitchsweep.analysis.records import (
     UNKNOWN_ORDER,
@@ -144,8 +144,8 @@ def _second_best(
 def _prior_covariance(problem: FitProblem, pitch_u: float) -> FloatArray:
     u = np.array(
         [
-            pitch_u if p.kind is Kind.PITCH else min(p.u_prior, 1e6)
-            for p in problem.parameters
+            min(p.u_prior, pitch_u) if index < len(problem.parts) else p.u_prior
+            for index, p in enumerate(problem.parameters)
         ]
     )
     return np.diag(u**2)

@@ -93,7 +93,8 @@ class OrderTable:
     ``laser`` holds indices into ``laser_names``. ``order`` holds UNKNOWN_ORDER where
     it is not known. ``ux_mm``/``uy_mm`` are standard uncertainties; ``cxy_mm2`` is the
     covariance of x and y. ``brightness`` (any one unit) tells an order from its ghosts
-    where it is known.
+    where it is known. ``part`` holds indices into the parts measured together (all
+    the first if None), ``run`` which run a spot is of, ``time_s`` when in its run.
     """
 
     step: IntArray
@@ -108,6 +109,9 @@ class OrderTable:
     uy_mm: FloatArray
     cxy_mm2: FloatArray
     brightness: FloatArray | None = None
+    part: IntArray | None = None
+    run: IntArray | None = None
+    time_s: FloatArray | None = None
 
     def __len__(self) -> int:
         return int(self.step.shape[0])

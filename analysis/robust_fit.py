@@ -7,7 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.analysis.analysis_errors import InputRefused, NoResult
-from pitchsweep.analysis.fit_parameters import FitProblem
+from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.joint_fit import (
     ROUGHLY_SETTLED,
     FitState,

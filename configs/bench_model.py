@@ -63,6 +63,10 @@ class Stage(Settings):
     approach_deg: Annotated[float, Field(ge=0.0, le=30.0)] = 0.5
     angle_tolerance_deg: Annotated[float, Field(gt=0.0, le=5.0)] = 0.01
     u_zero_deg: Annotated[float, Field(gt=0.0, le=20.0)] = 0.5
+    closure_recorded_on: Text | None = None
+    u_scale_ppm: Annotated[float, Field(gt=0.0, le=10000.0)] = 1000.0
+    worm_per_turn: Annotated[int, Field(ge=5, le=1000)] | None = None
+    u_worm_arcsec: Annotated[float, Field(gt=0.0, le=3600.0)] = 5.0
     u_repeatability_arcsec: Annotated[float, Field(gt=0.0, le=3600.0)] = 5.0
     u_harmonics_arcsec: tuple[Positive, Positive, Positive, Positive] = (
         60.0,
@@ -76,6 +80,14 @@ class Stage(Settings):
         if self.travel_min_deg >= self.travel_max_deg:
             raise ValueError("travel_min_deg must be below travel_max_deg")
         return self
+
+
+class Drift(Settings):
+    """What wanders during a run: standard uncertainty over its whole length."""
+
+    u_camera_shift_um: Annotated[float, Field(gt=0.0, le=10000.0)] = 50.0
+    u_camera_scale_ppm: Annotated[float, Field(gt=0.0, le=10000.0)] = 50.0
+    u_pointing_urad: Annotated[float, Field(gt=0.0, le=10000.0)] = 50.0
 
 
 class Camera(Settings):
@@ -115,6 +127,7 @@ class Laser(Settings):
 
     vacuum_wavelength_nm: Annotated[float, Field(ge=400.0, le=700.0)]
     u_wavelength_nm: Annotated[float, Field(gt=0.0, le=20.0)]
+    u_drift_pm: Annotated[float, Field(gt=0.0, le=1000.0)] = 0.5
     power_mw: Annotated[float, Field(gt=0.0, le=500.0)]
     full_drive_mw: Annotated[float, Field(gt=0.0, le=1e5)] | None = None
     divergence_mrad: Annotated[float, Field(gt=0.0, le=500.0)] | None = None
@@ -195,6 +208,7 @@ class Bench(Settings):
     camera: Camera
     lasers: Annotated[dict[Name, Laser], Field(min_length=1, max_length=8)]
     air: Air = Air()
+    drift: Drift = Drift()
     emission: Emission = Emission()
     enclosure: Enclosure | None = None
     reading_u_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1

@@ -56,6 +56,7 @@ class Part(Settings):
     material: Material
     u_tilt_mrad: Annotated[float, Field(gt=0.0, le=200.0)] = 10.0
     u_groove_azimuth_mrad: Annotated[float, Field(gt=0.0, le=200.0)] = 10.0
+    u_curvature_per_m: Annotated[float, Field(gt=0.0, le=100.0)] = 0.1
     cover_mm: Annotated[float, Field(ge=0.0, le=10.0)] = 0.0
     u_cover_mm: Annotated[float, Field(gt=0.0, le=10.0)] = 0.3
     u_surface_offset_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.3

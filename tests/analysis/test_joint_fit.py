@@ -9,7 +9,8 @@ from scipy.optimize import least_squares
 
 from pitchsweep.analysis.air_index import AirState
 from pitchsweep.analysis.budget import combined_u, fit_budget
-from pitchsweep.analysis.fit_parameters import FitProblem, Kind, fit_problem
+from pitchsweep.analysis.fit_parameters import Kind
+from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
 from pitchsweep.analysis.joint_fit import (
     FitState,
     initial_state,
@@ -25,7 +26,7 @@ AIR = AirState(20.0, 1013.25, 50.0)
 def small_problem(seed: int = 1) -> tuple[FitProblem, IntArray]:
     job = demo_job("shims-spots", recipe={"step_deg": 6.0})
     sweep = twin_sweep(job, seed)
-    return fit_problem(sweep.table, job.bench, job.part, AIR), sweep.true_order
+    return fit_problem(sweep.table, job.bench, (job.part,), AIR), sweep.true_order
 
 
 def test_minimum_and_covariance_equal_dense_least_squares() -> None:
@@ -64,7 +65,7 @@ def test_jacobian_equals_differences_in_every_parameter() -> None:
     state = FitState(0.3 * u * rng.standard_normal(len(u)), np.zeros(problem.n_steps))
     there = predict(problem, order, state)
     for index, parameter in enumerate(problem.parameters):
-        step = 1e-4 * u[index]
+        step = max(1e-4 * u[index], 1e-8)
         ahead, behind = state.values.copy(), state.values.copy()
         ahead[index] += step
         behind[index] -= step

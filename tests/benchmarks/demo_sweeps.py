@@ -20,7 +20,7 @@ from builders import demo_job, twin_sweep  # noqa: E402
 from whole_sweep import whole_sweep  # noqa: E402
 
 from pitchsweep.analysis.air_index import AirState  # noqa: E402
-from pitchsweep.analysis.fit_parameters import fit_problem  # noqa: E402
+from pitchsweep.analysis.fit_problem import fit_problem  # noqa: E402
 from pitchsweep.analysis.joint_fit import solve_joint_fit  # noqa: E402
 
 
@@ -33,7 +33,7 @@ def plan_bound(job_name: str, seed: int) -> float:
     table = replace(sweep.table, ux_mm=reading, uy_mm=reading, order=sweep.true_order)
     air = job.bench.air
     state = AirState(air.temperature_C, air.pressure_hPa, air.humidity_percent)
-    problem = fit_problem(table, job.bench, job.part, state)
+    problem = fit_problem(table, job.bench, (job.part,), state)
     fit = solve_joint_fit(problem, sweep.true_order, np.ones(n))
     material = job.part.material
     expansion = material.expansion_per_K * material.u_temperature_C

@@ -18,7 +18,7 @@ from builders import TwinSweep, demo_job, twin_sweep  # noqa: E402
 
 from pitchsweep.analysis.air_index import AirState  # noqa: E402
 from pitchsweep.analysis.analysis_errors import AnalysisError  # noqa: E402
-from pitchsweep.analysis.fit_parameters import fit_problem  # noqa: E402
+from pitchsweep.analysis.fit_problem import fit_problem  # noqa: E402
 from pitchsweep.analysis.joint_fit import solve_joint_fit  # noqa: E402
 from pitchsweep.analysis.measure import measure_pitch  # noqa: E402
 from pitchsweep.configs.job_model import Job  # noqa: E402
@@ -56,7 +56,7 @@ def relative_bound(job: Job, sweep: TwinSweep) -> float:
     problem = fit_problem(
         replace(table, order=sweep.true_order[keep]),
         job.bench,
-        job.part,
+        (job.part,),
         AirState(air.temperature_C, air.pressure_hPa, air.humidity_percent),
     )
     fit = solve_joint_fit(problem, sweep.true_order[keep], np.ones(len(table)))
