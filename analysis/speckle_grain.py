@@ -33,6 +33,8 @@ class Speckle:
 
         Ac is the sum of the autocorrelation over pixels: pi w^2, at least one pixel.
         """
+        if self.contrast == 0.0:
+            return 0.0
         lags = np.arange(-30.0, 31.0)
         along = float(np.exp(-((lags / max(self.w_px, 1e-3)) ** 2)).sum())
         return (along * self.contrast) ** 2 / binning**2

@@ -88,6 +88,10 @@ class Candidate:
     snr: float
 
 
+_BLURRED = 1.0 / 12.0 + 0.5
+"""Variance that the mean over a small pixel and the 3 x 3 kernel add, small px^2."""
+
+
 def small_frame(layer: FrameLayer, factor: int) -> SmallFrame:
     """``layer`` averaged down by ``factor`` with background and noise."""
     small = averaged_down(layer.frame, factor)
@@ -167,13 +171,14 @@ def _measured(
     along, down = core.sum(axis=0) / total, core.sum(axis=1) / total
     x, y = float(along @ columns), float(down @ rows)
     spread = float(along @ (columns - x) ** 2 + down @ (rows - y) ** 2) / 2.0
-    variance = factor**2 * max(spread * _WIDEN**2 - 1.0 / 12.0, 0.1)
+    variance = factor**2 * max(spread * _WIDEN**2 - _BLURRED, 0.1)
+    lowered = 1.0 + min(factor**2 * _BLURRED / variance, 1.0)
     middle = (factor - 1) / 2.0
     return Candidate(
         column_px=(x + corner[0]) * factor + middle,
         row_px=(y + corner[1]) * factor + middle,
         sigma_px=variance**0.5,
-        height=peak,
+        height=peak * lowered,
         snr=snr,
     )
 

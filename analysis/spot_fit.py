@@ -20,8 +20,9 @@ from pitchsweep.analysis.speckle_grain import Speckle, position_covariance
 from pitchsweep.analysis.spot_window import Fused, Window, fuse
 
 PARAMETERS = 9
-_DECREMENT = 2e-4
-"""Stop where a step would move nothing by more than about 1/70 of its error."""
+_DECREMENT, _QUICK_DECREMENT = 2e-4, 4e-3
+"""Stop after a step that moved nothing by more than about 1/70 of its error; without
+speckle, 1/15: there what is left after a step is far less than the step."""
 _CALM, _CALM_AFTER = 0.6, 7
 """Renewed weights can make the steps swing; later steps are shortened."""
 
@@ -115,6 +116,7 @@ def fit_spot(
     state = _state(window, x, y, first, speckle)
     damping, converged, steps = 1e-3, False, 0
     normal, slope = _normal(state, x, y)
+    enough = _DECREMENT if speckle.contrast > 0.0 else _QUICK_DECREMENT
     while steps < limit and damping < 1e6 and not converged:
         steps += 1
         delta = _step(normal, slope, damping)
@@ -124,7 +126,7 @@ def fit_spot(
         if trial is None or not _better(trial, state):
             damping = max(damping, 1e-4) * 10.0
             continue
-        converged = float(delta @ slope) < _DECREMENT * max(1.0, _chi2(state))
+        converged = float(delta @ slope) < enough * max(1.0, _chi2(state))
         state, damping = trial, damping * 0.03
         if not converged:
             normal, slope = _normal(state, x, y)

@@ -118,6 +118,8 @@ def cut_window(
 
 def fuse(window: Window, signal: FloatArray) -> Fused:
     """The layers joined with the variances that ``signal`` (DN a ms) predicts."""
+    if len(window.layers) == 1:
+        return _alone(window.layers[0], signal)
     information = np.zeros_like(signal)
     weighted = np.zeros_like(signal)
     for layer in window.layers:
@@ -131,6 +133,14 @@ def fuse(window: Window, signal: FloatArray) -> Fused:
     return Fused(
         rate=weighted * variance, variance=variance, used=used.astype(np.float64)
     )
+
+
+def _alone(layer: Layer, signal: FloatArray) -> Fused:
+    """A single layer: no weights between exposures are needed."""
+    time = layer.exposure_ms
+    variance = signal * (layer.gain / time)
+    variance += layer.quiet_variance / time**2
+    return Fused(layer.rate, variance, layer.good.astype(np.float64))
 
 
 def shared_rounding(window: Window, signal: FloatArray) -> FloatArray:
