@@ -90,18 +90,12 @@ def order_cones(
     """
     a = np.radians(incidence_deg)[:, None, None]
     half_width = np.radians(half_width_deg)[:, None, None]
-    order = np.arange(highest_order(ratio, spread) + 1)[None, :, None]
+    order = np.arange(highest_order(ratio, spread) + 1.0)[None, :, None]
     groove = np.radians(np.arange(0.0, 360.0, GROOVE_STEP_DEG))[None, None, :]
     across = np.sin(a) + order * ratio * np.cos(groove)
     along_y = order * ratio * np.sin(groove)
-    ghost_shift = 2.0 * GHOST_INDEX * np.radians(GHOST_WEDGE_DEG) if ghost else 0.0
     sampling = 0.5 * np.radians(GROOVE_STEP_DEG)
-    shift = (
-        spread.along_face
-        + half_width
-        + ghost_shift
-        + order * ratio * (spread.per_order + sampling)
-    )
+    shift = _shift(order * ratio, half_width, spread, sampling=sampling, ghost=ghost)
     shift, across, along_y = np.broadcast_arrays(shift, across, along_y)
     length = np.hypot(across, along_y)
     leaves = length - shift < 1.0
@@ -129,6 +123,48 @@ def nominal_direction_deg(
     turn = np.radians(incidence_deg)
     x, _, z = _lab_direction(turn, np.asarray(across), np.asarray(0.0), through)
     return float(np.degrees(np.arctan2(x, z))), 0.0
+
+
+def reached(
+    azimuth_deg: FloatArray,
+    elevation_deg: FloatArray,
+    incidence_deg: FloatArray,
+    half_width_deg: FloatArray,
+    ratio: float,
+    spread: Spread,
+) -> "np.ndarray[tuple[int, ...], np.dtype[np.bool_]]":
+    """Whether an order may go into each direction (N,), grooves any way round.
+
+    The other way about: from a direction to the lambda/d that would send light there.
+    Orders gone through count, ghosts do not.
+    """
+    azimuth, elevation = np.radians(azimuth_deg), np.radians(elevation_deg)
+    x, z = np.cos(elevation) * np.sin(azimuth), np.cos(elevation) * np.cos(azimuth)
+    orders = np.arange(highest_order(ratio, spread) + 1.0) * ratio
+    found = np.zeros(azimuth.shape, dtype=np.bool_)
+    for a, half_width in zip(
+        np.radians(incidence_deg), np.radians(half_width_deg), strict=True
+    ):
+        across = x * np.cos(a) - z * np.sin(a) - np.sin(a)
+        away = np.hypot(across, np.sin(elevation))[:, None]
+        shift = _shift(orders, half_width, spread, sampling=0.0, ghost=False)
+        slack = shift + half_width + spread.turn_rad
+        found |= (np.abs(away - orders[None, :]) <= slack[None, :]).any(axis=1)
+    return found
+
+
+def _shift(
+    ratio: FloatArray,
+    half_width: FloatArray,
+    spread: Spread,
+    *,
+    sampling: float,
+    ghost: bool,
+) -> FloatArray:
+    """How far the component along the face may be off; ``ratio`` is m lambda/d."""
+    wedge = 2.0 * GHOST_INDEX * np.radians(GHOST_WEDGE_DEG) if ghost else 0.0
+    known = spread.along_face + half_width + wedge
+    return np.asarray(known + ratio * (spread.per_order + sampling))
 
 
 def _lab_direction(
