@@ -1,4 +1,4 @@
-"""What the people answered: the same whether typed at a terminal or read from a file."""
+"""What people answered: the same whether typed at a terminal or read from a file."""
 
 from typing import Annotated
 
