@@ -4,9 +4,10 @@ The twin is started before the guard; the guard proves on the emission line that
 speaks to this very twin. The rehearsal permit carries the key made at that start.
 """
 
+import math
 import threading
 import time
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import ExitStack, contextmanager
 from pathlib import Path
 
@@ -23,6 +24,7 @@ from pitchsweep.drivers.serial_transport import open_serial
 from pitchsweep.drivers.stage_client import StageClient
 from pitchsweep.drivers.twin_launcher import TwinHandle, start_twin
 from pitchsweep.drivers.twin_world_client import TwinWorldClient
+from pitchsweep.safety.file_watch import file_sha256
 from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.guard_client import GuardClient, StageReport, start_guard
 from pitchsweep.safety.guard_config import GuardConfig, GuardLimits, UnitSettings
@@ -35,6 +37,7 @@ STAGE_DIALECT = "rotary-line"
 UNIT_DIALECT = "emission-line"
 BAUD = 115200
 LEDGER = "ledger.jsonl"
+JOB = "job.yaml"
 PERSON = "rehearsal"
 PERMIT_HOURS = 24.0
 READ_AGE_SLACK_S = 10.0
@@ -62,24 +65,58 @@ class GateHistory:
         return rows
 
 
-class GuardGate:
-    """The guard as a sweep's gate; the ledger's head goes into the journal."""
+class TwinPerson:
+    """The twin's person, who opens and closes the door when asked."""
 
-    def __init__(self, guard: GuardClient, journal: RunJournal, ledger: Path) -> None:
+    patience_s = 5.0
+
+    def __init__(self, world: TwinWorldClient) -> None:
+        self._world = world
+
+    def open_interlock(self) -> None:
+        """Opens the door."""
+        self._world.set_door(closed=False)
+
+    def close_interlock(self) -> None:
+        """Closes the door."""
+        self._world.set_door(closed=True)
+
+
+class GuardGate:
+    """The guard as a sweep's gate; the ledger's head goes into the journal.
+
+    ``powers_mw``: step -> power at the part. Nothing on a simulated bench reads it, so
+    the laser's full drive is told.
+    """
+
+    def __init__(
+        self,
+        guard: GuardClient,
+        journal: RunJournal,
+        ledger: Path,
+        powers_mw: Mapping[int, float],
+    ) -> None:
+        self._powers_mw = powers_mw
         self._guard = guard
         self._journal = journal
         self._ledger = ledger
 
     def light_on(self, *, step: int, commanded_deg: float, readback_deg: float) -> None:
         """Light at ``step``. Raises GateTripped or GateRefused."""
-        self._guard.light_on(step, commanded_deg, readback_deg)
+        power_mw = self._powers_mw.get(step, math.nan)
+        self._guard.light_on(step, commanded_deg, readback_deg, power_mw)
 
     def still_at(self, *, step: int, commanded_deg: float, readback_deg: float) -> None:
         """A fresh reading of the stage, for the next heartbeats."""
         self._guard.check()
         self._guard.report_stage(
             StageReport(
-                step, commanded_deg, readback_deg, time.monotonic(), turning=False
+                step,
+                commanded_deg,
+                readback_deg,
+                time.monotonic(),
+                turning=False,
+                power_mw=self._powers_mw.get(step, math.nan),
             )
         )
 
@@ -121,9 +158,9 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
         config = guard_config(request, twin)
         guard = stack.enter_context(start_guard(config, on_event=history.add))
         request.stop.on_request = guard.dark
-        if request.resumed:
-            _acknowledge(guard, world)
-        guard.arm()
+        if request.resumed and guard.tripped.is_set():
+            acknowledge_by_twin(guard, world, PERSON)
+        guard.arm(TwinPerson(world))
         line = LineClient(
             open_serial(twin.stage_port, baud=BAUD),
             shipped_dialect(STAGE_DIALECT),
@@ -136,27 +173,22 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
             camera=camera,
             clock=world,
             world=world,
-            gate=GuardGate(guard, request.journal, folder.path / LEDGER),
+            gate=GuardGate(
+                guard,
+                request.journal,
+                folder.path / LEDGER,
+                step_powers_mw(request.plan, bench),
+            ),
             gate_history=history.take,
         )
 
 
 def guard_config(request: BenchRequest, twin: TwinHandle) -> GuardConfig:
     """What the guard works from: unit, rehearsal permit, permitted steps."""
-    folder, emission = request.folder, request.folder.job.bench.emission
-    dialect = shipped_dialect_mapping(UNIT_DIALECT)
-    if not isinstance(dialect, dict):
-        raise GateRefused(f"dialect {UNIT_DIALECT} is no mapping", "reinstall")
+    folder = request.folder
     now_s = time.time()
     return GuardConfig(
-        unit=UnitSettings(
-            port=twin.unit_port,
-            baud=BAUD,
-            dialect=dialect,
-            identity=emission.unit_identity,
-            keep_alive_ms=emission.keep_alive_ms,
-            has_shutter=emission.switches == "head-shutter",
-        ),
+        unit=unit_settings(folder.job.bench, twin.unit_port, UNIT_DIALECT, BAUD),
         permit=RehearsalPermit(
             key=twin.proof_key,
             valid_from_utc_s=now_s - 1.0,
@@ -167,7 +199,32 @@ def guard_config(request: BenchRequest, twin: TwinHandle) -> GuardConfig:
         ledger_path=str(folder.path / LEDGER),
         run=folder.path.name,
         resumed=request.resumed,
+        watched={str(folder.path / JOB): file_sha256(folder.path / JOB)},
     )
+
+
+def unit_settings(bench: Bench, port: str, dialect: str, baud: int) -> UnitSettings:
+    """The bench's emission unit on ``port``, as the guard is told of it."""
+    emission = bench.emission
+    words = shipped_dialect_mapping(dialect)
+    if not isinstance(words, dict):
+        raise GateRefused(f"dialect {dialect} is no mapping", "reinstall")
+    return UnitSettings(
+        port=port,
+        baud=baud,
+        dialect=words,
+        identity=emission.unit_identity,
+        keep_alive_ms=emission.keep_alive_ms,
+        has_shutter=emission.switches == "head-shutter",
+        line=emission.line,
+        channels=emission.interlock_channels,
+    )
+
+
+def step_powers_mw(plan: SweepPlan, bench: Bench) -> dict[int, float]:
+    """The power at the part of every step and zero check."""
+    steps = (*plan.steps, *plan.zero_checks)
+    return {s.step: bench.lasers[s.laser].power_mw for s in steps}
 
 
 def permitted_steps(plan: SweepPlan, bench: Bench) -> PermittedSteps:
@@ -177,10 +234,11 @@ def permitted_steps(plan: SweepPlan, bench: Bench) -> PermittedSteps:
         angles_deg={s.step: s.stage_deg for s in (*plan.steps, *plan.zero_checks)},
         tolerance_deg=bench.stage.angle_tolerance_deg,
         read_age_limit_s=min(60.0, longest_s + READ_AGE_SLACK_S),
+        power_ceiling_mw=max(step_powers_mw(plan, bench).values()),
     )
 
 
-def _acknowledge(guard: GuardClient, world: TwinWorldClient) -> None:
+def acknowledge_by_twin(guard: GuardClient, world: TwinWorldClient, name: str) -> None:
     """The twin's person presses the reset button, then the trip is acknowledged."""
     deadline_s = time.monotonic() + ACKNOWLEDGE_WITHIN_S
     while True:
@@ -189,7 +247,7 @@ def _acknowledge(guard: GuardClient, world: TwinWorldClient) -> None:
         world.press_reset()
         time.sleep(LOOK_AGAIN_S)
         try:
-            guard.acknowledge(PERSON)
+            guard.acknowledge(name)
         except GateTripped:
             raise
         except GateRefused:

@@ -73,6 +73,9 @@ class EmissionClient:
         """Asks for light, or holds it for one more keep-alive time."""
         return _read_state(self._ask("keep"))
 
+    def ready_trial(self) -> None:
+        """Nothing is needed before the time-out is tried."""
+
     def try_time_out(self) -> UnitState:
         """Starts the keep-alive time once with the shutter held shut: stays dark.
 

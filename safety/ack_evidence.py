@@ -2,7 +2,8 @@
 
 Either the unit's reset input was pressed since, or the interlock was seen closed,
 then open, then closed again; the opening that tripped the gate does not count.
-A name is needed besides.
+After two channels contradicted each other only such a cycle of both counts. A name is
+needed besides.
 """
 
 from dataclasses import dataclass, replace
@@ -21,6 +22,7 @@ class Evidence:
     was_closed: bool = False
     was_opened: bool = False
     was_cycled: bool = False
+    must_cycle: bool = False
 
 
 def observe(evidence: Evidence, says: UnitState) -> Evidence:
@@ -33,8 +35,10 @@ def observe(evidence: Evidence, says: UnitState) -> Evidence:
         seen = replace(seen, resets=says.reset_count)
     elif says.reset_count > seen.resets:
         seen = replace(seen, was_reset=True)
-    if not says.door_closed:
+    if says.interlock_open:
         return replace(seen, was_opened=seen.was_closed)
+    if not says.interlock_closed:
+        return seen
     return replace(seen, was_closed=True, was_cycled=seen.was_cycled or seen.was_opened)
 
 
@@ -48,10 +52,15 @@ def why_not_acknowledged(
         return (
             f"acknowledging needs a name (printable, up to {LONGEST_NAME} characters)"
         )
-    if not says.door_closed:
+    if not says.interlock_closed:
         return "the interlock is open"
     if says.light_on:
         return "the unit still shows light"
+    if evidence.must_cycle and not evidence.was_cycled:
+        return (
+            "the interlock channels contradicted each other: open and close it once, so"
+            " that both are seen to follow"
+        )
     if not (evidence.was_reset or evidence.was_cycled):
         return (
             "press the reset input, or open and close the interlock once, at the bench"
@@ -61,4 +70,5 @@ def why_not_acknowledged(
 
 def evidence_in_words(evidence: Evidence) -> str:
     """How the person showed that they stood there."""
-    return "reset input" if evidence.was_reset else "interlock opened and closed"
+    by_reset = evidence.was_reset and not evidence.must_cycle
+    return "reset input" if by_reset else "interlock opened and closed"

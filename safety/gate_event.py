@@ -3,7 +3,7 @@
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-from pitchsweep.safety.guard_config import number, text
+from pitchsweep.safety.json_fields import number, text
 
 
 @dataclass(frozen=True)

@@ -54,6 +54,10 @@ class Event(Enum):
     LIGHT_DROPPED = "light-dropped"
     TICK_LATE = "tick-late"
     LEDGER_FAILED = "ledger-failed"
+    CHANNELS_DISAGREE = "channels-disagree"
+    POWER_ABOVE_LIMIT = "power-above-limit"
+    SETTINGS_CHANGED = "settings-changed"
+    HAND_STOP = "hand-stop"
     CONTROLLER_FAULT = "controller-fault"
     GUARD_FAULT = "guard-fault"
 
@@ -117,6 +121,10 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.COLD, Event.LIGHT_DROPPED): _TRIP,
         (GateState.COLD, Event.TICK_LATE): _TRIP,
         (GateState.COLD, Event.LEDGER_FAILED): _TRIP,
+        (GateState.COLD, Event.CHANNELS_DISAGREE): _TRIP,
+        (GateState.COLD, Event.POWER_ABOVE_LIMIT): _TRIP,
+        (GateState.COLD, Event.SETTINGS_CHANGED): _TRIP,
+        (GateState.COLD, Event.HAND_STOP): _TRIP,
         (GateState.COLD, Event.CONTROLLER_FAULT): _TRIP,
         (GateState.COLD, Event.GUARD_FAULT): _TRIP,
         #
@@ -143,6 +151,10 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.READY, Event.LIGHT_DROPPED): _TRIP,
         (GateState.READY, Event.TICK_LATE): _TRIP,
         (GateState.READY, Event.LEDGER_FAILED): _TRIP,
+        (GateState.READY, Event.CHANNELS_DISAGREE): _TRIP,
+        (GateState.READY, Event.POWER_ABOVE_LIMIT): _TRIP,
+        (GateState.READY, Event.SETTINGS_CHANGED): _TRIP,
+        (GateState.READY, Event.HAND_STOP): _TRIP,
         (GateState.READY, Event.CONTROLLER_FAULT): _TRIP,
         (GateState.READY, Event.GUARD_FAULT): _TRIP,
         #
@@ -169,6 +181,10 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.LIT, Event.LIGHT_DROPPED): _TRIP,
         (GateState.LIT, Event.TICK_LATE): _TRIP,
         (GateState.LIT, Event.LEDGER_FAILED): _TRIP,
+        (GateState.LIT, Event.CHANNELS_DISAGREE): _TRIP,
+        (GateState.LIT, Event.POWER_ABOVE_LIMIT): _TRIP,
+        (GateState.LIT, Event.SETTINGS_CHANGED): _TRIP,
+        (GateState.LIT, Event.HAND_STOP): _TRIP,
         (GateState.LIT, Event.CONTROLLER_FAULT): _TRIP,
         (GateState.LIT, Event.GUARD_FAULT): _TRIP,
         #
@@ -197,6 +213,10 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.TRIPPED, Event.LIGHT_DROPPED): _LATCHED_TWICE,
         (GateState.TRIPPED, Event.TICK_LATE): _LATCHED_TWICE,
         (GateState.TRIPPED, Event.LEDGER_FAILED): _LATCHED_TWICE,
+        (GateState.TRIPPED, Event.CHANNELS_DISAGREE): _LATCHED_TWICE,
+        (GateState.TRIPPED, Event.POWER_ABOVE_LIMIT): _LATCHED_TWICE,
+        (GateState.TRIPPED, Event.SETTINGS_CHANGED): _LATCHED_TWICE,
+        (GateState.TRIPPED, Event.HAND_STOP): _LATCHED_TWICE,
         (GateState.TRIPPED, Event.CONTROLLER_FAULT): _LATCHED_TWICE,
         (GateState.TRIPPED, Event.GUARD_FAULT): _LATCHED_TWICE,
         #
@@ -223,6 +243,10 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.ENDED, Event.LIGHT_DROPPED): _OVER,
         (GateState.ENDED, Event.TICK_LATE): _OVER,
         (GateState.ENDED, Event.LEDGER_FAILED): _OVER,
+        (GateState.ENDED, Event.CHANNELS_DISAGREE): _OVER,
+        (GateState.ENDED, Event.POWER_ABOVE_LIMIT): _OVER,
+        (GateState.ENDED, Event.SETTINGS_CHANGED): _OVER,
+        (GateState.ENDED, Event.HAND_STOP): _OVER,
         (GateState.ENDED, Event.CONTROLLER_FAULT): _OVER,
         (GateState.ENDED, Event.GUARD_FAULT): _OVER,
     }

@@ -5,82 +5,76 @@ reports. After a trip every call raises GateTripped until ``acknowledge`` succee
 when the guard is gone every call raises GuardLost.
 """
 
-import json
 import subprocess
 import sys
 import threading
 import time
-from collections.abc import Callable, Mapping
-from contextlib import suppress
+from collections.abc import Callable
 from types import TracebackType
-from typing import IO, Self
+from typing import IO, Protocol, Self
 
-from pitchsweep.drivers.driver_errors import LineBroke
-from pitchsweep.safety.gate_event import GateEvent, event_from_mapping
+from pitchsweep.safety.arming_proof import Want
+from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.gate_table import GateState
 from pitchsweep.safety.guard_config import GuardConfig, config_as_mapping
-from pitchsweep.safety.ledger_chain import canonical_json
-from pitchsweep.safety.safety_errors import GateRefused, GateTripped, GuardLost
+from pitchsweep.safety.guard_pipe import REPLY_LIMIT_S, GuardPipe, Message
+from pitchsweep.safety.safety_errors import GateRefused
 from pitchsweep.safety.stage_report import StageReport, beat_fields
 
 BEAT_PERIOD_S = 0.05
-REPLY_LIMIT_S = 3.0
-START_LIMIT_S = 10.0
-EXIT_DEVICE = 4
-GUARD_COMMAND = (sys.executable, "-m", "pitchsweep.safety.guard_process")
+LOOK_AGAIN_S = 0.01
+MOST_TRIALS = 5
+"""Time-out trials before arming is given up, on a computer too busy to see one."""
+GUARD_COMMAND = [sys.executable, "-m", "pitchsweep.safety.guard_process"]
+
+
+class Person(Protocol):
+    """Who is asked to move the interlock; ``patience_s`` is how long that may take."""
+
+    patience_s: float
+
+    def open_interlock(self) -> None: ...
+
+    def close_interlock(self) -> None: ...
 
 
 class GuardClient:
     """A running guard. Make one with ``start_guard``; ``stop`` or leave the ``with``.
 
     ``tripped`` is set while the gate is tripped, ``lost`` for good when the guard is
-    gone; ``events`` is the gate's history so far. ``on_event`` is called with every
-    line of it, from the reading thread.
+    gone; ``events`` is the gate's history so far.
     """
 
     def __init__(
-        self,
-        process: subprocess.Popen[bytes],
-        *,
-        port: str,
-        on_event: Callable[[GateEvent], None] | None = None,
-        now: Callable[[], float] = time.monotonic,
+        self, pipe: GuardPipe, *, now: Callable[[], float] = time.monotonic
     ) -> None:
-        self.tripped = threading.Event()
-        self.lost = threading.Event()
-        self.events: list[GateEvent] = []
-        self._process = process
-        self._port = port
-        self._on_event = on_event
+        self.tripped = pipe.tripped
+        self.lost = pipe.lost
+        self.events = pipe.events
+        self._pipe = pipe
         self._now = now
         self._stage: StageReport | None = None
-        self._state = GateState.COLD
-        self._number = 0
-        self._replies: dict[int, Mapping[str, object]] = {}
-        self._news = threading.Condition()
-        self._sending = threading.Lock()
-        self._started = False
         self._ending = threading.Event()
-        self._fatal: Mapping[str, object] | None = None
-        self._reader = threading.Thread(target=self._read, daemon=True)
         self._beater = threading.Thread(target=self._beat_on, daemon=True)
 
     @property
     def pid(self) -> int:
         """The guard's process number."""
-        return self._process.pid
+        return self._pipe.process.pid
 
     @property
     def state(self) -> GateState:
         """Where the gate stands, as last reported."""
-        return self._state
+        return self._pipe.state
 
-    def arm(self) -> None:
-        """Proves unit and permit and makes the gate ready, dark.
+    def arm(self, person: Person) -> None:
+        """Proves unit, time-out, interlock and permit; the gate is ready then, dark.
 
-        Raises GateRefused where a condition is missing, GateTripped where the unit is
-        not what it should be.
+        ``person`` is asked to open and close the interlock with the shutter shut.
+        Raises GateRefused where a condition is missing or the person does not come,
+        GateTripped where the unit is not what it should be.
         """
+        self._prove(person)
         self._ask_or_raise("arm")
 
     def acknowledge(self, name: str) -> None:
@@ -88,28 +82,48 @@ class GuardClient:
 
         Raises GateRefused while reset input, interlock cycle or name are missing.
         """
-        reply = self._ask("ack", name=name)
+        reply = self._pipe.ask("ack", name=name)
         if not reply["done"]:
             self._refuse(reply, "acknowledging")
 
-    def light_on(self, step: int, commanded_deg: float, readback_deg: float) -> None:
-        """Asks for light at ``step``, the stage having been read back just now."""
+    def light_on(
+        self, step: int, commanded_deg: float, readback_deg: float, power_mw: float
+    ) -> None:
+        """Asks for light at ``step``, stage and power having been read just now.
+
+        Returns when the unit shows light, which takes a relay some tenths of a second.
+        """
         self.report_stage(
-            StageReport(step, commanded_deg, readback_deg, self._now(), turning=False)
+            StageReport(
+                step,
+                commanded_deg,
+                readback_deg,
+                self._now(),
+                turning=False,
+                power_mw=power_mw,
+            )
         )
-        self._raise_if_stopped()
-        self._ask_or_raise("light", **self._stage_fields())
+        reply = self._ask_or_raise("light", **self._stage_fields())
+        while not reply["light_on"]:
+            time.sleep(LOOK_AGAIN_S)
+            reply = self._ask_or_raise("beat", **self._stage_fields())
+            if reply["state"] != GateState.LIT.value:
+                self._refuse({"reason": "dark meanwhile"}, "light")
+
+    def press(self) -> None:
+        """A person has pressed the key of an attended permit, just now."""
+        self._pipe.send({"command": "press", "sent_s": self._now()}, wait_s=0.5)
 
     def dark(self) -> None:
         """Asks for dark; returns when the guard has asked the unit."""
         if self.lost.is_set():
-            self._raise_if_stopped()
-        self._ask("dark")
-        self._raise_if_stopped()
+            self._pipe.raise_if_stopped()
+        self._pipe.ask("dark")
+        self._pipe.raise_if_stopped()
 
     def trip(self, reason: str) -> None:
         """Trips the gate for a fault that the controller saw."""
-        self._ask("trip", reason=reason)
+        self._pipe.ask("trip", reason=reason)
 
     def report_stage(self, stage: StageReport) -> None:
         """What the next heartbeats say of the stage."""
@@ -117,34 +131,15 @@ class GuardClient:
 
     def check(self) -> None:
         """Raises GateTripped after a trip, GuardLost when the guard is gone."""
-        self._raise_if_stopped()
+        self._pipe.raise_if_stopped()
 
     def stop(self) -> None:
         """Dark, and the guard ends; harmless when it has ended already."""
         self._ending.set()
-        self._send({"command": "stop"}, wait_s=0.5)
-        self._close_stdin()
-        try:
-            self._process.wait(REPLY_LIMIT_S)
-        except subprocess.TimeoutExpired:
-            self._process.kill()
-            self._process.wait()
-        for thread in (self._beater, self._reader):
-            if thread.ident is not None:
-                thread.join(REPLY_LIMIT_S)
-        if self._process.stdout is not None:
-            self._process.stdout.close()
-
-    def _close_stdin(self) -> None:
-        """The end of its input means dark and the end to the guard, whatever else."""
-        pipe = self._process.stdin
-        if pipe is None or not self._sending.acquire(timeout=BEAT_PERIOD_S):
-            return
-        try:
-            with suppress(OSError):
-                pipe.close()
-        finally:
-            self._sending.release()
+        self._pipe.send({"command": "stop"}, wait_s=0.5)
+        self._pipe.close(BEAT_PERIOD_S)
+        if self._beater.ident is not None:
+            self._beater.join(REPLY_LIMIT_S)
 
     def end(self) -> None:
         """The same as ``stop``."""
@@ -161,123 +156,59 @@ class GuardClient:
     ) -> None:
         self.stop()
 
-    def _begin(self, config: Mapping[str, object]) -> None:
-        self._reader.start()
-        self._send(config, wait_s=START_LIMIT_S)
-        with self._news:
-            self._news.wait_for(
-                lambda: self._started or self.lost.is_set(), START_LIMIT_S
-            )
-        if not self._started:
-            self._raise_not_started()
+    def begin(self, config: GuardConfig) -> None:
+        """Starts the conversation; ``start_guard`` does this."""
+        self._pipe.begin(config_as_mapping(config))
         self._beater.start()
         self._send_beat()
 
-    def _raise_not_started(self) -> None:
-        fatal = self._fatal or {"fatal": "it did not start"}
-        reason = str(fatal["fatal"])
-        self._process.kill()
-        if fatal.get("exit") == EXIT_DEVICE:
-            raise LineBroke(self._port, "opening the emission line", reason)
-        raise GateRefused(f"the guard: {reason}", "mend what it names and try again")
+    def _prove(self, person: Person) -> None:
+        trials, asked = 0, Want.NOTHING
+        until_s = self._now() + person.patience_s
+        while True:
+            reply = self._ask("proof")
+            want = Want(reply["wants"])
+            if want is Want.NOTHING:
+                return
+            if self._now() > until_s or trials > MOST_TRIALS:
+                self._refuse(reply, "arming")
+            if want is Want.TRIAL:
+                trials += 1
+                self._ask_or_raise("trial")
+            elif want is not asked and want is Want.OPEN:
+                person.open_interlock()
+            elif want is not asked and want is Want.CLOSE:
+                person.close_interlock()
+            asked = want
+            time.sleep(LOOK_AGAIN_S)
 
-    def _ask_or_raise(self, command: str, **fields: object) -> None:
-        self._raise_if_stopped()
+    def _ask(self, command: str, **fields: object) -> Message:
+        self._pipe.raise_if_stopped()
+        reply = self._pipe.ask(command, **fields)
+        self._pipe.raise_if_stopped()
+        return reply
+
+    def _ask_or_raise(self, command: str, **fields: object) -> Message:
         reply = self._ask(command, **fields)
-        self._raise_if_stopped()
         if not reply["done"]:
             self._refuse(reply, command)
+        return reply
 
-    def _refuse(self, reply: Mapping[str, object], what: str) -> None:
+    def _refuse(self, reply: Message, what: str) -> None:
         raise GateRefused(
             f"{what} refused: {reply['reason']}", "do what is missing, then try again"
         )
-
-    def _ask(self, command: str, **fields: object) -> Mapping[str, object]:
-        with self._news:
-            self._number += 1
-            number = self._number
-        self._send({"command": command, "id": number, **fields}, wait_s=REPLY_LIMIT_S)
-        with self._news:
-            self._news.wait_for(
-                lambda: number in self._replies or self.lost.is_set(), REPLY_LIMIT_S
-            )
-            reply = self._replies.pop(number, None)
-        if reply is None:
-            raise GuardLost(self._why_lost(f"no reply to '{command}'"))
-        return reply
-
-    def _raise_if_stopped(self) -> None:
-        if self.lost.is_set():
-            raise GuardLost(self._why_lost("it ended"))
-        if self.tripped.is_set():
-            trips = [e for e in self.events if e.state == "tripped" and e.moved]
-            raise GateTripped(trips[-1].event, trips[-1].reason)
-
-    def _why_lost(self, otherwise: str) -> str:
-        ended = [e for e in self.events if e.state == "ended"]
-        if ended:
-            return f"the guard ended: {ended[-1].reason}"
-        code = self._process.poll()
-        how = otherwise if code is None else f"it ended with code {code}"
-        return f"the guard is gone or silent: {how}"
 
     def _stage_fields(self) -> dict[str, object]:
         return beat_fields(self._stage, self._now())
 
     def _send_beat(self) -> None:
-        self._send({"command": "beat", **self._stage_fields()}, wait_s=BEAT_PERIOD_S)
+        message = {"command": "beat", **self._stage_fields()}
+        self._pipe.send(message, wait_s=BEAT_PERIOD_S)
 
     def _beat_on(self) -> None:
         while not (self._ending.wait(BEAT_PERIOD_S) or self.lost.is_set()):
             self._send_beat()
-
-    def _send(self, message: Mapping[str, object], *, wait_s: float) -> None:
-        """Writes a line; a broken pipe shows in ``lost``, which the reader sets."""
-        pipe = self._process.stdin
-        if pipe is None or not self._sending.acquire(timeout=wait_s):
-            return
-        try:
-            with suppress(OSError, ValueError):
-                pipe.write(canonical_json(message) + b"\n")
-                pipe.flush()
-        finally:
-            self._sending.release()
-
-    def _read(self) -> None:
-        pipe = self._process.stdout
-        assert pipe is not None
-        try:
-            with suppress(OSError, ValueError):
-                for line in pipe:
-                    self._take(json.loads(line))
-        finally:
-            with self._news:
-                self.lost.set()
-                self._news.notify_all()
-
-    def _take(self, message: Mapping[str, object]) -> None:
-        event = message.get("event")
-        if isinstance(event, dict):
-            self._take_event(event_from_mapping(event))
-        with self._news:
-            if "started" in message:
-                self._started = True
-            elif "fatal" in message:
-                self._fatal = message
-            elif isinstance(message.get("reply"), int):
-                self._replies[int(str(message["reply"]))] = message
-            self._news.notify_all()
-
-    def _take_event(self, event: GateEvent) -> None:
-        self.events.append(event)
-        self._state = GateState(event.state)
-        if self._state is GateState.TRIPPED:
-            self.tripped.set()
-        else:
-            self.tripped.clear()
-        if self._on_event is not None:
-            self._on_event(event)
 
 
 def start_guard(
@@ -298,13 +229,14 @@ def start_guard(
         stderr=stderr,
         start_new_session=True,
     )
-    client = GuardClient(process, port=config.unit.port, on_event=on_event)
+    pipe = GuardPipe(process, port=config.unit.port, on_event=on_event)
+    client = GuardClient(pipe)
     try:
-        client._begin(config_as_mapping(config))
+        client.begin(config)
     except BaseException:
         client.stop()
         raise
     return client
 
 
-__all__ = ["GuardClient", "StageReport", "start_guard"]
+__all__ = ["GuardClient", "Person", "StageReport", "start_guard"]

@@ -3,14 +3,18 @@
 The guard trusts no one's types: every field is checked, ValueError names it.
 """
 
-import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
+from pitchsweep.safety.json_fields import block, flag, in_range, number, text, whole
 from pitchsweep.safety.permit import Permit, permit_as_mapping, permit_from_mapping
 from pitchsweep.safety.permitted_steps import PermittedSteps
 
 KEEP_ALIVE_LIMIT_MS = 250
+NETWORK_AGE_S = 0.1
+"""Interlock state read over a network counts only when younger than this."""
+RELAY_RISE_S = 1.0
+LINES = ("keep-alive", "pulses")
 
 
 @dataclass(frozen=True)
@@ -19,7 +23,9 @@ class UnitSettings:
 
     ``dialect`` is the dialect's own mapping; ``keep_alive_ms`` is the time after which
     the unit drops out by itself; ``has_shutter`` says whether its shutter position
-    counts (a unit that switches the laser itself has none).
+    counts (a unit that switches the laser itself has none). ``line`` is how light is
+    held: keep-alive messages, or pulses to a time-out relay, which closes only after
+    several of them. ``channels`` is how many interlock channels the bench declares.
     """
 
     port: str
@@ -28,6 +34,18 @@ class UnitSettings:
     identity: str
     keep_alive_ms: int
     has_shutter: bool = True
+    line: str = "keep-alive"
+    channels: int = 1
+
+    @property
+    def over_network(self) -> bool:
+        """True unless the port is a device path."""
+        return "://" in self.port
+
+    @property
+    def rises_within_s(self) -> float:
+        """How long the unit may stay dark after light was asked for."""
+        return 0.0 if self.line == "keep-alive" else RELAY_RISE_S
 
 
 @dataclass(frozen=True)
@@ -39,14 +57,18 @@ class GuardLimits:
     tick_limit_s: float = 0.25
 
     def __post_init__(self) -> None:
-        _in_range("tick_s", self.tick_s, 0.001, 0.02)
-        _in_range("heartbeat_limit_s", self.heartbeat_limit_s, 0.05, 0.5)
-        _in_range("tick_limit_s", self.tick_limit_s, 0.02, 0.25)
+        in_range("tick_s", self.tick_s, 0.001, 0.02)
+        in_range("heartbeat_limit_s", self.heartbeat_limit_s, 0.05, 0.5)
+        in_range("tick_limit_s", self.tick_limit_s, 0.02, 0.25)
 
 
 @dataclass(frozen=True)
 class GuardConfig:
-    """Everything a guard works from; nothing of it changes while it runs."""
+    """Everything a guard works from; nothing of it changes while it runs.
+
+    ``watched`` are files that must stay as they are, path -> SHA-256 in hexadecimal
+    (empty: the file must stay absent).
+    """
 
     unit: UnitSettings
     permit: Permit = field(repr=False)
@@ -55,6 +77,7 @@ class GuardConfig:
     ledger_path: str
     run: str
     resumed: bool
+    watched: Mapping[str, str] = field(default_factory=dict)
 
 
 def config_as_mapping(config: GuardConfig) -> dict[str, object]:
@@ -70,10 +93,12 @@ def config_as_mapping(config: GuardConfig) -> dict[str, object]:
             "steps": [[step, deg] for step, deg in permitted.angles_deg.items()],
             "tolerance_deg": permitted.tolerance_deg,
             "read_age_limit_s": permitted.read_age_limit_s,
+            "power_ceiling_mw": permitted.power_ceiling_mw,
         },
         "ledger_path": config.ledger_path,
         "run": config.run,
         "resumed": config.resumed,
+        "watched": dict(config.watched),
     }
 
 
@@ -91,54 +116,20 @@ def config_from_mapping(values: Mapping[str, object]) -> GuardConfig:
         ledger_path=text(values, "ledger_path"),
         run=text(values, "run"),
         resumed=flag(values, "resumed"),
+        watched=_watched(block(values, "watched")),
     )
-
-
-def block(values: Mapping[str, object], key: str) -> Mapping[str, object]:
-    """The mapping under ``key``; ValueError when it is something else."""
-    value = values.get(key)
-    if not isinstance(value, dict):
-        raise ValueError(f"{key}: a block of settings is missing")
-    return value
-
-
-def text(values: Mapping[str, object], key: str) -> str:
-    """The non-empty text under ``key``; ValueError when it is something else."""
-    value = values.get(key)
-    if not isinstance(value, str) or not value.strip():
-        raise ValueError(f"{key}: text is missing")
-    return value
-
-
-def number(values: Mapping[str, object], key: str) -> float:
-    """The finite number under ``key``; ValueError when it is something else."""
-    value = values.get(key)
-    if isinstance(value, bool) or not isinstance(value, int | float):
-        raise ValueError(f"{key}: a number is missing")
-    if not math.isfinite(value):
-        raise ValueError(f"{key} = {value}: must be finite")
-    return float(value)
-
-
-def whole(values: Mapping[str, object], key: str) -> int:
-    """The whole number under ``key``; ValueError when it is something else."""
-    value = values.get(key)
-    if isinstance(value, bool) or not isinstance(value, int):
-        raise ValueError(f"{key}: a whole number is missing")
-    return value
-
-
-def flag(values: Mapping[str, object], key: str) -> bool:
-    """True or false under ``key``; ValueError when it is something else."""
-    value = values.get(key)
-    if not isinstance(value, bool):
-        raise ValueError(f"{key}: true or false is missing")
-    return value
 
 
 def _unit(values: Mapping[str, object]) -> UnitSettings:
     keep_alive_ms = whole(values, "keep_alive_ms")
-    _in_range("unit.keep_alive_ms", keep_alive_ms, 50, KEEP_ALIVE_LIMIT_MS)
+    in_range("unit.keep_alive_ms", keep_alive_ms, 50, KEEP_ALIVE_LIMIT_MS)
+    line, channels = text(values, "line"), whole(values, "channels")
+    in_range("unit.channels", channels, 1, 2)
+    if line not in LINES:
+        raise ValueError(
+            f"unit.line = {line}: a static level never means light; allowed"
+            f" {' or '.join(LINES)}"
+        )
     return UnitSettings(
         port=text(values, "port"),
         baud=whole(values, "baud"),
@@ -146,7 +137,15 @@ def _unit(values: Mapping[str, object]) -> UnitSettings:
         identity=text(values, "identity"),
         keep_alive_ms=keep_alive_ms,
         has_shutter=flag(values, "has_shutter"),
+        line=line,
+        channels=channels,
     )
+
+
+def _watched(values: Mapping[str, object]) -> dict[str, str]:
+    if not all(isinstance(digest, str) for digest in values.values()):
+        raise ValueError("watched: path -> SHA-256 in hexadecimal, or empty")
+    return {path: str(digest) for path, digest in values.items()}
 
 
 def _permitted(values: Mapping[str, object]) -> PermittedSteps:
@@ -166,9 +165,5 @@ def _permitted(values: Mapping[str, object]) -> PermittedSteps:
         angles_deg=angles,
         tolerance_deg=number(values, "tolerance_deg"),
         read_age_limit_s=number(values, "read_age_limit_s"),
+        power_ceiling_mw=number(values, "power_ceiling_mw"),
     )
-
-
-def _in_range(name: str, value: float, low: float, high: float) -> None:
-    if not low <= value <= high:
-        raise ValueError(f"{name} = {value}: allowed {low} to {high}")

@@ -5,8 +5,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from enum import Enum
 
-from pitchsweep.safety.guard_checks import Beat
-from pitchsweep.safety.guard_config import flag, number, text, whole
+from pitchsweep.safety.guard_view import Beat
+from pitchsweep.safety.json_fields import flag, number, text, whole
 
 LONGEST_LINE = 1_000_000
 
@@ -14,23 +14,30 @@ LONGEST_LINE = 1_000_000
 class Request(Enum):
     """The commands of the controller."""
 
+    TRIAL = "trial"
+    PROOF = "proof"
     ARM = "arm"
     ACKNOWLEDGE = "ack"
     LIGHT = "light"
     DARK = "dark"
     BEAT = "beat"
+    PRESS = "press"
     TRIP = "trip"
     STOP = "stop"
 
 
 @dataclass(frozen=True)
 class Command:
-    """A request with its number (0: no reply wanted), a beat, and a name or reason."""
+    """A request with its number (0: no reply wanted), a beat, and a name or reason.
+
+    ``sent_s`` is when a key was pressed, in the guard's monotonic seconds.
+    """
 
     request: Request
     number: int = 0
     beat: Beat | None = None
     words: str = ""
+    sent_s: float = float("-inf")
 
 
 def read_object(line: bytes) -> Mapping[str, object]:
@@ -58,6 +65,8 @@ def read_command(line: bytes, received_s: float) -> Command:
         return Command(request, asked, words=text(values, "reason"))
     if request in (Request.LIGHT, Request.BEAT):
         return Command(request, asked, beat=_beat(values, request, received_s))
+    if request is Request.PRESS:
+        return Command(request, asked, sent_s=min(received_s, number(values, "sent_s")))
     return Command(request, asked)
 
 
@@ -72,4 +81,6 @@ def _beat(values: Mapping[str, object], request: Request, received_s: float) -> 
         readback_deg=number(values, "readback_deg"),
         read_at_s=sent_s - number(values, "read_age_s"),
         turning=flag(values, "turning"),
+        power_mw=number(values, "power_mw"),
+        power_at_s=sent_s - number(values, "power_age_s"),
     )

@@ -8,12 +8,13 @@ Loads the standard library, the serial line, the dialect and this folder's gate 
 import os
 import queue
 import signal
+import socket
 import sys
 import threading
 import time
 from collections.abc import Callable, Mapping
-from contextlib import suppress
-from dataclasses import dataclass
+from contextlib import AbstractContextManager, nullcontext, suppress
+from dataclasses import dataclass, replace
 from pathlib import Path
 from types import FrameType
 
@@ -21,12 +22,20 @@ from pitchsweep.drivers.dialect import Dialect
 from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.drivers.emission_client import EmissionClient
 from pitchsweep.drivers.line_client import LineClient
+from pitchsweep.drivers.pulse_line import PulseLineClient, open_pulse_line
 from pitchsweep.drivers.serial_transport import open_serial
+from pitchsweep.safety.ack_record import run_entries, why_not_acknowledged_yet
 from pitchsweep.safety.background_writer import BackgroundWriter
+from pitchsweep.safety.dark_door import Answer, DarkDoor
+from pitchsweep.safety.file_watch import FileWatch
 from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.gate_table import Event, GateState
 from pitchsweep.safety.guard import Guard
-from pitchsweep.safety.guard_config import GuardConfig, config_from_mapping
+from pitchsweep.safety.guard_config import (
+    NETWORK_AGE_S,
+    GuardConfig,
+    config_from_mapping,
+)
 from pitchsweep.safety.guard_messages import LONGEST_LINE, read_command, read_object
 from pitchsweep.safety.guard_world import GuardWorld
 from pitchsweep.safety.ledger import Ledger
@@ -56,7 +65,14 @@ class End:
     reason: str
 
 
-Inbox = queue.SimpleQueue[Line | End]
+@dataclass(frozen=True)
+class HandStop:
+    """Somebody said ``pitchsweep dark``; ``answer`` takes state and light."""
+
+    answer: Answer
+
+
+Inbox = queue.SimpleQueue[Line | End | HandStop]
 Say = Callable[[Mapping[str, object]], None]
 
 
@@ -74,9 +90,10 @@ def main() -> int:
     except DriverError as error:
         return _give_up(speaker, str(error), EXIT_DEVICE)
     try:
-        return _serve(config, client, inbox, speaker)
+        with _findable(config, inbox):
+            return _serve(config, client, inbox, speaker)
     except (SafetyError, OSError) as error:
-        return _give_up(speaker, f"the ledger: {error}", EXIT_REFUSED)
+        return _give_up(speaker, f"ledger or folder: {error}", EXIT_REFUSED)
     finally:
         with suppress(DriverError):
             client.close()
@@ -84,11 +101,12 @@ def main() -> int:
 
 def _serve(
     config: GuardConfig,
-    client: EmissionClient,
+    client: EmissionClient | PulseLineClient,
     inbox: Inbox,
     speaker: BackgroundWriter[Mapping[str, object]],
 ) -> int:
     ledger = Ledger(Path(config.ledger_path))
+    acknowledged = config.resumed and _why_not_acknowledged(config) is None
     ledger.append(
         "guard-started",
         {
@@ -97,8 +115,11 @@ def _serve(
             "port": config.unit.port,
             "permit": config.permit.kind,
             "resumed": config.resumed,
+            "acknowledged": acknowledged,
         },
     )
+    config = replace(config, resumed=config.resumed and not acknowledged)
+    watch = FileWatch(config.watched)
     recorder: BackgroundWriter[tuple[str, dict[str, object]]] = BackgroundWriter(
         lambda item: ledger.append(*item)
     )
@@ -108,6 +129,7 @@ def _serve(
         report=lambda event: speaker.put(_event_message(event)),
         record=lambda kind, data: recorder.put((kind, data)),
         record_failure=lambda: recorder.failure,
+        settings_failure=lambda: watch.failure,
     )
     guard = Guard(config, client, world)
     try:
@@ -119,6 +141,7 @@ def _serve(
         guard.fail(Event.GUARD_FAULT, f"{type(error).__name__}: {error}")
     finally:
         guard.end("the guard ends")
+        watch.close()
         recorder.close(FLUSH_S)
         speaker.close(FLUSH_S)
     return EXIT_DONE
@@ -139,6 +162,9 @@ def _loop(guard: Guard, inbox: Inbox, tick_s: float, say: Say) -> None:
             continue
         if isinstance(item, End):
             guard.end(item.reason)
+        elif isinstance(item, HandStop):
+            guard.fail(Event.HAND_STOP, "'pitchsweep dark' from a terminal")
+            item.answer(guard.state.value, guard.shows_light)
         else:
             _obey(guard, item, say)
 
@@ -156,7 +182,9 @@ def _obey(guard: Guard, line: Line, say: Say) -> None:
                 "reply": command.number,
                 "done": reply.done,
                 "reason": reply.reason,
+                "wants": reply.wants,
                 "state": guard.state.value,
+                "light_on": guard.shows_light,
             }
         )
 
@@ -166,16 +194,55 @@ def _await_config(inbox: Inbox) -> GuardConfig:
         item = inbox.get(timeout=CONFIG_WAIT_S)
     except queue.Empty:
         raise ValueError(f"none came within {CONFIG_WAIT_S:g} s") from None
-    if isinstance(item, End):
-        raise ValueError(item.reason)
+    if not isinstance(item, Line):
+        raise ValueError(item.reason if isinstance(item, End) else "told to be dark")
     return config_from_mapping(read_object(item.data))
 
 
-def _open_unit(config: GuardConfig) -> EmissionClient:
-    dialect = Dialect.from_mapping(config.unit.dialect)
-    transport = open_serial(config.unit.port, baud=config.unit.baud)
-    line = LineClient(transport, dialect, device=config.unit.identity)
-    timeout_s = ANSWER_SHARE * config.unit.keep_alive_ms / 1000.0
+def _findable(config: GuardConfig, inbox: Inbox) -> AbstractContextManager[object]:
+    """The door for ``pitchsweep dark``, where the system has such sockets."""
+    if not hasattr(socket, "AF_UNIX"):
+        return nullcontext()
+    return DarkDoor(
+        run=config.run,
+        unit=config.unit.identity,
+        on_dark=lambda answer: inbox.put(HandStop(answer)),
+    )
+
+
+def _why_not_acknowledged(config: GuardConfig) -> str | None:
+    with suppress(OSError), open(config.ledger_path, "rb") as lines:
+        return why_not_acknowledged_yet(
+            run_entries(lines, config.run),
+            now_utc_s=time.time(),
+            booted_utc_s=_booted_utc_s(),
+        )
+    return "the ledger cannot be read"
+
+
+def _booted_utc_s() -> float:
+    """When this computer was started; now, where the system does not say."""
+    if not hasattr(time, "CLOCK_BOOTTIME"):
+        return time.time()
+    return time.time() - time.clock_gettime(time.CLOCK_BOOTTIME)
+
+
+def _open_unit(config: GuardConfig) -> EmissionClient | PulseLineClient:
+    unit = config.unit
+    dialect = Dialect.from_mapping(unit.dialect)
+    timeout_s = ANSWER_SHARE * unit.keep_alive_ms / 1000.0
+    if unit.over_network:
+        timeout_s = min(timeout_s, ANSWER_SHARE * NETWORK_AGE_S)
+    if unit.line == "pulses":
+        return open_pulse_line(
+            unit.port,
+            dialect,
+            device=unit.identity,
+            timeout_s=timeout_s,
+            channels=unit.channels,
+        )
+    transport = open_serial(unit.port, baud=unit.baud)
+    line = LineClient(transport, dialect, device=unit.identity)
     return EmissionClient(line, timeout_s=timeout_s)
 
 

@@ -8,12 +8,8 @@ from typing import Protocol
 from pitchsweep.drivers.emission_client import UnitState
 from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.gate_table import GateState
-from pitchsweep.safety.guard_checks import (
-    BEFORE_ARMING,
-    BEFORE_LIGHT,
-    CHECKS,
-    Check,
-)
+from pitchsweep.safety.guard_checks import BEFORE_ARMING, BEFORE_LIGHT, CHECKS
+from pitchsweep.safety.guard_view import Check
 from pitchsweep.safety.permit import NONCE_BYTES
 
 
@@ -25,6 +21,10 @@ class UnitLine(Protocol):
     def prove(self, nonce: bytes) -> bytes: ...
 
     def keep_lit(self) -> UnitState: ...
+
+    def ready_trial(self) -> None: ...
+
+    def try_time_out(self) -> UnitState: ...
 
     def dark(self) -> UnitState: ...
 
@@ -47,7 +47,8 @@ class GuardWorld:
     """What a guard is given: clocks (seconds), sinks, checks.
 
     ``report`` takes every line of gate history, ``record`` a ledger entry's kind and
-    data; both return at once. ``record_failure`` is empty while the ledger is written.
+    data; both return at once. ``record_failure`` is empty while the ledger is written,
+    ``settings_failure`` while no watched file has changed.
     """
 
     now: Callable[[], float]
@@ -55,13 +56,18 @@ class GuardWorld:
     report: Callable[[GateEvent], None]
     record: Callable[[str, dict[str, object]], None]
     record_failure: Callable[[], str] = lambda: ""
+    settings_failure: Callable[[], str] = lambda: ""
     nonce: Callable[[], bytes] = lambda: secrets.token_bytes(NONCE_BYTES)
     checks: GuardChecks = GuardChecks()
 
 
 @dataclass(frozen=True)
 class Reply:
-    """The answer to a command; ``reason`` is empty when it was done."""
+    """The answer to a command; ``reason`` is empty when it was done.
+
+    ``wants`` says what is to be done next before arming (a word of ``Want``).
+    """
 
     done: bool
     reason: str = ""
+    wants: str = ""

@@ -1,8 +1,9 @@
 """Permits: what allows a run to ask for light, and the refusal of everything else.
 
-Pure. At this stage there is one permit, the rehearsal, which is worth nothing except
-on a unit that answers a challenge with the key made when this very twin was started.
-Port names and addresses prove nothing.
+Pure. A rehearsal is worth nothing except on a unit that answers a challenge with the
+key made when this very twin was started; port names and addresses prove nothing. An
+attended permit needs a hand on the key (``attended_permit``). A guard without a permit
+never lights: it only takes in that a trip is acknowledged.
 """
 
 import hashlib
@@ -12,6 +13,11 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, ClassVar
 
+from pitchsweep.safety.attended_permit import (
+    AttendedPermit,
+    attended_as_mapping,
+    attended_from_mapping,
+)
 from pitchsweep.safety.safety_errors import GateRefused
 
 if TYPE_CHECKING:
@@ -20,6 +26,9 @@ if TYPE_CHECKING:
 
 KEY_BYTES = 32
 NONCE_BYTES = 16
+KINDS = ("rehearsal", "attended", "none")
+CLOCK_BACK_LIMIT_S = 2.0
+"""A clock set back by more than this counts as a lapse."""
 
 
 @dataclass(frozen=True)
@@ -39,12 +48,24 @@ class RehearsalPermit:
             raise ValueError("a permit's window needs a finite start before its end")
 
 
-Permit = RehearsalPermit
+@dataclass(frozen=True)
+class NoPermit:
+    """Allows nothing: for a guard that only acknowledges a trip."""
+
+    kind: ClassVar[str] = "none"
+    key: ClassVar[None] = None
+
+
+Permit = RehearsalPermit | AttendedPermit | NoPermit
 """The permits that exist so far."""
 
 
 def permit_as_mapping(permit: Permit) -> dict[str, object]:
     """The permit as JSON values; the key travels in hexadecimal, over a pipe only."""
+    if isinstance(permit, NoPermit):
+        return {"kind": permit.kind}
+    if isinstance(permit, AttendedPermit):
+        return attended_as_mapping(permit)
     return {
         "kind": permit.kind,
         "key": permit.key.hex(),
@@ -56,8 +77,12 @@ def permit_as_mapping(permit: Permit) -> dict[str, object]:
 def permit_from_mapping(values: Mapping[str, object]) -> Permit:
     """The permit in ``values``; ValueError for any other kind, key or window."""
     kind = values.get("kind")
+    if kind == NoPermit.kind:
+        return NoPermit()
+    if kind == AttendedPermit.kind:
+        return attended_from_mapping(values)
     if kind != RehearsalPermit.kind:
-        raise ValueError(f"permit of kind {kind!r}: only 'rehearsal' exists so far")
+        raise ValueError(f"permit of kind {kind!r}: allowed {', '.join(KINDS)}")
     key = values.get("key")
     start, end = values.get("valid_from_utc_s"), values.get("valid_until_utc_s")
     if not isinstance(key, str):
@@ -75,6 +100,11 @@ def why_permit_lapsed(
     ``utc_by_monotonic_s`` is the UTC at the guard's start plus monotonic seconds since,
     so that a clock set back does not lengthen a permit.
     """
+    if isinstance(permit, NoPermit):
+        return "this guard has no permit: it only acknowledges"
+    back_s = utc_by_monotonic_s - utc_s
+    if not back_s <= CLOCK_BACK_LIMIT_S:
+        return f"the clock was set back by {back_s:.1f} s"
     latest = max(utc_s, utc_by_monotonic_s)
     if not permit.valid_from_utc_s <= min(utc_s, utc_by_monotonic_s):
         return "the permit's window has not begun (or the clock was set back)"
@@ -90,7 +120,16 @@ def challenge_answer(key: bytes, nonce: bytes) -> bytes:
 
 def answers_challenge(permit: Permit, nonce: bytes, answer: bytes) -> bool:
     """True when ``answer`` proves the key, compared in constant time."""
+    if permit.key is None:
+        return False
     return hmac.compare_digest(challenge_answer(permit.key, nonce), answer)
+
+
+def power_ceiling_mw(permit: Permit, bench_ceiling_mw: float) -> float:
+    """The lower of the bench's ceiling and the permit's own."""
+    if isinstance(permit, AttendedPermit):
+        return min(bench_ceiling_mw, permit.power_ceiling_mw)
+    return bench_ceiling_mw
 
 
 def refuse_hardware(bench: "Bench") -> None:

@@ -5,9 +5,10 @@ from pitchsweep.drivers.driver_errors import (
     AskedIllegal,
     DeviceRefused,
     DriverError,
+    NoAnswerInTime,
 )
 from pitchsweep.safety.gate_table import Event
-from pitchsweep.safety.guard_checks import Fault
+from pitchsweep.safety.guard_view import Fault
 from pitchsweep.safety.guard_world import UnitLine
 from pitchsweep.safety.permit import Permit, answers_challenge
 
@@ -23,10 +24,16 @@ def find_stranger(unit: UnitLine, identity: str) -> Fault | None:
 
 
 def find_no_proof(unit: UnitLine, permit: Permit, nonce: bytes) -> Fault | None:
-    """PROOF_FAILED when the unit declines the challenge or does not know the key."""
+    """PROOF_FAILED when the unit declines the challenge or does not know the key.
+
+    A unit that says nothing at all to it (a bare relay) has no proof either. A permit
+    without a key needs none.
+    """
+    if permit.key is None:
+        return None
     try:
         answer = unit.prove(nonce)
-    except (DeviceRefused, AnsweredNonsense) as error:
+    except (DeviceRefused, AnsweredNonsense, NoAnswerInTime) as error:
         return Fault(Event.PROOF_FAILED, f"no proof of the twin: {error}")
     if answers_challenge(permit, nonce, answer):
         return None

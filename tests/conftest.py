@@ -1,6 +1,18 @@
 """Settings for the whole suite: generated cases are the same in every run."""
 
+import tempfile
+from collections.abc import Iterator
+
 import hypothesis
+import pytest
 
 hypothesis.settings.register_profile("same-every-run", derandomize=True, deadline=None)
 hypothesis.settings.load_profile("same-every-run")
+
+
+@pytest.fixture(autouse=True, scope="session")
+def guards_of_this_suite_only() -> Iterator[str]:
+    """Guards of the tests are found in a folder of their own, and no others."""
+    with tempfile.TemporaryDirectory() as folder, pytest.MonkeyPatch.context() as patch:
+        patch.setenv("PITCHSWEEP_GUARDS", folder)
+        yield folder

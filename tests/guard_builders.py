@@ -8,17 +8,18 @@ from pitchsweep.drivers.driver_errors import DeviceRefused, DriverError
 from pitchsweep.drivers.emission_client import UnitState
 from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.guard import Guard
-from pitchsweep.safety.guard_checks import Beat
 from pitchsweep.safety.guard_config import GuardConfig, GuardLimits, UnitSettings
 from pitchsweep.safety.guard_messages import Command, Request
+from pitchsweep.safety.guard_view import Beat
 from pitchsweep.safety.guard_world import GuardChecks, GuardWorld
-from pitchsweep.safety.permit import RehearsalPermit, challenge_answer
+from pitchsweep.safety.permit import Permit, RehearsalPermit, challenge_answer
 from pitchsweep.safety.permitted_steps import PermittedSteps
 
 KEY = bytes(range(32))
 UTC_S = 1_800_000_000.0
 IDENTITY = "bench-unit-1"
 STEPS = {0: -10.0, 1: 0.0, 2: 10.0}
+POWER_MW = 0.9
 
 
 @dataclass
@@ -42,6 +43,7 @@ class FakeUnit:
     key: bytes | None = KEY
     keep_alive_s: float = 0.2
     door_closed: bool = True
+    second_closed: bool | None = None
     resets: int = 0
     lapses: int = 0
     stuck: bool = False
@@ -49,6 +51,7 @@ class FakeUnit:
     asked: list[str] = field(default_factory=list)
     lit_until_s: float = float("-inf")
     lit: bool = False
+    tried_until_s: float = float("inf")
 
     def identify(self) -> str:
         self._hear("identify")
@@ -64,6 +67,14 @@ class FakeUnit:
         self._hear("keep")
         self.lit = True
         self.lit_until_s = self.clock.now_s + self.keep_alive_s
+        return self._standing()
+
+    def ready_trial(self) -> None:
+        self._hear("ready")
+
+    def try_time_out(self) -> UnitState:
+        self._hear("try")
+        self.tried_until_s = self.clock.now_s + self.keep_alive_s
         return self._standing()
 
     def dark(self) -> UnitState:
@@ -90,7 +101,11 @@ class FakeUnit:
 
     def _standing(self) -> UnitState:
         lit = self.shows_light()
-        return UnitState(lit, self.door_closed, lit, self.resets, self.lapses)
+        if self.clock.now_s >= self.tried_until_s:
+            self.tried_until_s, self.lapses = float("inf"), self.lapses + 1
+        return UnitState(
+            lit, self.door_closed, lit, self.resets, self.lapses, self.second_closed
+        )
 
 
 def guard_config(
@@ -104,16 +119,29 @@ def guard_config(
     valid_for_s: float = 3600.0,
     read_age_limit_s: float = 5.0,
     identity: str = IDENTITY,
+    permit: Permit | None = None,
+    watched: dict[str, str] | None = None,
+    line: str = "keep-alive",
+    channels: int = 1,
 ) -> GuardConfig:
     """A guard's configuration for three permitted steps."""
     return GuardConfig(
-        unit=UnitSettings(port, 115200, dialect or {"any": 1}, identity, 200),
-        permit=RehearsalPermit(key, utc_s - 5.0, utc_s + valid_for_s),
+        unit=UnitSettings(
+            port=port,
+            baud=115200,
+            dialect=dialect or {"any": 1},
+            identity=identity,
+            keep_alive_ms=200,
+            line=line,
+            channels=channels,
+        ),
+        permit=permit or RehearsalPermit(key, utc_s - 5.0, utc_s + valid_for_s),
         limits=GuardLimits(),
-        permitted=PermittedSteps(STEPS, 0.01, read_age_limit_s),
+        permitted=PermittedSteps(STEPS, 0.01, read_age_limit_s, POWER_MW),
         ledger_path=str(ledger),
         run="run-1",
         resumed=resumed,
+        watched=watched or {},
     )
 
 
@@ -132,6 +160,7 @@ class Rig:
         self.events: list[GateEvent] = []
         self.recorded: list[tuple[str, dict[str, object]]] = []
         self.ledger_failure = ""
+        self.settings_failure = ""
         self.on_report: Callable[[GateEvent], None] = lambda event: None
         world = GuardWorld(
             now=lambda: self.clock.now_s,
@@ -139,6 +168,7 @@ class Rig:
             report=self._report,
             record=lambda kind, data: self.recorded.append((kind, data)),
             record_failure=lambda: self.ledger_failure,
+            settings_failure=lambda: self.settings_failure,
             checks=checks or GuardChecks(),
         )
         self.guard = Guard(config or guard_config(), self.unit, world)
@@ -160,6 +190,8 @@ class Rig:
             "readback_deg": angle,
             "read_at_s": now,
             "turning": False,
+            "power_mw": POWER_MW,
+            "power_at_s": now,
         }
         return Beat(**{**fields, **changes})  # type: ignore[arg-type]
 
@@ -184,7 +216,25 @@ class Rig:
                 self.heartbeat(step, **change)
             self.guard.tick()
 
+    def prove(self) -> bool:
+        """The time-out runs out in the dark, a person opens and closes the door."""
+        if not self.say(Request.TRIAL):
+            return False
+        self.run(0.25)
+        for closed in (False, True):
+            self.move_door(closed)
+            self.run(0.02)
+        return True
+
+    def move_door(self, closed: bool) -> None:
+        """Every channel that there is follows."""
+        self.unit.door_closed = closed
+        if self.unit.second_closed is not None:
+            self.unit.second_closed = closed
+
     def arm(self) -> bool:
+        if not self.prove():
+            return False
         self.heartbeat()
         return self.say(Request.ARM)
 

@@ -41,12 +41,13 @@ class EmissionUnit:
         self._resets = 0
         self._lapses = 0
 
-    def keep(self) -> None:
-        """Lights up, or stays lit for one more keep-alive time."""
+    def keep(self, for_s: float | None = None) -> None:
+        """Lights up, or stays lit for ``for_s`` more (None: one keep-alive time)."""
         with self._lock:
             self._lapse_if_due()
             self._tried_until_s = None
-            self._lit_until_s = self._clock() + self.keep_alive_s
+            stays_s = self.keep_alive_s if for_s is None else for_s
+            self._lit_until_s = self._clock() + stays_s
             if not self._lit:
                 self._lit = True
                 self._log.write("light", "on", "keep-alive")

@@ -27,9 +27,11 @@ from pitchsweep.drivers.twin.one_at_a_time import (
     successor_waits,
 )
 from pitchsweep.drivers.twin.pty_port import PtyPort
+from pitchsweep.drivers.twin.relay import TimeOutRelay
+from pitchsweep.drivers.twin.relay_port import RelayPort
 from pitchsweep.drivers.twin.stage_firmware import StageFirmware
 from pitchsweep.drivers.twin.truth import draw_truth
-from pitchsweep.drivers.twin.unit_firmware import UnitFirmware
+from pitchsweep.drivers.twin.unit_firmware import RelayBoxFirmware, UnitFirmware
 from pitchsweep.drivers.twin.unit_log import UnitLog
 from pitchsweep.drivers.twin.world import World
 from pitchsweep.drivers.twin.world_server import WorldServer
@@ -103,15 +105,7 @@ def _run(configuration: TwinConfiguration, asked_to_end: threading.Event) -> Non
     stage_port = PtyPort(
         StageFirmware(world, identity="twin-stage", faults=faults), name="stage"
     )
-    unit_port = PtyPort(
-        UnitFirmware(
-            unit,
-            identity=bench.emission.unit_identity,
-            key=configuration.key,
-            faults=faults,
-        ),
-        name="unit",
-    )
+    unit_port = _unit_port(configuration, unit)
     server = WorldServer(world, token=configuration.token, directory=directory)
     _say(
         {
@@ -128,6 +122,20 @@ def _run(configuration: TwinConfiguration, asked_to_end: threading.Event) -> Non
     world.save()
     log.write("unit", "end", why)
     log.close()
+
+
+def _unit_port(
+    configuration: TwinConfiguration, unit: EmissionUnit
+) -> PtyPort | RelayPort:
+    emission = configuration.bench.emission
+    identity, faults = emission.unit_identity, configuration.faults
+    if emission.line == "pulses":
+        box = RelayBoxFirmware(identity, configuration.key, faults)
+        return RelayPort(TimeOutRelay(unit), box)
+    firmware = UnitFirmware(
+        unit, identity=identity, key=configuration.key, faults=faults
+    )
+    return PtyPort(firmware, name="unit")
 
 
 def _watch_controller(

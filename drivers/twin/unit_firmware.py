@@ -44,7 +44,7 @@ class UnitFirmware:
         if words == ["WHO"]:
             return f"NAMED {self._identity}"
         if len(words) == 2 and words[0] == "PROVE":
-            return self._prove(words[1])
+            return prove(self._key, words[1])
         return "DECLINED UNREADABLE"
 
     def _keep(self) -> str | None:
@@ -61,11 +61,37 @@ class UnitFirmware:
             self._unit.jam_shutter()
         return None if does == "silent" else self._unit.standing()
 
-    def _prove(self, challenge: str) -> str:
-        try:
-            nonce = bytes.fromhex(challenge)
-        except ValueError:
-            return "DECLINED UNREADABLE"
-        if not 0 < len(nonce) <= LONGEST_CHALLENGE_BYTES:
-            return "DECLINED UNREADABLE"
-        return "PROOF " + hmac.new(self._key, nonce, hashlib.sha256).hexdigest()
+
+class RelayBoxFirmware:
+    """What the box of a pulse-fed relay says on its data wires: WHO and PROVE alone."""
+
+    def __init__(self, identity: str, key: bytes, faults: FaultSchedule) -> None:
+        self._identity = identity
+        self._key = key
+        self._lines = LineCutter("unit-ask", faults, self._answer)
+
+    def receive(self, data: bytes) -> list[Reply]:
+        """Replies to what arrived."""
+        return self._lines.receive(data)
+
+    def due_in_s(self) -> float | None:
+        """Nothing is ever due here."""
+        return None
+
+    def _answer(self, words: list[str]) -> str | None:
+        if words == ["WHO"]:
+            return f"NAMED {self._identity}"
+        if len(words) == 2 and words[0] == "PROVE":
+            return prove(self._key, words[1])
+        return "DECLINED UNREADABLE"
+
+
+def prove(key: bytes, challenge: str) -> str:
+    """The answer to a challenge in hexadecimal."""
+    try:
+        nonce = bytes.fromhex(challenge)
+    except ValueError:
+        return "DECLINED UNREADABLE"
+    if not 0 < len(nonce) <= LONGEST_CHALLENGE_BYTES:
+        return "DECLINED UNREADABLE"
+    return "PROOF " + hmac.new(key, nonce, hashlib.sha256).hexdigest()

@@ -16,7 +16,7 @@ from pathlib import Path
 sys.path.insert(0, str(Path(__file__).parent.parent))
 
 from emulated_unit import EmulatedUnit  # noqa: E402
-from guard_builders import KEY, guard_config  # noqa: E402
+from guard_builders import KEY, POWER_MW, guard_config  # noqa: E402
 
 from pitchsweep.drivers.dialect_files import shipped_dialect_mapping  # noqa: E402
 from pitchsweep.safety.guard_client import GuardClient, start_guard  # noqa: E402
@@ -30,8 +30,8 @@ def spin() -> None:
 
 def open_once(unit: EmulatedUnit, guard: GuardClient, wait_s: float) -> float:
     """Seconds from door to dark in one cycle of arm, light, door, acknowledge."""
-    guard.arm()
-    guard.light_on(1, 0.0, 0.0)
+    guard.arm(unit)
+    guard.light_on(1, 0.0, 0.0, POWER_MW)
     time.sleep(wait_s)
     unit.tell("open")
     if not guard.tripped.wait(5.0):

@@ -11,6 +11,7 @@ from pitchsweep.drivers.driver_errors import (
     LineBroke,
     NoAnswerInTime,
 )
+from pitchsweep.drivers.emission_client import UnitState
 from pitchsweep.safety import guard_checks
 from pitchsweep.safety.gate_table import Event, GateState
 from pitchsweep.safety.guard_messages import Request, read_command
@@ -72,8 +73,10 @@ def test_arming_needs_a_heartbeat_but_does_not_trip_without() -> None:
 
 def test_arming_is_refused_while_the_interlock_is_open() -> None:
     rig = Rig()
+    assert rig.prove()
     rig.unit.door_closed = False
-    assert not rig.arm()
+    rig.heartbeat()
+    assert not rig.say(Request.ARM)
     assert rig.state == "cold"
 
 
@@ -178,7 +181,45 @@ def old_message(rig: Rig) -> None:
     rig.guard.tick()
 
 
+def clock_back(rig: Rig) -> None:
+    rig.clock.utc_s -= 3.0
+    rig.run(0.01)
+
+
+def power_high(rig: Rig) -> None:
+    rig.run(0.01, power_mw=0.91)
+
+
+def power_unknown(rig: Rig) -> None:
+    rig.run(0.01, power_mw=float("nan"))
+
+
+def power_old(rig: Rig) -> None:
+    rig.run(0.01, power_at_s=rig.clock.now_s - 6.0)
+
+
+def second_channel(rig: Rig) -> None:
+    rig.unit.second_closed = False
+    rig.run(0.01)
+
+
+def settings_edited(rig: Rig) -> None:
+    rig.settings_failure = "job.yaml was changed since the start"
+    rig.run(0.01)
+
+
+def told_dark(rig: Rig) -> None:
+    rig.guard.fail(Event.HAND_STOP, "'pitchsweep dark' from a terminal")
+
+
 FAULTS_WHILE_LIT = {
+    clock_back: "permit-lapsed",
+    power_high: "power-above-limit",
+    power_unknown: "power-above-limit",
+    power_old: "power-above-limit",
+    second_channel: "interlock-open",
+    settings_edited: "settings-changed",
+    told_dark: "hand-stop",
     door: "interlock-open",
     silence: "heartbeat-stale",
     clock_forward: "permit-lapsed",
@@ -206,7 +247,8 @@ def test_each_fault_while_lit_means_dark_and_latched(fault: Any) -> None:
     fault(rig)
     assert not rig.unit.lit and rig.state == "tripped"
     assert rig.events[-1].event == FAULTS_WHILE_LIT[fault]
-    rig.unit.door_closed, rig.ledger_failure = True, ""
+    rig.unit.door_closed, rig.unit.second_closed = True, None
+    rig.ledger_failure = rig.settings_failure = ""
     rig.clock.utc_s = 100.0 + rig.clock.utc_s
     rig.run(1.0)
     assert not rig.light() and not rig.arm() and rig.state == "tripped"
@@ -405,7 +447,7 @@ def test_the_ledger_gets_one_entry_a_step_with_its_light_time() -> None:
 def test_a_unit_without_shutter_may_report_it_clear() -> None:
     rig = Rig()
     standing = rig.unit._standing
-    rig.unit._standing = lambda: guard_checks.UnitState(  # type: ignore[method-assign]
+    rig.unit._standing = lambda: UnitState(  # type: ignore[method-assign]
         False, True, True, 0, 0
     )
     rig.run(0.5)
@@ -438,7 +480,10 @@ def without(check: Any) -> Any:
     [
         (guard_checks.heartbeat_is_fresh, silence),
         (guard_checks.permit_is_valid, clock_forward),
+        (guard_checks.permit_is_valid, clock_back),
         (guard_checks.interlock_is_closed, door),
+        (guard_checks.second_channel_is_closed, second_channel),
+        (guard_checks.power_is_permitted, power_high),
         (guard_checks.stage_is_at_rest, stage_turned),
         (guard_checks.angle_agrees, readback_off),
         (guard_checks.reading_is_fresh, reading_old),
@@ -471,15 +516,21 @@ def test_every_state_is_checked_and_light_by_all_that_must_hold() -> None:
         g.heartbeat_is_fresh,
         g.interlock_is_closed,
         g.permit_is_valid,
+        g.second_channel_is_closed,
+        g.channels_agree,
     }
     stage = {
         g.step_is_permitted,
         g.angle_agrees,
         g.reading_is_fresh,
         g.stage_is_at_rest,
+        g.power_is_permitted,
     }
-    assert set(g.CHECKS[GateState.LIT]) == always | stage | {g.light_is_on}
-    assert set(g.BEFORE_LIGHT) == always | stage | {g.light_is_off}
+    assert set(g.CHECKS[GateState.LIT]) == always | stage | {
+        g.light_is_on,
+        g.key_is_held,
+    }
+    assert set(g.BEFORE_LIGHT) == always | stage | {g.light_is_off, g.key_is_held}
     assert set(g.CHECKS[GateState.READY]) == always | {g.light_is_off}
 
 
@@ -512,6 +563,7 @@ def test_a_message_from_the_future_counts_as_sent_when_received() -> None:
 def test_every_event_of_the_table_can_come_from_somewhere() -> None:
     told = set(FAULTS_WHILE_LIT.values()) | set(UNIT_ERRORS)
     told |= {"unit-strange", "proof-failed", "light-stuck", "guard-fault"}
+    told |= {"channels-disagree"}
     from pitchsweep.safety.gate_table import FAULTS
 
     assert {event.value for event in FAULTS} == told

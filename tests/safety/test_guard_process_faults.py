@@ -14,7 +14,7 @@ from pathlib import Path
 
 import pytest
 from emulated_unit import KEEP_ALIVE_S, EmulatedUnit
-from guard_builders import KEY, guard_config
+from guard_builders import KEY, POWER_MW, guard_config
 
 from pitchsweep.drivers.dialect_files import shipped_dialect_mapping
 from pitchsweep.drivers.driver_errors import LineBroke
@@ -49,11 +49,16 @@ def config_for(unit: EmulatedUnit, **changes: object) -> GuardConfig:
     )
 
 
+def moving(step: int, angle_deg: float) -> StageReport:
+    """The stage on its way to a step."""
+    return StageReport(step, angle_deg, 0.0, time.monotonic(), True, POWER_MW)
+
+
 @pytest.fixture
 def lit(unit: EmulatedUnit) -> Iterator[GuardClient]:
     with start_guard(config_for(unit)) as guard:
-        guard.arm()
-        guard.light_on(1, 0.0, 0.0)
+        guard.arm(unit)
+        guard.light_on(1, 0.0, 0.0, POWER_MW)
         yield guard
 
 
@@ -73,10 +78,10 @@ def dark_after(unit: EmulatedUnit, since_s: float) -> float:
 
 def test_a_run_of_steps_is_lit_only_between_light_and_dark(unit: EmulatedUnit) -> None:
     with start_guard(config_for(unit)) as guard:
-        guard.arm()
+        guard.arm(unit)
         for step, angle in ((0, -10.0), (1, 0.0), (2, 10.0)):
-            guard.report_stage(StageReport(step, angle, 0.0, time.monotonic(), True))
-            guard.light_on(step, angle, angle)
+            guard.report_stage(moving(step, angle))
+            guard.light_on(step, angle, angle, POWER_MW)
             guard.dark()
         assert guard.state.value == "ready"
     values = [value for _, value, _ in unit.rows("light")]
@@ -98,14 +103,14 @@ def test_an_open_door_means_dark_and_the_next_call_raises(
     unit: EmulatedUnit, lit: GuardClient
 ) -> None:
     unit.tell("open")
-    soon(lambda: len(unit.rows("door")) == 1)
-    assert dark_after(unit, unit.rows("door")[0][0]) < LATE_S
+    soon(lambda: len(unit.rows("door")) == 3)
+    assert dark_after(unit, unit.rows("door")[-1][0]) < LATE_S
     assert lit.tripped.wait(LIMIT_S)
     with pytest.raises(GateTripped, match="interlock-open") as caught:
         lit.check()
     assert caught.value.exit_code == 3
     with pytest.raises(GateTripped):
-        lit.light_on(1, 0.0, 0.0)
+        lit.light_on(1, 0.0, 0.0, POWER_MW)
 
 
 def test_after_a_trip_only_reset_and_name_lead_back(
@@ -113,22 +118,22 @@ def test_after_a_trip_only_reset_and_name_lead_back(
 ) -> None:
     lit.trip("zero order not where predicted")
     with pytest.raises(GateTripped, match="zero order"):
-        lit.arm()
+        lit.arm(unit)
     with pytest.raises(GateRefused, match="reset input"):
         lit.acknowledge("A. Person")
     unit.tell("reset")
     soon(lambda: len(unit.rows("reset")) == 1)
     lit.acknowledge("A. Person")
     with pytest.raises(GateRefused, match="not armed"):
-        lit.light_on(1, 0.0, 0.0)
-    lit.arm()
-    lit.light_on(1, 0.0, 0.0)
+        lit.light_on(1, 0.0, 0.0, POWER_MW)
+    lit.arm(unit)
+    lit.light_on(1, 0.0, 0.0, POWER_MW)
 
 
 def test_a_resumed_run_is_tripped_at_once(unit: EmulatedUnit) -> None:
     with start_guard(config_for(unit, resumed=True)) as guard:
         with pytest.raises(GateTripped, match="resumed"):
-            guard.arm()
+            guard.arm(unit)
 
 
 def lighting_controller(unit: EmulatedUnit) -> "tuple[subprocess.Popen[bytes], int]":
@@ -143,6 +148,9 @@ def lighting_controller(unit: EmulatedUnit) -> "tuple[subprocess.Popen[bytes], i
     message = json.dumps(config_as_mapping(config_for(unit)))
     controller.stdin.write(message.encode() + b"\n")
     controller.stdin.flush()
+    for asked in ("open", "close"):
+        assert controller.stdout.readline().decode().strip() == asked
+        unit.tell(asked)
     return controller, int(controller.stdout.readline())
 
 
@@ -188,7 +196,7 @@ def test_a_signal_to_the_guard_means_dark_and_its_end(
     assert dark_after(unit, sent_s) < LATE_S
     assert lit.lost.wait(LIMIT_S)
     with pytest.raises(GuardLost, match="signal"):
-        lit.light_on(1, 0.0, 0.0)
+        lit.light_on(1, 0.0, 0.0, POWER_MW)
 
 
 def test_a_killed_guard_means_dark_by_the_units_own_keep_alive(
@@ -215,9 +223,9 @@ def test_a_stopped_guard_means_dark_and_stays_dark_when_it_goes_on(
 
 
 def test_an_unreadable_message_means_dark(unit: EmulatedUnit, lit: GuardClient) -> None:
-    pipe = lit._process.stdin
+    pipe = lit._pipe.process.stdin
     assert pipe is not None
-    with lit._sending:
+    with lit._pipe.sending:
         pipe.write(b"garbage\n")
         pipe.flush()
     assert lit.tripped.wait(LIMIT_S)
@@ -228,7 +236,7 @@ def test_an_unreadable_message_means_dark(unit: EmulatedUnit, lit: GuardClient) 
 def test_a_unit_that_does_not_know_the_key_is_refused(unit: EmulatedUnit) -> None:
     with start_guard(config_for(unit, key=b"k" * 32)) as guard:
         with pytest.raises(GateTripped, match="proof-failed"):
-            guard.arm()
+            guard.arm(unit)
     assert unit.rows("light") == []
 
 
@@ -255,7 +263,7 @@ def test_a_ledger_lost_on_the_way_means_dark(
     ledger.unlink()
     ledger.mkdir()
     lit.dark()
-    lit.light_on(2, 10.0, 10.0)
+    lit.light_on(2, 10.0, 10.0, POWER_MW)
     assert lit.tripped.wait(LIMIT_S)
     assert lit.events[-1].event == "ledger-failed"
     assert dark_after(unit, time.monotonic()) < LATE_S
