@@ -11,6 +11,8 @@ from pitchsweep.safety.hazard_figures import full_drive_mw, laser_figures
 
 CLASSES = ("1", "1M", "2", "2M", "3R", "3B", "4")
 """From harmless to dangerous; the estimate knows those without an M only."""
+LONGEST_ON_DOOR = 160
+"""Letters that the door sheet has room for, an answer."""
 
 
 @dataclass(frozen=True)
@@ -137,6 +139,8 @@ def why_answer_will_not_do(
         return "is answered no"
     if item.asks is not None and not (answer.words or "").strip():
         return f"words are missing: {item.asks}"
+    if item.shown_as is not None and len(answer.words or "") > LONGEST_ON_DOOR:
+        return f"the door sheet has room for {LONGEST_ON_DOOR} letters of it"
     return _why_readings_will_not_do(item, answer, job, last_day)
 
 
