@@ -8,9 +8,9 @@ from pitchsweep.analysis.picture_style import (
     ACCENT,
     ACCENT_SOFT,
     PAGE_MM,
+    Drawing,
     drawable,
     say_instead,
-    svg_picture,
 )
 from pitchsweep.analysis.records import BudgetLine, PitchResult
 
@@ -25,6 +25,11 @@ def budget_shares(budget: tuple[BudgetLine, ...]) -> list[tuple[BudgetLine, floa
 
 
 def budget_svg(result: PitchResult) -> str:
+    """The SVG text of the budget."""
+    return budget_drawing(result).svg()
+
+
+def budget_drawing(result: PitchResult) -> Drawing:
     """One bar for each source, largest first; the smallest ones joined if many."""
     rows = _at_most(budget_shares(result.budget), MOST_BARS)
 
@@ -43,7 +48,7 @@ def budget_svg(result: PitchResult) -> str:
         axes.grid(True, axis="x")
 
     height = 20.0 + 6.4 * max(2, len(rows))
-    return svg_picture(draw, name="budget", width_mm=PAGE_MM, height_mm=height)
+    return Drawing(draw, "budget", PAGE_MM, height)
 
 
 def _draw_bar(axes: Axes, place: int, line: BudgetLine, share: float) -> None:

@@ -9,9 +9,9 @@ from pitchsweep.analysis.picture_style import (
     ACCENT,
     LIMIT,
     PAGE_MM,
+    Drawing,
     drawable,
     halo,
-    png_picture,
 )
 from pitchsweep.analysis.report_context import FrameMark, FrameShown
 
@@ -21,6 +21,11 @@ SHOWN_PX = 560
 
 
 def frames_png(frames: tuple[FrameShown, ...]) -> bytes:
+    """The PNG bytes of the strip. Raises ValueError where there is no frame."""
+    return frames_drawing(frames).png()
+
+
+def frames_drawing(frames: tuple[FrameShown, ...]) -> Drawing:
     """Up to six frames, dark on white: circles are orders, crosses refused spots.
 
     Raises ValueError where there is no frame.
@@ -42,7 +47,7 @@ def frames_png(frames: tuple[FrameShown, ...]) -> bytes:
         for axes, frame in zip(panels.flat, shown, strict=False):
             _draw_frame(axes, frame)
 
-    return png_picture(draw, name="frames", width_mm=PAGE_MM, height_mm=height)
+    return Drawing(draw, "frames", PAGE_MM, height)
 
 
 def spread(frames: tuple[FrameShown, ...], most: int) -> tuple[FrameShown, ...]:

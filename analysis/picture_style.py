@@ -9,6 +9,7 @@ positive ones, near-black for the zero order, and the marker's shape says the sa
 import io
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from dataclasses import dataclass
 from typing import Any, Literal
 
 import matplotlib
@@ -56,9 +57,45 @@ _STYLE: dict[Any, Any] = {
     "grid.linewidth": 0.5,
     "legend.frameon": False,
     "svg.fonttype": "path",
+    "pdf.fonttype": 42,
     "figure.facecolor": "white",
     "savefig.facecolor": "white",
 }
+
+_UNSAID = {
+    "svg": ("Date", "Creator", "Format", "Type"),
+    "png": ("Software",),
+    "pdf": ("CreationDate", "Creator", "Producer"),
+}
+"""What a file would say of itself that is not the picture, such as when it was made."""
+
+
+@dataclass(frozen=True)
+class Drawing:
+    """A picture not yet turned into bytes: what draws it, its name and its size.
+
+    ``draw`` puts the picture on an empty figure of ``width_mm`` x ``height_mm``.
+    """
+
+    draw: Callable[[Figure], None]
+    name: str
+    width_mm: float
+    height_mm: float
+
+    def svg(self) -> str:
+        """The picture as SVG text."""
+        size_mm = (self.width_mm, self.height_mm)
+        return _drawn(self.draw, self.name, size_mm, "svg").decode("utf-8")
+
+    def pdf(self) -> bytes:
+        """The picture as a PDF of one page, its letters still letters."""
+        size_mm = (self.width_mm, self.height_mm)
+        return _drawn(self.draw, self.name, size_mm, "pdf")
+
+    def png(self, dpi: float = 160.0) -> bytes:
+        """The picture as PNG bytes."""
+        size_mm = (self.width_mm, self.height_mm)
+        return _drawn(self.draw, self.name, size_mm, "png", dpi)
 
 
 @contextmanager
@@ -75,8 +112,7 @@ def svg_picture(
     draw: Callable[[Figure], None], *, name: str, width_mm: float, height_mm: float
 ) -> str:
     """The SVG text of what ``draw`` puts on an empty figure of the given size."""
-    figure_bytes = _drawn(draw, name, (width_mm, height_mm), "svg")
-    return figure_bytes.decode("utf-8")
+    return Drawing(draw, name, width_mm, height_mm).svg()
 
 
 def png_picture(
@@ -88,14 +124,14 @@ def png_picture(
     dpi: float = 160.0,
 ) -> bytes:
     """The PNG bytes of what ``draw`` puts on an empty figure of the given size."""
-    return _drawn(draw, name, (width_mm, height_mm), "png", dpi)
+    return Drawing(draw, name, width_mm, height_mm).png(dpi)
 
 
 def _drawn(
     draw: Callable[[Figure], None],
     name: str,
     size_mm: tuple[float, float],
-    kind: Literal["svg", "png"],
+    kind: Literal["svg", "png", "pdf"],
     dpi: float = 160.0,
 ) -> bytes:
     with house_style(name):
@@ -106,8 +142,7 @@ def _drawn(
         )
         draw(figure)
         out = io.BytesIO()
-        unsaid = ("Date", "Creator", "Format", "Type") if kind == "svg" else ()
-        metadata = dict.fromkeys(unsaid) if kind == "svg" else {"Software": None}
+        metadata = dict.fromkeys(_UNSAID[kind])
         figure.savefig(out, format=kind, dpi=dpi, metadata=metadata)
         return out.getvalue()
 

@@ -11,10 +11,10 @@ from pitchsweep.analysis.picture_style import (
     LIMIT,
     PAGE_MM,
     SOFT_INK,
+    Drawing,
     drawable,
     halo,
     say_instead,
-    svg_picture,
 )
 from pitchsweep.analysis.records import PitchResult, PitchSeen
 
@@ -23,6 +23,11 @@ FAR = 3.0
 
 
 def pitches_seen_svg(result: PitchResult) -> str:
+    """The SVG text of the pitches that parts of the data give."""
+    return pitches_seen_drawing(result).svg()
+
+
+def pitches_seen_drawing(result: PitchResult) -> Drawing:
     """Difference of each subset's pitch from the result, in nm, with error bars.
 
     The band is the result's expanded uncertainty; limits too far away to draw are
@@ -42,7 +47,7 @@ def pitches_seen_svg(result: PitchResult) -> str:
         _label(axes, seen, result)
 
     height = 32.0 + 6.2 * max(2, len(seen))
-    return svg_picture(draw, name="pitches", width_mm=PAGE_MM, height_mm=height)
+    return Drawing(draw, "pitches", PAGE_MM, height)
 
 
 def _half_range(seen: list[PitchSeen], result: PitchResult) -> float:

@@ -30,26 +30,24 @@ from pitchsweep.analysis.report_rows import (
     run_rows,
     seen_rows,
 )
+from pitchsweep.analysis.report_words import (
+    BUDGET_SAID,
+    DECISION_MARKS,
+    DIGITS_SAID,
+    FOLDED,
+    FRAMES_SAID,
+    NUISANCES_SAID,
+    PITCHES_SAID,
+    RESIDUALS_SAID,
+    SIMULATED_SAID,
+    STANDING_CAUTIONS,
+    TRACKS_SAID,
+)
 from pitchsweep.analysis.residual_picture import residuals_svg
 from pitchsweep.analysis.track_picture import tracks_svg
 
 TEMPLATE = "report.html"
 REJECTED_SHOWN = 100
-FOLDED = "screen map"
-"""Nuisances whose names begin so are many and alike: they come folded."""
-
-STANDING_CAUTIONS = (
-    "The program is an administrative control and no safety function: hard-wired"
-    " interlocks, local rules and the local laser safety officer decide.",
-    "Nothing in this report classifies a laser or authorises its use.",
-)
-DECISION_MARKS = {
-    "conforms": "Conforms.",
-    "does-not-conform": "Does not conform.",
-    "undecided": "Undecided: too near a limit for this uncertainty.",
-    None: "No decision: no tolerance was given.",
-}
-
 
 @dataclass(frozen=True)
 class Picture:
@@ -79,6 +77,9 @@ def _values(result: PitchResult, context: ReportContext) -> dict[str, Any]:
     return {
         "part": context.part,
         "simulated": context.simulated,
+        "simulated_said": SIMULATED_SAID,
+        "nuisances_said": NUISANCES_SAID,
+        "digits_said": DIGITS_SAID,
         "pitch": pitch.value,
         "expanded": pitch.u,
         "k": f"{result.k:.2f}",
@@ -124,11 +125,7 @@ def _tracks(result: PitchResult, context: ReportContext) -> Picture:
     return Picture(
         _svg_address(tracks_svg(result, context.screen)),
         "Tracks of all orders on the screen against stage angle",
-        "Where every beam met the screen while the stage turned. Markers are readings,"
-        " lines the one fit to all of them, numbers the diffraction order. Grey crosses"
-        " are spots that were not used; the grey band is the hole through which the"
-        " beam comes. Reflection (order 0) obeys its law whatever the pitch and so"
-        " calibrates screen, camera and stage for the others.",
+        TRACKS_SAID,
     )
 
 
@@ -136,9 +133,7 @@ def _residuals(result: PitchResult) -> Picture:
     return Picture(
         _svg_address(residuals_svg(result)),
         "Residuals of the fit against incidence and by order",
-        "What the fit leaves over, in units of each reading's stated uncertainty. A"
-        " sound fit scatters about zero without a pattern, about 95 of 100 points in"
-        " the grey band, and with an rms near 1 in every order.",
+        RESIDUALS_SAID,
     )
 
 
@@ -146,11 +141,7 @@ def _pitches(result: PitchResult) -> Picture:
     return Picture(
         _svg_address(pitches_seen_svg(result)),
         "Pitch seen by each order, side and half of the sweep",
-        "The pitch that parts of the data give, as difference from the result (in"
-        " brackets the number of spots). Thick bars are one, thin bars two standard"
-        " uncertainties of that difference; the green band is the result's expanded"
-        " uncertainty U. Parts that disagree would show an error that the fit does"
-        " not know.",
+        PITCHES_SAID,
     )
 
 
@@ -158,9 +149,7 @@ def _budget(result: PitchResult) -> Picture:
     return Picture(
         _svg_address(budget_svg(result)),
         "Uncertainty budget as bars",
-        "What the uncertainty is made of. Hatched bars (kind A) come from the scatter"
-        " of the readings, plain bars (kind B) from what is known beforehand. Shares"
-        " are of the variance and add up to 100 %.",
+        BUDGET_SAID,
     )
 
 
@@ -170,9 +159,7 @@ def _strip(context: ReportContext) -> Picture | None:
     return Picture(
         _address(frames_png(context.frames), "image/png"),
         "Six frames of the camera with spots marked",
-        "Frames of the camera, brightness on a logarithmic scale, dark is bright."
-        " Circles: spots used, with their order. Crosses: candidates not used, with"
-        " the reason.",
+        FRAMES_SAID,
     )
 
 

@@ -10,10 +10,10 @@ from pitchsweep.analysis.picture_style import (
     MANY_POINTS,
     PAGE_MM,
     SOFT_INK,
+    Drawing,
     order_colour,
     order_marker,
     say_instead,
-    svg_picture,
 )
 from pitchsweep.analysis.records import FloatArray, PitchResult
 from pitchsweep.analysis.result_file import order_text
@@ -23,6 +23,11 @@ FEWEST_FOR_RMS = 5
 
 
 def residuals_svg(result: PitchResult) -> str:
+    """The SVG text of the residuals."""
+    return residuals_drawing(result).svg()
+
+
+def residuals_drawing(result: PitchResult) -> Drawing:
     """Residuals in x and y over their stated u, against incidence and by order."""
 
     def draw(figure: Figure) -> None:
@@ -43,7 +48,7 @@ def residuals_svg(result: PitchResult) -> str:
         panels[1, 0].set_xlabel("fitted incidence, degrees")
         panels[1, 1].set_xlabel("order")
 
-    return svg_picture(draw, name="residuals", width_mm=PAGE_MM, height_mm=94.0)
+    return Drawing(draw, "residuals", PAGE_MM, 94.0)
 
 
 def draw_residuals(axes: Axes, result: PitchResult, residual: FloatArray) -> None:

@@ -14,12 +14,12 @@ from pitchsweep.analysis.picture_style import (
     PAGE_MM,
     REJECTED,
     SOFT_INK,
+    Drawing,
     drawable,
     halo,
     order_colour,
     order_marker,
     say_instead,
-    svg_picture,
 )
 from pitchsweep.analysis.records import FloatArray, PitchResult
 from pitchsweep.analysis.report_context import ScreenFacts
@@ -40,6 +40,11 @@ class RejectedPlaces:
 
 
 def tracks_svg(result: PitchResult, screen: ScreenFacts | None) -> str:
+    """The SVG text of the tracks."""
+    return tracks_drawing(result, screen).svg()
+
+
+def tracks_drawing(result: PitchResult, screen: ScreenFacts | None) -> Drawing:
     """x on the screen against stage angle, one panel for each laser and mount.
 
     Markers are readings, lines the fit, crosses spots not used, the band the beam
@@ -60,7 +65,7 @@ def tracks_svg(result: PitchResult, screen: ScreenFacts | None) -> str:
         _draw_panels(panels, result, screen)
 
     height = 22.0 + (62.0 if rows > 1 else 70.0) * rows
-    return svg_picture(draw, name="tracks", width_mm=PAGE_MM, height_mm=height)
+    return Drawing(draw, "tracks", PAGE_MM, height)
 
 
 def _draw_panels(
