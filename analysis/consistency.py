@@ -50,12 +50,22 @@ def pitches_seen(
     problem: FitProblem, order: IntArray, fit: JointFit, pitch_nm: float
 ) -> tuple[PitchSeen, ...]:
     """The pitch of every subset that determines one."""
+    incidence = fit.incidence_rad
     seen = []
-    for name, part in subsets(problem.table, order, fit.incidence_rad):
-        use = part & fit.used
-        if not (order[use] != 0).any():
+    mine = np.ones(len(problem.table), dtype=np.bool_)
+    if problem.table.part is not None:
+        mine = problem.table.part == 0
+    for name, part in subsets(problem.table.take(mine), order[mine], incidence[mine]):
+        # The references stay whole: it is the part's own spots that are divided.
+        use = fit.used.copy()
+        use[mine] &= part
+        if not (order[use & mine] != 0).any():
             continue
-        move, covariance = one_step(problem, order, fit.state, use.astype(np.float64))
+        try:
+            weight = use.astype(np.float64)
+            move, covariance = one_step(problem, order, fit.state, weight)
+        except np.linalg.LinAlgError:
+            continue
         variance, whole = float(covariance[0, 0]), float(fit.covariance[0, 0])
         if not np.isfinite(variance) or variance > 0.01**2:
             continue

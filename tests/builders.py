@@ -45,14 +45,24 @@ def planned_incidence_deg(job: Job) -> "np.ndarray[tuple[int], np.dtype[np.float
 
 
 def twin_sweep(
-    job: Job, seed: int, *, mounts_deg: Sequence[float] | None = None, pace_s: float = 3
+    job: Job,
+    seed: int,
+    *,
+    mounts_deg: Sequence[float] | None = None,
+    pace_s: float = 3,
+    first_mount: int = 0,
+    first_step: int = 0,
 ) -> TwinSweep:
-    """All mounts of a job, one laser, steps in an up-down order, orders blanked."""
+    """All mounts of a job, one laser, steps in an up-down order, orders blanked.
+
+    ``first_mount`` and ``first_step`` number on from an earlier sweep of the same seed,
+    so that seats and noise are fresh and time goes on.
+    """
     truth = draw_truth(job.bench, job.part, seed)
     incidence = planned_incidence_deg(job)
     laser = job.recipe.lasers[0]
-    sweeps, first = [], 0
-    for index, mount in enumerate(mounts_deg or job.recipe.mounts_deg):
+    sweeps, first = [], first_step
+    for index, mount in enumerate(mounts_deg or job.recipe.mounts_deg, first_mount):
         step = first + np.arange(len(incidence))
         stage = mount + job.bench.stage.direction * incidence
         steps = Steps(
@@ -84,5 +94,6 @@ def twin_sweep(
         uy_mm=column("uy_mm"),
         cxy_mm2=np.zeros(n),
         brightness=column("brightness"),
+        time_s=pace_s * column("step"),
     )
     return TwinSweep(table, truth, column("order"))

@@ -16,7 +16,7 @@ import numpy as np
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[1]))
 
-from builders import demo_job, twin_sweep  # noqa: E402
+from builders import demo_job, planned_incidence_deg, twin_sweep  # noqa: E402
 
 from pitchsweep.analysis.analysis_errors import AnalysisError  # noqa: E402
 from pitchsweep.analysis.measure import measure_pitch  # noqa: E402
@@ -44,9 +44,12 @@ EFFECTS: dict[str, dict[str, Any]] = {
 }
 
 
+READING: dict[str, Any] = {}
+
+
 def measured(job: Any, seed: int) -> tuple[PitchResult | None, float]:
     """Result (None if refused) and truth of one sweep of an hour."""
-    steps = 91 if "shims" in job.job else 151
+    steps = len(planned_incidence_deg(job)) * len(job.recipe.mounts_deg)
     sweep = twin_sweep(job, seed, pace_s=3600.0 / steps)
     try:
         result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
@@ -59,8 +62,8 @@ def row(name: str, job_name: str, effects: dict[str, Any], seeds: range) -> bool
     """Print one effect's row; True when no sweep is silently off by over 3 u."""
     pulls, shifts, warned, refused, silent = [], [], 0, 0, 0
     for seed in seeds:
-        plain, _ = measured(demo_job(job_name), seed)
-        result, truth = measured(demo_job(job_name, effects=effects), seed)
+        plain, _ = measured(demo_job(job_name, **READING), seed)
+        result, truth = measured(demo_job(job_name, effects=effects, **READING), seed)
         if result is None:
             refused += 1
             continue
@@ -85,7 +88,12 @@ def main() -> int:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--seeds", type=int, default=20)
     parser.add_argument("--job", default="shims-spots")
+    parser.add_argument("--reading-mm", type=float, default=0.1)
+    parser.add_argument("--wide", action="store_true", help="sweep +-75 degrees")
     options = parser.parse_args()
+    READING["twin"] = {"spot_reading_mm": options.reading_mm}
+    if options.wide:
+        READING["recipe"] = {"start_deg": -75.0, "stop_deg": 75.0}
     print(f"{options.job}, {options.seeds} seeds, sweep of one hour")
     print(
         f"{'effect':40} {'mean/u':>7} {'worst':>7} {'shift':>7} {'warned':>7} "
