@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.analysis.bench_geometry import Local, landing
+from pitchsweep.analysis.damped_descent import damped_solution, descend, inverse
 from pitchsweep.analysis.fit_parameters import Kind
 from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.records import FloatArray, IntArray
@@ -158,6 +159,9 @@ class _Normal:
     objective: float
 
 
+_Point = tuple[FitState, _Normal]
+
+
 def _prior_weight(problem: FitProblem) -> FloatArray:
     u = np.array([parameter.u_prior for parameter in problem.parameters])
     return np.where(np.isfinite(u), 1.0 / u**2, 0.0)
@@ -224,20 +228,9 @@ def _solve(
     scaled_border = normal.border / normal.diagonal
     reduced = normal.dense + np.diag(prior) - scaled_border @ normal.border.T
     right = normal.right - scaled_border @ normal.right_step
-    scale = 1.0 / np.sqrt(np.maximum(np.diag(reduced), 1e-300))
-    scaled = reduced * np.outer(scale, scale)
-    scaled[np.diag_indices_from(scaled)] += damping
-    move = scale * np.linalg.solve(scaled, scale * right)
+    move = damped_solution(reduced, right, damping)
     step_move = (normal.right_step - normal.border.T @ move) / normal.diagonal
     return move, step_move
-
-
-def _inverse(information: FloatArray) -> FloatArray:
-    """Inverse of a symmetric positive matrix, scaled to unit diagonal first."""
-    scale = 1.0 / np.sqrt(np.maximum(np.diag(information), 1e-300))
-    inverse = np.linalg.inv(information * np.outer(scale, scale))
-    inverse = 0.5 * (inverse + inverse.T)
-    return np.asarray(inverse * np.outer(scale, scale))
 
 
 def solve_joint_fit(
@@ -254,25 +247,30 @@ def solve_joint_fit(
     left out of that iteration and come back. ``settled``: see SETTLED. Raises
     numpy.linalg.LinAlgError when the information is singular.
     """
-    state = start or initial_state(problem)
     prior = _prior_weight(problem)
-    normal = _normal(problem, order, state, weight)
-    damping, iterations, converged = 0.0, 0, False
-    while iterations < MAX_ITERATIONS and not converged:
-        iterations += 1
+
+    def at(state: FitState) -> _Point:
+        return state, _normal(problem, order, state, weight)
+
+    def step(point: _Point, damping: float) -> tuple[_Point, float]:
+        state, normal = point
         move, step_move = _solve(normal, prior, damping)
-        gain = float(move @ normal.right + step_move @ normal.right_step)
-        trial = FitState(state.values + move, state.step_error_rad + step_move)
-        candidate = _normal(problem, order, trial, weight)
-        if not _no_worse(problem, state, normal, trial, candidate, weight):
-            # Rounding alone may keep the last digits from going down any further.
-            converged = gain < 1e-6
-            damping = max(10.0 * damping, 1e-3)
-            continue
-        state, normal = trial, candidate
-        damping = damping / 10.0 if damping > 1e-6 else 0.0
-        converged = gain < settled and damping == 0.0
-    return _finish(problem, order, state, normal, prior, iterations, converged)
+        promised = float(move @ normal.right + step_move @ normal.right_step)
+        moved = FitState(state.values + move, state.step_error_rad + step_move)
+        return at(moved), promised
+
+    def no_worse(point: _Point, trial: _Point) -> bool:
+        return _no_worse(problem, *point, *trial, weight)
+
+    end = descend(
+        at(start or initial_state(problem)),
+        step=step,
+        no_worse=no_worse,
+        settled=settled,
+        most=MAX_ITERATIONS,
+    )
+    state, normal = end.point
+    return _finish(problem, order, state, normal, prior, end.iterations, end.converged)
 
 
 LOST_SHARE = 0.05
@@ -313,7 +311,7 @@ def one_step(
     move, _ = _solve(normal, prior, 0.0)
     scaled_border = normal.border / normal.diagonal
     information = normal.dense + np.diag(prior) - scaled_border @ normal.border.T
-    return move, _inverse(information)
+    return move, inverse(information)
 
 
 def _finish(
@@ -327,7 +325,7 @@ def _finish(
 ) -> JointFit:
     scaled_border = normal.border / normal.diagonal
     information = normal.dense + np.diag(prior) - scaled_border @ normal.border.T
-    covariance = _inverse(information)
+    covariance = inverse(information)
     local = local_quantities(problem, order, state)
     step_variance = 1.0 / normal.diagonal + np.einsum(
         "ps,pq,qs->s", scaled_border, covariance, scaled_border, optimize=True
