@@ -298,7 +298,19 @@ def _missing_part_beams(
     ahead = _cone_beam(light, 180.0, climb_deg)
     yield _beam(light, BeamKind.PART_MISSING, None, everywhere, (180.0, 0.0), ahead)
     enclosure = job.bench.enclosure
-    if enclosure is None or enclosure.mount.acts_as == "stop":
+    if enclosure is None:
+        return
+    if enclosure.mount.acts_as == "stop":
+        yield Beam(
+            laser=light.name,
+            kind=BeamKind.BARE_MOUNT,
+            order=None,
+            at=everywhere,
+            azimuth_deg=None,
+            elevation_deg=None,
+            power_mw=light.power_mw,
+            meets=("mount",),
+        )
         return
     for angle in angles:
         half_deg = _mount_cone_deg(enclosure.mount, light.spread, angle) + climb_deg

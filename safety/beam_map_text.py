@@ -21,6 +21,8 @@ def beam_map_lines(found: BeamMap) -> tuple[str, ...]:
         key = (beam.laser, beam.kind, beam.order, beam.at.left_behind)
         rows.setdefault(key, []).append(beam)
     lines = [f"Beam map of job '{found.job}' on bench '{found.bench}'", *_around(found)]
+    if any(beam.at.left_behind for beam in found.beams):
+        lines.append("'left': the part stayed as in another mount of the recipe.")
     lines += [HEAD, *(_row(beams) for beams in rows.values())]
     refused = refusals(found)
     lines += [f"REFUSED: {r.what}; {r.remedy}" for r in refused]
@@ -70,5 +72,9 @@ def _azimuths(beams: Sequence[Beam]) -> str:
     known = [beam.azimuth_deg for beam in beams if beam.azimuth_deg is not None]
     if not known:
         return "-"
+    # Beams about the way of the beam itself lie on both sides of the seam at 180.
+    beyond = [azimuth % 360.0 for azimuth in known]
+    if max(beyond) - min(beyond) < max(known) - min(known):
+        known = beyond
     low, high = min(known), max(known)
     return f"{low:.0f}" if high - low < 0.5 else f"{low:.0f} to {high:.0f}"
