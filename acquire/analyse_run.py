@@ -19,7 +19,12 @@ from pitchsweep.acquire.run_report import (
 )
 from pitchsweep.analysis.measure import measure_pitch
 from pitchsweep.analysis.order_table_file import write_order_table
-from pitchsweep.analysis.records import UNKNOWN_ORDER, OrderTable, PitchResult
+from pitchsweep.analysis.records import (
+    UNKNOWN_ORDER,
+    FloatArray,
+    OrderTable,
+    PitchResult,
+)
 from pitchsweep.analysis.result_file import result_json
 from pitchsweep.configs.fingerprint import fingerprint
 
@@ -114,6 +119,8 @@ def inputs_sha256(given: FitInput) -> str:
     digest = hashlib.sha256()
     digest.update(write_order_table(given.table).encode("utf-8"))
     digest.update(given.table.cxy_mm2.tobytes())
+    for shared in _shared(given.table):
+        digest.update(shared.tobytes())
     if given.table.brightness is not None:
         digest.update(given.table.brightness.tobytes())
     bench = given.bench.model_copy(update={"twin": None})
@@ -121,6 +128,11 @@ def inputs_sha256(given: FitInput) -> str:
     digest.update(fingerprint(given.part).encode("ascii"))
     digest.update(repr(given.coverage).encode("ascii"))
     return digest.hexdigest()
+
+
+def _shared(table: OrderTable) -> list[FloatArray]:
+    parts = (table.shared_xx_mm2, table.shared_xy_mm2, table.shared_yy_mm2)
+    return [part for part in parts if part is not None]
 
 
 def software_name() -> str:

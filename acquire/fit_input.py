@@ -51,6 +51,9 @@ class SpotPlace:
     cxy_mm2: float
     brightness: float
     time_s: float | None = None
+    shared_xx_mm2: float = 0.0
+    shared_xy_mm2: float = 0.0
+    shared_yy_mm2: float = 0.0
 
 
 def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> OrderTable:
@@ -73,6 +76,9 @@ def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> Orde
         cxy_mm2=column("cxy_mm2"),
         brightness=column("brightness"),
         time_s=None if any(r.time_s is None for r in rows) else column("time_s"),
+        shared_xx_mm2=column("shared_xx_mm2"),
+        shared_xy_mm2=column("shared_xy_mm2"),
+        shared_yy_mm2=column("shared_yy_mm2"),
     )
 
 

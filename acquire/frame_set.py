@@ -12,10 +12,16 @@ from pathlib import Path
 
 from pitchsweep.acquire.bench_devices import Shot
 from pitchsweep.acquire.fit_input import FitInput, SpotPlace, order_table
-from pitchsweep.acquire.frame_store import decode_frame
+from pitchsweep.acquire.spot_places import (
+    StepPlace,
+    places_of,
+    rejected_of,
+    speckle_of,
+)
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.analysis.analysis_errors import InputRefused
-from pitchsweep.analysis.records import RejectedSpot, Rejection
+from pitchsweep.analysis.frame_image import decode_frame
+from pitchsweep.analysis.records import RejectedSpot
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 from pitchsweep.drivers.devices import Label
@@ -44,8 +50,8 @@ def input_from_frames(
 ) -> FitInput:
     """The spots of every frame of ``folder``, several exposures of a step together.
 
-    Raises InputRefused with file, line, column and value; StorageFailed for a file
-    that is no grey image.
+    Raises InputRefused with file, line, column and value, or for a file that is no
+    grey image of the camera's bits.
     """
     lasers = (only_laser,) if only_laser else tuple(bench.lasers)
     listed = read_frame_list(folder / LIST, lasers)
@@ -55,30 +61,18 @@ def input_from_frames(
         if frame.laser != DARK:
             _check_one_scene(folder, steps.setdefault(frame.step, []), frame)
     find = spot_finder(bench.camera)
+    found = {
+        step: find(step, [_shot(folder, frame, bench) for frame in frames], darks)
+        for step, frames in sorted(steps.items())
+    }
+    speckle = speckle_of(found.values())
     places: list[SpotPlace] = []
     rejected: list[RejectedSpot] = []
-    for step, frames in sorted(steps.items()):
-        found = find(step, [_shot(folder, frame, bench) for frame in frames], darks)
-        head = frames[0]
-        places += [
-            SpotPlace(
-                step=step,
-                stage_deg=head.stage_deg,
-                mount_deg=head.mount_deg,
-                laser=head.laser,
-                x_mm=spot.x_mm,
-                y_mm=spot.y_mm,
-                ux_mm=spot.ux_mm,
-                uy_mm=spot.uy_mm,
-                cxy_mm2=spot.cxy_mm2,
-                brightness=spot.brightness,
-            )
-            for spot in found.spots
-        ]
-        rejected += [
-            RejectedSpot(step, r.x, r.y, r.unit, Rejection(r.reason), r.detail)
-            for r in found.rejected
-        ]
+    for step, spots in found.items():
+        head = steps[step][0]
+        at = StepPlace(step, head.stage_deg, head.mount_deg, head.laser)
+        places += places_of(spots, at, speckle)
+        rejected += rejected_of(spots, step)
     table = order_table(places, lasers)
     return FitInput(str(folder), table, bench, part, coverage, tuple(rejected))
 
@@ -208,7 +202,7 @@ def _shot(folder: Path, frame: ListedFrame, bench: Bench) -> Shot:
             column="file",
             value=frame.file,
         ) from None
-    image = decode_frame(path, content)
+    image = decode_frame(content, name=str(path), bits=bench.camera.bits)
     wanted = (bench.camera.height_px, bench.camera.width_px)
     if image.shape != wanted:
         raise InputRefused(

@@ -57,6 +57,9 @@ class SpotRow:
     snr: float | None = None
     exposure_ms: float | None = None
     saturated: bool | None = None
+    shared_xx_mm2: float | None = None
+    shared_xy_mm2: float | None = None
+    shared_yy_mm2: float | None = None
 
 
 @dataclass(frozen=True)
@@ -78,6 +81,9 @@ class StepSpots:
     rejected: tuple[RejectedRow, ...] = ()
     background_dn: float | None = None
     noise_dn: float | None = None
+    speckle_contrast: float | None = None
+    grain_fwhm_px: float | None = None
+    speckle_measured: bool = False
 
 
 @dataclass(frozen=True)

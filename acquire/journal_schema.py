@@ -8,7 +8,7 @@ without outcome is in doubt. Frames belong to an intent and count once its outco
 APPLICATION_ID = 0x50535750
 """Marks the file as a run journal (PRAGMA application_id)."""
 
-SCHEMA_VERSION = 1
+SCHEMA_VERSION = 2
 
 TABLES = """
 CREATE TABLE run_meta (
@@ -67,7 +67,10 @@ CREATE TABLE spot_searches (
     intent        INTEGER PRIMARY KEY REFERENCES intents (intent),
     background_dn REAL,
     noise_dn      REAL,
-    rejected      TEXT NOT NULL
+    rejected      TEXT NOT NULL,
+    speckle_contrast REAL,
+    grain_fwhm_px    REAL,
+    speckle_measured INTEGER NOT NULL
 ) STRICT;
 
 CREATE TABLE spots (
@@ -86,6 +89,9 @@ CREATE TABLE spots (
     snr            REAL,
     exposure_ms    REAL,
     saturated      INTEGER,
+    shared_xx_mm2  REAL,
+    shared_xy_mm2  REAL,
+    shared_yy_mm2  REAL,
     PRIMARY KEY (intent, number)
 ) STRICT;
 

@@ -171,12 +171,20 @@ class RunJournal:
             self._write("DELETE FROM spots WHERE intent = ?", (intent,))
             self._write("DELETE FROM spot_searches WHERE intent = ?", (intent,))
             self._write(
-                "INSERT INTO spot_searches VALUES (?, ?, ?, ?)",
-                (intent, found.background_dn, found.noise_dn, rejected),
+                "INSERT INTO spot_searches VALUES (?, ?, ?, ?, ?, ?, ?)",
+                (
+                    intent,
+                    found.background_dn,
+                    found.noise_dn,
+                    rejected,
+                    found.speckle_contrast,
+                    found.grain_fwhm_px,
+                    int(found.speckle_measured),
+                ),
             )
             for number, spot in enumerate(found.spots):
                 self._write(
-                    f"INSERT INTO spots VALUES ({', '.join('?' * 15)})",
+                    f"INSERT INTO spots VALUES ({', '.join('?' * 18)})",
                     (intent, number, *astuple(spot)),
                 )
 
@@ -220,16 +228,18 @@ class RunJournal:
     def spots(self, intent: int) -> StepSpots | None:
         """What an intent's exposures gave; None if it was never recorded."""
         heads = self._read(
-            "SELECT background_dn, noise_dn, rejected FROM spot_searches "
+            "SELECT background_dn, noise_dn, rejected, speckle_contrast, "
+            "grain_fwhm_px, speckle_measured FROM spot_searches "
             "WHERE intent = ?",
             (intent,),
         )
         if not heads:
             return None
-        background_dn, noise_dn, rejected = heads[0]
+        background_dn, noise_dn, rejected, contrast, grain_px, measured = heads[0]
         rows = self._read(
             "SELECT x_mm, y_mm, ux_mm, uy_mm, cxy_mm2, brightness, column_px, "
-            "row_px, sigma_major_px, sigma_minor_px, snr, exposure_ms, saturated "
+            "row_px, sigma_major_px, sigma_minor_px, snr, exposure_ms, saturated, "
+            "shared_xx_mm2, shared_xy_mm2, shared_yy_mm2 "
             "FROM spots WHERE intent = ? ORDER BY number",
             (intent,),
         )
@@ -238,6 +248,9 @@ class RunJournal:
             rejected=tuple(RejectedRow(*item) for item in json.loads(rejected)),
             background_dn=background_dn,
             noise_dn=noise_dn,
+            speckle_contrast=contrast,
+            grain_fwhm_px=grain_px,
+            speckle_measured=bool(measured),
         )
 
     def gate_events(self) -> list[GateRow]:

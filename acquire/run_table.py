@@ -8,18 +8,23 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from pitchsweep.acquire.acquire_errors import RunRefused
-from pitchsweep.acquire.fit_input import FitInput, SpotPlace, order_table
+from pitchsweep.acquire.fit_input import FitInput, order_table
 from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.journal_rows import FaultRow, GateRow, IntentRow, StepSpots
 from pitchsweep.acquire.resume import standing
 from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
 from pitchsweep.acquire.run_journal import RunJournal
+from pitchsweep.acquire.spot_places import (
+    StepPlace,
+    places_of,
+    rejected_of,
+    speckle_of,
+)
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.acquire.stored_spots import spots_of
 from pitchsweep.acquire.sweep_plan import plan_sweep
 from pitchsweep.analysis.analysis_errors import NoResult
-from pitchsweep.analysis.records import RejectedSpot, Rejection
 from pitchsweep.configs.fingerprint import fingerprint
 
 
@@ -97,49 +102,33 @@ def input_from_run(record: RunRecord) -> FitInput:
     warnings += [
         f"fault met during the sweep: {fault.detail}" for fault in record.faults
     ]
-    places = [place for step in record.steps for place in _places(step)]
+    speckle = speckle_of(step.found for step in record.steps)
+    places = [
+        place
+        for step in record.steps
+        for place in places_of(step.found, _place(step), speckle)
+    ]
     return FitInput(
         name=str(record.folder.path),
         table=order_table(places, job.recipe.lasers),
         bench=job.bench,
         part=job.part,
         coverage=job.recipe.coverage,
-        rejected=tuple(r for step in record.steps for r in _rejected(step)),
+        rejected=tuple(
+            r for step in record.steps for r in rejected_of(step.found, step.row.step)
+        ),
         warnings=tuple(warnings),
     )
 
 
-def _places(step: KeptStep) -> list[SpotPlace]:
-    return [
-        SpotPlace(
-            step=step.row.step,
-            stage_deg=step.stage_deg,
-            mount_deg=step.row.mount_deg,
-            laser=step.row.laser,
-            x_mm=spot.x_mm,
-            y_mm=spot.y_mm,
-            ux_mm=spot.ux_mm,
-            uy_mm=spot.uy_mm,
-            cxy_mm2=spot.cxy_mm2,
-            brightness=spot.brightness,
-            time_s=step.row.planned_s,
-        )
-        for spot in step.found.spots
-    ]
-
-
-def _rejected(step: KeptStep) -> list[RejectedSpot]:
-    return [
-        RejectedSpot(
-            step.row.step,
-            item.x,
-            item.y,
-            item.unit,
-            Rejection(item.reason),
-            item.detail,
-        )
-        for item in step.found.rejected
-    ]
+def _place(step: KeptStep) -> StepPlace:
+    return StepPlace(
+        step=step.row.step,
+        stage_deg=step.stage_deg,
+        mount_deg=step.row.mount_deg,
+        laser=step.row.laser,
+        time_s=step.row.planned_s,
+    )
 
 
 def _lights(journal: RunJournal, row: IntentRow) -> tuple[tuple[str, str, float], ...]:

@@ -46,6 +46,9 @@ def on_screen(found: SpotSearch, camera: Camera) -> StepSpots:
         ),
         background_dn=float(found.background_dn),
         noise_dn=float(found.noise_dn),
+        speckle_contrast=float(found.speckle_contrast),
+        grain_fwhm_px=float(found.grain_fwhm_px),
+        speckle_measured=bool(found.speckle_measured),
     )
 
 
@@ -66,4 +69,7 @@ def _row(spot: Spot, camera: Camera) -> SpotRow:
         snr=float(spot.snr),
         exposure_ms=float(spot.exposure_ms),
         saturated=bool(spot.saturated),
+        shared_xx_mm2=float(place.shared_mm2[0]),
+        shared_xy_mm2=float(place.shared_mm2[1]),
+        shared_yy_mm2=float(place.shared_mm2[2]),
     )

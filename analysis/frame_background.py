@@ -24,7 +24,7 @@ def averaged_down(frame: NDArray[np.uint16], factor: int) -> Float32Array:
     if factor == 1:
         return np.asarray(clean, dtype=np.float32)
     spare = 16 - int(clean.max(initial=1)).bit_length()
-    small = clean << np.uint16(spare)
+    small = np.asarray(np.left_shift(clean, spare), dtype=np.uint16)
     # Halving twice is four times faster than one step, and as good.
     while factor % 2 == 0:
         factor //= 2
@@ -33,7 +33,8 @@ def averaged_down(frame: NDArray[np.uint16], factor: int) -> Float32Array:
         )
     if factor > 1:
         small = cv2.resize(small, (columns, rows), interpolation=cv2.INTER_AREA)
-    return small.astype(np.float32) * np.float32(2.0**-spare)
+    light = small.astype(np.float32) * np.float32(2.0**-spare)
+    return np.asarray(light, dtype=np.float32)
 
 
 def background_map(small: Float32Array, *, block: int = 16) -> Float32Array:

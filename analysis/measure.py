@@ -23,6 +23,7 @@ from pitchsweep.analysis.records import (
     Rejection,
 )
 from pitchsweep.analysis.robust_fit import CleanFit, clean_fit, rescaled, residual_2
+from pitchsweep.analysis.shared_places import repeats_counted
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 
@@ -72,6 +73,7 @@ def measure_pitch(
     table = _on_screen(table, bench, refused)
     if len(table) == 0:
         raise NoResult("no spot lies on the screen outside the beam hole")
+    table = repeats_counted(table)
     problem = fit_problem(table, bench, (part, *references), air)
     try:
         clean = clean_fit(problem, part.nominal_within_percent / 100.0)

@@ -14,7 +14,8 @@ from pitchsweep.configs.bench_model import Camera
 class ScreenSpot:
     """A position on the nominal screen, mm, with standard uncertainties.
 
-    ``cxy_mm2`` is the covariance of x and y.
+    ``cxy_mm2`` is the covariance of x and y; ``shared_mm2`` (xx, xy, yy) the part of
+    the covariance that repeats share.
     """
 
     x_mm: float
@@ -22,6 +23,7 @@ class ScreenSpot:
     ux_mm: float
     uy_mm: float
     cxy_mm2: float
+    shared_mm2: tuple[float, float, float] = (0.0, 0.0, 0.0)
 
 
 def screen_from_pixels(
@@ -47,6 +49,7 @@ def spot_on_screen(spot: Spot, camera: Camera) -> ScreenSpot:
     """``spot`` with its covariance carried over; the y axis turns the cross term."""
     x_mm, y_mm = screen_from_pixels(spot.column_px, spot.row_px, camera)
     (var_column, cross), (_, var_row) = spot.covariance_px2
+    (shared_column, shared_cross), (_, shared_row) = spot.shared_px2
     scale = camera.mm_per_px
     return ScreenSpot(
         x_mm=x_mm,
@@ -54,4 +57,9 @@ def spot_on_screen(spot: Spot, camera: Camera) -> ScreenSpot:
         ux_mm=scale * var_column**0.5,
         uy_mm=scale * var_row**0.5,
         cxy_mm2=-(scale**2) * cross,
+        shared_mm2=(
+            scale**2 * shared_column,
+            -(scale**2) * shared_cross,
+            scale**2 * shared_row,
+        ),
     )

@@ -43,6 +43,8 @@ class Spot:
     ``covariance_px2`` its 2x2 covariance in (column, row), ``peak_dn_per_ms`` the
     height over background a millisecond of exposure, ``sigma_px`` the rms radii
     (major, minor), ``snr`` the peak over background noise in the exposure used.
+    ``shared_px2`` is the part of the covariance that repeats at the same place and
+    angle share: speckle and misfit of the model.
     """
 
     column_px: float
@@ -54,6 +56,7 @@ class Spot:
     snr: float
     exposure_ms: float
     saturated: bool
+    shared_px2: tuple[tuple[float, float], tuple[float, float]] = ((0, 0), (0, 0))
 
 
 @dataclass(frozen=True)
@@ -95,6 +98,7 @@ class OrderTable:
     covariance of x and y. ``brightness`` (any one unit) tells an order from its ghosts
     where it is known. ``part`` holds indices into the parts measured together (all
     the first if None), ``run`` which run a spot is of, ``time_s`` when in its run.
+    ``shared_*_mm2`` are the parts of the covariance that repeats at one place share.
     """
 
     step: IntArray
@@ -112,6 +116,9 @@ class OrderTable:
     part: IntArray | None = None
     run: IntArray | None = None
     time_s: FloatArray | None = None
+    shared_xx_mm2: FloatArray | None = None
+    shared_xy_mm2: FloatArray | None = None
+    shared_yy_mm2: FloatArray | None = None
 
     def __len__(self) -> int:
         return int(self.step.shape[0])

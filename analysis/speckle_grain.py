@@ -44,14 +44,14 @@ NO_SPECKLE = Speckle(0.0, 2.0)
 TYPICAL_SPECKLE = Speckle(0.8, 2.0)
 
 
-def position_covariance(
+def position_covariances(
     influence: FloatArray,
     variance: FloatArray,
     signal: FloatArray,
     speckle: Speckle,
     binning: int,
-) -> FloatArray:
-    """Covariance (2, 2) of column and row under noise and correlated speckle, px^2.
+) -> tuple[FloatArray, FloatArray]:
+    """Covariances (2, 2) of column and row from noise and from speckle, px^2.
 
     ``influence`` (2, H, W) is what a unit of light in a pixel moves the position by;
     ``variance`` (H, W) shot and read noise; ``signal`` (H, W) the spot.
@@ -59,10 +59,10 @@ def position_covariance(
     flat = influence.reshape(2, -1)
     private = (flat * variance.ravel()) @ flat.T
     if speckle.contrast == 0.0:
-        return private
+        return private, np.zeros((2, 2))
     w = speckle.w_px / binning
     pulled = influence * signal
     width = w / np.sqrt(2.0)
     blurred = np.stack([cv2.GaussianBlur(p, (0, 0), max(width, 0.1)) for p in pulled])
     shared = pulled.reshape(2, -1) @ blurred.reshape(2, -1).T
-    return np.asarray(private + speckle.noise_area(binning) * 0.5 * (shared + shared.T))
+    return private, speckle.noise_area(binning) * 0.5 * (shared + shared.T)

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import cv2
 import numpy as np
 
-from pitchsweep.analysis.records import FloatArray, SpotSearch
+from pitchsweep.analysis.records import FloatArray
 from pitchsweep.analysis.speckle_grain import FWHM_PER_W, NO_SPECKLE, Speckle
 
 _LAGS = 6
@@ -72,22 +72,6 @@ def measure_speckle(samples: Sequence[GrainSample]) -> Speckle | None:
     if near < 4.0 * near_u + 4.0 * floor and alone:
         return NO_SPECKLE
     return _fitted(samples, seen, signal)
-
-
-def pooled_speckle(searches: Sequence[SpotSearch]) -> Speckle | None:
-    """One speckle for a run: medians over the steps that measured it, None if none did.
-
-    Few grains a step make single measurements uncertain by a fifth: search again with
-    this, or give it to the steps that follow.
-    """
-    seen = [s for s in searches if s.speckle_measured]
-    if not seen:
-        return None
-    contrast = float(np.median([s.speckle_contrast for s in seen]))
-    grains = [s.grain_fwhm_px for s in seen if s.speckle_contrast > 0.0]
-    if contrast == 0.0 or not grains:
-        return NO_SPECKLE
-    return Speckle(contrast, float(np.median(grains)))
 
 
 def _products(sample: GrainSample) -> _Products:

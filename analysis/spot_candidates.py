@@ -197,7 +197,8 @@ def _noise_map(
     read = max(noise.read_noise_dn**2 - ROUNDING_VARIANCE_DN2, 0.0) ** 0.5
     least = correlated_rounding_dn(read / 2.5)
     model *= np.float32(size)
-    return np.maximum(model, np.float32(max(least, 1e-3)), out=model)
+    np.maximum(model, np.float32(max(least, 1e-3)), out=model)
+    return np.asarray(model, dtype=np.float32)
 
 
 def _clipped_share(layer: FrameLayer, factor: int) -> Float32Array | None:

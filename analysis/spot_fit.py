@@ -16,7 +16,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from pitchsweep.analysis.records import FloatArray
-from pitchsweep.analysis.speckle_grain import Speckle, position_covariance
+from pitchsweep.analysis.speckle_grain import Speckle, position_covariances
 from pitchsweep.analysis.spot_window import Fused, Window, fuse
 
 PARAMETERS = 9
@@ -69,7 +69,8 @@ class Shape:
 class SpotFit:
     """A fitted spot with what is needed to judge it; arrays are (H, W).
 
-    ``covariance`` (2, 2) of column and row in px^2 includes speckle; misfit of the
+    ``covariance`` (2, 2) of column and row in px^2 includes speckle, whose part is
+    ``speckle_covariance``; misfit of the
     model is not in it. ``variance`` is shot and read noise of ``residual``
     (DN a ms)^2; ``weight`` is zero where no exposure is usable. ``modes`` (9, H, W)
     are the orthonormal directions, times root weight, that the fit can follow.
@@ -77,6 +78,7 @@ class SpotFit:
 
     shape: Shape
     covariance: FloatArray
+    speckle_covariance: FloatArray
     converged: bool
     steps: int
     signal: FloatArray
@@ -131,10 +133,12 @@ def fit_spot(
         if not converged:
             normal, slope = _normal(state, x, y)
     shape = _shape(state.parameters, reference)
-    covariance, modes = _covariance(window, state, x, y, speckle)
+    private, shared, modes = _covariance(window, state, x, y, speckle)
+    covariance = private + shared
     return SpotFit(
         shape=shape,
         covariance=covariance,
+        speckle_covariance=shared,
         converged=converged and bool(np.isfinite(covariance).all()),
         steps=steps,
         signal=state.signal,
@@ -153,8 +157,8 @@ def _shape(p: FloatArray, reference: tuple[float, float]) -> Shape:
 
 def _covariance(
     window: Window, state: _State, x: FloatArray, y: FloatArray, speckle: Speckle
-) -> tuple[FloatArray, FloatArray]:
-    """Covariance (2, 2) of the position, and the orthonormal modes of the fit."""
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Covariances (2, 2) of the position from noise and from speckle; fit modes."""
     root = np.sqrt(state.weight)
     weighted = _jacobian(state, x, y) * root.ravel()
     scale = np.maximum(np.sqrt((weighted**2).sum(axis=1)), 1e-150)
@@ -162,15 +166,16 @@ def _covariance(
     try:
         lower = np.linalg.cholesky(weighted @ weighted.T)
     except np.linalg.LinAlgError:
-        return np.full((2, 2), np.inf), np.zeros((PARAMETERS, *root.shape))
+        lost = np.full((2, 2), np.inf)
+        return lost, np.zeros((2, 2)), np.zeros((PARAMETERS, *root.shape))
     inverse = np.linalg.inv(lower)
     modes = (inverse @ weighted).reshape(PARAMETERS, *root.shape)
     rows = inverse.T[1:3] / scale[1:3, None]
     influence = np.tensordot(rows, modes, axes=1) * root
-    covariance = position_covariance(
+    private, shared = position_covariances(
         influence, state.fused.variance, state.signal, speckle, window.binning
     )
-    return covariance, modes
+    return private, shared, modes
 
 
 def _state(

@@ -142,18 +142,26 @@ def _stated(window: Window, fit: SpotFit, seen: Misfit, speckle: Speckle) -> Spo
     used = next(k for k in window.layers if k.exposure_ms == exposure)
     noise = (used.quiet_variance * window.binning**2) ** 0.5 / exposure
     few = 1.0 + _FEW_GRAINS * speckle.noise_area() / (4.0 * np.pi * major * minor)
-    (cc, cr), (_, rr) = fit.covariance * (seen.ratio * few)
+    stated = fit.covariance * (seen.ratio * few)
+    # What photons and read-out did differs between repeats, all the rest does not.
+    private = fit.covariance - fit.speckle_covariance
     return Spot(
         column_px=fit.shape.column_px,
         row_px=fit.shape.row_px,
-        covariance_px2=((float(cc), float(cr)), (float(cr), float(rr))),
+        covariance_px2=_as_rows(stated),
         peak_dn_per_ms=fit.shape.height,
         sigma_px=(major, minor),
         angle_rad=angle,
         snr=fit.shape.height / noise,
         exposure_ms=exposure,
         saturated=clipped_core(window, fit) > 0.0,
+        shared_px2=_as_rows(stated - private),
     )
+
+
+def _as_rows(square: FloatArray) -> tuple[tuple[float, float], tuple[float, float]]:
+    (cc, cr), (_, rr) = square
+    return (float(cc), float(cr)), (float(cr), float(rr))
 
 
 def _refusal(

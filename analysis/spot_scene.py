@@ -140,7 +140,9 @@ def lost_in_unevenness(scene: StepScene, fit: SpotFit) -> bool:
         slice(max(int(row - reach), 0), min(int(row + reach) + 2, rows)),
         slice(max(int(column - reach), 0), min(int(column + reach) + 2, columns)),
     )
-    smooth = cv2.GaussianBlur(small.excess[box], (0, 0), scale)
+    smooth = np.asarray(
+        cv2.GaussianBlur(small.excess[box], (0, 0), scale), dtype=np.float32
+    )
     down = np.arange(box[0].start, box[0].stop)[:, None] - row
     across = np.arange(box[1].start, box[1].stop)[None, :] - column
     ring = smooth[np.hypot(down, across) > 0.4 * reach]

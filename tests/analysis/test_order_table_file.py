@@ -74,7 +74,7 @@ def table_of(rows: list[tuple[float, ...]], names: tuple[str, ...]) -> OrderTabl
 def assert_same_bits(one: OrderTable, other: OrderTable) -> None:
     for field in dataclasses.fields(OrderTable):
         here, there = getattr(one, field.name), getattr(other, field.name)
-        if field.name == "laser_names":
+        if field.name == "laser_names" or here is None:
             assert here == there
         else:
             assert here.dtype == there.dtype

@@ -15,9 +15,9 @@ from pitchsweep.analysis.pixel_map import (
     screen_from_pixels,
     spot_on_screen,
 )
-from pitchsweep.analysis.records import Spot, SpotSearch
-from pitchsweep.analysis.speckle_grain import Speckle
-from pitchsweep.analysis.speckle_measure import pooled_speckle
+from pitchsweep.analysis.records import Spot
+from pitchsweep.analysis.speckle_grain import NO_SPECKLE, Speckle
+from pitchsweep.analysis.speckle_pool import pooled_speckle, restated_share
 from pitchsweep.configs.bench_model import Camera
 
 CAMERA = Camera(
@@ -84,15 +84,21 @@ def test_noise_area_is_the_measured_power_of_drawn_speckle_at_long_waves() -> No
     )
 
 
-def test_pooled_speckle_leaves_out_steps_that_saw_nothing_of_it() -> None:
-    def step(contrast: float, grain: float, measured: bool) -> SpotSearch:
-        return SpotSearch((), (), 0.0, 1.0, contrast, grain, measured)
+def test_pooled_speckle_is_a_mean_over_steps_whatever_their_order() -> None:
+    assert pooled_speckle([]) is None
+    seen = [Speckle(0.9, 2.2), Speckle(1.0, 2.0), Speckle(1.1, 1.9)]
+    pooled = pooled_speckle(seen)
+    assert pooled is not None
+    assert pooled.contrast == pytest.approx((0.81 + 1.0 + 1.21) ** 0.5 / 3**0.5)
+    assert pooled_speckle(seen[::-1]) == pytest.approx(pooled)
+    assert pooled_speckle([NO_SPECKLE, NO_SPECKLE, Speckle(1.0, 2.0)]) == NO_SPECKLE
 
-    assert pooled_speckle([step(0.8, 2.0, False)]) is None
-    pooled = pooled_speckle(
-        [step(0.9, 2.2, True), step(1.0, 2.0, True), step(1.1, 1.9, True)]
-    )
-    assert pooled == Speckle(1.0, 2.0)
+
+def test_the_speckle_part_of_a_covariance_follows_the_noise_area() -> None:
+    own, pooled = Speckle(0.5, 4.0), Speckle(1.0, 4.0)
+    assert restated_share(own, pooled) == pytest.approx(4.0)
+    assert restated_share(NO_SPECKLE, pooled) == 1.0
+    assert restated_share(None, pooled) == 1.0
 
 
 def test_rows_grow_downwards_and_covariance_turns_with_them() -> None:

@@ -75,8 +75,12 @@ def main() -> None:
     fast = int(sys.argv[1]) if len(sys.argv) > 1 else 12
     slow = int(sys.argv[2]) if len(sys.argv) > 2 else 2
     cv2.setNumThreads(1)
-    print("method                           contrast frames  recall  false/f  rms/bound")
-    print("                                                          ms/frame   times ours")
+    print(
+        "method                           contrast frames  recall  false/f  rms/bound"
+    )
+    print(
+        "                                                          ms/frame   times ours"
+    )
     noise = wide_scene(0, 12)[1]
     for contrast in (0.0, 1.0):
         methods = {"pitchsweep": finder(noise), **METHODS}

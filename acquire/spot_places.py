@@ -1,0 +1,77 @@
+"""Spots of steps on their way into a table, under the speckle of the whole run (pure).
+
+A step alone measures speckle in few grains. All steps see the same screen, so what
+they measured is pooled, and the speckle part of every covariance is restated for it.
+The pool is a mean over the steps: it does not depend on the order they were taken in.
+"""
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+from pitchsweep.acquire.fit_input import SpotPlace
+from pitchsweep.acquire.journal_rows import SpotRow, StepSpots
+from pitchsweep.analysis.records import RejectedSpot, Rejection
+from pitchsweep.analysis.speckle_grain import Speckle
+from pitchsweep.analysis.speckle_pool import pooled_speckle, restated_share
+
+
+@dataclass(frozen=True)
+class StepPlace:
+    """What the spots of a step have in common."""
+
+    step: int
+    stage_deg: float
+    mount_deg: float
+    laser: str
+    time_s: float | None = None
+
+
+def speckle_of(steps: Iterable[StepSpots]) -> Speckle | None:
+    """The speckle of a run; None where no step measured any."""
+    measured = [_speckle(found) for found in steps if found.speckle_measured]
+    return pooled_speckle([s for s in measured if s is not None])
+
+
+def places_of(
+    found: StepSpots, at: StepPlace, speckle: Speckle | None
+) -> list[SpotPlace]:
+    """The spots of one step as table rows, covariances restated for ``speckle``."""
+    share = restated_share(_speckle(found), speckle)
+    return [_place(spot, at, share) for spot in found.spots]
+
+
+def rejected_of(found: StepSpots, step: int) -> list[RejectedSpot]:
+    """The refused candidates of one step."""
+    return [
+        RejectedSpot(step, r.x, r.y, r.unit, Rejection(r.reason), r.detail)
+        for r in found.rejected
+    ]
+
+
+def _speckle(found: StepSpots) -> Speckle | None:
+    if found.speckle_contrast is None or found.grain_fwhm_px is None:
+        return None
+    return Speckle(found.speckle_contrast, found.grain_fwhm_px)
+
+
+def _place(spot: SpotRow, at: StepPlace, share: float) -> SpotPlace:
+    xx, xy, yy = spot.ux_mm**2, spot.cxy_mm2, spot.uy_mm**2
+    shared = (spot.shared_xx_mm2, spot.shared_xy_mm2, spot.shared_yy_mm2)
+    sxx, sxy, syy = (0.0 if part is None else part for part in shared)
+    more = share - 1.0
+    return SpotPlace(
+        step=at.step,
+        stage_deg=at.stage_deg,
+        mount_deg=at.mount_deg,
+        laser=at.laser,
+        x_mm=spot.x_mm,
+        y_mm=spot.y_mm,
+        ux_mm=(xx + more * sxx) ** 0.5,
+        uy_mm=(yy + more * syy) ** 0.5,
+        cxy_mm2=xy + more * sxy,
+        brightness=spot.brightness,
+        time_s=at.time_s,
+        shared_xx_mm2=share * sxx,
+        shared_xy_mm2=share * sxy,
+        shared_yy_mm2=share * syy,
+    )
