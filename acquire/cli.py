@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
+from pitchsweep.acquire import cli_gate, cli_safety
 from pitchsweep.acquire.exit_codes import DONE, REFUSED, exit_code_of, message_of
 
 if TYPE_CHECKING:
@@ -107,6 +108,10 @@ def report(
     from pitchsweep.acquire.run_folder import open_run_folder
 
     _fit_and_show([open_run_folder(run).path], run, as_json)
+
+
+cli_gate.register(app)
+cli_safety.register(app)
 
 
 def _job(place: str, twin_seed: int | None) -> "Job":

@@ -11,6 +11,7 @@ from pitchsweep.configs.job_model import Job
 
 JOB = "job.yaml"
 JOURNAL = "run.db"
+LEDGER = "ledger.jsonl"
 MOST_ATTEMPTS = 1000
 
 
@@ -25,6 +26,11 @@ class RunFolder:
     def journal(self) -> Path:
         """Where ``run.db`` is."""
         return self.path / JOURNAL
+
+    @property
+    def ledger(self) -> Path:
+        """Where the run's own safety ledger is."""
+        return self.path / LEDGER
 
     @property
     def twin(self) -> Path:

@@ -1,4 +1,4 @@
-"""Fields of JSON objects, taken with their type checked; ValueError names them. Pure."""
+"""Fields of JSON objects, taken with their type checked; errors name them. Pure."""
 
 import math
 from collections.abc import Mapping

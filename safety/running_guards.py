@@ -80,7 +80,6 @@ def tell_dark(guard: RunningGuard, wait_s: float = ANSWER_WAIT_S) -> DarkAnswer:
         with socket.socket(socket.AF_UNIX, socket.SOCK_STREAM) as line:
             line.settimeout(wait_s)
             line.connect(str(guard.socket))
-            line.sendall(b"dark\n")
             with line.makefile("rb") as stream:
                 said = json.loads(stream.readline(1000))
         return DarkAnswer(guard, True, str(said["state"]), bool(said["light_on"]))

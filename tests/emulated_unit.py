@@ -4,13 +4,18 @@
 obeys words on stdin (open, close, reset, stick, ...) until it ends. Its log is the judge of emission.
 """
 
+import contextlib
 import json
+import socket
 import subprocess
 import sys
+import threading
+from collections.abc import Callable
 from pathlib import Path
 
 from pitchsweep.drivers.twin.emission_unit import EmissionUnit
 from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
+from pitchsweep.drivers.twin.firmware_lines import Firmware, Reply
 from pitchsweep.drivers.twin.pty_port import PtyPort
 from pitchsweep.drivers.twin.relay import TimeOutRelay
 from pitchsweep.drivers.twin.relay_port import RelayPort
@@ -66,12 +71,77 @@ class EmulatedUnit:
         self.process.wait(10.0)
 
 
-def open_port(unit: EmissionUnit, key: bytes, line: str) -> PtyPort | RelayPort:
+class RealUnit:
+    """Firmware of a unit that is no twin: it declines every challenge."""
+
+    def __init__(self, firmware: Firmware) -> None:
+        self._firmware = firmware
+
+    def receive(self, data: bytes) -> list[Reply]:
+        asked = data.split()
+        if b"PROVE" in asked:
+            return [Reply(asked[0] + b" DECLINED NO-KEY\n")]
+        return self._firmware.receive(data)
+
+    def due_in_s(self) -> float | None:
+        return self._firmware.due_in_s()
+
+
+class Silence:
+    """The data wires of a bare relay: nobody answers."""
+
+    def receive(self, data: bytes) -> list[Reply]:
+        return []
+
+    def due_in_s(self) -> float | None:
+        return None
+
+
+class SocketPort:
+    """A unit behind a plain loopback socket, one caller at a time."""
+
+    def __init__(self, firmware: Firmware) -> None:
+        self._firmware = firmware
+        self._listener = socket.create_server(("127.0.0.1", 0))
+        self.path = f"socket://127.0.0.1:{self._listener.getsockname()[1]}"
+        threading.Thread(target=self._serve, daemon=True).start()
+
+    def close(self) -> None:
+        self._listener.close()
+
+    def _serve(self) -> None:
+        while True:
+            caller, _ = self._listener.accept()
+            caller.settimeout(0.01)
+            with caller, contextlib.suppress(OSError):
+                while self._answer(caller):
+                    self._firmware.due_in_s()
+
+    def _answer(self, caller: socket.socket) -> bool:
+        try:
+            data = caller.recv(4096)
+        except TimeoutError:
+            return True
+        for reply in self._firmware.receive(data):
+            caller.sendall(reply.data)
+        return bool(data)
+
+
+def open_port(
+    unit: EmissionUnit, key: bytes, line: str
+) -> PtyPort | RelayPort | SocketPort:
     faults = FaultSchedule()
-    if line == "pulses":
-        return RelayPort(TimeOutRelay(unit), RelayBoxFirmware(IDENTITY, key, faults))
+    box = RelayBoxFirmware(IDENTITY, key, faults)
     firmware = UnitFirmware(unit, identity=IDENTITY, key=key, faults=faults)
-    return PtyPort(firmware, name="unit")
+    ports: dict[str, Callable[[], PtyPort | RelayPort | SocketPort]] = {
+        "keep-alive": lambda: PtyPort(firmware, name="unit"),
+        "pulses": lambda: RelayPort(TimeOutRelay(unit), box),
+        "bare relay": lambda: RelayPort(TimeOutRelay(unit), Silence()),
+        "real": lambda: PtyPort(RealUnit(firmware), name="unit"),
+        "socket": lambda: SocketPort(firmware),
+        "real on a socket": lambda: SocketPort(RealUnit(firmware)),
+    }
+    return ports[line]()
 
 
 def main() -> None:
