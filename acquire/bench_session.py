@@ -1,7 +1,7 @@
 """Opens a simulated bench for a session: twin, guard, stage, camera. Acts (processes).
 
 The twin is started before the guard; the guard proves on the emission line that it
-speaks to this very twin. The rehearsal permit carries the key made at that start.
+speaks to this very twin: the permit, signed or a rehearsal, carries the key made then.
 """
 
 import math
@@ -12,9 +12,11 @@ from contextlib import ExitStack, contextmanager
 from pathlib import Path
 
 from pitchsweep.acquire.bench_devices import BenchDevices
+from pitchsweep.acquire.bench_work import permitted_steps, step_powers_mw
 from pitchsweep.acquire.journal_rows import GateRow
+from pitchsweep.acquire.run_folder import JOB
 from pitchsweep.acquire.run_journal import RunJournal
-from pitchsweep.acquire.sweep_plan import SweepPlan
+from pitchsweep.acquire.run_permit import entered
 from pitchsweep.acquire.sweep_session import BenchRequest
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.drivers.camera_client import TwinCameraClient
@@ -29,18 +31,12 @@ from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.guard_client import GuardClient, StageReport, start_guard
 from pitchsweep.safety.guard_config import GuardConfig, GuardLimits, UnitSettings
 from pitchsweep.safety.ledger import verify
-from pitchsweep.safety.permit import RehearsalPermit
-from pitchsweep.safety.permitted_steps import PermittedSteps
 from pitchsweep.safety.safety_errors import GateRefused, GateTripped
 
 STAGE_DIALECT = "rotary-line"
 UNIT_DIALECT = "emission-line"
 BAUD = 115200
-LEDGER = "ledger.jsonl"
-JOB = "job.yaml"
 PERSON = "rehearsal"
-PERMIT_HOURS = 24.0
-READ_AGE_SLACK_S = 10.0
 LOOK_AGAIN_S = 0.05
 ACKNOWLEDGE_WITHIN_S = 3.0
 
@@ -154,7 +150,8 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
         camera = TwinCameraClient(twin.address)
         stack.callback(camera.close)
         request.stop.check()
-        history = GateHistory()
+        history, ledger = GateHistory(), folder.ledger
+        stack.enter_context(entered(request.permit, folder, request.journal, ledger))
         config = guard_config(request, twin)
         guard = stack.enter_context(start_guard(config, on_event=history.add))
         request.stop.on_request = guard.dark
@@ -176,7 +173,7 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
             gate=GuardGate(
                 guard,
                 request.journal,
-                folder.path / LEDGER,
+                ledger,
                 step_powers_mw(request.plan, bench),
             ),
             gate_history=history.take,
@@ -184,22 +181,20 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
 
 
 def guard_config(request: BenchRequest, twin: TwinHandle) -> GuardConfig:
-    """What the guard works from: unit, rehearsal permit, permitted steps."""
-    folder = request.folder
-    now_s = time.time()
+    """What the guard works from: unit, permit, permitted steps, files to watch."""
+    folder, signed = request.folder, request.permit
     return GuardConfig(
         unit=unit_settings(folder.job.bench, twin.unit_port, UNIT_DIALECT, BAUD),
-        permit=RehearsalPermit(
-            key=twin.proof_key,
-            valid_from_utc_s=now_s - 1.0,
-            valid_until_utc_s=now_s + PERMIT_HOURS * 3600.0,
-        ),
+        permit=signed.for_guard(twin.proof_key),
         limits=GuardLimits(),
         permitted=permitted_steps(request.plan, folder.job.bench),
-        ledger_path=str(folder.path / LEDGER),
+        ledger_path=str(folder.ledger),
         run=folder.path.name,
         resumed=request.resumed,
-        watched={str(folder.path / JOB): file_sha256(folder.path / JOB)},
+        watched={
+            str(folder.path / JOB): file_sha256(folder.path / JOB),
+            **signed.watched,
+        },
     )
 
 
@@ -218,23 +213,6 @@ def unit_settings(bench: Bench, port: str, dialect: str, baud: int) -> UnitSetti
         has_shutter=emission.switches == "head-shutter",
         line=emission.line,
         channels=emission.interlock_channels,
-    )
-
-
-def step_powers_mw(plan: SweepPlan, bench: Bench) -> dict[int, float]:
-    """The power at the part of every step and zero check."""
-    steps = (*plan.steps, *plan.zero_checks)
-    return {s.step: bench.lasers[s.laser].power_mw for s in steps}
-
-
-def permitted_steps(plan: SweepPlan, bench: Bench) -> PermittedSteps:
-    """The stage angle of every step and zero check of ``plan``."""
-    longest_s = max(max(s.exposures_ms) for s in plan.steps) / 1000.0
-    return PermittedSteps(
-        angles_deg={s.step: s.stage_deg for s in (*plan.steps, *plan.zero_checks)},
-        tolerance_deg=bench.stage.angle_tolerance_deg,
-        read_age_limit_s=min(60.0, longest_s + READ_AGE_SLACK_S),
-        power_ceiling_mw=max(step_powers_mw(plan, bench).values()),
     )
 
 

@@ -22,6 +22,7 @@ from pitchsweep.acquire.run_folder import (
 )
 from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.run_lock import take_run_lock
+from pitchsweep.acquire.run_permit import RunPermit, permit_for
 from pitchsweep.acquire.step_keeper import KeeperTools, StepKeeper
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.acquire.stop_signals import StopRequested, StopSignals
@@ -31,7 +32,7 @@ from pitchsweep.analysis.order_visibility import visible_orders
 from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.driver_errors import DriverError
-from pitchsweep.safety.permit import refuse_hardware
+from pitchsweep.safety.run_ack import refuse_unacknowledged
 from pitchsweep.safety.run_refusals import refuse_unsafe
 from pitchsweep.safety.safety_errors import SafetyError
 
@@ -46,6 +47,7 @@ class BenchRequest:
     stop: StopSignals
     resumed: bool
     say: Callable[[str], None]
+    permit: RunPermit = RunPermit()
 
 
 OpenBench = Callable[[BenchRequest], AbstractContextManager[BenchDevices]]
@@ -59,9 +61,9 @@ def sweep_job(
     Raises JobRefused and GateRefused before anything moves; SweepStopped, GateTripped,
     DriverError, StorageFailed later, the bench dark and the journal closed by then.
     """
-    refuse_hardware(job.bench)
     plan = plan_sweep(job, fingerprint(job))
     refuse_unsafe(job)
+    permit = permit_for(job, plan, progress.say)
     folder = create_run_folder(runs, job)
     progress.say(
         f"{len(plan.steps)} steps, {clock_text(plan.duration_s)} of bench time; "
@@ -71,7 +73,15 @@ def sweep_job(
     try:
         with create_journal(folder.journal) as journal:
             journal.set_meta("job_fingerprint", fingerprint(job))
-            _session(folder, plan, journal, progress, open_bench, owner=lock.owner)
+            _session(
+                folder,
+                plan,
+                journal,
+                progress,
+                open_bench,
+                owner=lock.owner,
+                permit=permit,
+            )
     finally:
         lock.release()
     return folder
@@ -80,13 +90,16 @@ def sweep_job(
 def resume_run(path: Path, progress: Progress, open_bench: OpenBench) -> RunFolder:
     """Goes on with the run at ``path``; returns it when complete.
 
-    Counts as a trip: the gate starts tripped. Raises RunRefused for a folder that is
-    no run, is in use or does not fit its job, and what ``sweep_job`` raises.
+    Counts as a trip: a twin's person acknowledges it, on hardware ``ack`` comes before.
+    Raises GateRefused for a run that nobody acknowledged, RunRefused for a folder that
+    is no run, is in use or does not fit its job, and what ``sweep_job`` raises.
     """
     folder = open_run_folder(path)
-    refuse_hardware(folder.job.bench)
+    if folder.job.bench.ports is not None:
+        refuse_unacknowledged(folder.ledger, folder.path.name)
     plan = plan_sweep(folder.job, fingerprint(folder.job))
     refuse_unsafe(folder.job)
+    permit = permit_for(folder.job, plan, progress.say)
     lock = take_run_lock(folder.path)
     try:
         with _journal_to_go_on(folder) as journal:
@@ -99,6 +112,7 @@ def resume_run(path: Path, progress: Progress, open_bench: OpenBench) -> RunFold
                 progress,
                 open_bench,
                 owner=lock.owner,
+                permit=permit,
                 resumed=True,
             )
     finally:
@@ -151,6 +165,7 @@ def _session(
     open_bench: OpenBench,
     *,
     owner: str,
+    permit: RunPermit,
     resumed: bool = False,
 ) -> None:
     now = standing_of(folder, plan, journal)
@@ -159,7 +174,9 @@ def _session(
     session = journal.begin_session(owner)
     find = spot_finder(folder.job.bench.camera)
     with StopSignals() as stop, _ending(folder, journal, session, stop):
-        request = BenchRequest(folder, plan, journal, stop, resumed, progress.say)
+        request = BenchRequest(
+            folder, plan, journal, stop, resumed, progress.say, permit
+        )
         with open_bench(request) as devices:
             stop.on_request = devices.gate.dark
             stop.check()

@@ -24,7 +24,6 @@ from pitchsweep.drivers.emission_client import EmissionClient
 from pitchsweep.drivers.line_client import LineClient
 from pitchsweep.drivers.pulse_line import PulseLineClient, open_pulse_line
 from pitchsweep.drivers.serial_transport import open_serial
-from pitchsweep.safety.ack_record import run_entries, why_not_acknowledged_yet
 from pitchsweep.safety.background_writer import BackgroundWriter
 from pitchsweep.safety.dark_door import Answer, DarkDoor
 from pitchsweep.safety.file_watch import FileWatch
@@ -40,6 +39,8 @@ from pitchsweep.safety.guard_messages import LONGEST_LINE, read_command, read_ob
 from pitchsweep.safety.guard_world import GuardWorld
 from pitchsweep.safety.ledger import Ledger
 from pitchsweep.safety.ledger_chain import canonical_json
+from pitchsweep.safety.permit_proof import why_permit_is_unproven
+from pitchsweep.safety.run_ack import why_run_is_not_acknowledged
 from pitchsweep.safety.safety_errors import SafetyError
 
 CONFIG_WAIT_S = 10.0
@@ -106,7 +107,8 @@ def _serve(
     speaker: BackgroundWriter[Mapping[str, object]],
 ) -> int:
     ledger = Ledger(Path(config.ledger_path))
-    acknowledged = config.resumed and _why_not_acknowledged(config) is None
+    why_not = why_run_is_not_acknowledged(ledger.path, config.run)
+    acknowledged = config.resumed and why_not is None
     ledger.append(
         "guard-started",
         {
@@ -196,7 +198,11 @@ def _await_config(inbox: Inbox) -> GuardConfig:
         raise ValueError(f"none came within {CONFIG_WAIT_S:g} s") from None
     if not isinstance(item, Line):
         raise ValueError(item.reason if isinstance(item, End) else "told to be dark")
-    return config_from_mapping(read_object(item.data))
+    config = config_from_mapping(read_object(item.data))
+    unproven = why_permit_is_unproven(config, time.time())
+    if unproven is not None:
+        raise ValueError(unproven)
+    return config
 
 
 def _findable(config: GuardConfig, inbox: Inbox) -> AbstractContextManager[object]:
@@ -208,23 +214,6 @@ def _findable(config: GuardConfig, inbox: Inbox) -> AbstractContextManager[objec
         unit=config.unit.identity,
         on_dark=lambda answer: inbox.put(HandStop(answer)),
     )
-
-
-def _why_not_acknowledged(config: GuardConfig) -> str | None:
-    with suppress(OSError), open(config.ledger_path, "rb") as lines:
-        return why_not_acknowledged_yet(
-            run_entries(lines, config.run),
-            now_utc_s=time.time(),
-            booted_utc_s=_booted_utc_s(),
-        )
-    return "the ledger cannot be read"
-
-
-def _booted_utc_s() -> float:
-    """When this computer was started; now, where the system does not say."""
-    if not hasattr(time, "CLOCK_BOOTTIME"):
-        return time.time()
-    return time.time() - time.clock_gettime(time.CLOCK_BOOTTIME)
 
 
 def _open_unit(config: GuardConfig) -> EmissionClient | PulseLineClient:

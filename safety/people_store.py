@@ -3,6 +3,7 @@
 import json
 import os
 from collections.abc import Iterable, Mapping, Sequence
+from contextlib import suppress
 from dataclasses import asdict, dataclass
 from pathlib import Path
 
@@ -11,6 +12,7 @@ from pitchsweep.safety.ledger_chain import Entry, LedgerCheck, Signed
 from pitchsweep.safety.people_ledger import People, Signer, judge_with, take
 from pitchsweep.safety.safety_errors import LedgerBroken, RecordForged
 from pitchsweep.safety.safety_home import SafetyHome
+from pitchsweep.safety.sign_off import record_from
 from pitchsweep.safety.signing import ENTRY, PrivateKey
 
 
@@ -92,8 +94,24 @@ def enter(
             raise LedgerBroken(str(home.ledger), entry.n, str(error)) from None
 
     entry = Ledger(home.ledger).append(kind, whole, sign=sign, before_write=look)
-    _write_register(home, after[0], entry)
+    _write_register(home, after[0], entry.n, entry.hash)
     return entry
+
+
+def rebuild_register(home: SafetyHome) -> None:
+    """Writes the register anew from the ledger, which must still meet its head.
+
+    Raises LedgerBroken (also for a ledger whose tail was cut), OSError.
+    """
+    try:
+        kept = _head_in_register(home)
+    except RecordForged:
+        kept = {}
+    check, people = check_people(home.ledger, kept)
+    if check.broken_entry is not None:
+        raise LedgerBroken(str(home.ledger), check.broken_entry, check.reason)
+    if check.count:
+        _write_register(home, people, check.count, check.head)
 
 
 def signers_in_words(signers: Iterable[Signer]) -> list[dict[str, object]]:
@@ -104,11 +122,11 @@ def signers_in_words(signers: Iterable[Signer]) -> list[dict[str, object]]:
     ]
 
 
-def _write_register(home: SafetyHome, people: People, entry: Entry) -> None:
+def _write_register(home: SafetyHome, people: People, entries: int, head: str) -> None:
     content = {
         "about": "a copy of what ledger.jsonl says; compared with it at every use",
-        "ledger_entries": entry.n,
-        "ledger_head": entry.hash,
+        "ledger_entries": entries,
+        "ledger_head": head,
         "signers": signers_in_words(people.signers.values()),
     }
     temporary = home.register.with_name(f".{home.register.name}.part")
@@ -132,6 +150,23 @@ def _read_register(home: SafetyHome) -> Mapping[str, object] | None:
     if not isinstance(content, dict):
         raise RecordForged(str(home.register), "is no register", _REMEDY)
     return content
+
+
+def known_heads(home: SafetyHome) -> dict[int, str]:
+    """The heads that stand outside the ledger in ``home``: register and sign-offs.
+
+    Unreadable files keep none.
+    """
+    kept: dict[int, str] = {}
+    with suppress(RecordForged):
+        kept.update(_head_in_register(home))
+    for path in home.sign_offs.glob("*.json"):
+        with suppress(OSError, ValueError):
+            record = record_from(path.read_bytes())
+            for mark in (record.statement.ledger, record.entered):
+                kept[mark.entries] = mark.head
+    kept.pop(0, None)
+    return kept
 
 
 def _head_in_register(home: SafetyHome) -> Mapping[int, str]:

@@ -2,8 +2,9 @@
 
 Pure. A rehearsal is worth nothing except on a unit that answers a challenge with the
 key made when this very twin was started; port names and addresses prove nothing. An
-attended permit needs a hand on the key (``attended_permit``). A guard without a permit
-never lights: it only takes in that a trip is acknowledged.
+attended permit needs a hand on the key (``attended_permit``), an unattended one a
+sign-off (``unattended_permit``). A guard without a permit never lights: it only takes
+in that a trip is acknowledged.
 """
 
 import hashlib
@@ -11,22 +12,22 @@ import hmac
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING, ClassVar
+from typing import ClassVar
 
 from pitchsweep.safety.attended_permit import (
     AttendedPermit,
     attended_as_mapping,
     attended_from_mapping,
 )
-from pitchsweep.safety.safety_errors import GateRefused
-
-if TYPE_CHECKING:
-    # The guard process reads this module and must stay free of pydantic.
-    from pitchsweep.configs.bench_model import Bench
+from pitchsweep.safety.unattended_permit import (
+    UnattendedPermit,
+    unattended_as_mapping,
+    unattended_from_mapping,
+)
 
 KEY_BYTES = 32
 NONCE_BYTES = 16
-KINDS = ("rehearsal", "attended", "none")
+KINDS = ("rehearsal", "attended", "unattended", "none")
 CLOCK_BACK_LIMIT_S = 2.0
 """A clock set back by more than this counts as a lapse."""
 
@@ -56,7 +57,7 @@ class NoPermit:
     key: ClassVar[None] = None
 
 
-Permit = RehearsalPermit | AttendedPermit | NoPermit
+Permit = RehearsalPermit | AttendedPermit | UnattendedPermit | NoPermit
 """The permits that exist so far."""
 
 
@@ -66,6 +67,8 @@ def permit_as_mapping(permit: Permit) -> dict[str, object]:
         return {"kind": permit.kind}
     if isinstance(permit, AttendedPermit):
         return attended_as_mapping(permit)
+    if isinstance(permit, UnattendedPermit):
+        return unattended_as_mapping(permit)
     return {
         "kind": permit.kind,
         "key": permit.key.hex(),
@@ -81,6 +84,8 @@ def permit_from_mapping(values: Mapping[str, object]) -> Permit:
         return NoPermit()
     if kind == AttendedPermit.kind:
         return attended_from_mapping(values)
+    if kind == UnattendedPermit.kind:
+        return unattended_from_mapping(values)
     if kind != RehearsalPermit.kind:
         raise ValueError(f"permit of kind {kind!r}: allowed {', '.join(KINDS)}")
     key = values.get("key")
@@ -130,14 +135,3 @@ def power_ceiling_mw(permit: Permit, bench_ceiling_mw: float) -> float:
     if isinstance(permit, AttendedPermit):
         return min(bench_ceiling_mw, permit.power_ceiling_mw)
     return bench_ceiling_mw
-
-
-def refuse_hardware(bench: "Bench") -> None:
-    """Returns for a twin; raises GateRefused for a bench with ports."""
-    if bench.ports is None:
-        return
-    raise GateRefused(
-        f"bench '{bench.bench}' has ports: emission there needs a sign-off, which this"
-        " version cannot give yet",
-        "use a bench with 'twin:', or 'fit' a table or frames taken elsewhere",
-    )

@@ -73,14 +73,16 @@ class GuardLost(GateTripped):
 
 
 class SignerRefused(SafetyError):
-    """Raised when a signer, key or passphrase cannot be used; nothing was signed."""
+    """Raised when a signer, key or passphrase cannot be used; nothing is done then."""
 
     exit_code: ClassVar[int] = 2
 
     def __init__(self, name: str, what: str, remedy: str) -> None:
         self.name = name
         self.what = what
-        super().__init__(f"signer '{name}': {what}; nothing was signed\n  {remedy}")
+        super().__init__(
+            f"signer '{name}': {what}; nothing was signed or entered\n  {remedy}"
+        )
 
 
 class LedgerBroken(SafetyError):

@@ -36,14 +36,8 @@ def enrol(
     be a safety officer, needs none. Raises SignerRefused, LedgerBroken, RecordForged,
     OSError; nothing is entered then.
     """
-    now = read_people(home)
-    _refuse_name_and_roles(now, name, roles)
-    if now.people.signers and voucher is None:
-        raise SignerRefused(
-            name,
-            "nobody vouches for this signer",
-            "give an enrolled safety officer with --vouched-by NAME",
-        )
+    vouched_by = None if voucher is None else voucher.name
+    refuse_enrolling(home, name, roles, vouched_by)
     key = new_key(name)
     home.folder.mkdir(mode=0o700, parents=True, exist_ok=True)
     write_key(home.key(name), key, passphrase)
@@ -55,6 +49,29 @@ def enrol(
         home.key(name).unlink(missing_ok=True)
         raise
     return read_people(home).people.signers[name]
+
+
+def refuse_enrolling(
+    home: SafetyHome, name: str, roles: Sequence[str], voucher: str | None
+) -> None:
+    """Returns when ``name`` may be enrolled with ``voucher`` (a name) vouching.
+
+    Raises SignerRefused otherwise, before any passphrase is asked for.
+    """
+    now = read_people(home)
+    _refuse_name_and_roles(now, name, roles)
+    if not now.people.signers:
+        return
+    if voucher is None:
+        raise SignerRefused(
+            name,
+            "nobody vouches for this signer",
+            "give an enrolled safety officer with --vouched-by NAME",
+        )
+    if OFFICER not in active_signer(now, voucher).roles:
+        raise SignerRefused(
+            voucher, "may not vouch for others", "only a safety officer may"
+        )
 
 
 def revoke_signer(home: SafetyHome, name: str, reason: str, by: PrivateKey) -> Signer:

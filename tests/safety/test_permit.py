@@ -3,7 +3,6 @@
 import pytest
 from guard_builders import KEY, UTC_S, guard_config
 
-from pitchsweep.configs.reader import read_job
 from pitchsweep.safety.guard_config import config_as_mapping, config_from_mapping
 from pitchsweep.safety.permit import (
     RehearsalPermit,
@@ -11,10 +10,8 @@ from pitchsweep.safety.permit import (
     challenge_answer,
     permit_as_mapping,
     permit_from_mapping,
-    refuse_hardware,
     why_permit_lapsed,
 )
-from pitchsweep.safety.safety_errors import GateRefused
 
 PERMIT = RehearsalPermit(KEY, UTC_S, UTC_S + 60.0)
 
@@ -120,21 +117,3 @@ def test_a_keep_alive_beyond_250_ms_is_refused() -> None:
     unit["keep_alive_ms"] = 251
     with pytest.raises(ValueError, match="keep_alive_ms = 251"):
         config_from_mapping(values)
-
-
-def test_a_twin_bench_is_not_refused() -> None:
-    refuse_hardware(read_job("demo:shims-four-mounts").job.bench)
-
-
-def test_a_bench_with_ports_is_refused_with_the_reason() -> None:
-    bench = read_job("demo:shims-four-mounts").job.bench
-    port = {"port": "/dev/ttyUSB0", "dialect": "rotary-line"}
-    values = bench.model_dump(exclude={"twin"})
-    values["ports"] = {"stage": port, "unit": port, "camera": "cam"}
-    hardware = type(bench).model_validate(values)
-    with pytest.raises(GateRefused) as caught:
-        refuse_hardware(hardware)
-    said = str(caught.value)
-    assert hardware.bench in said and "sign-off" in said
-    assert "nothing was switched on" in said
-    assert len(said.splitlines()) <= 2 and caught.value.exit_code == 3
