@@ -87,6 +87,67 @@ def test_what_a_random_bench_sends_out_is_in_the_map(name: str, seed: int) -> No
     assert judged > LOCALS / 4
 
 
+@pytest.mark.parametrize("through", [False, True])
+@pytest.mark.parametrize("name", ["shims-spots", "track-1600-violet"])
+def test_benches_at_three_sigma_stay_within_the_cones(name: str, through: bool) -> None:
+    """Everything off by three sigma one way or the other, grooves any way round."""
+    job = demo_job(name)
+    laser = job.recipe.lasers[0]
+    ratio = wavelength_over_pitch(job.bench, job.part, laser)
+    spread = spread_of(job.bench, job.part, laser)
+    incidence = np.arange(-60.0, 61.0, 20.0)
+    cones = order_cones(
+        incidence, np.zeros_like(incidence), ratio, spread, through=through, ghost=False
+    )
+    outside = 0.0
+    for row, a_deg in enumerate(incidence):
+        for order in range(cones.leaves.shape[1]):
+            rays = corner_rays(job, laser, float(a_deg), order, through)
+            lit = cones.leaves[row, order]
+            if not len(rays):
+                continue
+            middles = vectors(
+                cones.azimuth_deg[row, order, lit], cones.elevation_deg[row, order, lit]
+            )
+            away = np.degrees(np.arccos(np.clip(rays @ middles.T, -1.0, 1.0)))
+            past = (away - cones.half_deg[row, order, lit][None, :]).min(axis=1)
+            outside = max(outside, float(past.max()))
+    assert outside == 0.0
+
+
+def corner_rays(
+    job: Job, laser: str, incidence_deg: float, order: int, through: bool
+) -> FloatArray:
+    """Unit vectors (N, 3) of an order where every doubt is at three sigma."""
+    bench, part = job.bench, job.part
+    draw = np.random.default_rng(3)
+    count = 400
+    signs = draw.choice([-3.0, 3.0], size=(3, count))
+    local = np.zeros((count, N_LOCAL))
+    a = np.radians(incidence_deg + signs[0] * bench.stage.u_zero_deg)
+    tilt = signs[1] * part.u_tilt_mrad * 1e-3
+    local[:, Local.INCIDENCE] = a
+    local[:, Local.TILT] = tilt
+    local[:, Local.ELEVATION] = signs[2] * bench.beam.u_elevation_mrad * 1e-3
+    local[:, Local.AZIMUTH] = draw.uniform(0.0, 2.0 * np.pi, count)
+    within = part.nominal_within_percent * 1e-2 * draw.choice([-1.0, 1.0], count)
+    ratio = wavelength_over_pitch(bench, part, laser)
+    local[:, Local.Q] = order * ratio * (1.0 + 0.999 * within)
+    out, squared = order_direction(local)
+    normal = np.stack(
+        [np.sin(a) * np.cos(tilt), np.sin(tilt), np.cos(a) * np.cos(tilt)], axis=-1
+    )
+    if through:
+        out = out - 2.0 * np.sum(out * normal, axis=1)[:, None] * normal
+    return np.asarray(out[squared > 0.0])
+
+
+def vectors(azimuth_deg: FloatArray, elevation_deg: FloatArray) -> FloatArray:
+    """Unit vectors (N, 3) of directions (N,)."""
+    a, e = np.radians(azimuth_deg), np.radians(elevation_deg)
+    return np.stack([np.cos(e) * np.sin(a), np.sin(e), np.cos(e) * np.cos(a)], axis=-1)
+
+
 def test_the_picture_s_reach_is_that_of_the_cones() -> None:
     """Directions inside the cones' middles are reached by the inverse formula."""
     job = demo_job("track-740-green")
