@@ -28,10 +28,11 @@ from pitchsweep.analysis.records import (
 from pitchsweep.analysis.result_file import result_json
 from pitchsweep.configs.fingerprint import fingerprint
 
-ORDERS, RESULT, REPORT, PICTURE = (
+ORDERS, RESULT, REPORT, PAPER, PICTURE = (
     "orders.csv",
     "result.json",
     "report.html",
+    "report.pdf",
     "result.png",
 )
 
@@ -76,11 +77,12 @@ def analyse(sources: Sequence[FitSource]) -> Analysed:
 
 
 def write_derived(analysed: Analysed, folder: Path) -> None:
-    """Writes orders.csv, result.json, report.html and result.png into ``folder``.
+    """Writes orders, result, both reports and the picture into ``folder``.
 
     The same inputs give the same bytes. Raises OSError.
     """
     from pitchsweep.analysis.report_page import report_page
+    from pitchsweep.analysis.report_pdf import report_pdf
     from pitchsweep.analysis.summary_picture import summary_png
 
     result = analysed.result
@@ -96,6 +98,7 @@ def write_derived(analysed: Analysed, folder: Path) -> None:
         (ORDERS, write_order_table(table).encode("utf-8")),
         (RESULT, result_json(result).encode("utf-8")),
         (REPORT, report_page(result, context).encode("utf-8")),
+        (PAPER, report_pdf(result, context)),
         (PICTURE, summary_png(result, context)),
     ):
         write_durably(folder / name, content)

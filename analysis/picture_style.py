@@ -7,13 +7,14 @@ positive ones, near-black for the zero order, and the marker's shape says the sa
 """
 
 import io
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any, Literal
 
 import matplotlib
 from matplotlib.axes import Axes
+from matplotlib.backends.backend_pdf import PdfPages
 from matplotlib.figure import Figure
 from matplotlib.font_manager import findfont, get_font
 from matplotlib.patheffects import Normal, Stroke
@@ -33,6 +34,8 @@ COOL = ("#2f7f9e", "#123f5c", "#79b4c4", "#4b5f9e")
 WARM = ("#c06a1f", "#7a3411", "#dba55a", "#a3543f")
 
 PAGE_MM = 180.0
+PDF_DPI = 200.0
+"""What a PDF holds as an image, such as very many points, comes at this density."""
 MANY_POINTS = 4000
 """Above this many points a vector picture draws its points as one raster image."""
 
@@ -87,11 +90,6 @@ class Drawing:
         size_mm = (self.width_mm, self.height_mm)
         return _drawn(self.draw, self.name, size_mm, "svg").decode("utf-8")
 
-    def pdf(self) -> bytes:
-        """The picture as a PDF of one page, its letters still letters."""
-        size_mm = (self.width_mm, self.height_mm)
-        return _drawn(self.draw, self.name, size_mm, "pdf")
-
     def png(self, dpi: float = 160.0) -> bytes:
         """The picture as PNG bytes."""
         size_mm = (self.width_mm, self.height_mm)
@@ -127,24 +125,45 @@ def png_picture(
     return Drawing(draw, name, width_mm, height_mm).png(dpi)
 
 
+def pdf_of(drawings: Sequence[Drawing]) -> bytes:
+    """A PDF with one page for each drawing, of its size; letters stay letters.
+
+    One file for all shares the fonts, which is most of the work.
+    """
+    out = io.BytesIO()
+    with (
+        house_style("pdf"),
+        PdfPages(out, metadata=dict.fromkeys(_UNSAID["pdf"])) as pages,
+    ):
+        for drawing in drawings:
+            figure = _figure((drawing.width_mm, drawing.height_mm), PDF_DPI)
+            drawing.draw(figure)
+            pages.savefig(figure, dpi=PDF_DPI)
+    return out.getvalue()
+
+
 def _drawn(
     draw: Callable[[Figure], None],
     name: str,
     size_mm: tuple[float, float],
-    kind: Literal["svg", "png", "pdf"],
+    kind: Literal["svg", "png"],
     dpi: float = 160.0,
 ) -> bytes:
     with house_style(name):
-        figure = Figure(
-            figsize=(size_mm[0] / 25.4, size_mm[1] / 25.4),
-            dpi=dpi,
-            layout="constrained",
-        )
+        figure = _figure(size_mm, dpi)
         draw(figure)
         out = io.BytesIO()
         metadata = dict.fromkeys(_UNSAID[kind])
         figure.savefig(out, format=kind, dpi=dpi, metadata=metadata)
         return out.getvalue()
+
+
+def _figure(size_mm: tuple[float, float], dpi: float) -> Figure:
+    return Figure(
+        figsize=(size_mm[0] / 25.4, size_mm[1] / 25.4),
+        dpi=dpi,
+        layout="constrained",
+    )
 
 
 def order_colour(order: int) -> str:
