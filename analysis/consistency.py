@@ -11,7 +11,13 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.joint_fit import JointFit, one_step
-from pitchsweep.analysis.records import IntArray, OrderTable, PitchSeen
+from pitchsweep.analysis.records import (
+    BudgetLine,
+    FloatArray,
+    IntArray,
+    OrderTable,
+    PitchSeen,
+)
 
 LIMIT = 4.0
 """Deviation in its own u beyond which a subset is said to disagree."""
@@ -20,7 +26,7 @@ LIMIT = 4.0
 def subsets(
     table: OrderTable,
     order: IntArray,
-    incidence_rad: "np.ndarray[tuple[int, ...], np.dtype[np.float64]]",
+    incidence_rad: FloatArray,
 ) -> Iterator[tuple[str, NDArray[np.bool_]]]:
     """Named parts of the sweep: orders (each with the zero order), sides, halves."""
     zero = order == 0
@@ -83,12 +89,28 @@ def pitches_seen(
     return tuple(seen)
 
 
+def _beyond(seen: tuple[PitchSeen, ...]) -> list[PitchSeen]:
+    return [s for s in seen if abs(s.deviation_nm) > LIMIT * s.u_deviation_nm]
+
+
+def disagreement_lines(seen: tuple[PitchSeen, ...]) -> list[BudgetLine]:
+    """A budget line as large as the worst disagreement that chance does not explain.
+
+    What makes parts of a sweep disagree moves the whole by an unknown share of it;
+    the whole difference is taken as its standard uncertainty.
+    """
+    worst = max((abs(s.deviation_nm) for s in _beyond(seen)), default=0.0)
+    if worst == 0.0:
+        return []
+    detail = "what makes parts of the sweep see different pitches is not known"
+    return [BudgetLine("disagreement between parts of the sweep", "B", worst, detail)]
+
+
 def disagreements(seen: tuple[PitchSeen, ...]) -> list[str]:
     """Warnings for subsets that disagree with the whole."""
     return [
         f"{s.subset} sees a pitch {s.deviation_nm:+.3g} nm from the whole, "
         f"{abs(s.deviation_nm) / s.u_deviation_nm:.1f} times what chance explains: "
-        "something that the fit does not carry moves with it"
-        for s in seen
-        if abs(s.deviation_nm) > LIMIT * s.u_deviation_nm
+        "something that the fit does not carry moves with it; u is enlarged by that"
+        for s in _beyond(seen)
     ]

@@ -8,7 +8,11 @@ import numpy as np
 from pitchsweep.analysis.air_index import AirState
 from pitchsweep.analysis.analysis_errors import InputRefused, NoResult
 from pitchsweep.analysis.budget import READINGS, combined_u, fit_budget
-from pitchsweep.analysis.consistency import disagreements, pitches_seen
+from pitchsweep.analysis.consistency import (
+    disagreement_lines,
+    disagreements,
+    pitches_seen,
+)
 from pitchsweep.analysis.decision import coverage_factor, decide, effective_dof
 from pitchsweep.analysis.fit_parameters import Kind
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
@@ -181,7 +185,8 @@ def _result(
 ) -> PitchResult:
     part = problem.parts[0]
     pitch_nm = base_pitch_nm(part) * math.exp(fit.state.values[0])
-    budget = fit_budget(problem, fit, pitch_nm)
+    seen = pitches_seen(problem, clean.order, fit, pitch_nm)
+    budget = fit_budget(problem, fit, pitch_nm) + disagreement_lines(seen)
     u_nm = combined_u(budget)
     if not math.isfinite(u_nm) or u_nm > WORST_RELATIVE_U * pitch_nm:
         raise NoResult(
@@ -195,7 +200,6 @@ def _result(
         [(readings_u, max(scatter.dof, 1.0)), (_other_u(u_nm, readings_u), math.inf)]
     )
     k = coverage_factor(coverage, dof)
-    seen = pitches_seen(problem, clean.order, fit, pitch_nm)
     warnings = (
         warnings + disagreements(seen) + _plain_warnings(pitch_nm, u_nm, part, clean)
     )

@@ -1,0 +1,130 @@
+"""The table of unknowns: scopes, names, what several parts, lasers and runs share."""
+
+from collections import Counter
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from builders import demo_job, twin_sweep
+
+from pitchsweep.acquire.fit_input import FitInput, joined
+from pitchsweep.analysis.air_index import AirState
+from pitchsweep.analysis.fit_parameters import Kind, Parameter, Scope, Source
+from pitchsweep.analysis.measure import measure_pitch
+from pitchsweep.analysis.parameter_table import fit_scene, parameter_table
+from pitchsweep.configs.part_model import Certified
+
+AIR = AirState(20.0, 1013.25, 50.0)
+
+
+def unknowns(name: str = "shims-spots", **columns: np.ndarray) -> tuple[Parameter, ...]:
+    job = demo_job(name)
+    table = replace(twin_sweep(job, 1).table, **columns)
+    return parameter_table(fit_scene(table, job.bench, (job.part,), AIR))
+
+
+def test_names_are_unique_and_scopes_are_declared() -> None:
+    table = unknowns("shims-four-mounts")
+    assert max(Counter(p.name for p in table).values()) == 1
+    assert {p.scope for p in table} <= set(Scope)
+    assert table[0].kind is Kind.LOG_RATIO and np.isinf(table[0].u_prior)
+
+
+def test_every_unknown_but_the_pitch_has_a_prior() -> None:
+    assert all(0.0 < p.u_prior < 1e3 for p in unknowns()[1:])
+
+
+def test_a_mount_has_a_seat_of_its_own() -> None:
+    seats = [p for p in unknowns("shims-four-mounts") if p.source is Source.SEAT]
+    assert len(seats) == 4 * 4
+    total = sum(np.abs(p.coefficient) for p in seats if "zero" in p.name)
+    np.testing.assert_array_equal(total, np.ones_like(total))
+
+
+def test_a_run_drifts_by_itself() -> None:
+    job = demo_job("shims-spots")
+    n = len(twin_sweep(job, 1).table)
+    run = (np.arange(n) >= n // 2).astype(np.int64)
+    drifts = [p for p in unknowns(run=run) if p.source is Source.DRIFT]
+    alone = [p for p in unknowns() if p.source is Source.DRIFT]
+    assert len(drifts) == 2 * len(alone)
+    first = next(p for p in drifts if p.name.endswith("run 1"))
+    assert not first.coefficient[run == 1].any()
+
+
+def test_worm_period_is_carried_where_the_bench_declares_one() -> None:
+    job = demo_job("shims-spots")
+    stage = job.bench.stage.model_copy(update={"worm_per_turn": 180})
+    bench = job.bench.model_copy(update={"stage": stage})
+    sweep = twin_sweep(job, 1)
+    table = parameter_table(fit_scene(sweep.table, bench, (job.part,), AIR))
+    assert sum(p.source is Source.WORM for p in table) == 2
+
+
+def test_a_stage_without_recorded_closure_costs_in_the_budget() -> None:
+    job = demo_job("shims-spots")
+    table = twin_sweep(job, 1).table
+    stage = job.bench.stage.model_copy(
+        update={"closure_recorded_on": None, "u_scale_ppm": 1000.0}
+    )
+    bench = job.bench.model_copy(update={"stage": stage})
+    closed = measure_pitch(table, bench=job.bench, part=job.part)
+    unclosed = measure_pitch(table, bench=bench, part=job.part)
+    assert unclosed.u_pitch_nm > closed.u_pitch_nm
+
+
+def test_a_reference_carries_the_wavelength_of_a_diode() -> None:
+    """A diode known to 0.5 nm leaves the pitch at 8e-4; a reference mends that."""
+    job = demo_job("shims-spots")
+    red = job.bench.lasers["red"].model_copy(update={"u_wavelength_nm": 0.5})
+    bench = job.bench.model_copy(update={"lasers": {"red": red}})
+    job = job.model_copy(update={"bench": bench})
+    mine = twin_sweep(job, 5, first_mount=1, first_step=100)
+    known = demo_job("shims-spots", part={"nominal_pitch_nm": 1000.0, "part": "known"})
+    theirs = twin_sweep(known.model_copy(update={"bench": bench}), 5)
+    certified = Certified(
+        pitch_nm=theirs.truth.pitch_nm, u_pitch_nm=0.005, certificate="invented"
+    )
+    reference = known.part.model_copy(update={"certified": certified})
+    alone = measure_pitch(mine.table, bench=bench, part=job.part)
+    given = joined(
+        [
+            FitInput("reference", theirs.table, bench, reference, 0.95),
+            FitInput("part", mine.table, bench, job.part, 0.95),
+        ]
+    )
+    assert given.part == job.part and given.references == (reference,)
+    result = measure_pitch(
+        given.table, bench=bench, part=given.part, references=given.references
+    )
+    assert alone.u_pitch_nm / alone.pitch_nm > 7e-4
+    assert result.u_pitch_nm / result.pitch_nm < 2.5e-4
+    assert abs(result.pitch_nm - mine.truth.pitch_nm) < 4.0 * result.u_pitch_nm
+    laser = next(n for n in result.nuisance if n.name == "wavelength of red")
+    true_nm = mine.truth.vacuum_wavelength_nm["red"]
+    assert laser.u < 0.2 and abs(laser.value - true_nm) < 4.0 * laser.u
+
+
+def test_two_parts_without_certificate_are_not_joined() -> None:
+    one, other = demo_job("shims-spots"), demo_job("track-740-red")
+    bench = one.bench
+    a = FitInput("a", twin_sweep(one, 0).table, bench, one.part, 0.95)
+    b = FitInput("b", twin_sweep(one, 1).table, bench, other.part, 0.95)
+    with pytest.raises(ValueError, match="different parts"):
+        joined([a, b])
+
+
+def test_parts_of_a_sweep_that_disagree_enlarge_u() -> None:
+    """The pitch jumps by 2e-3 half-way: no smooth drift explains that."""
+    job = demo_job("shims-spots", twin={"spot_reading_mm": 0.02})
+    early = twin_sweep(job, 3)
+    shifted = demo_job("shims-spots", twin={"spot_reading_mm": 0.02, "seed": 3})
+    table = early.table
+    late = table.step > np.median(table.step)
+    orders = early.true_order
+    x_mm = table.x_mm + np.where(late, 0.4 * np.sign(orders), 0.0)
+    spoilt = replace(table, x_mm=x_mm)
+    result = measure_pitch(spoilt, bench=shifted.bench, part=job.part)
+    honest = measure_pitch(table, bench=job.bench, part=job.part)
+    assert result.u_pitch_nm > 1.5 * honest.u_pitch_nm
+    assert result.warnings
