@@ -1,5 +1,7 @@
 """What a run's report shows beside the fit: frames, gate, facts. Acts (disk)."""
 
+from collections.abc import Mapping
+
 import numpy as np
 
 from pitchsweep.acquire.frame_store import FrameStore
@@ -76,10 +78,20 @@ def _facts(record: RunRecord) -> tuple[Fact, ...]:
             + " ms",
         ),
     ]
+    facts += _permit_facts(record.meta)
     facts += [
         Fact("Fault", f"{f.what}: {f.detail} ({f.policy})") for f in record.faults
     ]
     return tuple(facts)
+
+
+def _permit_facts(meta: Mapping[str, str]) -> list[Fact]:
+    """By whose leave there was light, and where the people's ledger stood then."""
+    facts = [Fact("Permit", meta["permit"])] if "permit" in meta else []
+    if "people_ledger_head" in meta:
+        words = f"{meta['people_ledger_entries']}, head {meta['people_ledger_head']}"
+        facts.append(Fact("People's ledger entries", words))
+    return facts
 
 
 def gate_shown(rows: list[GateRow]) -> tuple[GateShown, ...]:

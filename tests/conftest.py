@@ -16,3 +16,11 @@ def guards_of_this_suite_only() -> Iterator[str]:
     with tempfile.TemporaryDirectory() as folder, pytest.MonkeyPatch.context() as patch:
         patch.setenv("PITCHSWEEP_GUARDS", folder)
         yield folder
+
+
+@pytest.fixture(autouse=True, scope="session")
+def no_signers_but_those_of_this_suite() -> Iterator[str]:
+    """Signers, sign-offs and ledger of whoever runs the tests are not touched."""
+    with tempfile.TemporaryDirectory() as folder, pytest.MonkeyPatch.context() as patch:
+        patch.setenv("PITCHSWEEP_HOME", folder)
+        yield folder
