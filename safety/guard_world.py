@@ -38,8 +38,8 @@ class GuardChecks:
     by_state: Mapping[GateState, tuple[Check, ...]] = field(
         default_factory=lambda: CHECKS
     )
-    before_light: tuple[Check, ...] = BEFORE_LIGHT
-    before_arming: tuple[Check, ...] = BEFORE_ARMING
+    before_light: tuple[Check, ...] = field(default_factory=lambda: BEFORE_LIGHT)
+    before_arming: tuple[Check, ...] = field(default_factory=lambda: BEFORE_ARMING)
 
 
 @dataclass(frozen=True)

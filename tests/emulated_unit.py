@@ -1,7 +1,8 @@
 """An emission unit on a pseudo-terminal in a process of its own, for fault tests.
 
 ``python emulated_unit.py LOG KEY_HEX LINE CHANNELS``: prints the port's path, then
-obeys words on stdin (open, close, reset, stick, ...) until it ends. Its log is the judge of emission.
+obeys words on stdin (open, close, reset, stick, ...) until it ends. Its log is the
+judge of emission.
 """
 
 import contextlib
@@ -110,8 +111,15 @@ class SocketPort:
         self._listener.close()
 
     def _serve(self) -> None:
+        self._listener.settimeout(0.01)
         while True:
-            caller, _ = self._listener.accept()
+            self._firmware.due_in_s()
+            try:
+                caller, _ = self._listener.accept()
+            except TimeoutError:
+                continue
+            except OSError:
+                return
             caller.settimeout(0.01)
             with caller, contextlib.suppress(OSError):
                 while self._answer(caller):

@@ -91,6 +91,26 @@ def test_every_state_can_be_reached_from_cold() -> None:
     assert reachable(S.COLD) == set(GateState)
 
 
+def test_a_walk_over_every_reachable_state_and_event_meets_light_in_one_place() -> None:
+    """Breadth first through the engine itself; every edge is taken and judged."""
+    edges, seen, queue = [], {S.COLD}, [S.COLD]
+    while queue:
+        state = queue.pop(0)
+        for event in Event:
+            gate = Gate()
+            gate._state = state
+            outcome = gate.apply(event)
+            edges.append((state, event, gate.state))
+            assert gate.emission == (gate.state is S.LIT)
+            assert not (event in FAULTS and gate.emission)
+            if gate.emission and state is not S.LIT:
+                assert (state, event) == (S.READY, E.LIGHT_REQUESTED)
+            if gate.state not in seen:
+                seen.add(gate.state)
+                queue.append(outcome.state)
+    assert len(edges) == len(CELLS) and seen == set(GateState)
+
+
 def test_no_path_reaches_emission_without_arming() -> None:
     for start in set(GateState) - {S.READY, S.LIT}:
         assert S.LIT not in reachable(start, without=E.ARMED)
