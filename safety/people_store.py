@@ -61,7 +61,7 @@ def read_people(home: SafetyHome, *, compare: bool = True) -> PeopleNow:
     if check.broken_entry is not None:
         raise LedgerBroken(str(home.ledger), check.broken_entry, check.reason)
     if compare:
-        _compare_register(home, then)
+        _compare_register(home, then if kept else people)
     return PeopleNow(people, check.count, check.head)
 
 
