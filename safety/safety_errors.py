@@ -81,7 +81,7 @@ class SignerRefused(SafetyError):
         self.name = name
         self.what = what
         super().__init__(
-            f"signer '{name}': {what}; nothing was signed or entered\n  {remedy}"
+            f"signer {name!r}: {what}; nothing was signed or entered\n  {remedy}"
         )
 
 
