@@ -1,7 +1,7 @@
 """Job -> the steps of a sweep, in the order in which they are taken (pure).
 
-Mounts come outermost (a person re-seats the part between them), then lasers, then
-angles. Every step carries the bench time at which the plan places it, so that a
+Mounts come outermost (a person re-seats the part between them), then repeats with a
+shifted grid, then lasers, then angles. Every step carries the bench time at which the plan places it, so that a
 twin's slow processes depend on the plan and not on interruptions.
 """
 
@@ -41,6 +41,7 @@ class Step:
     dark_due: bool
     planned_s: float
     first_frame: int
+    repeat: int = 0
 
 
 @dataclass(frozen=True)
@@ -68,39 +69,41 @@ def plan_sweep(job: Job, fingerprint: str) -> SweepPlan:
     lasers, when a step lies outside the stage's travel, or when the zero order is
     nowhere predicted well on the screen and off the hole.
     """
-    grid_deg = incidence_grid_deg(job.recipe)
+    recipe = job.recipe
+    grid_deg = incidence_grid_deg(recipe)
     refuse_without_orders(job, grid_deg)
     check_deg = _zero_check_or_refuse(job, grid_deg)
     rows = [
-        (mount, laser, incidence)
-        for mount in range(len(job.recipe.mounts_deg))
-        for laser in job.recipe.lasers
+        (mount, repeat, laser, incidence)
+        for mount in range(len(recipe.mounts_deg))
+        for repeat in range(recipe.repeats)
+        for laser in recipe.lasers
         for incidence in ordered(
-            grid_deg, job.recipe.angle_order, f"{fingerprint}/{mount}/{laser}"
+            incidence_grid_deg(recipe, repeat),
+            recipe.angle_order,
+            f"{fingerprint}/{mount}/{laser}" + (f"/{repeat}" if repeat else ""),
         )
     ]
     steps: list[Step] = []
     clock_s, frame, since_dark = 0.0, 0, 0
     previous: Step | None = None
-    for number, (mount, laser, incidence) in enumerate(rows):
-        new_group = previous is None or (previous.mount, previous.laser) != (
-            mount,
-            laser,
-        )
-        dark_due = new_group or since_dark >= job.recipe.dark_every_steps
+    for number, (mount, repeat, laser, incidence) in enumerate(rows):
+        new_group = previous is None or group_of(previous) != (mount, repeat, laser)
+        dark_due = new_group or since_dark >= recipe.dark_every_steps
         since_dark = 1 if dark_due else since_dark + 1
         step = Step(
             step=number,
             kind="step",
             mount=mount,
-            mount_deg=job.recipe.mounts_deg[mount],
+            mount_deg=recipe.mounts_deg[mount],
             laser=laser,
             incidence_deg=incidence,
             stage_deg=reachable_stage_deg(job, mount, incidence),
-            exposures_ms=job.recipe.exposures_ms,
+            exposures_ms=recipe.exposures_ms,
             dark_due=dark_due,
             planned_s=clock_s,
             first_frame=frame,
+            repeat=repeat,
         )
         steps.append(step)
         clock_s += step_duration_s(job.bench, step, previous)
@@ -110,12 +113,21 @@ def plan_sweep(job: Job, fingerprint: str) -> SweepPlan:
     return SweepPlan(job.job, tuple(steps), checks, clock_s, frame)
 
 
-def incidence_grid_deg(recipe: Recipe) -> tuple[float, ...]:
-    """Incidences from start to stop (stop included if a whole step reaches it)."""
-    span = recipe.stop_deg - recipe.start_deg
+def group_of(step: Step) -> tuple[int, int, str]:
+    """What a step shares with its neighbours: mount, repeat, laser."""
+    return step.mount, step.repeat, step.laser
+
+
+def incidence_grid_deg(recipe: Recipe, repeat: int = 0) -> tuple[float, ...]:
+    """Incidences from start to stop (stop included if a whole step reaches it).
+
+    The grid of a later ``repeat`` begins so many shifts higher.
+    """
+    start_deg = recipe.start_deg + repeat * recipe.repeat_shift_deg
+    span = recipe.stop_deg - start_deg
     count = int(np.floor(span / recipe.step_deg + 1e-9)) + 1
     return tuple(
-        round(recipe.start_deg + index * recipe.step_deg, 9) for index in range(count)
+        round(start_deg + index * recipe.step_deg, 9) for index in range(count)
     )
 
 

@@ -9,6 +9,7 @@ from typing import Annotated, Literal, Self
 from pydantic import Field, field_validator, model_validator
 
 from pitchsweep.configs.enclosure_model import Enclosure
+from pitchsweep.configs.sensor_model import AirSensor, PowerSensor
 from pitchsweep.configs.settings_base import (
     AngleDeg,
     Fraction,
@@ -208,6 +209,8 @@ class Bench(Settings):
     camera: Camera
     lasers: Annotated[dict[Name, Laser], Field(min_length=1, max_length=8)]
     air: Air = Air()
+    air_sensor: AirSensor | None = None
+    power_sensor: PowerSensor | None = None
     drift: Drift = Drift()
     emission: Emission = Emission()
     enclosure: Enclosure | None = None

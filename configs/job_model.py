@@ -7,17 +7,19 @@ from pydantic import model_validator
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 from pitchsweep.configs.recipe_model import Recipe
+from pitchsweep.configs.schedule_model import Schedule
 from pitchsweep.configs.settings_base import Name, Settings, Text
 
 
 class JobFile(Settings):
-    """What a job file says: three file names, resolved against the job file itself."""
+    """What a job file says: three file names beside it, and when it is to run."""
 
     job: Name
     note: Text | None = None
     bench: Text
     part: Text
     recipe: Text
+    schedule: Schedule = Schedule()
 
 
 class Job(Settings):
@@ -28,6 +30,7 @@ class Job(Settings):
     bench: Bench
     part: Part
     recipe: Recipe
+    schedule: Schedule = Schedule()
 
     @model_validator(mode="after")
     def _recipe_fits_bench(self) -> Self:

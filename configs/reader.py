@@ -87,7 +87,11 @@ def read_job(place: Place) -> LoadedJob:
         "part": read_settings(found["part"], Part),
         "recipe": read_settings(found["recipe"], Recipe),
     }
-    head: dict[str, Any] = {"job": named.job, "note": named.note}
+    head: dict[str, Any] = {
+        "job": named.job,
+        "note": named.note,
+        "schedule": named.schedule,
+    }
     job = _validated(document, {**head, **blocks}, Job)
     return LoadedJob(job, str(place), {"job": path, **found})
 

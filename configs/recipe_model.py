@@ -4,6 +4,7 @@ from typing import Annotated, Literal, Self
 
 from pydantic import Field, model_validator
 
+from pitchsweep.configs.fault_policies import FaultPolicies
 from pitchsweep.configs.settings_base import AngleDeg, Name, Settings, Text
 
 ExposureMs = Annotated[float, Field(gt=0.0, le=60000.0)]
@@ -13,7 +14,10 @@ class Recipe(Settings):
     """A sweep of incidence from ``start_deg`` to ``stop_deg``, relative to each mount.
 
     The stage goes to ``mount_deg + direction * incidence``. ``angle_order`` is the
-    order of the steps in time; every angle is approached from the same side.
+    order of the steps in time; every angle is approached from the same side. Repeat r
+    shifts the whole grid by r * ``repeat_shift_deg``: by a spot width or more, so that
+    the speckle is another. Between mounts the sweep waits, dark, until a person has
+    seated the part anew and said so.
     """
 
     recipe: Name
@@ -25,11 +29,14 @@ class Recipe(Settings):
     start_deg: Annotated[float, Field(ge=-89.0, le=89.0)]
     stop_deg: Annotated[float, Field(ge=-89.0, le=89.0)]
     step_deg: Annotated[float, Field(ge=0.01, le=45.0)]
+    repeats: Annotated[int, Field(ge=1, le=50)] = 1
+    repeat_shift_deg: Annotated[float, Field(ge=0.0, le=5.0)] = 0.2
     angle_order: Literal["up-down", "shuffled", "up"] = "up-down"
     record: Literal["frames", "spots"] = "frames"
     exposures_ms: Annotated[tuple[ExposureMs, ...], Field(min_length=1, max_length=6)]
     dark_every_steps: Annotated[int, Field(ge=1, le=1000)] = 10
     coverage: Annotated[float, Field(ge=0.5, le=0.9999)] = 0.95
+    faults: FaultPolicies = FaultPolicies()
 
     @model_validator(mode="after")
     def _angles_run_upwards(self) -> Self:
@@ -41,4 +48,9 @@ class Recipe(Settings):
             raise ValueError("lasers must differ from each other")
         if len({m % 360.0 for m in self.mounts_deg}) != len(self.mounts_deg):
             raise ValueError("mounts_deg must differ from each other")
+        if (self.repeats - 1) * self.repeat_shift_deg >= self.step_deg:
+            raise ValueError(
+                "repeats shifted by repeat_shift_deg must stay within one step_deg: "
+                "lower repeats or repeat_shift_deg"
+            )
         return self

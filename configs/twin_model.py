@@ -9,6 +9,7 @@ from typing import Annotated, Literal
 from pydantic import Field
 
 from pitchsweep.configs.settings_base import Fraction, NonNegative, Settings
+from pitchsweep.configs.twin_faults import TwinFault
 
 Seed = Annotated[int, Field(ge=0, le=2**63 - 1)]
 Arcsec = Annotated[float, Field(ge=0.0, le=3600.0)]
@@ -35,6 +36,13 @@ class TwinEffects(Settings):
     camera_scale_ppm_per_h: Annotated[float, Field(ge=-1e5, le=1e5)] = 0.0
     pointing_urad_per_h: Annotated[float, Field(ge=-1e5, le=1e5)] = 0.0
     wavelength_drift_pm_per_h: Annotated[float, Field(ge=-1e5, le=1e5)] = 0.0
+    air_drift_K_per_h: Annotated[float, Field(ge=-10.0, le=10.0)] = 0.0
+    pressure_drift_hPa_per_h: Annotated[float, Field(ge=-20.0, le=20.0)] = 0.0
+    part_warm_K: Annotated[float, Field(ge=-20.0, le=20.0)] = 0.0
+    part_settle_h: Annotated[float, Field(gt=0.0, le=24.0)] = 0.5
+    laser_power_percent_per_h: Annotated[float, Field(ge=-50.0, le=50.0)] = 0.0
+    feedback_percent: Annotated[float, Field(ge=-90.0, le=100.0)] = 0.0
+    mode_hop_pm: Annotated[float, Field(ge=-1000.0, le=1000.0)] = 100.0
     part_radius_m: Annotated[float, Field(ge=0.0, le=1e6)] = 0.0
     cover_thickness_mm: Annotated[float, Field(ge=0.0, le=10.0)] = 0.0
     cover_index: Annotated[float, Field(ge=1.0, le=3.0)] = 1.55
@@ -53,11 +61,18 @@ class TwinEffects(Settings):
 
 
 class TwinSettings(Settings):
-    """How the twin runs: its seed, its clock, the size of every effect."""
+    """How the twin runs: its seed, its clock, the size of every effect, its faults.
+
+    ``person_min`` is the bench time that its person takes for what is asked of them.
+    ``prepared`` frames reuse noise made beforehand, for timing alone.
+    """
 
     seed: Seed = 0
     speed: Literal["rehearsal", "real"] = "rehearsal"
     pitch_off_percent: Annotated[float, Field(ge=0.0, le=20.0)] = 1.0
     spot_reading_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1
+    person_min: Annotated[float, Field(ge=0.0, le=600.0)] = 3.0
+    frames: Literal["rendered", "prepared"] = "rendered"
     light_e_per_ms_per_mw: Annotated[float, Field(gt=0.0, le=1e9)] = 6e4
     effects: TwinEffects = TwinEffects()
+    faults: Annotated[tuple[TwinFault, ...], Field(max_length=100)] = ()

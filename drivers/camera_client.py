@@ -9,37 +9,82 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.drivers.devices import Label
-from pitchsweep.drivers.driver_errors import AnsweredNonsense, LineBroke
+from pitchsweep.drivers.driver_errors import (
+    AnsweredNonsense,
+    DeviceRefused,
+    LineBroke,
+    NoAnswerInTime,
+)
 from pitchsweep.drivers.twin_link import ANSWER_TIMEOUT_S, TwinAddress, TwinLink
+
+MOST_INDICES = 10
+GONE = "no camera"
 
 
 class TwinCameraClient:
-    """A Camera. An exposure takes bench time; its frame is checked and removed."""
+    """A Camera. An exposure takes bench time; its frame is checked and removed.
+
+    A camera that is gone is looked for under the next indices at the next exposure.
+    """
 
     def __init__(self, address: TwinAddress) -> None:
         self._link = TwinLink(address)
+        self._index: int | None = 0
 
     def identify(self) -> dict[str, Any]:
         """``camera``, ``width_px``, ``height_px``, ``bits`` as the camera states."""
-        return dict(self._link.ask("camera"))
+        if self._index is None:
+            self._find()
+        return dict(self._link.ask("camera", index=self._index))
 
     def expose(self, exposure_ms: float, label: Label) -> NDArray[np.uint16]:
         """The frame (rows, columns) exposed from now on, after readout.
 
-        Raises DeviceRefused, LineBroke, NoAnswerInTime, or AnsweredNonsense where the
-        frame's file is not what the camera announced.
+        Raises DeviceRefused (also ``stale``: begun before it was asked for), LineBroke
+        when the camera is gone, NoAnswerInTime when no frame comes, AnsweredNonsense
+        where the frame's file is not what the camera announced.
         """
+        if self._index is None:
+            self._find()
         timeout_s = exposure_ms * 1e-3 + ANSWER_TIMEOUT_S
-        said = self._link.ask(
-            "expose", exposure_ms=exposure_ms, label=asdict(label), timeout_s=timeout_s
-        )
-        return _take_frame(
+        asked_s = float(self._link.ask("now"))
+        try:
+            said = self._link.ask(
+                "expose",
+                exposure_ms=exposure_ms,
+                label=asdict(label),
+                index=self._index,
+                timeout_s=timeout_s,
+            )
+        except DeviceRefused as error:
+            if GONE not in error.detail:
+                raise DeviceRefused("camera", "declined", error.detail) from None
+            self._index = None
+            raise LineBroke("camera", "exposing", "it is gone") from None
+        if not said["file"]:
+            raise NoAnswerInTime("camera", "expose", timeout_s)
+        frame = _take_frame(
             Path(said["file"]), (said["rows"], said["columns"]), said["crc32"]
         )
+        if said["began_s"] < asked_s:
+            late_s = asked_s - said["began_s"]
+            detail = f"the frame was begun {late_s:.3f} s before it was asked for"
+            raise DeviceRefused("camera", "stale", detail)
+        return frame
 
     def close(self) -> None:
         """Closes the connection; the camera goes on."""
         self._link.close()
+
+    def _find(self) -> None:
+        for index in range(MOST_INDICES):
+            try:
+                self._link.ask("camera", index=index)
+            except DeviceRefused:
+                continue
+            self._index = index
+            return
+        raise LineBroke("camera", "looking for it", "no camera at any index")
 
 
 def _take_frame(path: Path, shape: tuple[int, int], crc32: int) -> NDArray[np.uint16]:

@@ -58,6 +58,14 @@ class AirReading:
     part_temperature_C: float
 
 
+@dataclass(frozen=True)
+class BenchReading:
+    """What the sensors beside the part say at a step; None where there is none."""
+
+    air: AirReading | None = None
+    power_mw: float | None = None
+
+
 class BenchClock(Protocol):
     """Bench time: motion, settling, exposure. Never used for safety."""
 

@@ -11,7 +11,17 @@ DriverError
 from typing import Literal
 
 RefusalReason = Literal[
-    "declined", "not-homed", "stalled", "still-turning", "wrong-place", "wrong-device"
+    "declined",
+    "not-homed",
+    "stalled",
+    "still-turning",
+    "wrong-place",
+    "wrong-device",
+    "stale",
+    "identical",
+    "wrong-frame",
+    "black",
+    "white",
 ]
 
 

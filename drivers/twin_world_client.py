@@ -2,7 +2,7 @@
 
 from dataclasses import asdict
 
-from pitchsweep.drivers.devices import AirReading, Label, SpotReading
+from pitchsweep.drivers.devices import AirReading, BenchReading, Label, SpotReading
 from pitchsweep.drivers.twin_link import ANSWER_TIMEOUT_S, TwinAddress, TwinLink
 
 
@@ -32,6 +32,18 @@ class TwinWorldClient:
     def read_air(self) -> AirReading:
         """Air and part temperature now."""
         return AirReading(**self._link.ask("air"))
+
+    def sense(self, laser: str, planned_s: float) -> BenchReading:
+        """Every sensor now; ``air`` is None when that sensor is missing."""
+        said = self._link.ask("sense", laser=laser, planned_s=planned_s)
+        air = said["air"]
+        return BenchReading(
+            air=None if air is None else AirReading(**air), power_mw=said["power_mw"]
+        )
+
+    def ask_person(self, what: str) -> str:
+        """The person on the spot does what they are asked; who it was."""
+        return str(self._link.ask("person", what=what))
 
     def set_door(self, *, closed: bool, channel: int | None = None) -> None:
         """The person on the spot closes or opens the door (or one contact of it)."""

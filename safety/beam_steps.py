@@ -45,10 +45,16 @@ def lit_angles(job: Job) -> tuple[LitAngle, ...]:
 
 
 def grid_deg(recipe: Recipe) -> tuple[float, ...]:
-    """The incidences of a recipe, rising, the stop included if a step reaches it."""
-    span = (recipe.stop_deg - recipe.start_deg) / recipe.step_deg
-    count = int(np.floor(span + 1e-9)) + 1
-    return tuple(recipe.start_deg + i * recipe.step_deg for i in range(count))
+    """The incidences of a recipe, rising, the stop included if a step reaches it.
+
+    Those of its shifted repeats stand among them.
+    """
+    angles: set[float] = set()
+    for repeat in range(recipe.repeats):
+        start = recipe.start_deg + repeat * recipe.repeat_shift_deg
+        count = int(np.floor((recipe.stop_deg - start) / recipe.step_deg + 1e-9)) + 1
+        angles |= {start + i * recipe.step_deg for i in range(count)}
+    return tuple(sorted(angles))
 
 
 def steps_text(steps_deg: Sequence[float], step_deg: float) -> str:

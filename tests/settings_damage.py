@@ -71,7 +71,8 @@ def damages(field: Field) -> st.SearchStrategy[Any]:
     if "properties" in schema:
         bad.append(st.just({NEW_KEY: 1}))
     if schema.get("type") == "array":
-        bad.append(st.just(()))
+        if schema.get("minItems"):
+            bad.append(st.just(()))
         bad.append(st.just(({"a": 1},) * 3))
         bad.append(st.just((True,) * 9))
     if schema.get("type") == "string":

@@ -11,13 +11,25 @@ from numpy.typing import NDArray
 
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.drivers.devices import Label
+from pitchsweep.drivers.twin.air import air_index
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
-from pitchsweep.drivers.twin.truth import Truth, twin_settings
+from pitchsweep.drivers.twin.truth import AirTruth, Truth, twin_settings
 
 FloatArray = NDArray[np.float64]
 ARCSEC_DEG = 1.0 / 3600.0
 ARCSEC_RAD = float(np.radians(ARCSEC_DEG))
 S_PER_H = 3600.0
+
+
+@dataclass(frozen=True)
+class LaserState:
+    """What faults did to the laser: wavelength shift, power as a share of nominal."""
+
+    shift_pm: float = 0.0
+    power: float = 1.0
+
+
+NO_FAULT = LaserState()
 
 
 @dataclass(frozen=True)
@@ -37,10 +49,16 @@ class Steps:
     stage_deg: FloatArray
     planned_s: FloatArray
     from_above: bool = False
+    laser_state: LaserState = LaserState()
 
 
 def single_step(
-    label: Label, *, stage_deg: float, mount_deg: float, from_above: bool = False
+    label: Label,
+    *,
+    stage_deg: float,
+    mount_deg: float,
+    from_above: bool = False,
+    laser_state: LaserState = NO_FAULT,
 ) -> Steps:
     """The one step that ``label`` names, at what the stage reads."""
     return Steps(
@@ -52,6 +70,7 @@ def single_step(
         stage_deg=np.array([stage_deg], dtype=np.float64),
         planned_s=np.array([label.planned_s], dtype=np.float64),
         from_above=from_above,
+        laser_state=laser_state,
     )
 
 
@@ -126,12 +145,59 @@ def beam_direction(truth: Truth, bench: Bench, planned_s: FloatArray) -> FloatAr
     return np.asarray(vectors)
 
 
+def air_at(truth: Truth, bench: Bench, planned_s: float) -> AirTruth:
+    """The air at a planned time: temperature and pressure drift."""
+    effects, hours = twin_settings(bench).effects, planned_s / S_PER_H
+    air = truth.air
+    return AirTruth(
+        air.temperature_C + effects.air_drift_K_per_h * hours,
+        air.pressure_hPa + effects.pressure_drift_hPa_per_h * hours,
+        air.humidity_percent,
+    )
+
+
+def part_warmer_K(bench: Bench, planned_s: FloatArray) -> FloatArray:
+    """How much warmer the part is than it will be in the end (S,)."""
+    effects = twin_settings(bench).effects
+    decay = np.exp(-planned_s / S_PER_H / effects.part_settle_h)
+    return np.asarray(effects.part_warm_K * decay)
+
+
+def grating_period_mm(truth: Truth, bench: Bench, planned_s: FloatArray) -> FloatArray:
+    """The pitch at the part's temperature of each planned time, mm (S,)."""
+    warmer = part_warmer_K(bench, planned_s)
+    return truth.grating_period_mm() + truth.pitch_nm * 1e-6 * (
+        truth.expansion_per_K * warmer
+    )
+
+
 def air_wavelength_mm(
-    truth: Truth, bench: Bench, laser: str, planned_s: FloatArray
+    truth: Truth, bench: Bench, laser: str, planned_s: FloatArray, shift_pm: float = 0.0
 ) -> FloatArray:
     """Wavelength in the true air at each planned time, mm (S,)."""
     effects = twin_settings(bench).effects
+    vacuum = truth.vacuum_wavelength_nm[laser]
     at_start = truth.air_wavelength_mm(laser)
     rate = effects.wavelength_drift_pm_per_h * truth.phases.wavelength_sign
-    relative = 1e-3 * rate * planned_s / S_PER_H / truth.vacuum_wavelength_nm[laser]
+    relative = 1e-3 * (rate * planned_s / S_PER_H + shift_pm) / vacuum
+    if effects.air_drift_K_per_h or effects.pressure_drift_hPa_per_h:
+        relative = relative + _index_change(truth, bench, vacuum, planned_s)
     return np.asarray(at_start * (1.0 + relative))
+
+
+def _index_change(
+    truth: Truth, bench: Bench, vacuum_nm: float, planned_s: FloatArray
+) -> FloatArray:
+    """Relative change of the wavelength by the drift of the air (S,)."""
+
+    def index(seconds: float) -> float:
+        air = air_at(truth, bench, seconds)
+        return air_index(
+            vacuum_nm,
+            temperature_c=air.temperature_C,
+            pressure_hpa=air.pressure_hPa,
+            humidity_percent=air.humidity_percent,
+        )
+
+    first = index(0.0)
+    return np.array([first / index(float(s)) - 1.0 for s in planned_s])

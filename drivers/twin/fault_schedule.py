@@ -5,19 +5,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import asdict, dataclass
 from typing import Any
 
-ACTIONS_AT: dict[str, tuple[str, ...]] = {
-    "stage-ask": ("silent", "garbage", "late"),
-    "stage-move": ("stall", "wrong-place", "zero-lost"),
-    "unit-ask": ("silent", "garbage", "late"),
-    "unit-keep": (
-        "silent",
-        "light-stuck",
-        "shutter-stuck",
-        "door-opens",
-        "one-channel-opens",
-    ),
-    "exposure": ("refused",),
-}
+from pitchsweep.configs.twin_faults import ACTIONS_AT, TwinFault
 
 
 @dataclass(frozen=True)
@@ -51,10 +39,23 @@ class FaultSchedule:
         self._faults = tuple(faults)
         self._seen: Counter[str] = Counter()
 
+    def seen(self) -> dict[str, int]:
+        """How often each occasion came so far, for ``go_on_from``."""
+        return dict(self._seen)
+
+    def go_on_from(self, seen: Mapping[str, int]) -> None:
+        """Counts on from what an earlier process of the same twin has seen."""
+        self._seen.update(seen)
+
     @classmethod
     def from_json(cls, rows: Iterable[Mapping[str, Any]]) -> "FaultSchedule":
         """The schedule of rows made by ``Fault.to_json``."""
         return cls(Fault(**row) for row in rows)
+
+    def and_also(self, faults: Iterable[TwinFault]) -> "FaultSchedule":
+        """This schedule with the faults that a bench file declares after its own."""
+        declared = (Fault(**fault.model_dump()) for fault in faults)
+        return FaultSchedule((*self._faults, *declared))
 
     def due(self, at: str) -> Fault | None:
         """The fault for this occasion of ``at``, which is hereby counted."""

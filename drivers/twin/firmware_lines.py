@@ -65,6 +65,8 @@ def _disturbed(fault: Fault | None, line: bytes) -> Reply | None:
         return Reply(line)
     if fault.does == "silent":
         return None
+    if fault.does == "declined":
+        return Reply(line.split(b" ", 1)[0] + b" DECLINED STALLED\n")
     if fault.does == "garbage":
         return Reply(bytes(byte ^ 0x95 for byte in line[:-1]) + b"\n")
     return Reply(line, fault.late_s)

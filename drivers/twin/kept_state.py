@@ -2,7 +2,7 @@
 
 import json
 import os
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 
 from pitchsweep.drivers.twin.stage_mechanics import Rest, rest_from_json, rest_to_json
@@ -10,10 +10,16 @@ from pitchsweep.drivers.twin.stage_mechanics import Rest, rest_from_json, rest_t
 
 @dataclass(frozen=True)
 class KeptState:
-    """The stage as it stood, and the bench time."""
+    """The stage as it stood, the bench time, and what faults have done so far.
+
+    ``seen`` counts the occasions of the fault schedule.
+    """
 
     stage: Rest
     bench_s: float
+    seen: dict[str, int] = field(default_factory=dict)
+    laser_shift_pm: float = 0.0
+    laser_power: float = 1.0
 
 
 def read_state(path: Path) -> KeptState | None:
@@ -21,12 +27,12 @@ def read_state(path: Path) -> KeptState | None:
     if not path.exists():
         return None
     values = json.loads(path.read_text(encoding="utf-8"))
-    return KeptState(rest_from_json(values["stage"]), float(values["bench_s"]))
+    return KeptState(**{**values, "stage": rest_from_json(values["stage"])})
 
 
 def write_state(path: Path, state: KeptState) -> None:
     """Replaces ``path`` durably: whole old or whole new, whatever happens."""
-    values = {"stage": rest_to_json(state.stage), "bench_s": state.bench_s}
+    values = {**vars(state), "stage": rest_to_json(state.stage)}
     text = json.dumps(values, indent=1) + "\n"
     write_durably(path, text.encode("utf-8"))
 

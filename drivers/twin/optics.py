@@ -14,6 +14,7 @@ from pitchsweep.drivers.twin.effects import (
     Steps,
     air_wavelength_mm,
     beam_direction,
+    grating_period_mm,
     incidence_rad,
     wobble_rad,
 )
@@ -144,8 +145,11 @@ def _trace(truth: Truth, bench: Bench, steps: Steps, beam: _Beam) -> Landing:
     pose = _pose_of(truth, bench, steps)
     point, normal, grating = (a[:, None, :] for a in _surface_at(pose, beam))
     incoming = beam.direction[:, None, :]
-    wavelength = air_wavelength_mm(truth, bench, steps.laser, steps.planned_s)
-    ratio = order[None, :] * (wavelength / truth.grating_period_mm())[:, None]
+    wavelength = air_wavelength_mm(
+        truth, bench, steps.laser, steps.planned_s, steps.laser_state.shift_pm
+    )
+    period = grating_period_mm(truth, bench, steps.planned_s)
+    ratio = order[None, :] * (wavelength / period)[:, None]
     leaving, leaves = diffract(incoming, normal, grating, ratio[..., None])
     if pose.cover_mm > 0.0:
         inward = sideways_in_cover(incoming, normal, pose.cover_index)
@@ -163,4 +167,5 @@ def _trace(truth: Truth, bench: Bench, steps: Steps, beam: _Beam) -> Landing:
     lit = dot(incoming, normal)[..., 0] < -_GRAZING
     seen = leaves & there & lit & within_map(bench, place) & (share > FAINTEST)
     planned = np.broadcast_to(steps.planned_s[:, None], place.shape[:-1])
+    share = share * steps.laser_state.power
     return Landing(order, reported(truth, bench, place, planned), share, seen)

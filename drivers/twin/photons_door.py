@@ -12,7 +12,13 @@ from numpy.typing import NDArray
 from pitchsweep.configs.bench_model import Bench, Camera, Screen
 from pitchsweep.drivers.devices import Label
 from pitchsweep.drivers.twin.camera_noise import digitise
-from pitchsweep.drivers.twin.effects import Steps, ghost_shift_mm, single_step
+from pitchsweep.drivers.twin.effects import (
+    NO_FAULT,
+    LaserState,
+    Steps,
+    ghost_shift_mm,
+    single_step,
+)
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
 from pitchsweep.drivers.twin.light_patches import Blob, add_blob
 from pitchsweep.drivers.twin.optics import trace_bundle
@@ -34,6 +40,7 @@ def render(
     exposure_ms: float,
     light_on: bool,
     from_above: bool = False,
+    laser_state: LaserState = NO_FAULT,
     motion_deg: float = 0.0,
 ) -> NDArray[np.uint16]:
     """A frame (height_px, width_px) in digital numbers.
@@ -43,7 +50,11 @@ def render(
     the part.
     """
     steps = single_step(
-        label, stage_deg=stage_deg, mount_deg=mount_deg, from_above=from_above
+        label,
+        stage_deg=stage_deg,
+        mount_deg=mount_deg,
+        from_above=from_above,
+        laser_state=laser_state,
     )
     electrons = expected_electrons(
         truth,

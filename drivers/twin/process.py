@@ -30,7 +30,7 @@ from pitchsweep.drivers.twin.pty_port import PtyPort
 from pitchsweep.drivers.twin.relay import TimeOutRelay
 from pitchsweep.drivers.twin.relay_port import RelayPort
 from pitchsweep.drivers.twin.stage_firmware import StageFirmware
-from pitchsweep.drivers.twin.truth import draw_truth
+from pitchsweep.drivers.twin.truth import draw_truth, twin_settings
 from pitchsweep.drivers.twin.unit_firmware import RelayBoxFirmware, UnitFirmware
 from pitchsweep.drivers.twin.unit_log import UnitLog
 from pitchsweep.drivers.twin.world import World
@@ -98,7 +98,8 @@ def _run(configuration: TwinConfiguration, asked_to_end: threading.Event) -> Non
     truth = draw_truth(bench, configuration.part, configuration.seed)
     truth_text = json.dumps(truth.to_json(), indent=1) + "\n"
     write_durably(directory / "twin_truth.json", truth_text.encode("utf-8"))
-    faults = configuration.faults
+    settings = twin_settings(bench)
+    faults = configuration.faults.and_also(settings.faults)
     world = World(
         truth, bench, unit, faults=faults, state_path=directory / "state.json"
     )

@@ -12,7 +12,13 @@ from numpy.typing import NDArray
 
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.drivers.devices import Label, SpotReading
-from pitchsweep.drivers.twin.effects import Steps, ghost_shift_mm, single_step
+from pitchsweep.drivers.twin.effects import (
+    NO_FAULT,
+    LaserState,
+    Steps,
+    ghost_shift_mm,
+    single_step,
+)
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
 from pitchsweep.drivers.twin.optics import Landing, trace_orders
 from pitchsweep.drivers.twin.rays import BoolArray, FloatArray
@@ -54,13 +60,18 @@ def spots(
     stage_deg: float,
     mount_deg: float,
     from_above: bool = False,
+    laser_state: LaserState = NO_FAULT,
 ) -> list[SpotReading]:
     """The spots of one step, from left to right, in nominal screen millimetres.
 
     ``stage_deg`` is what the stage reads, ``mount_deg`` how the part is seated.
     """
     steps = single_step(
-        label, stage_deg=stage_deg, mount_deg=mount_deg, from_above=from_above
+        label,
+        stage_deg=stage_deg,
+        mount_deg=mount_deg,
+        from_above=from_above,
+        laser_state=laser_state,
     )
     sweep = sweep_spots(truth, bench, steps, exposure=label.exposure)
     columns = (sweep.x_mm, sweep.y_mm, sweep.ux_mm, sweep.uy_mm, sweep.brightness)

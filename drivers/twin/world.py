@@ -5,15 +5,15 @@ bench, the label and what is here; nothing from job, recipe or controller.
 """
 
 import threading
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
-import numpy as np
-from numpy.typing import NDArray
-
 from pitchsweep.configs.bench_model import Bench
-from pitchsweep.drivers.devices import AirReading, Label, SpotReading
+from pitchsweep.drivers.devices import AirReading, BenchReading, Label, SpotReading
+from pitchsweep.drivers.twin.bench_sensors import read_air, read_power_mw
 from pitchsweep.drivers.twin.bench_time import BenchTime
+from pitchsweep.drivers.twin.camera_faults import CameraFaults, Exposed, NoFrame
+from pitchsweep.drivers.twin.effects import LaserState
 from pitchsweep.drivers.twin.emission_unit import EmissionUnit
 from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
 from pitchsweep.drivers.twin.kept_state import KeptState, read_state, write_state
@@ -25,6 +25,10 @@ from pitchsweep.drivers.twin.truth import Truth, twin_settings
 
 STALL_SHARE = 0.4
 ASTRAY_DEG = 0.3
+POWER_AFTER_DROP = 0.7
+PERSON = "twin-person"
+STRAY = SpotReading(x_mm=77.0, y_mm=44.0, ux_mm=0.1, uy_mm=0.1, brightness=0.02)
+"""A reflection that is no order of the part."""
 
 
 @dataclass(frozen=True)
@@ -61,6 +65,10 @@ class World:
         )
         self._saved = kept.stage
         self._seat = Seat(0, 0.0)
+        self._laser = LaserState(kept.laser_shift_pm, kept.laser_power)
+        self._out = False
+        self._camera_faults = CameraFaults(bench.camera)
+        faults.go_on_from(kept.seen)
 
     # The stage, as its firmware sees it. Angles are readings.
 
@@ -131,14 +139,31 @@ class World:
             self._save_at_rest(self.time.now_s())
 
     def read_air(self) -> AirReading:
-        """The true air; the twin's sensor has no error of its own."""
-        air = self.truth.air
-        return AirReading(
-            temperature_C=air.temperature_C,
-            pressure_hPa=air.pressure_hPa,
-            humidity_percent=air.humidity_percent,
-            part_temperature_C=self.truth.part_temperature_C,
-        )
+        """The air now, as the sensor says it."""
+        return read_air(self.truth, self.bench, self.time.now_s())
+
+    def sense(self, laser: str, planned_s: float) -> BenchReading:
+        """Every sensor at a step's planned time; the power only while lit."""
+        fault = self._faults.due("sensors")
+        with self._lock:
+            stage_deg, seat = self._stage.table_deg(self.time.now_s()), self._seat
+            label = Label(seat.mount, laser, 0, 0, 0, planned_s)
+            power_mw = read_power_mw(
+                self.truth,
+                self.bench,
+                label,
+                stage_deg=stage_deg,
+                mount_deg=seat.mount_deg,
+                laser_state=self._laser,
+                lit=self.unit.is_lit() and not self._out,
+            )
+        air = None if fault else read_air(self.truth, self.bench, planned_s)
+        return BenchReading(air, power_mw)
+
+    def ask_person(self, what: str) -> str:
+        """The person does ``what``, which takes bench time; their name."""
+        self.wait(60.0 * twin_settings(self.bench).person_min)
+        return PERSON
 
     def see_spots(self, label: Label) -> list[SpotReading]:
         """Spots of this moment: none in the dark, none while the stage turns."""
@@ -147,29 +172,42 @@ class World:
             stage_deg, seat = self._stage.table_deg(now_s), self._seat
             if self._stage.turning(now_s) or not self.unit.is_lit():
                 return []
+            does = self._light_fault()
+        if does in ("dropout", "blocked"):
+            return []
         label = _seated(label, seat)
-        return spots(
-            self.truth, self.bench, label, stage_deg=stage_deg, mount_deg=seat.mount_deg
+        seen = spots(
+            self.truth,
+            self.bench,
+            label,
+            stage_deg=stage_deg,
+            mount_deg=seat.mount_deg,
+            laser_state=self._laser,
         )
+        return [*seen, STRAY] if does == "stray-spot" else seen
 
-    def expose(self, exposure_ms: float, label: Label) -> NDArray[np.uint16]:
+    def expose(self, exposure_ms: float, label: Label) -> Exposed:
         """A frame exposed from now on; bench time passes for exposure and readout.
 
         Light that is not there from the first to the last moment gives a dark frame;
-        a stage that turns meanwhile smears.
+        a stage that turns meanwhile smears. Raises ValueError where the camera
+        refuses, NoFrame where none comes.
         """
         fault = self._faults.due("exposure")
-        if fault is not None:
-            raise ValueError("the camera refuses this exposure: fault on schedule")
+        does = "" if fault is None else fault.does
+        self._camera_faults.before(does)
         with self._lock:
             seat = self._seat
             start_s = self.time.now_s()
             start_deg = self._stage.table_deg(start_s)
             end_deg = self._stage.table_deg(start_s + exposure_ms * 1e-3)
             lit = self.unit.is_lit()
+            light = self._light_fault() if lit else ""
         self.wait(exposure_ms * 1e-3 + self.bench.camera.readout_s)
-        lit = lit and self.unit.is_lit()
-        return render(
+        if does == "no-frame":
+            raise NoFrame("no frame came from the camera")
+        lit = lit and self.unit.is_lit() and light not in ("dropout", "blocked")
+        frame = render(
             self.truth,
             self.bench,
             _seated(label, seat),
@@ -178,14 +216,39 @@ class World:
             stage_deg=start_deg,
             mount_deg=seat.mount_deg,
             motion_deg=end_deg - start_deg,
+            laser_state=self._laser,
         )
+        return self._camera_faults.after(does, Exposed(frame, start_s))
+
+    def camera_index(self) -> int:
+        """Under which index the camera is found; another one after it was gone."""
+        return self._camera_faults.index
+
+    def _light_fault(self) -> str:
+        """What goes wrong with the light at this look at the screen, if anything."""
+        fault = self._faults.due("light")
+        does = "" if fault is None else fault.does
+        self._out = does == "dropout"
+        if does == "power-drop":
+            self._laser = replace(self._laser, power=POWER_AFTER_DROP)
+        if does == "mode-hop":
+            hop_pm = twin_settings(self.bench).effects.mode_hop_pm
+            self._laser = replace(self._laser, shift_pm=hop_pm)
+        return does
 
     def save(self) -> None:
         """Keeps the present state durably."""
         with self._lock:
             now_s = self.time.now_s()
             self._saved = self._stage.rest(now_s)
-            write_state(self._state_path, KeptState(self._saved, now_s))
+            state = KeptState(
+                stage=self._saved,
+                bench_s=now_s,
+                seen=self._faults.seen(),
+                laser_shift_pm=self._laser.shift_pm,
+                laser_power=self._laser.power,
+            )
+            write_state(self._state_path, state)
 
     def _save_at_rest(self, now_s: float) -> None:
         if self._stage.turning(now_s):

@@ -20,10 +20,13 @@ from typing import Any
 import numpy as np
 
 from pitchsweep.drivers.devices import Label
+from pitchsweep.drivers.twin.camera_faults import NoFrame
 from pitchsweep.drivers.twin.world import World
 
 LONGEST_LINE_BYTES = 65536
 SHARED_MEMORY = Path("/dev/shm")
+
+NO_CAMERA = "no camera"
 
 Message = dict[str, Any]
 
@@ -91,6 +94,8 @@ class WorldAsks:
             "press-reset": lambda m: world.unit.press_reset(),
             "cut-power": lambda m: world.cut_power(),
             "air": lambda m: asdict(world.read_air()),
+            "sense": self._sense,
+            "person": lambda m: world.ask_person(str(m["what"])),
             "spots": self._spots,
             "camera": self._camera,
             "expose": self._expose,
@@ -110,7 +115,18 @@ class WorldAsks:
     def _spots(self, message: Message) -> list[Message]:
         return [asdict(s) for s in self._world.see_spots(_label(message))]
 
+    def _sense(self, message: Message) -> Message:
+        return asdict(
+            self._world.sense(str(message["laser"]), float(message["planned_s"]))
+        )
+
+    def _check_index(self, message: Message) -> None:
+        index = int(message.get("index", 0))
+        if index != self._world.camera_index():
+            raise ValueError(f"{NO_CAMERA} at index {index}")
+
     def _camera(self, message: Message) -> Message:
+        self._check_index(message)
         camera = self._world.bench.camera
         return {
             "camera": "twin-camera",
@@ -120,7 +136,13 @@ class WorldAsks:
         }
 
     def _expose(self, message: Message) -> Message:
-        frame = self._world.expose(float(message["exposure_ms"]), _label(message))
+        self._check_index(message)
+        try:
+            taken = self._world.expose(float(message["exposure_ms"]), _label(message))
+        except NoFrame:
+            return {"file": ""}
+        self._check_index(message)
+        frame = taken.frame
         data = np.ascontiguousarray(frame, dtype="<u2").tobytes()
         with self._lock:
             self._frames += 1
@@ -131,6 +153,7 @@ class WorldAsks:
             "rows": int(frame.shape[0]),
             "columns": int(frame.shape[1]),
             "crc32": zlib.crc32(data),
+            "began_s": taken.began_s,
         }
 
 

@@ -27,9 +27,19 @@ WITH_PORTS = {
 
 def _whole(model: type[Settings]) -> dict[str, Any]:
     """Valid values of ``model`` with every optional block filled in."""
+    schedule = {
+        "not_before": "18:00Z",
+        "stop_by": "06:00Z",
+        "steady_K_per_h": 0.1,
+        "enough_relative_u": 1e-5,
+    }
     if model is JobFile:
-        return dict(read_document(find("demo:shims", "jobs")).value)
+        shipped = dict(read_document(find("demo:shims", "jobs")).value)
+        return {**shipped, "schedule": schedule}
     job = read_job("demo:shims").job.model_dump()
+    job["schedule"].update(schedule)
+    job["bench"]["air_sensor"] = {"name": "invented", "calibration_due": "2030-01-15"}
+    job["bench"]["power_sensor"] = {"name": "invented", "calibration_due": "2030-01-15"}
     job["part"]["certified"] = {
         "pitch_nm": 830.1,
         "u_pitch_nm": 0.1,
