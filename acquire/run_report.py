@@ -65,9 +65,11 @@ def _facts(record: RunRecord) -> tuple[Fact, ...]:
         Fact("Steps", f"{len(record.steps)} of {record.planned}"),
         Fact(
             "Recipe",
-            f"{recipe.recipe}: {recipe.start_deg:g} to {recipe.stop_deg:g} deg by "
-            f"{recipe.step_deg:g} deg, {recipe.angle_order}, "
-            f"{len(recipe.mounts_deg)} mounts, {', '.join(recipe.lasers)}",
+            f"{recipe.recipe}: {_angle(recipe.start_deg)} to"
+            f" {_angle(recipe.stop_deg)} deg by {_angle(recipe.step_deg)} deg,"
+            f" {recipe.angle_order}, mounts at"
+            f" {', '.join(map(_angle, recipe.mounts_deg))} deg,"
+            f" {', '.join(recipe.lasers)}",
         ),
         Fact(
             "Recorded",
@@ -92,6 +94,10 @@ def _permit_facts(meta: Mapping[str, str]) -> list[Fact]:
         words = f"{meta['people_ledger_entries']}, head {meta['people_ledger_head']}"
         facts.append(Fact("People's ledger entries", words))
     return facts
+
+
+def _angle(deg: float) -> str:
+    return f"{deg:g}".replace("-", "\N{MINUS SIGN}")
 
 
 def gate_shown(rows: list[GateRow]) -> tuple[GateShown, ...]:

@@ -3,7 +3,7 @@
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from pitchsweep.analysis.number_text import percent, significant
+from pitchsweep.analysis.number_text import percent, share_text
 from pitchsweep.analysis.picture_style import (
     ACCENT,
     ACCENT_SOFT,
@@ -63,7 +63,7 @@ def _draw_bar(axes: Axes, place: int, line: BudgetLine, share: float) -> None:
         linewidth=0.6,
     )
     axes.annotate(
-        f"{significant(line.u_nm)} nm, {percent(share)}, kind {line.kind}",
+        f"{share_text(line.u_nm, share)} nm, {percent(share)}, kind {line.kind}",
         (line.u_nm, place),
         xytext=(4.0, 0.0),
         textcoords="offset points",

@@ -10,6 +10,8 @@ from typing import NamedTuple
 
 PLAIN_PLACES = 9
 """Beyond this many places before or after the point a power of ten is written."""
+SMALLEST_SHARE = 1e-20
+"""A share of the variance below this is what 16-digit arithmetic leaves of none."""
 
 _EXACT = Context(prec=400, rounding=ROUND_HALF_EVEN)
 
@@ -72,6 +74,11 @@ def relative(u: float, value: float) -> str:
     if not _usable(u) or not math.isfinite(value) or value == 0.0:
         return "unknown"
     return f"{abs(u / value):.1e}"
+
+
+def share_text(u: float, share: float) -> str:
+    """``u`` to two digits; 0 where its ``share`` of the variance is rounding alone."""
+    return "0" if share < SMALLEST_SHARE else significant(u)
 
 
 def _usable(u: float) -> bool:

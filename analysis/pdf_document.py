@@ -1,7 +1,7 @@
 """Blocks -> the bytes of a PDF with page numbers and a footer."""
 
 import io
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 from reportlab.lib.colors import HexColor
 from reportlab.lib.pagesizes import A4
@@ -27,19 +27,22 @@ PAGE_NUMBER_MM = 25.0
 
 
 def document_bytes(
-    blocks: Sequence[Flowable], gallery: Gallery, *, title: str, footer: str
+    blocks: Callable[[Gallery], Sequence[Flowable]], *, title: str, footer: str
 ) -> bytes:
-    """The PDF: ``blocks`` in their order, drawings in their places, a footer.
+    """The PDF: blocks in their order, drawings in their places, a footer.
 
-    A4 upright. ``footer`` stands at the foot of every page beside "page 2 of 4".
-    Equal input gives equal bytes: no date is written.
+    A4 upright. ``blocks`` makes the blocks anew, once to count the pages and once to
+    write them; its pictures are places of the gallery it is given. ``footer`` stands
+    at the foot of every page beside "page 2 of 4". Equal input gives equal
+    bytes: no date is written.
     """
     fonts()
     pages = 0
     for _count_then_write in range(2):
         out = io.BytesIO()
         document = _Document(out, footer, pages)
-        document.build(list(blocks))
+        gallery = Gallery()
+        document.build(list(blocks(gallery)))
         pages = document.page
     return with_pictures(out.getvalue(), gallery, printable(title, 200))
 

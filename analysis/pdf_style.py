@@ -21,7 +21,7 @@ from pitchsweep.analysis.picture_style import INK, LIMIT, SOFT_INK
 
 PLAIN, BOLD = "DejaVuSans", "DejaVuSans-Bold"
 LONGEST_TEXT = 1500
-"""Longer texts are cut: a row of a table has to fit on a page."""
+"""Longer texts are cut: a box has to fit on a page."""
 CUT = "\N{HORIZONTAL ELLIPSIS}"
 
 
@@ -30,9 +30,11 @@ def style(name: str) -> ParagraphStyle:
     return _styles()[name]
 
 
-def paragraph(text: str, name: str = "body") -> Paragraph:
+def paragraph(
+    text: str, name: str = "body", *, longest: int = LONGEST_TEXT
+) -> Paragraph:
     """``text`` as it stands, in the style ``name``; no letter of it is a command."""
-    return Paragraph(escape(printable(text)), style(name))
+    return Paragraph(escape(printable(text, longest)), style(name))
 
 
 def printable(text: str, longest: int = LONGEST_TEXT) -> str:
@@ -41,14 +43,14 @@ def printable(text: str, longest: int = LONGEST_TEXT) -> str:
     A letter that the font lacks, or that is no letter (controls, turns of the
     writing direction), is shown as its number: U+90E8 as "[U+90E8]".
     """
-    line = " ".join(text.split())
-    if len(line) > longest:
-        line = line[: longest - 1] + CUT
     letters = _letters()
-    return "".join(
+    line = "".join(
         c if ord(c) in letters and unicodedata.category(c)[0] != "C" else _number_of(c)
-        for c in line
+        for c in " ".join(text[:longest].split())
     )
+    if len(line) > longest or len(text) > longest:
+        line = line[: longest - 1] + CUT
+    return line
 
 
 def fitted(text: str, *, size: float, width: float) -> str:

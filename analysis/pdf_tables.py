@@ -106,8 +106,8 @@ def boxed(rows: Sequence[Paragraph], *, dashed: bool = False) -> Table:
             ("FONTNAME", (0, 0), (-1, -1), PLAIN),
             ("BOX", (0, 0), (-1, -1), 1.0, HexColor(LIMIT), 1, *dashes),
             ("LEFTPADDING", (0, 0), (-1, -1), 8.0),
-            ("TOPPADDING", (0, 0), (-1, -1), 3.0),
-            ("BOTTOMPADDING", (0, 0), (-1, -1), 4.0),
+            ("TOPPADDING", (0, 0), (-1, -1), 2.0),
+            ("BOTTOMPADDING", (0, 0), (-1, -1), 3.0),
         ],
     )
 
@@ -117,8 +117,8 @@ _CLOSE = (
     ("VALIGN", (0, 0), (-1, -1), "TOP"),
     ("LEFTPADDING", (0, 0), (-1, -1), 0.0),
     ("RIGHTPADDING", (0, 0), (-1, -1), 6.0),
-    ("TOPPADDING", (0, 0), (-1, -1), 1.6),
-    ("BOTTOMPADDING", (0, 0), (-1, -1), 2.0),
+    ("TOPPADDING", (0, 0), (-1, -1), 1.1),
+    ("BOTTOMPADDING", (0, 0), (-1, -1), 1.5),
 )
 
 
@@ -134,19 +134,31 @@ def _after_numbers(columns: Sequence[Column]) -> list[int]:
 def _cell(text: Cell, column: Column) -> Paragraph:
     if isinstance(text, Far):
         return paragraph(text.text, "far number")
-    return paragraph(text, "number" if column.number else "cell")
+    longest = _longest(column.width_mm)
+    return paragraph(text, "number" if column.number else "cell", longest=longest)
+
+
+def _longest(width_mm: float) -> int:
+    """Most letters of a cell: a row of a table must not outgrow a page."""
+    return max(20, int(10.0 * width_mm))
 
 
 def _facts(rows: Sequence[Sequence[Fact | None]], beside: int) -> Table:
     value_mm = TEXT_WIDTH_MM / beside - LABEL_MM
     return Table(
-        [[cell for fact in row for cell in _fact_cells(fact)] for row in rows],
+        [
+            [cell for fact in row for cell in _fact_cells(fact, value_mm)]
+            for row in rows
+        ],
         colWidths=[LABEL_MM * mm, value_mm * mm] * beside,
         hAlign="LEFT",
         style=[*_CLOSE],
     )
 
 
-def _fact_cells(fact: Fact | None) -> list[Paragraph]:
+def _fact_cells(fact: Fact | None, value_mm: float) -> list[Paragraph]:
     label, text = (fact.label, fact.text) if fact else ("", "")
-    return [paragraph(label, "cell soft"), paragraph(text, "cell")]
+    return [
+        paragraph(label, "cell soft", longest=_longest(LABEL_MM)),
+        paragraph(text, "cell", longest=_longest(value_mm)),
+    ]

@@ -17,6 +17,7 @@ from pitchsweep.analysis.picture_style import (
     say_instead,
 )
 from pitchsweep.analysis.records import PitchResult, PitchSeen
+from pitchsweep.analysis.result_file import subset_text
 
 FAR = 3.0
 """A tolerance limit is drawn if it lies within this many half ranges of the rest."""
@@ -119,7 +120,7 @@ def _name_far_limit(axes: Axes, name: str, offset: float, result: PitchResult) -
 
 
 def _label(axes: Axes, seen: list[PitchSeen], result: PitchResult) -> None:
-    names = [f"{drawable(item.subset)}  ({item.spots})" for item in seen]
+    names = [f"{drawable(subset_text(item.subset))}  ({item.spots})" for item in seen]
     axes.set_yticks(range(len(seen)), names)
     axes.set_ylim(len(seen) - 0.4, -0.6)
     axes.tick_params(axis="y", length=0.0)

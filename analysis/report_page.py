@@ -49,6 +49,7 @@ from pitchsweep.analysis.track_picture import tracks_svg
 TEMPLATE = "report.html"
 REJECTED_SHOWN = 100
 
+
 @dataclass(frozen=True)
 class Picture:
     """A picture inside the page: its data address, what it shows, its caption."""

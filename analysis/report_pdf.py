@@ -51,7 +51,8 @@ from pitchsweep.analysis.track_picture import tracks_drawing
 
 GATE_SHOWN = 40
 LOWER = 0.84
-"""Graphs are this much lower than on the HTML page, so that two share a sheet."""
+"""Some graphs are this much lower than on the HTML page, so that two share a sheet."""
+LONGEST_TITLE = 200
 BOX_GROUND = "#f5f5f3"
 DECISION_COLOURS = {"conforms": ACCENT, None: SOFT_INK}
 
@@ -62,17 +63,18 @@ def report_pdf(result: PitchResult, context: ReportContext) -> bytes:
     Text stays text, fonts and pictures are inside. Of the gate's history the last
     ``GATE_SHOWN`` changes are shown, of the screen map's terms only their number.
     """
-    gallery = Gallery()
-    blocks = [
-        *_first_page(result, context),
-        *_picture_sections(result, context, gallery),
-        *_table_sections(result, context),
-    ]
+
+    def blocks(gallery: Gallery) -> list[Flowable]:
+        return [
+            *_first_page(result, context),
+            *_picture_sections(result, context, gallery),
+            *_table_sections(result, context),
+        ]
+
     name = _part_words(context.part)
     simulated = "Simulated bench: invented data. " if context.simulated else ""
     return document_bytes(
         blocks,
-        gallery,
         title=f"Groove pitch: {name}" if name else "Groove pitch",
         footer=f"{simulated}Groove pitch{f' of {name}' if name else ''}",
     )
@@ -102,7 +104,7 @@ def _identity(part: PartFacts | None) -> list[Flowable]:
         return [paragraph("Groove pitch", "title")]
     below = f"Serial {part.serial} · lot {part.lot} · side {part.side} · place"
     return [
-        paragraph(f"Groove pitch of {part.part}", "title"),
+        paragraph(f"Groove pitch of {part.part}", "title", longest=LONGEST_TITLE),
         paragraph(f"{below} {part.place}", "soft"),
     ]
 
@@ -147,10 +149,9 @@ def _picture_sections(
     result: PitchResult, context: ReportContext, gallery: Gallery
 ) -> list[Flowable]:
     def pictured(drawing: Drawing, said: str) -> list[Flowable]:
-        low = replace(drawing, height_mm=LOWER * drawing.height_mm)
-        return [gallery.place_for(low), paragraph(said, "caption")]
+        return [gallery.place_for(drawing), paragraph(said, "caption")]
 
-    tracks = pictured(tracks_drawing(result, context.screen), TRACKS_SAID)
+    tracks = pictured(_lower(tracks_drawing(result, context.screen)), TRACKS_SAID)
     residuals = pictured(residuals_drawing(result), RESIDUALS_SAID)
     blocks = [
         *_section("Tracks of all orders", tracks),
@@ -159,17 +160,21 @@ def _picture_sections(
     few = "The data are too few for a part of them to give a pitch of its own."
     seen: list[Flowable] = [paragraph(few)]
     if result.pitches_seen:
-        seen = pictured(pitches_seen_drawing(result), PITCHES_SAID)
+        seen = pictured(_lower(pitches_seen_drawing(result)), PITCHES_SAID)
     blocks += _section("Pitch seen by parts of the data", seen)
     if result.pitches_seen:
         blocks += [_gap(2), seen_table(result)]
-    budget = pictured(budget_drawing(result), BUDGET_SAID)
+    budget = pictured(_lower(budget_drawing(result)), BUDGET_SAID)
     blocks += _section("Uncertainty budget", budget)
     blocks += [_gap(2), budget_table(result)]
     if context.frames:
-        strip = gallery.place_for(frames_drawing(context.frames))
-        blocks += _section("Frames", [strip, paragraph(FRAMES_SAID, "caption")])
+        strip = pictured(frames_drawing(context.frames), FRAMES_SAID)
+        blocks += _section("Frames", strip)
     return blocks
+
+
+def _lower(drawing: Drawing) -> Drawing:
+    return replace(drawing, height_mm=LOWER * drawing.height_mm)
 
 
 def _table_sections(result: PitchResult, context: ReportContext) -> list[Flowable]:

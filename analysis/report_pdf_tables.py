@@ -66,7 +66,9 @@ def absent_words(result: PitchResult) -> str:
 
 def seen_table(result: PitchResult) -> Flowable:
     """The pitch of parts of the data."""
-    return KeepTogether([table(SEEN_COLUMNS, [_seen(r) for r in seen_rows(result)])])
+    rows = [_seen(row) for row in seen_rows(result)]
+    label = paragraph("Pitch seen by parts of the data, in figures", "label")
+    return KeepTogether([label, table(SEEN_COLUMNS, rows)])
 
 
 def budget_table(result: PitchResult) -> Flowable:
@@ -81,7 +83,8 @@ def budget_table(result: PitchResult) -> Flowable:
         ("Combined standard uncertainty u", "", u, "", ""),
         ("Expanded uncertainty U", "", expanded, "", f"k = {result.k:.2f}"),
     )
-    return KeepTogether([table(BUDGET_COLUMNS, rows, sums=sums)])
+    label = paragraph("Uncertainty budget, in figures", "label")
+    return KeepTogether([label, table(BUDGET_COLUMNS, rows, sums=sums)])
 
 
 def nuisance_table(result: PitchResult) -> list[Flowable]:

@@ -9,7 +9,7 @@ from pitchsweep.analysis.number_text import (
     plain_percent,
     relative,
     rounded,
-    significant,
+    share_text,
 )
 from pitchsweep.analysis.records import (
     Nuisance,
@@ -18,7 +18,13 @@ from pitchsweep.analysis.records import (
     RejectedSpot,
 )
 from pitchsweep.analysis.report_context import Fact, PartFacts, ReportContext
-from pitchsweep.analysis.result_file import agreement_words, order_text, used_words
+from pitchsweep.analysis.result_file import (
+    agreement_words,
+    order_text,
+    spots_words,
+    subset_text,
+    used_words,
+)
 
 FAR_IN_U = 2.0
 """A subset or a nuisance further off than this many of its own u is pointed out."""
@@ -133,7 +139,7 @@ def result_facts(result: PitchResult) -> list[Fact]:
         Fact("Stated for", f"{result.pitch_at_C:g} °C"),
         Fact("Used", used_words(result)),
         Fact("Orders", used or "none"),
-        Fact("Not used", f"{len(result.rejected)} spots"),
+        Fact("Not used", spots_words(len(result.rejected))),
         Fact("Reduced chi-squared", agreement_words(result)),
     ]
 
@@ -173,7 +179,7 @@ def budget_row(
     source: str, kind: str, u_nm: float, share: float, detail: str
 ) -> BudgetRow:
     """One line of the budget table; ``share`` is of the variance, 0 to 1."""
-    return BudgetRow(source, kind, significant(u_nm), percent(share), detail)
+    return BudgetRow(source, kind, share_text(u_nm, share), percent(share), detail)
 
 
 def _seen_row(item: PitchSeen) -> SeenRow:
@@ -181,7 +187,7 @@ def _seen_row(item: PitchSeen) -> SeenRow:
     deviation = rounded(item.deviation_nm, item.u_deviation_nm)
     ratio = _ratio(item.deviation_nm, item.u_deviation_nm)
     return SeenRow(
-        subset=item.subset,
+        subset=subset_text(item.subset),
         spots=item.spots,
         pitch=f"{pitch.value} ± {pitch.u}",
         deviation=f"{deviation.value} ± {deviation.u}",
@@ -228,4 +234,5 @@ def _ratio(value: float, u: float) -> float:
 def _ratio_text(ratio: float) -> str:
     if not np.isfinite(ratio):
         return "\N{EN DASH}"
-    return f"{ratio:+.1f}".replace("-", "\N{MINUS SIGN}")
+    text = f"{ratio:+.1f}"
+    return "0.0" if text in ("+0.0", "-0.0") else text.replace("-", "\N{MINUS SIGN}")

@@ -19,6 +19,7 @@ from pitchsweep.analysis.records import FloatArray, PitchResult
 from pitchsweep.analysis.result_file import order_text
 
 LEAST_HALF_RANGE = 3.5
+LEAST_RANGE_DEG = 1.0
 FEWEST_FOR_RMS = 5
 
 
@@ -67,6 +68,15 @@ def draw_residuals(axes: Axes, result: PitchResult, residual: FloatArray) -> Non
             linewidths=0.0,
             rasterized=len(order) > MANY_POINTS,
         )
+    _widen(axes)
+
+
+def _widen(axes: Axes) -> None:
+    """Keeps readings at one angle from an axis of rounding errors."""
+    low, high = axes.get_xlim()
+    if high - low < LEAST_RANGE_DEG:
+        middle = 0.5 * (low + high)
+        axes.set_xlim(middle - 0.5 * LEAST_RANGE_DEG, middle + 0.5 * LEAST_RANGE_DEG)
 
 
 def draw_by_order(axes: Axes, result: PitchResult, residual: FloatArray) -> None:

@@ -70,7 +70,12 @@ def result_json(result: PitchResult) -> str:
 def used_words(result: PitchResult) -> str:
     """How many spots of how many steps the fit used."""
     steps = "step" if result.steps_used == 1 else "steps"
-    return f"{result.spots_used} spots of {result.steps_used} {steps}"
+    return f"{spots_words(result.spots_used)} of {result.steps_used} {steps}"
+
+
+def spots_words(count: int) -> str:
+    """A number of spots: 1 spot, 2 spots."""
+    return f"{count} spot" if count == 1 else f"{count} spots"
 
 
 def agreement_words(result: PitchResult) -> str:
@@ -110,6 +115,11 @@ def decision_words(decision: Decision) -> str:
 def order_text(order: int) -> str:
     """An order with its sign: -1, 0, +2 (with a true minus sign)."""
     return f"{order:+d}".replace("-", "\N{MINUS SIGN}") if order else "0"
+
+
+def subset_text(subset: str) -> str:
+    """The name of a part of the data, an order in it with a true minus sign."""
+    return subset.replace("order -", "order \N{MINUS SIGN}")
 
 
 def _check_finite(result: PitchResult) -> None:
