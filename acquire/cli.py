@@ -102,11 +102,27 @@ def fit(
 
 @app.command()
 def report(
-    run: Annotated[Path, typer.Argument(help="A run folder.")], as_json: Json = False
+    run: Annotated[Path, typer.Argument(help="A run folder.")],
+    step: Annotated[
+        int | None,
+        typer.Option(min=0, help="Only draw this step: its frame and candidates."),
+    ] = None,
+    spot: Annotated[
+        int | None,
+        typer.Option(min=1, help="With --step: whose residuals are drawn."),
+    ] = None,
+    as_json: Json = False,
 ) -> None:
-    """Rebuild a run's report and the other derived files."""
+    """Rebuild a run's report and the other derived files, or draw one step."""
     from pitchsweep.acquire.run_folder import open_run_folder
 
+    if step is not None:
+        from pitchsweep.acquire.step_window import write_step_picture
+
+        print(write_step_picture(run, step, spot), flush=True)
+        return
+    if spot is not None:
+        raise typer.BadParameter("--spot belongs to --step")
     _fit_and_show([open_run_folder(run).path], run, as_json)
 
 

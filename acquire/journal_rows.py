@@ -71,6 +71,7 @@ class RejectedRow:
     unit: str
     reason: str
     detail: str
+    score: float = 0.0
 
 
 @dataclass(frozen=True)

@@ -43,7 +43,7 @@ def places_of(
 def rejected_of(found: StepSpots, step: int) -> list[RejectedSpot]:
     """The refused candidates of one step."""
     return [
-        RejectedSpot(step, r.x, r.y, r.unit, Rejection(r.reason), r.detail)
+        RejectedSpot(step, r.x, r.y, r.unit, Rejection(r.reason), r.detail, r.score)
         for r in found.rejected
     ]
 

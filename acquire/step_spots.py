@@ -40,7 +40,12 @@ def on_screen(found: SpotSearch, camera: Camera) -> StepSpots:
         spots=tuple(_row(spot, camera) for spot in found.spots),
         rejected=tuple(
             RejectedRow(
-                float(item.x), float(item.y), item.unit, item.reason.value, item.detail
+                float(item.x),
+                float(item.y),
+                item.unit,
+                item.reason.value,
+                item.detail,
+                float(item.score),
             )
             for item in found.rejected
         ),

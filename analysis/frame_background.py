@@ -28,13 +28,16 @@ def averaged_down(frame: NDArray[np.uint16], factor: int) -> Float32Array:
     # Halving twice is four times faster than one step, and as good.
     while factor % 2 == 0:
         factor //= 2
-        small = cv2.resize(
-            small, (columns * factor, rows * factor), interpolation=cv2.INTER_AREA
-        )
+        small = _mean(small, columns * factor, rows * factor)
     if factor > 1:
-        small = cv2.resize(small, (columns, rows), interpolation=cv2.INTER_AREA)
+        small = _mean(small, columns, rows)
     light = small.astype(np.float32) * np.float32(2.0**-spare)
     return np.asarray(light, dtype=np.float32)
+
+
+def _mean(words: NDArray[np.uint16], columns: int, rows: int) -> NDArray[np.uint16]:
+    out = cv2.resize(words, (columns, rows), interpolation=cv2.INTER_AREA)
+    return np.asarray(out, dtype=np.uint16)
 
 
 def background_map(small: Float32Array, *, block: int = 16) -> Float32Array:

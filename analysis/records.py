@@ -61,7 +61,10 @@ class Spot:
 
 @dataclass(frozen=True)
 class RejectedSpot:
-    """A candidate or a spot that was not used, with the reason."""
+    """A candidate or a spot that was not used, with the reason.
+
+    ``score`` is its light over noise where it was judged in a frame, else 0.
+    """
 
     step: int
     x: float
@@ -69,6 +72,7 @@ class RejectedSpot:
     unit: str
     reason: Rejection
     detail: str = ""
+    score: float = 0.0
 
 
 @dataclass(frozen=True)

@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.analysis.camera_noise import CameraNoise
-from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
+from pitchsweep.analysis.records import RejectedSpot, Spot, SpotSearch
 from pitchsweep.analysis.speckle_grain import NO_SPECKLE, TYPICAL_SPECKLE, Speckle
 from pitchsweep.analysis.speckle_measure import GrainSample, measure_speckle
 from pitchsweep.analysis.spot_candidates import (
@@ -25,7 +25,6 @@ from pitchsweep.analysis.spot_candidates import (
 from pitchsweep.analysis.spot_fit import Shape
 from pitchsweep.analysis.spot_judgement import (
     SpotLimits,
-    judged,
     light_over_noise,
 )
 from pitchsweep.analysis.spot_scene import (
@@ -33,16 +32,14 @@ from pitchsweep.analysis.spot_scene import (
     FittedCandidate,
     StepScene,
     fit_candidate,
-    lost_in_unevenness,
     refit,
     step_scene,
 )
+from pitchsweep.analysis.spot_verdicts import Look, nearer, verdicts
 from pitchsweep.analysis.spot_window import shared_rounding
 
-__all__ = ["Exposure", "SearchSettings", "find_spots"]
+__all__ = ["Exposure", "Look", "SearchSettings", "find_spots", "look"]
 
-_SKIRTS = ((5.0, 0.1), (10.0, 0.04))
-"""Within so many radii of a spot, what is fainter than this share is part of it."""
 _COARSEST_GRAIN_PX = 8.0
 
 
@@ -74,6 +71,32 @@ def find_spots(
     Raises ValueError where ``exposures`` is empty or shapes differ.
     """
     settings = settings or SearchSettings()
+    seen = look(exposures, dark, camera, speckle=speckle, settings=settings)
+    answers = verdicts(seen, step, settings.limits)
+    return SpotSearch(
+        spots=tuple(a for a in answers if isinstance(a, Spot)),
+        rejected=tuple(a for a in answers if isinstance(a, RejectedSpot)),
+        background_dn=seen.scene.smalls[0].level(),
+        noise_dn=seen.scene.noise_dn[0],
+        speckle_contrast=seen.speckle.contrast,
+        grain_fwhm_px=seen.speckle.grain_fwhm_px,
+        speckle_measured=seen.measured,
+    )
+
+
+def look(
+    exposures: Sequence[Exposure],
+    dark: NDArray[np.float32] | NDArray[np.uint16] | None,
+    camera: CameraNoise,
+    *,
+    speckle: Speckle | None = None,
+    settings: SearchSettings | None = None,
+) -> Look:
+    """What ``find_spots`` judges: every candidate with its window and fit.
+
+    Inputs and errors as there.
+    """
+    settings = settings or SearchSettings()
     scene = step_scene(exposures, dark, camera, settings.factor)
     light = light_map(scene.smalls)
     grain, measured = speckle or NO_SPECKLE, False
@@ -85,8 +108,7 @@ def find_spots(
         seen, found = _with_speckle(scene, found)
         grain = seen or TYPICAL_SPECKLE
         measured = seen is not None
-    answer = _answer(scene, _distinct(found), grain, settings.limits, step)
-    return replace(answer, speckle_measured=measured)
+    return Look(scene, tuple(_distinct(found)), grain, measured)
 
 
 def _fit_all(
@@ -215,68 +237,6 @@ def _distinct(found: Sequence[FittedCandidate]) -> list[FittedCandidate]:
     out: list[FittedCandidate] = []
     for item in ordered:
         shape = item.fit.shape
-        if not any(_nearer(k.fit.shape, shape, 2.0) for k in out):
+        if not any(nearer(k.fit.shape, shape, 2.0) for k in out):
             out.append(item)
     return out
-
-
-def _nearer(shape: Shape, other: Shape, sigmas: float) -> bool:
-    away = np.hypot(other.column_px - shape.column_px, other.row_px - shape.row_px)
-    return bool(away < sigmas * shape.widths()[0])
-
-
-def _answer(
-    scene: StepScene,
-    found: Sequence[FittedCandidate],
-    speckle: Speckle,
-    limits: SpotLimits,
-    step: int,
-) -> SpotSearch:
-    spots: list[Spot] = []
-    rejected: list[RejectedSpot] = []
-    bright: list[Shape] = []
-    for item in found:
-        answer = judged(item.window, item.fit, speckle, scene.side, limits, step)
-        shape = item.fit.shape
-        if isinstance(answer, Spot) and _in_skirt(shape, bright):
-            answer = RejectedSpot(
-                step,
-                shape.column_px,
-                shape.row_px,
-                "px",
-                Rejection.SHAPE,
-                "faint, in the skirts of a much brighter spot",
-            )
-        if isinstance(answer, Spot) and lost_in_unevenness(scene, item.fit):
-            answer = RejectedSpot(
-                step,
-                shape.column_px,
-                shape.row_px,
-                "px",
-                Rejection.TOO_FAINT,
-                "the background around it is as uneven",
-            )
-        if isinstance(answer, Spot):
-            spots.append(answer)
-        else:
-            rejected.append(answer)
-        if item.fit.converged:
-            bright.append(shape)
-    first = scene.smalls[0]
-    return SpotSearch(
-        spots=tuple(spots),
-        rejected=tuple(rejected),
-        background_dn=first.level(),
-        noise_dn=scene.noise_dn[0],
-        speckle_contrast=speckle.contrast,
-        grain_fwhm_px=speckle.grain_fwhm_px,
-    )
-
-
-def _in_skirt(shape: Shape, bright: Sequence[Shape]) -> bool:
-    """Whether a much brighter spot is so near that this is a part of it."""
-    return any(
-        shape.height < share * other.height and _nearer(other, shape, sigmas)
-        for other in bright
-        for sigmas, share in _SKIRTS
-    )

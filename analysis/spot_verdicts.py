@@ -1,0 +1,88 @@
+"""What becomes of each fitted candidate of a step: a spot, or refused with a reason.
+
+The fit of a candidate alone is judged in spot_judgement; here also what lies around
+it: skirts of brighter spots and an uneven background.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot
+from pitchsweep.analysis.speckle_grain import Speckle
+from pitchsweep.analysis.spot_fit import Shape
+from pitchsweep.analysis.spot_judgement import SpotLimits, judged, light_over_noise
+from pitchsweep.analysis.spot_scene import (
+    FittedCandidate,
+    StepScene,
+    lost_in_unevenness,
+)
+
+_SKIRTS = ((5.0, 0.1), (10.0, 0.04))
+"""Within so many radii of a spot, what is fainter than this share is part of it."""
+
+
+@dataclass(frozen=True)
+class Look:
+    """The fits behind a search: brightest first, refused ones among them.
+
+    ``speckle`` is what the fits allow for, ``measured`` whether the step told it.
+    """
+
+    scene: StepScene
+    fits: tuple[FittedCandidate, ...]
+    speckle: Speckle
+    measured: bool
+
+
+def verdicts(
+    seen: Look, step: int, limits: SpotLimits | None = None
+) -> list[Spot | RejectedSpot]:
+    """A verdict for each of ``seen.fits``, in order; refused ones have a score."""
+    limits = limits or SpotLimits()
+    out: list[Spot | RejectedSpot] = []
+    bright: list[Shape] = []
+    for item in seen.fits:
+        verdict = _verdict(seen, item, bright, limits, step)
+        if isinstance(verdict, RejectedSpot):
+            verdict = replace(verdict, score=light_over_noise(item.fit))
+        out.append(verdict)
+        if item.fit.converged:
+            bright.append(item.fit.shape)
+    return out
+
+
+def nearer(shape: Shape, other: Shape, sigmas: float) -> bool:
+    """Whether ``other`` lies within so many major radii of ``shape``."""
+    away = np.hypot(other.column_px - shape.column_px, other.row_px - shape.row_px)
+    return bool(away < sigmas * shape.widths()[0])
+
+
+def _verdict(
+    seen: Look,
+    item: FittedCandidate,
+    bright: Sequence[Shape],
+    limits: SpotLimits,
+    step: int,
+) -> Spot | RejectedSpot:
+    alone = judged(item.window, item.fit, seen.speckle, seen.scene.side, limits, step)
+    if isinstance(alone, RejectedSpot):
+        return alone
+    shape = item.fit.shape
+    if _in_skirt(shape, bright):
+        reason, detail = Rejection.SHAPE, "faint, in the skirts of a much brighter spot"
+    elif lost_in_unevenness(seen.scene, item.fit):
+        reason, detail = Rejection.TOO_FAINT, "the background around it is as uneven"
+    else:
+        return alone
+    return RejectedSpot(step, shape.column_px, shape.row_px, "px", reason, detail)
+
+
+def _in_skirt(shape: Shape, bright: Sequence[Shape]) -> bool:
+    """Whether a much brighter spot is so near that this is a part of it."""
+    return any(
+        shape.height < share * other.height and nearer(other, shape, sigmas)
+        for other in bright
+        for sigmas, share in _SKIRTS
+    )
