@@ -70,7 +70,6 @@ class Scene:
     line: str = "keep-alive"
     channels: int = 1
     settings: dict[str, Any] = field(default_factory=dict)
-    light_stays: bool = False
 
 
 @dataclass(frozen=True)
@@ -278,11 +277,13 @@ def _port_closed(world: Lit) -> float:
 
 
 def _another_program(world: Lit) -> float:
-    """Another program takes the port although it is locked, and reads from it."""
+    """Another program takes the port although it is locked, talks and listens."""
     began_s = _now()
     thief = os.open(world.unit.port, os.O_RDWR | os.O_NOCTTY | os.O_NONBLOCK)
     try:
         while _now() < began_s + 0.5:
+            os.write(thief, b"hello\n")
+            time.sleep(0.02)
             with suppress(BlockingIOError):
                 os.read(thief, 4096)
     finally:
