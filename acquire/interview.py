@@ -33,11 +33,12 @@ from pitchsweep.safety.ledger import utc_text
 from pitchsweep.safety.people_ledger import People
 from pitchsweep.safety.safety_errors import CAUTION, GateRefused
 from pitchsweep.safety.shown_figures import beam_map_shown, figures_shown
-from pitchsweep.safety.sign_off_making import Work, part_in_words
+from pitchsweep.safety.sign_off_making import Work, part_in_words, window_utc_s
 
 _M = TypeVar("_M", ItemAnswer, ReadingAnswer)
 WIDTH = 78
 DEFAULT_HOURS = 14.0
+NOT_SIGNED = "not signed: "
 Ask = Callable[[str, str], str]
 """(question, default or empty) -> what was typed."""
 
@@ -65,12 +66,18 @@ def say(text: str = "") -> None:
     typer.echo(text, err=True)
 
 
+def say_wrapped(text: str) -> None:
+    """Words of any length, set in by two."""
+    for line in textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent="  "):
+        say(line)
+
+
 def ask_all(interview: Interview, ask: Ask = ask_at_terminal) -> Answers:
     """The whole interview. GateRefused when it ends without a will to sign."""
     _show(interview)
     signers = _ask_signers(interview, ask)
-    hours, start = _ask_window(interview, ask)
-    last_day = utc_text(time.time() + hours * 3600.0)[:10]
+    begun, end_utc_s = _ask_window(interview, signers, ask)
+    last_day = utc_text(end_utc_s)[:10]
     here = circumstances_of(interview.work.job)
     items = items_that_apply(interview.work.checklist, here)
     say()
@@ -85,7 +92,7 @@ def ask_all(interview: Interview, ask: Ask = ask_at_terminal) -> Answers:
     say(f"signing: {', '.join(f'{s.name} as {s.role}' for s in signers)}")
     if _yes_no("sign now", ask) != "y":
         raise _leave("at the end")
-    return Answers(signers=signers, valid_from=start, valid_for_h=hours, items=answered)
+    return begun.model_copy(update={"items": answered})
 
 
 @dataclass(frozen=True)
@@ -105,7 +112,7 @@ def _show(interview: Interview) -> None:
     say(f"  {part_in_words(job.part)}")
     if job.bench.twin is not None:
         say("  REHEARSAL: the bench is simulated, no laser is switched by this")
-    say(f"  {CAUTION}")
+    say_wrapped(CAUTION)
     say()
     for line in figures_shown(job):
         say(line)
@@ -146,38 +153,38 @@ def _able(people: People, roles: tuple[str, ...], used: set[str]) -> dict[str, s
     }
 
 
-def _ask_window(interview: Interview, ask: Ask) -> tuple[float, str | None]:
-    longest = interview.work.checklist.longest_window_h
+def _ask_window(
+    interview: Interview, signers: tuple[SignsAs, ...], ask: Ask
+) -> tuple[Answers, float]:
+    """Answers without items yet, and the end of their window (UTC seconds)."""
+    checklist = interview.work.checklist
     say()
     say(f"It is {utc_text()[:16].replace('T', ' ')} UTC.")
     while True:
         start = ask("valid from, UTC as 2030-01-31T18:00Z; 'now'", "now")
-        typed = ask(f"for how many hours (up to {longest:g})", f"{DEFAULT_HOURS:g}")
-        begins = None if start == "now" else start
+        typed = ask(
+            f"for how many hours (up to {checklist.longest_window_h:g})",
+            f"{min(DEFAULT_HOURS, checklist.longest_window_h):g}",
+        )
         try:
-            hours = float(typed)
-            Answers.model_validate(
-                {
-                    "signers": (SignsAs(name="x", role="witness"),),
-                    "valid_from": begins,
-                    "valid_for_h": hours,
-                    "items": {},
-                }
+            answers = Answers(
+                signers=signers,
+                valid_from=None if start == "now" else start,
+                valid_for_h=float(typed),
+                items={},
             )
-        except (ValueError, ValidationError):
+            return answers, window_utc_s(answers, checklist, time.time())[1]
+        except GateRefused as error:
+            say(f"  {error.what.removeprefix(NOT_SIGNED)}: {error.remedy}")
+        except ValueError:
             say("  that is no such time or number of hours")
-            continue
-        if hours <= longest:
-            return hours, begins
-        say(f"  the checklist allows up to {longest:g} h")
 
 
 def _ask_item(head: str, asking: Asking, ask: Ask) -> ItemAnswer:
     item = asking.item
     say()
     say(head if len(asking.able) < 2 else f"{head} ({' or '.join(asking.able)})")
-    for line in textwrap.wrap(item.says, WIDTH, initial_indent="  "):
-        say(line)
+    say_wrapped(item.says)
     while True:
         answer = _ask_once(asking, ask)
         why = why_answer_will_not_do(item, answer, asking.work.job, asking.last_day)
@@ -258,5 +265,5 @@ def _one_of(names: list[str], question: str, ask: Ask) -> str:
 
 def _leave(how: str) -> GateRefused:
     return GateRefused(
-        f"not signed: the interview was left {how}", "begin again when all is ready"
+        f"{NOT_SIGNED}the interview was left {how}", "begin again when all is ready"
     )

@@ -26,6 +26,10 @@ class Passphrases:
             else:
                 self._any = Path(text)
 
+    def asks(self, name: str) -> bool:
+        """True when the passphrase of ``name`` is typed at the terminal."""
+        return self._named.get(name, self._any) is None and sys.stdin.isatty()
+
     def of(self, name: str, *, twice: bool = False) -> str:
         """The passphrase of ``name``; ``twice`` asks again to catch a slip.
 

@@ -20,7 +20,7 @@ from pitchsweep.safety.beam_map_text import beam_map_lines
 from pitchsweep.safety.door_sheet import door_sheet
 from pitchsweep.safety.people_store import PeopleNow, read_people
 from pitchsweep.safety.run_refusals import refuse_unsafe
-from pitchsweep.safety.safety_errors import CAUTION, GateRefused
+from pitchsweep.safety.safety_errors import CAUTION, GateRefused, SignerRefused
 from pitchsweep.safety.safety_home import SafetyHome, safety_home
 from pitchsweep.safety.sign_off import LedgerMark, Statement
 from pitchsweep.safety.sign_off_making import Moment, Work, statement_of
@@ -41,6 +41,8 @@ from pitchsweep.safety.signers import open_signer
 from pitchsweep.safety.signing import PrivateKey
 
 NO_REASON = "no reason given"
+ATTEMPTS = 3
+"""At a terminal; a file is read once."""
 
 
 @dataclass(frozen=True)
@@ -210,8 +212,19 @@ def _keys(
     home: SafetyHome, answers: Answers, options: SigningOptions
 ) -> list[PrivateKey]:
     passphrases = Passphrases(options.passphrase_files)
-    names = [signer.name for signer in answers.signers]
-    return [open_signer(home, name, passphrases.of(name)) for name in names]
+    return [_opened(home, signer.name, passphrases) for signer in answers.signers]
+
+
+def _opened(home: SafetyHome, name: str, passphrases: Passphrases) -> PrivateKey:
+    """The key of ``name``; a slip of the fingers does not cost the whole interview."""
+    for _ in range(ATTEMPTS - 1):
+        try:
+            return open_signer(home, name, passphrases.of(name))
+        except SignerRefused as error:
+            if not passphrases.asks(name):
+                raise
+            print(f"{str(error).splitlines()[0]}; try again", file=sys.stderr)
+    return open_signer(home, name, passphrases.of(name))
 
 
 def _lines(kept: Kept) -> list[str]:

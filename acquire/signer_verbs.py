@@ -1,6 +1,7 @@
 """What ``signer enrol|list|revoke`` do; texts to be printed come back. Acts (home)."""
 
 import json
+import textwrap
 from collections.abc import Sequence
 
 from pitchsweep.acquire.passphrases import Passphrases
@@ -40,7 +41,8 @@ def enrol(
         f"vouched by   {signer.vouched_by or 'nobody'}",
     ]
     if not signer.vouched_by:
-        lines.append(f"Note         {FIRST_PROVES}")
+        note = textwrap.wrap(FIRST_PROVES, 65)
+        lines += [f"Note         {note[0]}", *(f"             {n}" for n in note[1:])]
     return "\n".join(lines)
 
 

@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from datetime import date
 
 from pitchsweep.configs.answers_model import Answers, ItemAnswer, ReadingAnswer
 from pitchsweep.configs.bench_model import Bench
@@ -194,6 +195,8 @@ def why_reading_will_not_do(
         return None
     if not (given.meter or "").strip() or given.meter_due is None:
         return "the instrument and the day it is due are missing"
+    if not _is_day(given.meter_due):
+        return f"{given.meter_due} is no day of the calendar"
     if given.meter_due < last_day:
         return f"the instrument was due on {given.meter_due}, before {last_day}"
     return None
@@ -240,6 +243,14 @@ def _as_signed(
             for reading in answer.readings
         ],
     }
+
+
+def _is_day(text: str) -> bool:
+    try:
+        date.fromisoformat(text)
+    except ValueError:
+        return False
+    return True
 
 
 def _upper(reading: Reading, bench: Bench, laser: str | None) -> float:

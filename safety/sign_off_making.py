@@ -61,7 +61,7 @@ def statement_of(work: Work, answers: Answers, moment: Moment) -> Statement:
     signers = tuple(_signer(who, moment.people) for who in answers.signers)
     needed = signatures_needed(checklist, here)
     _refuse_people(needed, signers)
-    start_s, end_s = _window(answers, checklist, moment.utc_s)
+    start_s, end_s = window_utc_s(answers, checklist, moment.utc_s)
     flaws = flaws_of(answers, items, job, utc_text(end_s)[:10])
     if flaws:
         raise GateRefused(
@@ -132,9 +132,10 @@ def _refuse_people(
         raise GateRefused(f"not signed: {why}", "let the others who are needed sign")
 
 
-def _window(
+def window_utc_s(
     answers: Answers, checklist: Checklist, now_utc_s: float
 ) -> tuple[float, float]:
+    """Start and end of the window that ``answers`` ask for; GateRefused if too much."""
     start_s = now_utc_s
     if answers.valid_from is not None:
         start_s = _start(answers.valid_from)
