@@ -31,6 +31,9 @@ def fake(monkeypatch: pytest.MonkeyPatch) -> FakeBench:
     return bench
 
 
+DERIVED = ("orders.csv", "result.json", "report.html", "report.pdf", "result.png")
+
+
 def job_file(folder: Path, job: Job = JOB) -> str:
     path = folder / "job.yaml"
     path.write_text(freeze(job), encoding="utf-8")
@@ -56,7 +59,7 @@ def test_sweep_prints_a_summary_and_leaves_a_report(
     for word in ("Pitch", "k = ", "Decision", "report.html", "no safety function"):
         assert word in shown.out
     (folder,) = (tmp_path / "runs").iterdir()
-    for name in ("orders.csv", "result.json", "report.html", "result.png", "run.db"):
+    for name in (*DERIVED, "run.db"):
         assert (folder / name).stat().st_size > 0
 
 
@@ -69,7 +72,7 @@ def test_json_alone_on_stdout_and_fit_gives_the_same_numbers(
     (folder,) = (tmp_path / "runs").iterdir()
     written = {p.name: p.read_bytes() for p in folder.iterdir() if p.is_file()}
     for verb in ("fit", "report"):
-        for name in ("orders.csv", "result.json", "report.html", "result.png"):
+        for name in DERIVED:
             (folder / name).unlink()
         assert run([verb, str(folder), "--json"]) == 0
         assert json.loads(capsys.readouterr().out) == first
@@ -93,7 +96,7 @@ def test_orders_of_a_run_fit_again_as_a_table(
     assert {p.name for p in tmp_path.iterdir()} == {"job.yaml", "runs", "table.csv"}
     out = tmp_path / "out"
     assert run(["fit", str(table), str(table), *demo, "--out", str(out)]) == 0
-    assert (out / "report.html").exists()
+    assert (out / "report.html").exists() and (out / "report.pdf").exists()
 
 
 def frame_set(folder: Path) -> None:
