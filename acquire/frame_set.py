@@ -11,17 +11,15 @@ from math import isfinite
 from pathlib import Path
 
 from pitchsweep.acquire.bench_devices import Shot
-from pitchsweep.acquire.fit_input import FitInput, SpotPlace, order_table
+from pitchsweep.acquire.fit_input import FitInput, order_table
 from pitchsweep.acquire.spot_places import (
     StepPlace,
     places_of,
     rejected_of,
-    speckle_of,
 )
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.analysis.analysis_errors import InputRefused
 from pitchsweep.analysis.frame_image import decode_frame
-from pitchsweep.analysis.records import RejectedSpot
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 from pitchsweep.drivers.devices import Label
@@ -60,19 +58,20 @@ def input_from_frames(
     for frame in listed:
         if frame.laser != DARK:
             _check_one_scene(folder, steps.setdefault(frame.step, []), frame)
-    find = spot_finder(bench.camera)
+    find = spot_finder(bench)
     found = {
         step: find(step, [_shot(folder, frame, bench) for frame in frames], darks)
         for step, frames in sorted(steps.items())
     }
-    speckle = speckle_of(found.values())
-    places: list[SpotPlace] = []
-    rejected: list[RejectedSpot] = []
-    for step, spots in found.items():
-        head = steps[step][0]
-        at = StepPlace(step, head.stage_deg, head.mount_deg, head.laser)
-        places += places_of(spots, at, speckle)
-        rejected += rejected_of(spots, step)
+    heads = {step: frames[0] for step, frames in steps.items()}
+    places = places_of(
+        [
+            (spots, StepPlace(step, head.stage_deg, head.mount_deg, head.laser))
+            for step, spots in found.items()
+            for head in (heads[step],)
+        ]
+    )
+    rejected = [r for step, spots in found.items() for r in rejected_of(spots, step)]
     table = order_table(places, lasers)
     return FitInput(str(folder), table, bench, part, coverage, tuple(rejected))
 

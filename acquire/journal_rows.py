@@ -75,6 +75,16 @@ class RejectedRow:
 
 
 @dataclass(frozen=True)
+class MarkRow:
+    """A mark of the screen frame seen at a step, on the nominal screen."""
+
+    number: int
+    x_mm: float
+    y_mm: float
+    u_mm: float
+
+
+@dataclass(frozen=True)
 class StepSpots:
     """What one step's exposures gave."""
 
@@ -85,6 +95,7 @@ class StepSpots:
     speckle_contrast: float | None = None
     grain_fwhm_px: float | None = None
     speckle_measured: bool = False
+    marks: tuple[MarkRow, ...] = ()
 
 
 @dataclass(frozen=True)

@@ -8,7 +8,7 @@ without outcome is in doubt. Frames belong to an intent and count once its outco
 APPLICATION_ID = 0x50535750
 """Marks the file as a run journal (PRAGMA application_id)."""
 
-SCHEMA_VERSION = 2
+SCHEMA_VERSION = 3
 
 TABLES = """
 CREATE TABLE run_meta (
@@ -70,7 +70,8 @@ CREATE TABLE spot_searches (
     rejected      TEXT NOT NULL,
     speckle_contrast REAL,
     grain_fwhm_px    REAL,
-    speckle_measured INTEGER NOT NULL
+    speckle_measured INTEGER NOT NULL,
+    marks            TEXT NOT NULL
 ) STRICT;
 
 CREATE TABLE spots (

@@ -21,6 +21,7 @@ from pitchsweep.acquire.journal_rows import (
     FrameRow,
     GateRow,
     IntentRow,
+    MarkRow,
     Outcome,
     RejectedRow,
     SpotRow,
@@ -166,12 +167,13 @@ class RunJournal:
 
     def record_spots(self, intent: int, found: StepSpots) -> None:
         """Commits (or replaces) what an intent's exposures gave."""
+        marks = json.dumps([astuple(mark) for mark in found.marks])
         rejected = json.dumps([astuple(item) for item in found.rejected])
         with self.transaction():
             self._write("DELETE FROM spots WHERE intent = ?", (intent,))
             self._write("DELETE FROM spot_searches WHERE intent = ?", (intent,))
             self._write(
-                "INSERT INTO spot_searches VALUES (?, ?, ?, ?, ?, ?, ?)",
+                "INSERT INTO spot_searches VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
                 (
                     intent,
                     found.background_dn,
@@ -180,6 +182,7 @@ class RunJournal:
                     found.speckle_contrast,
                     found.grain_fwhm_px,
                     int(found.speckle_measured),
+                    marks,
                 ),
             )
             for number, spot in enumerate(found.spots):
@@ -229,13 +232,14 @@ class RunJournal:
         """What an intent's exposures gave; None if it was never recorded."""
         heads = self._read(
             "SELECT background_dn, noise_dn, rejected, speckle_contrast, "
-            "grain_fwhm_px, speckle_measured FROM spot_searches "
+            "grain_fwhm_px, speckle_measured, marks FROM spot_searches "
             "WHERE intent = ?",
             (intent,),
         )
         if not heads:
             return None
-        background_dn, noise_dn, rejected, contrast, grain_px, measured = heads[0]
+        background_dn, noise_dn, rejected, *speckle, marks = heads[0]
+        contrast, grain_px, measured = speckle
         rows = self._read(
             "SELECT x_mm, y_mm, ux_mm, uy_mm, cxy_mm2, brightness, column_px, "
             "row_px, sigma_major_px, sigma_minor_px, snr, exposure_ms, saturated, "
@@ -251,6 +255,7 @@ class RunJournal:
             speckle_contrast=contrast,
             grain_fwhm_px=grain_px,
             speckle_measured=bool(measured),
+            marks=tuple(MarkRow(*item) for item in json.loads(marks)),
         )
 
     def gate_events(self) -> list[GateRow]:

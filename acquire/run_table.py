@@ -19,7 +19,6 @@ from pitchsweep.acquire.spot_places import (
     StepPlace,
     places_of,
     rejected_of,
-    speckle_of,
 )
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.acquire.stored_spots import spots_of
@@ -70,7 +69,7 @@ def read_run(path: Path) -> RunRecord:
         except ValueError as error:
             raise RunRefused(path, str(error)) from None
         store = FrameStore(folder.path)
-        find = spot_finder(folder.job.bench.camera)
+        find = spot_finder(folder.job.bench)
         steps = tuple(
             KeptStep(row, spots_of(journal, store, row, find), _lights(journal, row))
             for row in now.done.values()
@@ -102,12 +101,7 @@ def input_from_run(record: RunRecord) -> FitInput:
     warnings += [
         f"fault met during the sweep: {fault.detail}" for fault in record.faults
     ]
-    speckle = speckle_of(step.found for step in record.steps)
-    places = [
-        place
-        for step in record.steps
-        for place in places_of(step.found, _place(step), speckle)
-    ]
+    places = places_of([(step.found, _place(step)) for step in record.steps])
     return FitInput(
         name=str(record.folder.path),
         table=order_table(places, job.recipe.lasers),

@@ -5,11 +5,12 @@ they measured is pooled, and the speckle part of every covariance is restated fo
 The pool is a mean over the steps: it does not depend on the order they were taken in.
 """
 
-from collections.abc import Iterable
-from dataclasses import dataclass
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, replace
 
 from pitchsweep.acquire.fit_input import SpotPlace
 from pitchsweep.acquire.journal_rows import SpotRow, StepSpots
+from pitchsweep.analysis.mark_drift import MarkPlace, StepDrift, drifts
 from pitchsweep.analysis.records import RejectedSpot, Rejection
 from pitchsweep.analysis.speckle_grain import Speckle
 from pitchsweep.analysis.speckle_pool import pooled_speckle, restated_share
@@ -32,12 +33,37 @@ def speckle_of(steps: Iterable[StepSpots]) -> Speckle | None:
     return pooled_speckle([s for s in measured if s is not None])
 
 
-def places_of(
-    found: StepSpots, at: StepPlace, speckle: Speckle | None
-) -> list[SpotPlace]:
-    """The spots of one step as table rows, covariances restated for ``speckle``."""
-    share = restated_share(_speckle(found), speckle)
-    return [_place(spot, at, share) for spot in found.spots]
+def places_of(steps: Sequence[tuple[StepSpots, StepPlace]]) -> list[SpotPlace]:
+    """The spots of a run's or frame set's steps as table rows.
+
+    Covariances are restated for the speckle of all steps, and places for the camera
+    standing still where marks told how it moved.
+    """
+    speckle = speckle_of(found for found, _ in steps)
+    moved = drifts([_marks(found) for found, _ in steps])
+    return [
+        _still(_place(spot, at, restated_share(_speckle(found), speckle)), drift)
+        for (found, at), drift in zip(steps, moved, strict=True)
+        for spot in found.spots
+    ]
+
+
+def _marks(found: StepSpots) -> list[MarkPlace]:
+    return [MarkPlace(m.number, m.x_mm, m.y_mm, m.u_mm) for m in found.marks]
+
+
+def _still(place: SpotPlace, drift: StepDrift | None) -> SpotPlace:
+    if drift is None:
+        return place
+    x_mm, y_mm = drift.undone(place.x_mm, place.y_mm)
+    more_x, more_y = drift.added_variance_mm2(place.x_mm, place.y_mm)
+    return replace(
+        place,
+        x_mm=x_mm,
+        y_mm=y_mm,
+        ux_mm=(place.ux_mm**2 + more_x) ** 0.5,
+        uy_mm=(place.uy_mm**2 + more_y) ** 0.5,
+    )
 
 
 def rejected_of(found: StepSpots, step: int) -> list[RejectedSpot]:

@@ -31,6 +31,7 @@ from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.devices import SpotReading
 from pitchsweep.safety.safety_errors import GateTripped
 
+NO_LIGHT = (Rejection.TOO_FAINT.value, Rejection.ON_MARK.value)
 DEPTH = 2
 """Steps that may wait: bounds memory to a few frames."""
 
@@ -198,7 +199,7 @@ def light_seen_mm(found: StepSpots, camera: Camera) -> list[tuple[float, float]]
         if item.unit == "px"
         else (item.x, item.y)
         for item in found.rejected
-        if item.reason != Rejection.TOO_FAINT.value
+        if item.reason not in NO_LIGHT
     ]
     return seen
 

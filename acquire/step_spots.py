@@ -1,27 +1,39 @@
 """A step's frames -> spots on the nominal screen, with the bench's camera (pure)."""
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.acquire.bench_devices import FindSpots, Shot
-from pitchsweep.acquire.journal_rows import RejectedRow, SpotRow, StepSpots
+from pitchsweep.acquire.journal_rows import MarkRow, RejectedRow, SpotRow, StepSpots
 from pitchsweep.analysis.camera_noise import CameraNoise
-from pitchsweep.analysis.pixel_map import spot_on_screen
+from pitchsweep.analysis.mark_finding import MarkSeen, find_marks, without_marks
+from pitchsweep.analysis.pixel_map import (
+    pixels_from_screen,
+    screen_from_pixels,
+    spot_on_screen,
+)
 from pitchsweep.analysis.records import Spot, SpotSearch
-from pitchsweep.analysis.spot_search import Exposure, find_spots
-from pitchsweep.configs.bench_model import Camera
+from pitchsweep.analysis.spot_search import Exposure, look
+from pitchsweep.analysis.spot_verdicts import judged_look
+from pitchsweep.configs.bench_model import Bench, Camera
 
 
-def spot_finder(camera: Camera) -> FindSpots:
-    """A finder for frames of ``camera``: its noise model, its pixel map."""
+def spot_finder(bench: Bench) -> FindSpots:
+    """A finder for frames of ``bench``: its noise model, pixel map and marks."""
+    camera = bench.camera
     noise = CameraNoise.from_bench(camera)
+    places = [pixels_from_screen(*mark, camera) for mark in bench.screen.marks_mm]
 
     def find(step: int, lights: Sequence[Shot], darks: Sequence[Shot]) -> StepSpots:
         exposures = [Exposure(shot.frame, shot.exposure_ms) for shot in lights]
-        found = find_spots(exposures, mean_dark(darks), noise, step)
-        return on_screen(found, camera)
+        seen = look(exposures, mean_dark(darks), noise)
+        marks = find_marks(seen.scene, places)
+        found = without_marks(judged_look(seen, step), marks, step)
+        rows = tuple(_mark_row(mark, camera) for mark in marks)
+        return replace(on_screen(found, camera), marks=rows)
 
     return find
 
@@ -55,6 +67,12 @@ def on_screen(found: SpotSearch, camera: Camera) -> StepSpots:
         grain_fwhm_px=float(found.grain_fwhm_px),
         speckle_measured=bool(found.speckle_measured),
     )
+
+
+def _mark_row(mark: MarkSeen, camera: Camera) -> MarkRow:
+    x_mm, y_mm = screen_from_pixels(mark.column_px, mark.row_px, camera)
+    u_mm = camera.mm_per_px * mark.u_px
+    return MarkRow(mark.number, float(x_mm), float(y_mm), float(u_mm))
 
 
 def _row(spot: Spot, camera: Camera) -> SpotRow:

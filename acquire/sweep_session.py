@@ -172,7 +172,7 @@ def _session(
     if not now.remaining:
         return
     session = journal.begin_session(owner)
-    find = spot_finder(folder.job.bench.camera)
+    find = spot_finder(folder.job.bench)
     with StopSignals() as stop, _ending(folder, journal, session, stop):
         request = BenchRequest(
             folder, plan, journal, stop, resumed, progress.say, permit

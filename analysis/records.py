@@ -33,6 +33,7 @@ class Rejection(StrEnum):
     EDGE = "cut-by-frame-edge"
     FIT_FAILED = "spot-fit-did-not-converge"
     GRAZING = "order-too-near-grazing"
+    ON_MARK = "on-a-mark-of-the-frame"
 
 
 @dataclass(frozen=True)

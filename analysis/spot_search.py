@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.analysis.camera_noise import CameraNoise
-from pitchsweep.analysis.records import RejectedSpot, Spot, SpotSearch
+from pitchsweep.analysis.records import SpotSearch
 from pitchsweep.analysis.speckle_grain import NO_SPECKLE, TYPICAL_SPECKLE, Speckle
 from pitchsweep.analysis.speckle_measure import GrainSample, measure_speckle
 from pitchsweep.analysis.spot_candidates import (
@@ -35,7 +35,7 @@ from pitchsweep.analysis.spot_scene import (
     refit,
     step_scene,
 )
-from pitchsweep.analysis.spot_verdicts import Look, nearer, verdicts
+from pitchsweep.analysis.spot_verdicts import Look, judged_look, nearer
 from pitchsweep.analysis.spot_window import shared_rounding
 
 __all__ = ["Exposure", "Look", "SearchSettings", "find_spots", "look"]
@@ -72,16 +72,7 @@ def find_spots(
     """
     settings = settings or SearchSettings()
     seen = look(exposures, dark, camera, speckle=speckle, settings=settings)
-    answers = verdicts(seen, step, settings.limits)
-    return SpotSearch(
-        spots=tuple(a for a in answers if isinstance(a, Spot)),
-        rejected=tuple(a for a in answers if isinstance(a, RejectedSpot)),
-        background_dn=seen.scene.smalls[0].level(),
-        noise_dn=seen.scene.noise_dn[0],
-        speckle_contrast=seen.speckle.contrast,
-        grain_fwhm_px=seen.speckle.grain_fwhm_px,
-        speckle_measured=seen.measured,
-    )
+    return judged_look(seen, step, settings.limits)
 
 
 def look(

@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot
+from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
 from pitchsweep.analysis.speckle_grain import Speckle
 from pitchsweep.analysis.spot_fit import Shape
 from pitchsweep.analysis.spot_judgement import SpotLimits, judged, light_over_noise
@@ -51,6 +51,20 @@ def verdicts(
         if item.fit.converged:
             bright.append(item.fit.shape)
     return out
+
+
+def judged_look(seen: Look, step: int, limits: SpotLimits | None = None) -> SpotSearch:
+    """``seen`` with its verdicts, as a search's result."""
+    answers = verdicts(seen, step, limits)
+    return SpotSearch(
+        spots=tuple(a for a in answers if isinstance(a, Spot)),
+        rejected=tuple(a for a in answers if isinstance(a, RejectedSpot)),
+        background_dn=seen.scene.smalls[0].level(),
+        noise_dn=seen.scene.noise_dn[0],
+        speckle_contrast=seen.speckle.contrast,
+        grain_fwhm_px=seen.speckle.grain_fwhm_px,
+        speckle_measured=seen.measured,
+    )
 
 
 def nearer(shape: Shape, other: Shape, sigmas: float) -> bool:

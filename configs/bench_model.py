@@ -31,8 +31,17 @@ class Hole(Settings):
     diameter_mm: Annotated[float, Field(gt=0.0, le=100.0)] = 8.0
 
 
+_PlaceMm = Annotated[float, Field(ge=-5000.0, le=5000.0)]
+MarkMm = tuple[_PlaceMm, _PlaceMm]
+"""Roughly where a mark on the screen frame is seen: x and y by the nominal map."""
+
+
 class Screen(Settings):
-    """A flat screen facing the part; x, y in mm from where nominal +z meets it."""
+    """A flat screen facing the part; x, y in mm from where nominal +z meets it.
+
+    ``marks_mm`` are bright fixed marks that every frame shows; they tell the camera's
+    shift and scale at each step.
+    """
 
     distance_mm: Annotated[float, Field(ge=20.0, le=5000.0)]
     u_distance_mm: Annotated[float, Field(gt=0.0, le=200.0)] = 5.0
@@ -42,6 +51,7 @@ class Screen(Settings):
     height_mm: Annotated[float, Field(ge=5.0, le=5000.0)]
     u_map_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.5
     hole: Hole = Hole()
+    marks_mm: Annotated[tuple[MarkMm, ...], Field(max_length=16)] = ()
 
 
 class Beam(Settings):

@@ -52,6 +52,9 @@ class TwinEffects(Settings):
     halo_fraction: Fraction = 0.0
     lopsided_fraction: Fraction = 0.0
     ghost_fraction: Fraction = 0.0
+    mark_e_per_ms: Annotated[float, Field(ge=0.0, le=1e6)] = 60.0
+    smear_fraction: Fraction = 0.0
+    reflection_fraction: Fraction = 0.0
     hot_pixels: Annotated[int, Field(ge=0, le=100000)] = 20
     room_light_dn_per_s: NonNegative = 20.0
     room_light_step_dn_per_s: NonNegative = 0.0

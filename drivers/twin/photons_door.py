@@ -19,6 +19,11 @@ from pitchsweep.drivers.twin.effects import (
     ghost_shift_mm,
     single_step,
 )
+from pitchsweep.drivers.twin.frame_extras import (
+    add_marks,
+    add_smear,
+    stray_places,
+)
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
 from pitchsweep.drivers.twin.light_patches import Blob, add_blob
 from pitchsweep.drivers.twin.optics import trace_bundle
@@ -65,6 +70,8 @@ def render(
     )
     electrons += room_electrons(truth, bench, label.planned_s, exposure_ms)
     electrons *= _screen_mask(bench.camera, bench.screen)
+    add_marks(electrons, truth, bench, label.planned_s, exposure_ms)
+    add_smear(electrons, twin_settings(bench).effects)
     noise = keyed_generator(
         truth.seed,
         "frame noise" if light_on else "dark frame noise",
@@ -154,7 +161,23 @@ def _blobs(truth: Truth, bench: Bench, steps: Steps, exposure_ms: float) -> list
             light = float(electrons * landing.share[0, i])
             column, row = (float(value) for value in pixels[i])
             blobs.append(Blob(column, row, covariance, light, key))
-    return blobs
+    return blobs + _stray_blobs(truth, bench, steps, total, key)
+
+
+def _stray_blobs(
+    truth: Truth, bench: Bench, steps: Steps, total: float, key: SpeckleKey
+) -> list[Blob]:
+    """Reflections that are no orders, round and of the beam's size."""
+    share = twin_settings(bench).effects.reflection_fraction
+    if share <= 0.0:
+        return []
+    radius_px = bench.beam.diameter_mm / 2.0 / bench.camera.mm_per_px
+    covariance = radius_px**2 * np.eye(2)
+    places = stray_places(truth, float(steps.stage_deg[0]) - steps.mount_deg)
+    return [
+        Blob(float(column), float(row), covariance, share * total, key)
+        for column, row in pixel_of(bench.camera, places)
+    ]
 
 
 def _speckle_key(truth: Truth, bench: Bench, steps: Steps) -> SpeckleKey:
