@@ -4,9 +4,10 @@ A bench with ports needs a sign-off that is valid now. A simulated bench uses on
 there is one, so that the whole way can be tried; otherwise it rehearses.
 """
 
+import sqlite3
 import time
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -160,22 +161,14 @@ def _refuse_too_long(kept: Kept, plan: SweepPlan) -> None:
 def entered(
     permit: RunPermit, folder: RunFolder, journal: RunJournal, ledger: Path
 ) -> Iterator[None]:
-    """Enters the beginning and the end of a signed run into the people's ledger.
+    """Notes beginning and end of a run: in its journal, and if signed with the people.
 
-    The end carries count and head of the run's own ledger at ``ledger``. Raises what
-    keeps the beginning from being entered; a failure at the end shows as a run that
-    never ended.
+    The end carries count and head of the run's own ledger at ``ledger``, however it
+    ends. Raises what keeps the beginning from being entered; a failure at the end shows
+    as a run that never ended.
     """
     journal.set_meta("permit", permit.in_words)
-    if permit.kept is None or permit.home is None:
-        yield
-        return
-    job, identifier = folder.job, permit.kept.record.statement.id
-    run = {"run": folder.path.name, "bench": job.bench.bench, "job": job.job}
-    entry = enter(permit.home, RUN_BEGUN, {**run, "sign_off": identifier})
-    journal.set_meta("sign_off", identifier)
-    journal.set_meta("people_ledger_entries", str(entry.n))
-    journal.set_meta("people_ledger_head", entry.hash)
+    run = _begin(permit, folder, journal)
     ending = "complete"
     try:
         yield
@@ -183,16 +176,27 @@ def entered(
         ending = type(error).__name__
         raise
     finally:
-        _enter_end(permit.home, {**run, "sign_off": identifier}, ending, ledger)
+        # Whatever ended the run is the news, not that its end could not be noted.
+        with suppress(SafetyError, OSError, sqlite3.Error):
+            found = verify(ledger)
+            head = {"entries": found.count, "head": found.head}
+            if permit.home is not None:
+                enter(permit.home, RUN_ENDED, {**run, "ending": ending, **head})
+            if found.count and ending != "complete":
+                journal.set_meta("ledger_entries", str(found.count))
+                journal.set_meta("ledger_head", found.head)
 
 
-def _enter_end(
-    home: SafetyHome, run: dict[str, object], ending: str, ledger: Path
-) -> None:
-    try:
-        found = verify(ledger)
-        whole = {**run, "ending": ending, "entries": found.count, "head": found.head}
-        enter(home, RUN_ENDED, whole)
-    except (SafetyError, OSError):
-        # Whatever ended the run is the news; the missing end is seen by verifying.
-        return
+def _begin(
+    permit: RunPermit, folder: RunFolder, journal: RunJournal
+) -> dict[str, object]:
+    if permit.kept is None or permit.home is None:
+        return {}
+    job, identifier = folder.job, permit.kept.record.statement.id
+    run = {"run": folder.path.name, "bench": job.bench.bench, "job": job.job}
+    signed = {**run, "sign_off": identifier}
+    entry = enter(permit.home, RUN_BEGUN, signed)
+    journal.set_meta("sign_off", identifier)
+    journal.set_meta("people_ledger_entries", str(entry.n))
+    journal.set_meta("people_ledger_head", entry.hash)
+    return dict(signed)

@@ -1,0 +1,82 @@
+"""A sweep on the simulated bench under a sign-off, from the command line to its light.
+
+Real processes: twin, guard, controller.
+"""
+
+import json
+import sys
+from pathlib import Path
+
+import pytest
+from sign_off_builders import office, signed, work_of
+from twin_bench import small_job
+
+from pitchsweep.acquire.bench_session import open_twin_bench
+from pitchsweep.acquire.journal_file import open_journal
+from pitchsweep.acquire.ledger_verbs import verify_ledgers
+from pitchsweep.acquire.progress import progress_for
+from pitchsweep.acquire.sweep_session import sweep_job
+from pitchsweep.configs.job_model import Job
+from pitchsweep.safety.people_store import read_people
+from pitchsweep.safety.safety_errors import GateRefused
+from pitchsweep.safety.sign_off_store import revoke
+
+
+def short(job: Job) -> Job:
+    recipe = job.recipe.model_copy(
+        update={"start_deg": -20.0, "stop_deg": 20.0, "step_deg": 10.0}
+    )
+    return job.model_copy(update={"recipe": recipe})
+
+
+def test_light_under_a_sign_off_is_recorded_everywhere(
+    tmp_path: Path,
+    monkeypatch: pytest.MonkeyPatch,
+    capsys: pytest.CaptureFixture[str],
+) -> None:
+    at, job = office(tmp_path), short(small_job())
+    monkeypatch.setenv("PITCHSWEEP_HOME", str(at.home.folder))
+    kept = signed(at, work_of(job))
+    number = kept.record.statement.id
+    folder = sweep_job(
+        job, tmp_path / "runs", progress_for(sys.stderr), open_twin_bench
+    )
+    assert f"rehearsed sign-off {number}" in capsys.readouterr().err
+    first = json.loads((folder.path / "ledger.jsonl").read_bytes().splitlines()[0])
+    assert first["data"]["permit"] == "unattended"
+    rows = map(json.loads, (folder.twin / "unit.log").read_text().splitlines())
+    assert [r["value"] for r in rows if r["what"] == "light"].count("on") >= 5
+    with open_journal(folder.journal) as journal:
+        meta = journal.meta()
+    assert meta["sign_off"] == number and "ada as safety-officer" in meta["permit"]
+    ended = read_people(at.home).people.runs[folder.path.name]
+    assert (ended["ending"], ended["head"]) == ("complete", meta["ledger_head"])
+    assert verify_ledgers([folder.path], as_json=False)[0]
+
+
+def test_a_sign_off_revoked_before_arming_keeps_the_bench_dark(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    at, job = office(tmp_path), short(small_job())
+    monkeypatch.setenv("PITCHSWEEP_HOME", str(at.home.folder))
+    kept = signed(at, work_of(job))
+
+    class RevokesWhenItBegins:
+        """Somebody revokes after the controller has looked, before the guard does."""
+
+        def say(self, text: str) -> None:
+            if "starting the simulated bench" in text:
+                revoke(at.home, kept.record.statement.id, name="cy", reason="smoke")
+
+        def show(self, shown: object) -> None:
+            raise AssertionError("a step was made")
+
+        def end(self) -> None:
+            return
+
+    with pytest.raises(GateRefused, match="revoked by cy"):
+        sweep_job(job, tmp_path / "runs", RevokesWhenItBegins(), open_twin_bench)
+    (run,) = (tmp_path / "runs").iterdir()
+    log = (run / "twin" / "unit.log").read_text()
+    assert '"on"' not in "".join(x for x in log.splitlines() if '"light"' in x)
+    assert read_people(at.home).people.runs[run.name]["ending"] == "GateRefused"
