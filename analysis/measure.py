@@ -28,6 +28,7 @@ from pitchsweep.analysis.records import (
 )
 from pitchsweep.analysis.robust_fit import CleanFit, clean_fit, rescaled, residual_2
 from pitchsweep.analysis.shared_places import repeats_counted
+from pitchsweep.analysis.unknown_beams import unknown_beam_warnings
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 
@@ -88,6 +89,7 @@ def measure_pitch(
         raise NoResult(_with_reason(str(error), table, bench, part)) from None
     for index, reason in sorted(clean.reasons.items()):
         refused.append(_rejected_row(table, index, reason))
+    warnings += unknown_beam_warnings(table, refused)
     return _result(problem, clean, fit, scatter, coverage, warnings, refused)
 
 
