@@ -46,8 +46,8 @@ class Analysed:
     sources: tuple[FitSource, ...]
 
 
-def analyse(sources: Sequence[FitSource]) -> Analysed:
-    """One fit of everything in ``sources``.
+def analyse(sources: Sequence[FitSource], *, trust_nominal: bool = True) -> Analysed:
+    """One fit of everything in ``sources``; see ``measure_pitch``.
 
     Raises InputRefused, NoResult, or RunRefused where inputs cannot be joined.
     """
@@ -66,6 +66,7 @@ def analyse(sources: Sequence[FitSource]) -> Analysed:
         references=given.references,
         coverage=given.coverage,
         rejected=given.rejected,
+        trust_nominal=trust_nominal,
     )
     result = replace(
         result,

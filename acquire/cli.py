@@ -91,12 +91,18 @@ def fit(
     out: Annotated[
         Path | None, typer.Option(help="Write the derived files into this folder.")
     ] = None,
+    unknown_pitch: Annotated[
+        bool,
+        typer.Option(
+            "--unknown-pitch", help="Count the orders without the nominal pitch."
+        ),
+    ] = False,
     as_json: Json = False,
 ) -> None:
     """Fit runs, order tables or frames; a run's derived files are written anew."""
     from pitchsweep.acquire.fit_sources import FitOptions
 
-    options = FitOptions(bench, part, laser, coverage)
+    options = FitOptions(bench, part, laser, coverage, unknown_pitch)
     _fit_and_show(inputs, out, as_json, options)
 
 
@@ -149,8 +155,9 @@ def _fit_and_show(
     from pitchsweep.acquire.analyse_run import analyse, write_derived
     from pitchsweep.acquire.fit_sources import FitOptions, read_sources
 
-    sources = read_sources(inputs, options or FitOptions())
-    analysed = analyse(sources)
+    options = options or FitOptions()
+    sources = read_sources(inputs, options)
+    analysed = analyse(sources, trust_nominal=not options.unknown_pitch)
     if out is None and len(sources) == 1 and sources[0].run is not None:
         out = sources[0].run.folder.path
     if out is not None:

@@ -28,6 +28,7 @@ class FitOptions:
     part: str | None = None
     laser: str | None = None
     coverage: float | None = None
+    unknown_pitch: bool = False
 
 
 @dataclass(frozen=True)

@@ -3,6 +3,7 @@
 AnalysisError
 ├── InputRefused   a file or a value is not what it must be (exit 2)
 └── NoResult       the data are well formed but support no result (exit 6)
+    └── AmbiguousOrders   they support several pitches alike
 """
 
 
@@ -54,6 +55,10 @@ class NoResult(AnalysisError):
         self.reason = reason
         self.remedy = remedy
         super().__init__(f"{reason}\n{remedy}" if remedy else reason)
+
+
+class AmbiguousOrders(NoResult):
+    """Raised when spots fit several pitches alike; ``remedy`` says what decides."""
 
 
 def shortened(text: str, *, length: int = 60) -> str:

@@ -6,7 +6,11 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from pitchsweep.analysis.air_index import AirState
-from pitchsweep.analysis.analysis_errors import InputRefused, NoResult
+from pitchsweep.analysis.analysis_errors import (
+    AmbiguousOrders,
+    InputRefused,
+    NoResult,
+)
 from pitchsweep.analysis.budget import READINGS, combined_u, fit_budget
 from pitchsweep.analysis.consistency import (
     disagreement_lines,
@@ -19,6 +23,7 @@ from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
 from pitchsweep.analysis.joint_fit import JointFit, solve_joint_fit
 from pitchsweep.analysis.order_visibility import why_no_order
 from pitchsweep.analysis.parameter_table import REFERENCE_C, base_pitch_nm
+from pitchsweep.analysis.pitch_hint import fit_with_hint
 from pitchsweep.analysis.records import (
     Nuisance,
     OrderTable,
@@ -26,7 +31,7 @@ from pitchsweep.analysis.records import (
     RejectedSpot,
     Rejection,
 )
-from pitchsweep.analysis.robust_fit import CleanFit, clean_fit, rescaled, residual_2
+from pitchsweep.analysis.robust_fit import CleanFit, rescaled, residual_2
 from pitchsweep.analysis.shared_places import repeats_counted
 from pitchsweep.analysis.unknown_beams import unknown_beam_warnings
 from pitchsweep.configs.bench_model import Bench
@@ -60,15 +65,18 @@ def measure_pitch(
     coverage: float = 0.95,
     air: AirState | None = None,
     rejected: tuple[RejectedSpot, ...] = (),
+    trust_nominal: bool = True,
 ) -> PitchResult:
     """The pitch of ``part`` at 20 deg C that all spots of ``table`` give together.
 
     ``references`` are further parts swept on the same bench, index 1 and up in the
     table's ``part`` column; certified ones carry the wavelength. ``air`` is
     the mean state during the sweep (the bench file's if None);
-    ``rejected`` lists candidates refused before. Raises InputRefused for a mirrored
-    or empty table or a laser the bench does not have; NoResult when the data do not
-    determine a pitch.
+    ``rejected`` lists candidates refused before. Orders are counted from the part's
+    nominal pitch until the spots contradict it; ``trust_nominal`` False counts them
+    without (then half and double are judged by the spots' light). Raises
+    InputRefused for a mirrored or empty table or a laser the bench does not have;
+    NoResult when the data do not determine a pitch, or several alike.
     """
     _check(table, bench)
     air = air or AirState(
@@ -81,14 +89,20 @@ def measure_pitch(
     table = repeats_counted(table)
     problem = fit_problem(table, bench, (part, *references), air)
     try:
-        clean = clean_fit(problem, part.nominal_within_percent / 100.0)
-        problem, fit, scatter, warnings = _with_honest_scatter(problem, clean)
+        hinted = fit_with_hint(
+            problem, bench=bench, air=air, trust_nominal=trust_nominal
+        )
+        clean = hinted.clean
+        problem, fit, scatter, warnings = _with_honest_scatter(hinted.problem, clean)
     except np.linalg.LinAlgError:
         raise NoResult("the spots do not determine the pitch at all") from None
+    except AmbiguousOrders:
+        raise
     except NoResult as error:
         raise NoResult(_with_reason(str(error), table, bench, part)) from None
     for index, reason in sorted(clean.reasons.items()):
         refused.append(_rejected_row(table, index, reason))
+    warnings = [*hinted.warnings, *warnings, *_off_nominal(problem, fit, part)]
     warnings += unknown_beam_warnings(table, refused)
     return _result(problem, clean, fit, scatter, coverage, warnings, refused)
 
@@ -202,9 +216,7 @@ def _result(
         [(readings_u, max(scatter.dof, 1.0)), (_other_u(u_nm, readings_u), math.inf)]
     )
     k = coverage_factor(coverage, dof)
-    warnings = (
-        warnings + disagreements(seen) + _plain_warnings(pitch_nm, u_nm, part, clean)
-    )
+    warnings = warnings + disagreements(seen) + _plain_warnings(pitch_nm, u_nm, clean)
     used = clean.used
     table = replace(problem.table, order=clean.order).take(used)
     return PitchResult(
@@ -239,17 +251,20 @@ def _other_u(u_nm: float, readings_u_nm: float) -> float:
     return math.sqrt(max(0.0, u_nm**2 - readings_u_nm**2))
 
 
-def _plain_warnings(
-    pitch_nm: float, u_nm: float, part: Part, clean: CleanFit
-) -> list[str]:
-    warnings = []
+def _off_nominal(problem: FitProblem, fit: JointFit, part: Part) -> list[str]:
+    pitch_nm = base_pitch_nm(problem.parts[0]) * math.exp(fit.state.values[0])
     off = 100.0 * abs(pitch_nm / part.nominal_pitch_nm - 1.0)
-    if off > part.nominal_within_percent:
-        warnings.append(
-            f"the pitch is {off:.2f} % from the nominal {part.nominal_pitch_nm:g} nm, "
-            f"more than the part file's nominal_within_percent "
-            f"({part.nominal_within_percent:g}): is it this part?"
-        )
+    if off <= part.nominal_within_percent:
+        return []
+    return [
+        f"the pitch is {off:.2f} % from the nominal {part.nominal_pitch_nm:g} nm, "
+        f"more than the part file's nominal_within_percent "
+        f"({part.nominal_within_percent:g}): is it this part?"
+    ]
+
+
+def _plain_warnings(pitch_nm: float, u_nm: float, clean: CleanFit) -> list[str]:
+    warnings = []
     if u_nm > PERCENT_LEVEL * pitch_nm:
         warnings.append(
             f"percent-level result (standard uncertainty {100.0 * u_nm / pitch_nm:.2g} "

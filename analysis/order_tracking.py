@@ -32,6 +32,12 @@ NEAR_GRAZING = 0.05
 """Orders leaving closer to the surface than this cosine (87 deg) are not used: there
 the place on the screen bends too sharply for a linear uncertainty."""
 
+MIRRORED = (
+    "the zero order moves to -x as the stage turns positive: the x column is "
+    "mirrored (a person facing the screen sees +x on the left), or the "
+    "bench's stage.direction is wrong; turn one of them over"
+)
+
 
 @dataclass(frozen=True)
 class Assignment:

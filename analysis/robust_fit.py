@@ -17,6 +17,7 @@ from pitchsweep.analysis.joint_fit import (
     solve_joint_fit,
 )
 from pitchsweep.analysis.order_tracking import (
+    MIRRORED,
     Assignment,
     assign_orders,
     looks_mirrored,
@@ -42,21 +43,21 @@ class CleanFit:
     reasons: dict[int, Rejection]
 
 
-def clean_fit(problem: FitProblem, pitch_u: float) -> CleanFit:
+def clean_fit(
+    problem: FitProblem, pitch_u: float, first: Assignment | None = None
+) -> CleanFit:
     """The joint fit of all spots that belong to orders.
 
-    ``pitch_u`` relative range of the nominal pitch. Raises InputRefused for a
+    ``pitch_u`` relative range of the nominal pitch; ``first`` orders to start from
+    instead of those that the nominal pitch predicts. Raises InputRefused for a
     mirrored table, NoResult when no order but the zero order is seen.
     """
-    if looks_mirrored(problem, pitch_u):
-        raise InputRefused(
-            "the zero order moves to -x as the stage turns positive: the x column is "
-            "mirrored (a person facing the screen sees +x on the left), or the "
-            "bench's stage.direction is wrong; turn one of them over"
-        )
-    found = assign_orders(problem, pitch_u=pitch_u)
+    if first is None and looks_mirrored(problem, pitch_u):
+        raise InputRefused(MIRRORED)
+    found = first or assign_orders(problem, pitch_u=pitch_u)
     require_orders(problem, found.order, found.assigned)
-    fit, scale_2 = _soft_fit(problem, lowest_orders(found), initial_state(problem))
+    start = lowest_orders(found) if first is None else found
+    fit, scale_2 = _soft_fit(problem, start, initial_state(problem))
     for _ in range(ROUNDS):
         previous = found
         found = assign_orders(
