@@ -23,6 +23,9 @@ PARAMETERS = 9
 _DECREMENT, _QUICK_DECREMENT = 2e-4, 4e-3
 """Stop after a step that moved nothing by more than about 1/70 of its error; without
 speckle, 1/15: there what is left after a step is far less than the step."""
+_TRUSTED_TO = 0.003
+"""No beam is a Gaussian down to any depth. Under speckle faint wings weigh as much as
+the core, so what is fainter than this share of the height is trusted less."""
 _CALM, _CALM_AFTER = 0.6, 7
 """Renewed weights can make the steps swing; later steps are shortened."""
 
@@ -187,6 +190,7 @@ def _state(
     signal = p[0] * unit
     fused = fuse(window, signal)
     grainy = speckle.noise_area(window.binning) * signal**2
+    grainy += (_TRUSTED_TO * p[0]) ** 2 if speckle.contrast > 0.0 else 0.0
     weight = fused.used / (fused.variance + grainy)
     model = signal + (p[6] + p[7] * x + p[8] * y)
     return _State(p, unit, dx, dy, signal, model, fused, weight)
