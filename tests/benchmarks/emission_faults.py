@@ -19,15 +19,15 @@ from pathlib import Path
 sys.path.insert(0, str(Path(__file__).parent.parent))
 
 from door_to_dark import measure, spin  # noqa: E402
-from faults.emission_scenes import (  # noqa: E402
+from faults.emission_judge import (  # noqa: E402
     CONTROLLER_FAULTS,
-    SCENES,
     Verdict,
     judge,
     judge_clock,
     judge_controller,
     judge_stuck_shutter,
 )
+from faults.emission_scenes import SCENES  # noqa: E402
 
 from pitchsweep.safety.running_guards import FOLDER_VARIABLE  # noqa: E402
 

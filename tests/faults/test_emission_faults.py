@@ -7,15 +7,16 @@ the age at which a heartbeat is stale; a loaded computer is allowed half a secon
 from pathlib import Path
 
 import pytest
-from faults.emission_scenes import (
+from faults.emission_judge import (
     CONTROLLER_FAULTS,
-    SCENES,
     Verdict,
     judge,
     judge_clock,
     judge_controller,
     judge_stuck_shutter,
 )
+from faults.emission_scenes import SCENES
+from faults.emission_world import Scene
 
 LATE_S = 0.5
 HERE = {
@@ -39,7 +40,9 @@ def check(found: Verdict) -> None:
 @pytest.mark.parametrize(
     "scene", [s for s in SCENES if s.name in HERE], ids=lambda s: str(s.name)
 )
-def test_each_fault_means_dark_and_nothing_goes_on(scene, tmp_path: Path) -> None:  # type: ignore[no-untyped-def]
+def test_each_fault_means_dark_and_nothing_goes_on(
+    scene: Scene, tmp_path: Path
+) -> None:
     check(judge(scene, tmp_path, 0.05))
 
 
