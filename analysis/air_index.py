@@ -4,6 +4,11 @@ import math
 from dataclasses import dataclass
 
 from pitchsweep.analysis.analysis_errors import InputRefused
+from pitchsweep.analysis.propagation import propagated, slopes
+from pitchsweep.analysis.records import FloatArray
+
+EQUATION_U = 1e-8
+"""What the equation itself is good for (common practice, no source)."""
 
 
 @dataclass(frozen=True)
@@ -62,23 +67,20 @@ def saturation_pressure_pa(temperature_c: float) -> float:
 def air_index_u(vacuum_wavelength_nm: float, air: AirState, u: AirState) -> float:
     """Standard uncertainty of the index from the air's (fields of ``u``)."""
 
-    def index(dt: float, dp: float, dh: float) -> float:
-        humidity = min(100.0, max(0.0, air.humidity_percent + dh))
-        moved = AirState(air.temperature_C + dt, air.pressure_hPa + dp, humidity)
-        return air_index(vacuum_wavelength_nm, moved)
+    def index(air: FloatArray) -> float:
+        return air_index(vacuum_wavelength_nm, AirState(*(float(v) for v in air)))
 
-    base = index(0.0, 0.0, 0.0)
-    # One-sided slopes towards the middle of the range stay inside it.
-    dt = 0.1 if air.temperature_C < 25.0 else -0.1
-    dp = 1.0 if air.pressure_hPa < 900.0 else -1.0
-    dh = 1.0 if air.humidity_percent < 50.0 else -1.0
-    parts = (
-        (index(dt, 0.0, 0.0) - base) / dt * u.temperature_C,
-        (index(0.0, dp, 0.0) - base) / dp * u.pressure_hPa,
-        (index(0.0, 0.0, dh) - base) / dh * u.humidity_percent,
-        1e-8,  # the equation itself, common practice
+    # The steps go towards the middle of the range and so stay inside it.
+    steps = (
+        0.1 if air.temperature_C < 25.0 else -0.1,
+        1.0 if air.pressure_hPa < 900.0 else -1.0,
+        1.0 if air.humidity_percent < 50.0 else -1.0,
     )
-    return math.sqrt(sum(part * part for part in parts))
+    slope = slopes(
+        index, (air.temperature_C, air.pressure_hPa, air.humidity_percent), steps
+    )
+    inputs = propagated(slope, (u.temperature_C, u.pressure_hPa, u.humidity_percent))
+    return math.hypot(math.sqrt(inputs[0, 0]), EQUATION_U)
 
 
 def _check_range(what: str, value: float, low: float, high: float, unit: str) -> None:

@@ -9,6 +9,7 @@ import math
 
 import numpy as np
 
+from pitchsweep.analysis.budget_words import readings_detail, source_detail
 from pitchsweep.analysis.fit_parameters import Source
 from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.joint_fit import JointFit
@@ -28,9 +29,21 @@ def fit_budget(problem: FitProblem, fit: JointFit, pitch_nm: float) -> list[Budg
     steps = float(np.sum((fit.step_pull[0] / problem.u_step_rad) ** 2))
     shares[Source.STEPS] = steps
     readings = max(0.0, float(row[0]) - sum(shares.values()))
-    lines = [BudgetLine(READINGS, "A", pitch_nm * math.sqrt(readings))]
+    lines = [
+        BudgetLine(
+            READINGS,
+            "A",
+            pitch_nm * math.sqrt(readings),
+            readings_detail(int(fit.used.sum())),
+        )
+    ]
     lines += [
-        BudgetLine(str(source), "B", pitch_nm * math.sqrt(share))
+        BudgetLine(
+            str(source),
+            "B",
+            pitch_nm * math.sqrt(share),
+            source_detail(problem, fit, source, pitch_nm),
+        )
         for source, share in shares.items()
     ]
     return lines

@@ -18,22 +18,24 @@ from pitchsweep.analysis.consistency import (
     pitches_seen,
 )
 from pitchsweep.analysis.decision import coverage_factor, decide, effective_dof
-from pitchsweep.analysis.fit_parameters import Kind
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
 from pitchsweep.analysis.joint_fit import JointFit, solve_joint_fit
+from pitchsweep.analysis.nuisances import fitted_nuisances
 from pitchsweep.analysis.order_visibility import why_no_order
 from pitchsweep.analysis.parameter_table import REFERENCE_C, base_pitch_nm
 from pitchsweep.analysis.pitch_hint import fit_with_hint
 from pitchsweep.analysis.records import (
-    Nuisance,
     OrderTable,
     PitchResult,
     RejectedSpot,
     Rejection,
 )
 from pitchsweep.analysis.robust_fit import CleanFit, rescaled, residual_2
+from pitchsweep.analysis.second_look import advice, monte_carlo
 from pitchsweep.analysis.shared_places import repeats_counted
 from pitchsweep.analysis.unknown_beams import unknown_beam_warnings
+from pitchsweep.analysis.weak_directions import weak_directions
+from pitchsweep.analysis.what_would_help import Sweep
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 
@@ -66,6 +68,7 @@ def measure_pitch(
     air: AirState | None = None,
     rejected: tuple[RejectedSpot, ...] = (),
     trust_nominal: bool = True,
+    generator: np.random.Generator | None = None,
 ) -> PitchResult:
     """The pitch of ``part`` at 20 deg C that all spots of ``table`` give together.
 
@@ -74,7 +77,8 @@ def measure_pitch(
     the mean state during the sweep (the bench file's if None);
     ``rejected`` lists candidates refused before. Orders are counted from the part's
     nominal pitch until the spots contradict it; ``trust_nominal`` False counts them
-    without (then half and double are judged by the spots' light). Raises
+    without (then half and double are judged by the spots' light). ``generator``: draw
+    all inputs with it too (JCGM 101), to say whether that bears the result out. Raises
     InputRefused for a mirrored or empty table or a laser the bench does not have;
     NoResult when the data do not determine a pitch, or several alike.
     """
@@ -104,7 +108,13 @@ def measure_pitch(
         refused.append(_rejected_row(table, index, reason))
     warnings = [*hinted.warnings, *warnings, *_off_nominal(problem, fit, part)]
     warnings += unknown_beam_warnings(table, refused)
-    return _result(problem, clean, fit, scatter, coverage, warnings, refused)
+    result = _result(problem, clean, fit, scatter, coverage, warnings, refused)
+    sweep = Sweep(problem, clean.order, fit, bench, air)
+    result = replace(result, advice=advice(sweep, result))
+    if generator is None:
+        return result
+    drawn = monte_carlo(sweep, result, max(scatter.dof, 1.0), generator)
+    return replace(result, monte_carlo=drawn)
 
 
 def _check(table: OrderTable, bench: Bench) -> None:
@@ -207,7 +217,8 @@ def _result(
     if not math.isfinite(u_nm) or u_nm > WORST_RELATIVE_U * pitch_nm:
         raise NoResult(
             f"the spots leave the pitch uncertain by {100.0 * u_nm / pitch_nm:.0f} %; "
-            "more angles at which an order crosses the screen are needed"
+            "more angles at which an order crosses the screen are needed",
+            remedy="; ".join(weak_directions(problem, fit, pitch_nm)),
         )
     if not fit.converged:
         raise NoResult("the joint fit did not settle; check bench and part files")
@@ -232,7 +243,7 @@ def _result(
         spots_used=int(used.sum()),
         orders_used=tuple(int(m) for m in np.unique(clean.order[used])),
         budget=tuple(budget),
-        nuisance=_nuisances(problem, fit),
+        nuisance=fitted_nuisances(problem, fit),
         decision=decide(pitch_nm, u_nm, k * u_nm, part.tolerance),
         warnings=tuple(warnings),
         rejected=tuple(refused),
@@ -278,25 +289,3 @@ def _plain_warnings(pitch_nm: float, u_nm: float, clean: CleanFit) -> list[str]:
             "the rejected spots for ghosts, second gratings or a wrong nominal pitch"
         )
     return warnings
-
-
-def _nuisances(problem: FitProblem, fit: JointFit) -> tuple[Nuisance, ...]:
-    rows = []
-    for index, parameter in enumerate(problem.parameters[1:], start=1):
-        scale, mean = parameter.shown_scale, parameter.mean
-        value = float(fit.state.values[index])
-        if parameter.kind is Kind.LOG_RATIO and mean:
-            value = mean * math.exp(value)
-        else:
-            value = mean + value * scale
-        rows.append(
-            Nuisance(
-                name=parameter.name,
-                value=value,
-                u=math.sqrt(max(0.0, float(fit.covariance[index, index]))) * scale,
-                unit=parameter.unit,
-                prior=mean,
-                u_prior=parameter.u_prior * scale,
-            )
-        )
-    return tuple(rows)

@@ -149,7 +149,10 @@ class BudgetLine:
 
 @dataclass(frozen=True)
 class Nuisance:
-    """A fitted quantity that is not the pitch, with its prior."""
+    """A fitted quantity that is not the pitch, with its prior.
+
+    ``correlation`` is that of the fitted quantity with the pitch.
+    """
 
     name: str
     value: float
@@ -157,6 +160,7 @@ class Nuisance:
     unit: str
     prior: float
     u_prior: float
+    correlation: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -187,12 +191,34 @@ class PitchSeen:
 
 
 @dataclass(frozen=True)
+class MonteCarlo:
+    """The pitch when all inputs are drawn (JCGM 101), all in nm.
+
+    ``low_nm`` and ``high_nm`` bound the result's coverage symmetrically in
+    probability. ``settled``: the draws met ``tolerance_nm``; ``lost`` of them gave no
+    pitch. ``validated``: the interval pitch +- U agrees with it within the tolerance.
+    """
+
+    pitch_nm: float
+    u_nm: float
+    low_nm: float
+    high_nm: float
+    draws: int
+    lost: int
+    tolerance_nm: float
+    settled: bool
+    validated: bool
+
+
+@dataclass(frozen=True)
 class PitchResult:
     """What the joint fit says of one part, and everything the report shows.
 
     ``table`` holds the spots used, ``order`` filled in; ``fitted_x_mm``/``fitted_y_mm``
     and ``residual_x``/``residual_y`` (in units of the stated standard uncertainty)
     align with it. ``incidence_deg`` is the fitted incidence of every used spot.
+    ``advice`` says what the data leave weak and what would help; ``monte_carlo`` is
+    there on request.
     """
 
     pitch_nm: float
@@ -219,6 +245,8 @@ class PitchResult:
     residual_x: FloatArray
     residual_y: FloatArray
     assumed_absent: tuple[str, ...] = ()
+    advice: tuple[str, ...] = ()
+    monte_carlo: MonteCarlo | None = None
     software: str = ""
     inputs_sha256: str = ""
 

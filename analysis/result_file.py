@@ -5,10 +5,17 @@ import math
 from typing import Any
 
 from pitchsweep.analysis.analysis_errors import NoResult
-from pitchsweep.analysis.number_text import percent, plain_percent, relative, rounded
+from pitchsweep.analysis.number_text import (
+    percent,
+    plain_percent,
+    relative,
+    rounded,
+    significant,
+)
 from pitchsweep.analysis.records import (
     BudgetLine,
     Decision,
+    MonteCarlo,
     Nuisance,
     PitchResult,
     PitchSeen,
@@ -49,6 +56,8 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
         "nuisance": [_nuisance(item) for item in result.nuisance],
         "pitches_seen": [_pitch_seen(seen) for seen in result.pitches_seen],
         **_decision(result.decision),
+        **_drawn(result.monte_carlo),
+        "advice": list(result.advice),
         "assumed_absent": list(result.assumed_absent),
         "warnings": list(result.warnings),
         "software": result.software,
@@ -98,8 +107,24 @@ def summary_lines(result: PitchResult) -> list[str]:
         f" orders {used}; {len(result.rejected)} spots not used",
         f"Agreement  reduced chi-squared {agreement_words(result)}",
     ]
+    if result.monte_carlo is not None:
+        lines.append(f"Drawn      {drawn_words(result.monte_carlo)}")
     lines += [f"Warning    {warning}" for warning in result.warnings]
     return [line.replace("\N{MINUS SIGN}", "-") for line in lines]
+
+
+def drawn_words(drawn: MonteCarlo) -> str:
+    """The Monte Carlo interval, and whether it bears the stated one out."""
+    low = rounded(drawn.low_nm, drawn.u_nm)
+    high = rounded(drawn.high_nm, drawn.u_nm)
+    if not drawn.settled:
+        verdict = "not settled to"
+    else:
+        verdict = "agrees within" if drawn.validated else "does not agree within"
+    return (
+        f"{low.value} to {high.value} nm, u {low.u} nm, from {drawn.draws} draws of all"
+        f" inputs; {verdict} {significant(drawn.tolerance_nm)} nm"
+    )
 
 
 def decision_words(decision: Decision) -> str:
@@ -145,6 +170,7 @@ def _nuisance(item: Nuisance) -> dict[str, Any]:
         "unit": item.unit,
         "prior": _number(item.prior),
         "u_prior": _number(item.u_prior),
+        "correlation": _number(item.correlation),
     }
 
 
@@ -156,6 +182,23 @@ def _pitch_seen(seen: PitchSeen) -> dict[str, Any]:
         "deviation_nm": _number(seen.deviation_nm),
         "u_deviation_nm": _number(seen.u_deviation_nm),
         "spots": int(seen.spots),
+    }
+
+
+def _drawn(drawn: MonteCarlo | None) -> dict[str, Any]:
+    if drawn is None:
+        return {}
+    return {
+        "monte_carlo": {
+            "pitch_nm": _number(drawn.pitch_nm),
+            "u_pitch_nm": _number(drawn.u_nm),
+            "interval_nm": [_number(drawn.low_nm), _number(drawn.high_nm)],
+            "draws": int(drawn.draws),
+            "lost": int(drawn.lost),
+            "tolerance_nm": _number(drawn.tolerance_nm),
+            "settled": bool(drawn.settled),
+            "validated": bool(drawn.validated),
+        }
     }
 
 

@@ -1,0 +1,55 @@
+"""What is asked of a finished fit: what would help, and the pitch with inputs drawn."""
+
+import math
+
+import numpy as np
+
+from pitchsweep.analysis.monte_carlo import agrees, tolerance_of
+from pitchsweep.analysis.parameter_table import base_pitch_nm
+from pitchsweep.analysis.records import MonteCarlo, PitchResult
+from pitchsweep.analysis.redrawn_fit import Stated, redrawn_pitch
+from pitchsweep.analysis.weak_directions import weak_directions
+from pitchsweep.analysis.what_would_help import Sweep, what_would_help
+
+
+def advice(sweep: Sweep, result: PitchResult) -> tuple[str, ...]:
+    """Sentences: what the pitch trades against, then what would help most."""
+    extra = _beside_the_fit(sweep, result)
+    weak = weak_directions(sweep.problem, sweep.fit, result.pitch_nm, extra)
+    return (*weak, *what_would_help(sweep, result.pitch_nm, extra))
+
+
+def monte_carlo(
+    sweep: Sweep,
+    result: PitchResult,
+    readings_dof: float,
+    generator: np.random.Generator,
+) -> MonteCarlo:
+    """The result with all inputs drawn, and whether it bears the stated one out."""
+    stated = Stated(
+        base_nm=base_pitch_nm(sweep.problem.parts[0]),
+        coverage=result.coverage,
+        readings_dof=readings_dof,
+        extra_nm=_beside_the_fit(sweep, result),
+    )
+    drawn = redrawn_pitch(sweep.problem, sweep.order, sweep.fit, stated, generator)
+    tolerance = tolerance_of(result.u_pitch_nm)
+    low = result.pitch_nm - result.U_pitch_nm
+    high = result.pitch_nm + result.U_pitch_nm
+    return MonteCarlo(
+        pitch_nm=drawn.mean,
+        u_nm=drawn.u,
+        low_nm=drawn.low,
+        high_nm=drawn.high,
+        draws=drawn.draws,
+        lost=drawn.lost,
+        tolerance_nm=tolerance,
+        settled=drawn.settled,
+        validated=agrees(drawn, low=low, high=high, tolerance=tolerance),
+    )
+
+
+def _beside_the_fit(sweep: Sweep, result: PitchResult) -> float:
+    """The part of u (nm) that is in the budget but not in the fit's own variance."""
+    fitted_2 = result.pitch_nm**2 * float(sweep.fit.covariance[0, 0])
+    return math.sqrt(max(0.0, result.u_pitch_nm**2 - fitted_2))
