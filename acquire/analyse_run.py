@@ -37,6 +37,9 @@ ORDERS, RESULT, REPORT, PAPER, PICTURE = (
 )
 
 
+DRAWS_SEED = 0
+
+
 @dataclass(frozen=True)
 class Analysed:
     """A result with what it was made from."""
@@ -46,9 +49,15 @@ class Analysed:
     sources: tuple[FitSource, ...]
 
 
-def analyse(sources: Sequence[FitSource], *, trust_nominal: bool = True) -> Analysed:
+def analyse(
+    sources: Sequence[FitSource],
+    *,
+    trust_nominal: bool = True,
+    draw_inputs: bool = False,
+) -> Analysed:
     """One fit of everything in ``sources``; see ``measure_pitch``.
 
+    ``draw_inputs``: by Monte Carlo too; the same inputs give the same draws.
     Raises InputRefused, NoResult, or RunRefused where inputs cannot be joined.
     """
     try:
@@ -67,6 +76,7 @@ def analyse(sources: Sequence[FitSource], *, trust_nominal: bool = True) -> Anal
         coverage=given.coverage,
         rejected=given.rejected,
         trust_nominal=trust_nominal,
+        generator=np.random.default_rng(DRAWS_SEED) if draw_inputs else None,
     )
     result = replace(
         result,

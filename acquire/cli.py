@@ -97,12 +97,18 @@ def fit(
             "--unknown-pitch", help="Count the orders without the nominal pitch."
         ),
     ] = False,
+    monte_carlo: Annotated[
+        bool,
+        typer.Option(
+            "--monte-carlo", help="Draw all inputs too, to bear U out; takes minutes."
+        ),
+    ] = False,
     as_json: Json = False,
 ) -> None:
     """Fit runs, order tables or frames; a run's derived files are written anew."""
     from pitchsweep.acquire.fit_sources import FitOptions
 
-    options = FitOptions(bench, part, laser, coverage, unknown_pitch)
+    options = FitOptions(bench, part, laser, coverage, unknown_pitch, monte_carlo)
     _fit_and_show(inputs, out, as_json, options)
 
 
@@ -157,7 +163,11 @@ def _fit_and_show(
 
     options = options or FitOptions()
     sources = read_sources(inputs, options)
-    analysed = analyse(sources, trust_nominal=not options.unknown_pitch)
+    analysed = analyse(
+        sources,
+        trust_nominal=not options.unknown_pitch,
+        draw_inputs=options.monte_carlo,
+    )
     if out is None and len(sources) == 1 and sources[0].run is not None:
         out = sources[0].run.folder.path
     if out is not None:

@@ -29,6 +29,7 @@ class FitOptions:
     laser: str | None = None
     coverage: float | None = None
     unknown_pitch: bool = False
+    monte_carlo: bool = False
 
 
 @dataclass(frozen=True)

@@ -1,11 +1,13 @@
 """What each line of the budget is, in words, and how the pitch depends on it."""
 
 import math
+from collections.abc import Sequence
 
 from pitchsweep.analysis.fit_parameters import Parameter, Source
 from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.joint_fit import JointFit
 from pitchsweep.analysis.number_text import significant
+from pitchsweep.analysis.records import Nuisance
 
 MEANING = {
     Source.PITCH: "what the certificate of the reference leaves open",
@@ -25,12 +27,21 @@ MEANING = {
     Source.DRIFT: "wandering of camera, beam and wavelength during a run",
     Source.STEPS: "stage angles that are wrong by chance, step by step",
 }
+MOST_CORRELATED = 5
 INDEPENDENT = (
     "The lines are independent of each other by construction: each is what one group"
     " of inputs, readings or prior knowledge, adds to the pitch, and no input is in"
     " two of them."
 )
 """What the report says of correlations between the budget's inputs."""
+
+
+def correlation_words(nuisances: Sequence[Nuisance]) -> str:
+    """The fitted quantities that go most with the pitch, with their correlations."""
+    ranked = sorted(nuisances, key=lambda n: -abs(n.correlation))[:MOST_CORRELATED]
+    told = [n for n in ranked if abs(n.correlation) >= 0.005]
+    words = [f"{n.name} ({n.correlation:+.2f})" for n in told]
+    return "; ".join(words).replace("(-", "(\N{MINUS SIGN}")
 
 
 def readings_detail(spots: int) -> str:

@@ -10,6 +10,7 @@ from typing import Any
 from jinja2 import Environment, PackageLoader, StrictUndefined
 
 from pitchsweep.analysis.budget_picture import budget_shares, budget_svg
+from pitchsweep.analysis.budget_words import INDEPENDENT, correlation_words
 from pitchsweep.analysis.frame_strip import frames_png
 from pitchsweep.analysis.number_text import (
     percent,
@@ -44,6 +45,7 @@ from pitchsweep.analysis.report_words import (
     TRACKS_SAID,
 )
 from pitchsweep.analysis.residual_picture import residuals_svg
+from pitchsweep.analysis.result_file import drawn_words
 from pitchsweep.analysis.track_picture import tracks_svg
 
 TEMPLATE = "report.html"
@@ -108,6 +110,10 @@ def _values(result: PitchResult, context: ReportContext) -> dict[str, Any]:
         "u_pitch": significant(result.u_pitch_nm),
         "seen": seen_rows(result),
         "absent": result.assumed_absent,
+        "independent": INDEPENDENT,
+        "correlated": correlation_words(result.nuisance),
+        "drawn": drawn_words(result.monte_carlo) if result.monte_carlo else "",
+        "advice": result.advice,
         "nuisances": [n for n in nuisances if not n.name.startswith(FOLDED)],
         "more_nuisances": [n for n in nuisances if n.name.startswith(FOLDED)],
         "reasons": reason_rows(result),
