@@ -15,7 +15,8 @@ from pitchsweep.analysis.records import FloatArray
 
 DIGITS = 2
 """Significant digits of u that count."""
-FEWEST_BLOCKS = 2
+FEWEST_BLOCKS = 5
+"""JCGM 101 would stop after two, whose scatter can be small by chance."""
 MOST_LOST = 1e-3
 """Share of the draws that may give no value."""
 

@@ -17,6 +17,7 @@ from pitchsweep.analysis.damped_descent import (
     descend,
     inverse,
 )
+from pitchsweep.analysis.propagation import propagated, slopes
 
 Floats = NDArray[np.float64]
 
@@ -84,3 +85,36 @@ def test_certified_values_of_nist_regressions(name: str, start: int) -> None:
     slope = jacobian(model, end.point)
     found = np.sqrt(np.diag(inverse(slope.T @ slope)) * left / dof)
     np.testing.assert_allclose(found, given.sd, rtol=2.5e-6)
+
+
+def test_gum_h3_calibration_line_of_a_thermometer() -> None:
+    """GUM H.3: y1 -0.1712(29), y2 0.00218(67), r -0.930, b(30) -0.1494(41).
+
+    Pairs M (they give the source's sum of squares), results S (GTC documentation)
+    and C.
+    """
+    t = np.array(
+        [21.521, 22.012, 22.512, 23.003, 23.507, 23.999, 24.513, 25.002, 25.503,
+         26.010, 26.511]
+    )  # fmt: skip
+    b = -1e-3 * np.array([171, 169, 166, 159, 164, 165, 156, 157, 159, 161, 160])
+
+    def line(y: Floats) -> Floats:
+        return np.asarray(y[0] + y[1] * (t - 20.0))
+
+    end = fitted(line, b, np.zeros(2), 1e-3)
+    assert end.converged
+    left = float(np.sum((b - line(end.point)) ** 2))
+    assert left == pytest.approx(1.10096583109e-4, rel=1e-9)
+    slope = jacobian(line, end.point)
+    covariance = inverse(slope.T @ slope) * left / (len(t) - 2)
+    u = np.sqrt(np.diag(covariance))
+    assert end.point[0] == pytest.approx(-0.1712, abs=5e-5)
+    assert end.point[1] == pytest.approx(0.00218, abs=5e-6)
+    assert u[0] == pytest.approx(0.0029, abs=5e-5)
+    assert u[1] == pytest.approx(0.00067, abs=5e-6)
+    r = covariance / np.outer(u, u)
+    assert r[0, 1] == pytest.approx(-0.930, abs=5e-4)
+    at_30 = slopes(lambda y: y[0] + y[1] * 10.0, end.point, u)
+    assert end.point @ at_30[0] == pytest.approx(-0.1494, abs=5e-5)
+    assert np.sqrt(propagated(at_30, u, r))[0, 0] == pytest.approx(0.0041, abs=5e-5)
