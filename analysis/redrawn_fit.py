@@ -28,7 +28,7 @@ from pitchsweep.analysis.records import FloatArray, IntArray
 
 ROWS_AT_ONCE = 4096
 """Spots times draws that are traced in one go."""
-SMALLEST_BLOCK, LARGEST_BLOCK, MOST_DRAWS = 1_000, 10_000, 50_000
+SMALLEST_BLOCK, LARGEST_BLOCK, MOST_DRAWS = 500, 10_000, 50_000
 
 
 @dataclass(frozen=True)
