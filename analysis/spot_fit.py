@@ -11,7 +11,7 @@ a, b, c (1/px^2), plane level (DN a ms), its slopes per column and per row.
 """
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -23,7 +23,7 @@ PARAMETERS = 9
 _DECREMENT, _QUICK_DECREMENT = 2e-4, 4e-3
 """Stop after a step that moved nothing by more than about 1/70 of its error; without
 speckle, 1/15: there what is left after a step is far less than the step."""
-_TRUSTED_TO = 0.003
+TRUSTED_TO = 0.003
 """No beam is a Gaussian down to any depth. Under speckle faint wings weigh as much as
 the core, so what is fainter than this share of the height is trusted less."""
 _CALM, _CALM_AFTER = 0.6, 7
@@ -107,14 +107,21 @@ class _State:
 
 
 def fit_spot(
-    window: Window, start: Shape, speckle: Speckle, *, limit: int = 30
+    window: Window,
+    start: Shape,
+    speckle: Speckle,
+    *,
+    limit: int = 30,
+    trusted_to: float = TRUSTED_TO,
 ) -> SpotFit:
     """The spot in ``window``, from ``start``, in at most ``limit`` steps.
 
     Levenberg-Marquardt with an analytic Jacobian; the weights are fixed within a step.
     ``converged`` is False where the steps run out or the spot collapses; then the
-    covariance holds infinities.
+    covariance holds infinities. ``trusted_to``: what is fainter than this share of the
+    height weighs less, under speckle only.
     """
+    window = replace(window, trusted_to=trusted_to)
     reference = (start.column_px, start.row_px)
     x, y = window.x - reference[0], window.y - reference[1]
     first = np.array([start.height, 0, 0, start.a, start.b, start.c, 0, 0, 0])
@@ -190,7 +197,8 @@ def _state(
     signal = p[0] * unit
     fused = fuse(window, signal)
     grainy = speckle.noise_area(window.binning) * signal**2
-    grainy += (_TRUSTED_TO * p[0]) ** 2 if speckle.contrast > 0.0 else 0.0
+    if speckle.contrast > 0.0:
+        grainy += (window.trusted_to * p[0]) ** 2
     weight = fused.used / (fused.variance + grainy)
     model = signal + (p[6] + p[7] * x + p[8] * y)
     return _State(p, unit, dx, dy, signal, model, fused, weight)

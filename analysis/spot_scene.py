@@ -16,6 +16,7 @@ from pitchsweep.analysis.spot_judgement import FrameSide, light_over_noise
 from pitchsweep.analysis.spot_window import BoolArray, FrameLayer, Window, cut_window
 
 _WINDOW_SIGMAS = 5.0
+_CORE_ONLY, _DISAGREE, _LEFT = 0.06, 3.3, 0.1
 _CLEARLY_ABOVE, _LEAST_OVER_UNEVENNESS = 100.0, 12.0
 _PIXELS_A_RADIUS, _PIXELS_FOR_GRAIN = 3.0, 6.0
 """Bins this fine a radius cost a fit 0.5 % of its accuracy; grains are told from the
@@ -120,6 +121,46 @@ def refit(scene: StepScene, item: FittedCandidate, speckle: Speckle) -> FittedCa
         window = _window(scene, shape, half, _PIXELS_FOR_GRAIN)
         item = replace(item, window=window)
     return replace(item, fit=fit_spot(item.window, shape, speckle))
+
+
+def core_if_wings_disagree(
+    item: FittedCandidate, first: Shape, speckle: Speckle
+) -> FittedCandidate:
+    """The fit, or that of the core alone where the two differ by too much.
+
+    Under speckle faint wings weigh as much as the core: a ghost or a halo of a few
+    percent pulls the spot. The difference of an efficient and a less efficient
+    estimate has the difference of their variances; beyond ``_DISAGREE`` of it, wings
+    are not trusted, and a tenth of what they pulled is added to the core's error.
+    ``first`` is where the core was seen.
+    """
+    if not item.fit.converged:
+        return item
+    core = fit_spot(item.window, first, speckle, trusted_to=_CORE_ONLY)
+    if not core.converged:
+        return item
+    off = np.array(
+        [
+            core.shape.column_px - item.fit.shape.column_px,
+            core.shape.row_px - item.fit.shape.row_px,
+        ]
+    )
+    spread = core.covariance - item.fit.covariance
+    # Rounding and few grains: never less than a fifth of the core's own variance.
+    least = 0.2 * core.covariance
+    values = np.linalg.eigvalsh(spread - least)
+    spread = spread if values.min() > 0.0 else spread + least
+    if np.linalg.eigvalsh(spread).min() <= 0.0:
+        spread = core.covariance
+    if float(off @ np.linalg.solve(spread, off)) < _DISAGREE**2:
+        return item
+    left = (_LEFT**2) * np.outer(off, off)
+    core = replace(
+        core,
+        covariance=core.covariance + left,
+        speckle_covariance=core.speckle_covariance + left,
+    )
+    return replace(item, fit=core)
 
 
 def lost_in_unevenness(scene: StepScene, fit: SpotFit) -> bool:

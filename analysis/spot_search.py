@@ -31,6 +31,7 @@ from pitchsweep.analysis.spot_scene import (
     Exposure,
     FittedCandidate,
     StepScene,
+    core_if_wings_disagree,
     fit_candidate,
     refit,
     step_scene,
@@ -143,7 +144,12 @@ def _with_speckle(
         return grain, found
     renewed = [refit(scene, item, grain or TYPICAL_SPECKLE) for item in renewed]
     grain = _measured(renewed)
-    return grain, [refit(scene, item, grain or TYPICAL_SPECKLE) for item in renewed]
+    last = grain or TYPICAL_SPECKLE
+    renewed = [refit(scene, item, last) for item in renewed]
+    return grain, [
+        core_if_wings_disagree(item, first.fit.shape, last)
+        for item, first in zip(renewed, found, strict=True)
+    ]
 
 
 def _none_seen(speckle: Speckle | None) -> bool:

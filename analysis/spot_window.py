@@ -51,12 +51,16 @@ class Layer:
 
 @dataclass(frozen=True)
 class Window:
-    """Layers and the pixel coordinates of the window: ``x`` (1, W), ``y`` (H, 1)."""
+    """Layers and the pixel coordinates of the window: ``x`` (1, W), ``y`` (H, 1).
+
+    ``trusted_to``: the share of the height down to which the model is believed.
+    """
 
     x: FloatArray
     y: FloatArray
     binning: int
     layers: tuple[Layer, ...]
+    trusted_to: float = 0.0
 
     def clipped(self) -> BoolArray:
         """Pixels saturated in every exposure."""
