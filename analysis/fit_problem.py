@@ -7,13 +7,13 @@ import numpy as np
 
 from pitchsweep.analysis.air_index import AirState, air_index
 from pitchsweep.analysis.fit_parameters import ARCSEC, Parameter
-from pitchsweep.analysis.parameter_table import (
+from pitchsweep.analysis.fit_scene import (
     FitScene,
     base_pitch_nm,
     fit_scene,
-    parameter_table,
     strain,
 )
+from pitchsweep.analysis.parameter_table import parameter_table
 from pitchsweep.analysis.part_ray import N_LOCAL, Local
 from pitchsweep.analysis.records import FloatArray, IntArray, OrderTable
 from pitchsweep.configs.bench_model import Bench

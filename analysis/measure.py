@@ -19,10 +19,10 @@ from pitchsweep.analysis.consistency import (
 )
 from pitchsweep.analysis.decision import coverage_factor, decide, effective_dof
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
+from pitchsweep.analysis.fit_scene import REFERENCE_C, base_pitch_nm
 from pitchsweep.analysis.joint_fit import JointFit, solve_joint_fit
 from pitchsweep.analysis.nuisances import fitted_nuisances
 from pitchsweep.analysis.order_visibility import why_no_order
-from pitchsweep.analysis.parameter_table import REFERENCE_C, base_pitch_nm
 from pitchsweep.analysis.pitch_hint import fit_with_hint
 from pitchsweep.analysis.records import (
     OrderTable,

@@ -4,8 +4,8 @@ import math
 
 import numpy as np
 
+from pitchsweep.analysis.fit_scene import base_pitch_nm
 from pitchsweep.analysis.monte_carlo import agrees, tolerance_of
-from pitchsweep.analysis.parameter_table import base_pitch_nm
 from pitchsweep.analysis.records import MonteCarlo, PitchResult
 from pitchsweep.analysis.redrawn_fit import Stated, redrawn_pitch
 from pitchsweep.analysis.weak_directions import weak_directions

@@ -10,8 +10,9 @@ from builders import demo_job, twin_sweep
 from pitchsweep.acquire.fit_input import FitInput, joined
 from pitchsweep.analysis.air_index import AirState
 from pitchsweep.analysis.fit_parameters import Kind, Parameter, Scope, Source
+from pitchsweep.analysis.fit_scene import fit_scene
 from pitchsweep.analysis.measure import measure_pitch
-from pitchsweep.analysis.parameter_table import fit_scene, parameter_table
+from pitchsweep.analysis.parameter_table import parameter_table
 from pitchsweep.configs.part_model import Certified
 
 AIR = AirState(20.0, 1013.25, 50.0)
