@@ -101,6 +101,12 @@ def input_from_run(record: RunRecord) -> FitInput:
     warnings += [
         f"fault met during the sweep: {fault.detail}" for fault in record.faults
     ]
+    clipped = sum(bool(s.saturated) for step in record.steps for s in step.found.spots)
+    if clipped:
+        warnings.append(
+            f"{clipped} spots were saturated in every exposure and fitted from their "
+            "wings: add a shorter exposure to the recipe"
+        )
     places = places_of([(step.found, _place(step)) for step in record.steps])
     return FitInput(
         name=str(record.folder.path),

@@ -20,8 +20,8 @@ class SpotLimits:
     """What a spot must be; lengths in px.
 
     The stated error may be ``largest_u_px`` or 0.4 of the minor radius. Heights are
-    judged by light over noise. ``accept_saturated`` lets a spot that is saturated in
-    every exposure through, fitted from its unsaturated pixels and marked.
+    judged by light over noise. A spot that is saturated in every exposure is fitted
+    from its unsaturated pixels and marked; refused without ``accept_saturated``.
     """
 
     least_sigma_px: float = 0.7
@@ -32,7 +32,7 @@ class SpotLimits:
     largest_misfit_share: float = 0.5
     edge_sigmas: float = 2.0
     clipped_core: float = 0.05
-    accept_saturated: bool = False
+    accept_saturated: bool = True
 
 
 @dataclass(frozen=True)
@@ -154,7 +154,7 @@ def _stated(window: Window, fit: SpotFit, seen: Misfit, speckle: Speckle) -> Spo
         angle_rad=angle,
         snr=fit.shape.height / noise,
         exposure_ms=exposure,
-        saturated=clipped_core(window, fit) > 0.0,
+        saturated=clipped_core(window, fit) > SpotLimits.clipped_core,
         shared_px2=_as_rows(stated - private),
     )
 

@@ -11,7 +11,8 @@ from spot_frames import Scene, TrueSpot, camera, expose
 
 from pitchsweep.analysis.records import Rejection, Spot, SpotSearch
 from pitchsweep.analysis.speckle_grain import Speckle
-from pitchsweep.analysis.spot_search import Exposure, find_spots
+from pitchsweep.analysis.spot_judgement import SpotLimits
+from pitchsweep.analysis.spot_search import Exposure, SearchSettings, find_spots
 
 TIMES_MS = (2.0, 20.0)
 BRIGHT = TrueSpot(200.3, 100.6, 400.0, (4.0, 3.5), 0.4)
@@ -165,11 +166,45 @@ def test_frames_are_not_modified_and_answers_repeat() -> None:
         assert np.array_equal(before, after.frame)
 
 
-def test_a_spot_clipped_in_every_exposure_is_refused_as_saturated() -> None:
-    found = search(Scene((replace(BRIGHT, height=6000.0), MIDDLE)))
+CLIPPED = replace(BRIGHT, height=6000.0)
+
+
+def test_a_spot_clipped_in_every_exposure_is_fitted_from_its_wings_and_says_so() -> (
+    None
+):
+    out: list[float] = []
+    for seed in range(8):
+        spot = nearest(search(Scene((CLIPPED, MIDDLE)), seed=seed), CLIPPED)
+        assert spot.saturated
+        out += pulls(spot, CLIPPED)
+    # 16 normal pulls: their rms lies within 1 +- 0.55 (3 sigma).
+    assert float(np.sqrt(np.mean(np.square(out)))) == pytest.approx(1.0, abs=0.55)
+
+
+def test_a_clipped_spot_is_refused_where_that_is_wished() -> None:
+    noise = camera(12)
+    exposures, dark = expose(Scene((CLIPPED, MIDDLE)), noise, TIMES_MS, 0)
+    strict = SearchSettings(limits=SpotLimits(accept_saturated=False))
+    found = find_spots(exposures, dark, noise, 7, settings=strict)
     assert [s for s in found.spots if abs(s.row_px - BRIGHT.row_px) < 5] == []
     assert Rejection.SATURATED in [r.reason for r in found.rejected]
+    assert all(r.score > 0.0 for r in found.rejected)
     nearest(found, MIDDLE)
+
+
+def test_a_ghost_at_the_foot_of_a_spot_hardly_pulls_it() -> None:
+    """5 % of the light five radii away; the wings alone would pull it by a radius."""
+    main = TrueSpot(300.0, 200.0, 60.0, (2.7, 2.5))
+    ghost = TrueSpot(291.6, 209.8, 3.0, (2.7, 2.5))
+    scene = Scene((main, ghost), speckle_contrast=1.0, grain_fwhm_px=2.0)
+    off: list[float] = []
+    pulled: list[float] = []
+    for seed in range(8):
+        spot = search(scene, seed=seed).spots[0]
+        off += [spot.column_px - main.column_px, spot.row_px - main.row_px]
+        pulled += pulls(spot, main)
+    assert float(np.median(np.abs(off))) < 0.5
+    assert float(np.sqrt(np.mean(np.square(pulled)))) < 2.0
 
 
 def test_a_spot_cut_by_the_edge_is_refused() -> None:

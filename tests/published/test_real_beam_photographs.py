@@ -64,8 +64,9 @@ def test_as_many_beams_as_an_eye_sees_with_saturated_ones_let_through(
         assert np.linalg.eigvalsh(np.array(spot.covariance_px2)).min() > 0.0
 
 
-def test_the_saturated_beam_is_refused_as_such_unless_it_is_let_through() -> None:
-    found = search("FBWR_151")
+def test_the_saturated_beam_is_refused_as_such_if_so_wished() -> None:
+    strict = SearchSettings(limits=SpotLimits(accept_saturated=False))
+    found = search("FBWR_151", strict)
     assert found.spots == ()
     reasons = [r.reason for r in found.rejected]
     assert reasons.count(Rejection.SATURATED) == 1
