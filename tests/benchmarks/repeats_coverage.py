@@ -1,7 +1,7 @@
 """Coverage of the pitch where angles are repeated and repeats share their speckle.
 
 Run: python tests/benchmarks/repeats_coverage.py [sweeps a row] [job]
-(120, shims-spots). Every angle of a coarse sweep is taken 1, 4 and 10 times; readings
+(50, shims-spots). Every angle of a coarse sweep is taken 1, 4 and 10 times; readings
 have a private error of 0.03 mm and one of 0.1 mm that all repeats of an angle share, as
 speckle has. Prints rms pull and coverage of the 95 % interval, with the sharing told
 and kept from the fit. Seeds are 0..n-1.
@@ -26,7 +26,7 @@ from pitchsweep.drivers.twin.spots_door import SpotSweep, sweep_spots  # noqa: E
 from pitchsweep.drivers.twin.truth import Truth, draw_truth  # noqa: E402
 
 PRIVATE_MM, SHARED_MM = 0.03, 0.1
-STEP_DEG = 6.0
+STEP_DEG = 8.0
 
 
 def repeated_sweep(job: Job, truth: Truth, seed: int, repeats: int) -> OrderTable:
@@ -112,7 +112,7 @@ def one_row(job: Job, repeats: int, sweeps: int, told: bool) -> str:
 
 def main() -> None:
     """Print the table."""
-    sweeps = int(sys.argv[1]) if len(sys.argv) > 1 else 120
+    sweeps = int(sys.argv[1]) if len(sys.argv) > 1 else 50
     name = sys.argv[2] if len(sys.argv) > 2 else "shims-spots"
     job = demo_job(
         name, twin={"spot_reading_mm": PRIVATE_MM}, recipe={"step_deg": STEP_DEG}
