@@ -35,7 +35,6 @@ from pitchsweep.configs.part_model import Part
 MOST_UNEXPLAINED = 0.2
 """Beyond this share of spots without an order the nominal pitch is doubted."""
 WORTH_A_LOOK = 0.05
-SAME_PITCH = 0.03
 FOUND_RANGE = 0.01
 """Relative range of a pitch found from directions; its own u is far smaller."""
 NOT_AN_ORDER = (Rejection.NO_ORDER, Rejection.TWO_ORDERS, Rejection.OFF_TRACK)
@@ -59,11 +58,12 @@ def fit_with_hint(
 ) -> HintedFit:
     """The clean joint fit with orders from the nominal pitch or without it.
 
-    The nominal pitch is dropped where ``trust_nominal`` is False, and where it leaves
-    more than MOST_UNEXPLAINED of the spots unexplained and a pitch found without it
-    explains more. A certified pitch is always followed. Raises InputRefused and
-    NoResult as ``clean_fit`` and ``orders_without_hint`` do, and NoResult where all
-    orders are multiples of one that is not seen.
+    The nominal pitch is dropped where ``trust_nominal`` is False, and where a fit from
+    it does not settle on a pitch near it, or leaves more than MOST_UNEXPLAINED of the
+    spots unexplained, and a pitch found without it explains more. A certified pitch is
+    always followed. Raises InputRefused and NoResult as ``clean_fit`` and
+    ``orders_without_hint`` do, and AmbiguousOrders where all orders are multiples of
+    one that is not seen.
     """
     part = problem.parts[0]
     if part.certified is not None:
@@ -75,7 +75,8 @@ def fit_with_hint(
     except NoResult as first:
         return _rescued(problem, bench, air, first)
     unexplained = _unexplained(problem, clean)
-    if unexplained > MOST_UNEXPLAINED:
+    settled = clean.fit.converged and _within_range(problem, clean)
+    if unexplained > MOST_UNEXPLAINED or not settled:
         return _better_of(problem, clean, bench, air)
     return HintedFit(problem, clean, _second_look(problem, clean, bench, unexplained))
 
@@ -121,23 +122,20 @@ def _better_of(
     """The fit with the nominal pitch, or the one without if that explains more."""
     if _told(problem.table):
         return HintedFit(problem, clean)
-    if _within_range(problem, clean):
+    if clean.fit.converged and _within_range(problem, clean):
         second = _second_grating(problem, clean)
         if second:
             return HintedFit(problem, clean, second)
     try:
-        found = _found(problem, bench, air, nominal_counts=True)
-        if abs(found.pitch_nm / _pitch_nm(problem, clean) - 1.0) < SAME_PITCH:
-            return HintedFit(problem, clean, found.warnings)
-        other = _refitted(found)
-    except AmbiguousOrders:
-        raise
+        other = _refitted(_found(problem, bench, air, nominal_counts=True))
     except NoResult as reason:
+        if isinstance(reason, AmbiguousOrders) and not _explains(problem, clean):
+            raise
         text = str(reason).splitlines()[0]
         return HintedFit(problem, clean, (f"without the nominal pitch: {text}",))
-    if other.clean.used.sum() > clean.used.sum():
+    if other.clean.used.sum() > clean.used.sum() or not clean.fit.converged:
         return other
-    return HintedFit(problem, clean)
+    return HintedFit(problem, clean, other.warnings)
 
 
 def _pitch_nm(problem: FitProblem, clean: CleanFit) -> float:
@@ -166,6 +164,10 @@ def _second_grating(problem: FitProblem, clean: CleanFit) -> tuple[str, ...]:
 
 def _usable(directions: Directions) -> NDArray[np.bool_]:
     return directions.on_track & ~directions.ghost & ~directions.is_zero
+
+
+def _explains(problem: FitProblem, clean: CleanFit) -> bool:
+    return clean.fit.converged and _unexplained(problem, clean) <= MOST_UNEXPLAINED
 
 
 def _told(table: OrderTable) -> bool:

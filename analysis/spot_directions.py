@@ -21,6 +21,7 @@ from pitchsweep.analysis.part_ray import Local
 from pitchsweep.analysis.records import FloatArray
 from pitchsweep.analysis.zero_track import (
     GATE,
+    NEAREST,
     Track,
     coarse_problem,
     same_track,
@@ -44,7 +45,8 @@ class Directions:
     any order could be, across the grooves and along; ``ghost`` (N,): it lies beside
     a clearly brighter one. ``zero_spots`` lie on the zero order's track, which should
     show at ``zero_expected`` steps; ``zero_cost`` and ``rival_cost`` are the sums of
-    squares of that track and of the next best one taken for it.
+    squares of that track and of the next best one taken for it; ``zero_u`` is how
+    well the bench file alone knows sin b - sin a near the zero order.
     """
 
     ratio: FloatArray
@@ -59,6 +61,7 @@ class Directions:
     zero_expected: int
     zero_cost: float
     rival_cost: float
+    zero_u: float
 
     @property
     def is_zero(self) -> BoolArray:
@@ -92,8 +95,9 @@ def spot_directions(problem: FitProblem, *, with_zero: bool = True) -> Direction
     state = initial_state(coarse)
     best = Track(state, prior, 0, 0, 0.0)
     rival = np.inf
+    nominal, nominal_u, _ = _components(coarse, state, prior)
+    near = np.abs(nominal) < NEAREST
     if with_zero:
-        nominal, _, _ = _components(coarse, state, prior)
         tracks = zero_tracks(coarse, nominal, ghost)
         if tracks:
             best = tracks[0]
@@ -114,6 +118,7 @@ def spot_directions(problem: FitProblem, *, with_zero: bool = True) -> Direction
         zero_expected=best.expected,
         zero_cost=best.cost,
         rival_cost=rival,
+        zero_u=float(np.median(nominal_u[near])) if near.any() else np.inf,
     )
 
 

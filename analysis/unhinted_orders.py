@@ -46,6 +46,13 @@ FEWEST_ZERO = 3
 ZERO_SHARE = 0.3
 CLEAR_RIVAL = 20.0
 LEAST_SCORE = 0.3
+APART = 4.0
+"""Orders must stand further apart than this many u of where the zero order is."""
+TWO_ZEROS = "two tracks could each be the zero order, so orders cannot be counted"
+KNOW_THE_BENCH = (
+    "measure screen distance and stage zero better (bench file), or give the nominal "
+    "pitch or the orders"
+)
 GIVE_NOMINAL = "a nominal pitch right within 20 % (fit without --unknown-pitch) decides"
 
 
@@ -123,11 +130,7 @@ def _require_zero(directions: Directions, own: FitProblem) -> None:
             "give the nominal pitch or the orders",
         )
     if directions.rival_cost - directions.zero_cost < CLEAR_RIVAL:
-        raise AmbiguousOrders(
-            "two tracks could each be the zero order, so orders cannot be counted",
-            remedy="measure screen distance and stage zero better (bench file), or "
-            "give the nominal pitch or the orders",
-        )
+        raise AmbiguousOrders(TWO_ZEROS, remedy=KNOW_THE_BENCH)
 
 
 def _turned_over(own: FitProblem) -> FitProblem:
@@ -145,6 +148,16 @@ def _require_fold(directions: Directions) -> Fold:
             "20 % helps where orders are few",
         )
     return found
+
+
+def _require_apart(directions: Directions, found: Fold) -> None:
+    apart = found.fundamental * float(np.min(directions.step_size))
+    if apart < APART * directions.zero_u:
+        raise AmbiguousOrders(
+            f"orders stand only {apart:.2g} apart in sin b, too close for what the "
+            "bench file knows: any of them could be the zero order",
+            remedy=KNOW_THE_BENCH,
+        )
 
 
 def _doubts(
@@ -167,10 +180,11 @@ def _doubts(
                 remedy="a nominal pitch within the part file's nominal_within_percent "
                 "of one of them decides",
             )
-    if near:
-        return warnings
-    _require_first_order(directions, bench, found, pitch_nm)
-    warnings.append(_require_no_half(directions, bench, found, pitch_nm))
+    if not near:
+        _require_first_order(directions, bench, found, pitch_nm)
+    _require_apart(directions, found)
+    if not near:
+        warnings.append(_require_no_half(directions, bench, found, pitch_nm))
     return warnings
 
 

@@ -90,7 +90,7 @@ def overlaid(first: OrderTable, second: OrderTable) -> OrderTable:
     return OrderTable(**columns)
 
 
-def judged(case: Unhinted) -> tuple[str, str]:
+def judged(case: Unhinted, *, trust_nominal: bool = False) -> tuple[str, str]:
     """``right``, ``refused`` or ``wrong`` for a sweep fitted without a hint, and why.
 
     Wrong: a pitch off by more than 0.1 %, or more than one spot in a hundred with an
@@ -100,7 +100,7 @@ def judged(case: Unhinted) -> tuple[str, str]:
     problem = fit_problem(sweep.table, job.bench, (job.part,), air_of(job))
     try:
         fitted = fit_with_hint(
-            problem, bench=job.bench, air=air_of(job), trust_nominal=False
+            problem, bench=job.bench, air=air_of(job), trust_nominal=trust_nominal
         )
     except NoResult as refusal:
         return "refused", str(refusal).splitlines()[0]

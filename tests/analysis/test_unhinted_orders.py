@@ -5,7 +5,15 @@ from dataclasses import replace
 import numpy as np
 import pytest
 from builders import TwinSweep, demo_job, twin_sweep
-from unhinted import air_of, judged_before_fit, only_orders, overlaid, random_sweep
+from unhinted import (
+    Unhinted,
+    air_of,
+    judged,
+    judged_before_fit,
+    only_orders,
+    overlaid,
+    random_sweep,
+)
 
 from pitchsweep.analysis.analysis_errors import (
     AmbiguousOrders,
@@ -196,6 +204,23 @@ def test_without_a_zero_order_nothing_is_counted() -> None:
     sweep = twin_sweep(job, 11)
     with pytest.raises(NoResult, match="zero order"):
         blind(job, only_orders(sweep, sweep.true_order != 0))
+
+
+def test_orders_closer_than_the_zero_order_is_known_are_refused() -> None:
+    """At 9000 nm orders stand 16 mm apart, and the zero order is known to 9 mm."""
+    job = demo_job("track-740-red", **COARSE, part={"nominal_pitch_nm": 9000.0})
+    for seed in (1, 4, 8):
+        with pytest.raises(NoResult, match="zero order"):
+            blind(job, twin_sweep(job, seed))
+
+
+def test_a_nominal_pitch_far_off_never_leaves_an_unsettled_fit() -> None:
+    """Rough sweeps: wild spots, missing ones and ghosts."""
+    case = random_sweep(66, step_deg=4.0)
+    nominal_nm = 0.83 * case.sweep.truth.pitch_nm
+    part = case.job.part.model_copy(update={"nominal_pitch_nm": nominal_nm})
+    job = case.job.model_copy(update={"part": part})
+    assert judged(Unhinted(job, case.sweep), trust_nominal=True)[0] == "right"
 
 
 def test_a_few_angles_are_refused_not_guessed() -> None:
