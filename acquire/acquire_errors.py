@@ -6,6 +6,7 @@ AcquireError
 ├── JobRefused       the job cannot be swept as written (exit 2)
 ├── RunRefused       a run folder, journal or input cannot be used (exit 2)
 ├── StorageFailed    a frame could not be kept, or does not read back (exit 4)
+├── FaultMet         light, spots, air or disk are not as they should be (exit 4)
 └── SweepStopped     stopped on request or for want of space; can be resumed (exit 5)
 """
 
@@ -41,6 +42,15 @@ class StorageFailed(AcquireError):
         self.path = path
         self.reason = reason
         super().__init__(f"{path}: {reason}" + _line(advice))
+
+
+class FaultMet(AcquireError):
+    """Raised at a step for a fault of no single device; ``kind`` as in the recipe."""
+
+    def __init__(self, kind: str, detail: str) -> None:
+        self.kind = kind
+        self.detail = detail
+        super().__init__(f"{kind.replace('_', ' ')}: {detail}")
 
 
 class SweepStopped(AcquireError):

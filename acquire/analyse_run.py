@@ -12,12 +12,12 @@ from pitchsweep.acquire.acquire_errors import RunRefused
 from pitchsweep.acquire.durable_files import write_durably
 from pitchsweep.acquire.fit_input import FitInput, joined
 from pitchsweep.acquire.fit_sources import FitSource
+from pitchsweep.acquire.measured_state import measure
 from pitchsweep.acquire.run_report import (
     context_of_run,
     context_of_table,
     orders_by_place,
 )
-from pitchsweep.analysis.measure import measure_pitch
 from pitchsweep.analysis.order_table_file import write_order_table
 from pitchsweep.analysis.records import (
     UNKNOWN_ORDER,
@@ -68,13 +68,8 @@ def analyse(
             str(error),
             "fit them one by one",
         ) from None
-    result = measure_pitch(
-        given.table,
-        bench=given.bench,
-        part=given.part,
-        references=given.references,
-        coverage=given.coverage,
-        rejected=given.rejected,
+    result = measure(
+        given,
         trust_nominal=trust_nominal,
         generator=np.random.default_rng(DRAWS_SEED) if draw_inputs else None,
     )
@@ -141,6 +136,8 @@ def inputs_sha256(given: FitInput) -> str:
     digest.update(fingerprint(bench).encode("ascii"))
     digest.update(fingerprint(given.part).encode("ascii"))
     digest.update(repr(given.coverage).encode("ascii"))
+    if any(state is not None for state in given.measured):
+        digest.update(repr(given.measured).encode("ascii"))
     return digest.hexdigest()
 
 

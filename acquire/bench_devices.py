@@ -8,7 +8,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.acquire.journal_rows import GateRow, StepSpots
-from pitchsweep.drivers.devices import BenchClock, Camera, Label, SpotReading, Stage
+from pitchsweep.drivers.devices import (
+    BenchClock,
+    BenchReading,
+    Camera,
+    Label,
+    SpotReading,
+    Stage,
+)
 
 Frame = NDArray[np.uint16]
 
@@ -50,6 +57,10 @@ class World(Protocol):
     def seat_part(self, mount: int, mount_deg: float) -> None: ...
 
     def spots(self, label: Label) -> Sequence[SpotReading]: ...
+
+    def sense(self, laser: str, planned_s: float) -> BenchReading: ...
+
+    def ask_person(self, what: str) -> str: ...
 
 
 @dataclass(frozen=True)

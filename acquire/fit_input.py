@@ -19,11 +19,23 @@ TURN_DEG = 360.0
 
 
 @dataclass(frozen=True)
+class MeasuredState:
+    """Means of what the sensors read during a sweep, and how the part's moved."""
+
+    air_C: float
+    pressure_hPa: float
+    humidity_percent: float
+    part_C: float
+    spread_part_K: float = 0.0
+
+
+@dataclass(frozen=True)
 class FitInput:
     """Spots with the bench and part they belong to; ``name`` says where from.
 
     ``part`` is what the fit is about; ``references`` are the other parts among the
-    spots, numbered from 1 in the table's ``part`` column.
+    spots, numbered from 1 in the table's ``part`` column. ``measured`` goes with the
+    part and each reference; empty where no sensor read anything.
     """
 
     name: str
@@ -34,6 +46,7 @@ class FitInput:
     rejected: tuple[RejectedSpot, ...] = ()
     warnings: tuple[str, ...] = ()
     references: tuple[Part, ...] = ()
+    measured: tuple[MeasuredState | None, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -116,6 +129,7 @@ def joined(inputs: Sequence[FitInput]) -> FitInput:
         bench=first.bench,
         part=parts[0],
         references=parts[1:],
+        measured=tuple(_state_of(part, inputs) for part in parts),
         coverage=first.coverage,
         rejected=tuple(rejected),
         warnings=tuple(w for item in inputs for w in item.warnings),
@@ -131,6 +145,24 @@ def _parts(each: Sequence[Part]) -> tuple[Part, ...]:
         raise ValueError(f"{names} are different parts, neither with a certified pitch")
     target = open_ones[0] if open_ones else different[0]
     return (target, *(part for part in different if part != target))
+
+
+def _state_of(part: Part, inputs: Sequence[FitInput]) -> MeasuredState | None:
+    """What was measured with ``part`` in place; the mean where there are several."""
+    states = [
+        state
+        for item in inputs
+        if item.part == part
+        for state in item.measured[:1]
+        if state is not None
+    ]
+    if not states:
+        return None
+    columns = {
+        name: sum(vars(state)[name] for state in states) / len(states)
+        for name in vars(states[0])
+    }
+    return MeasuredState(**columns)
 
 
 def _moved(table: OrderTable, steps: int, turn: int, part: int) -> OrderTable:

@@ -99,6 +99,20 @@ class StepSpots:
 
 
 @dataclass(frozen=True)
+class ReadingRow:
+    """What the sensors and the zero order said at a step; None where nothing did."""
+
+    air_C: float | None = None
+    pressure_hPa: float | None = None
+    humidity_percent: float | None = None
+    part_C: float | None = None
+    power_mw: float | None = None
+    zero_x_mm: float | None = None
+    zero_y_mm: float | None = None
+    zero_brightness: float | None = None
+
+
+@dataclass(frozen=True)
 class GateRow:
     """One change of the gate, as the report shows it."""
 

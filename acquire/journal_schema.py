@@ -96,6 +96,18 @@ CREATE TABLE spots (
     PRIMARY KEY (intent, number)
 ) STRICT;
 
+CREATE TABLE readings (
+    intent             INTEGER PRIMARY KEY REFERENCES intents (intent),
+    air_C              REAL,
+    pressure_hPa       REAL,
+    humidity_percent   REAL,
+    part_C             REAL,
+    power_mw           REAL,
+    zero_x_mm          REAL,
+    zero_y_mm          REAL,
+    zero_brightness    REAL
+) STRICT;
+
 CREATE TABLE gate_events (
     number INTEGER PRIMARY KEY,
     utc    TEXT NOT NULL,

@@ -23,6 +23,7 @@ from pitchsweep.acquire.journal_rows import (
     IntentRow,
     MarkRow,
     Outcome,
+    ReadingRow,
     RejectedRow,
     SpotRow,
     StepSpots,
@@ -151,6 +152,26 @@ class RunJournal:
     def fail(self, intent: int, detail: str) -> None:
         """Commits that an intent came to nothing."""
         self._outcome(intent, "failed", None, None, detail)
+
+    def void(self, intent: int, detail: str) -> None:
+        """Commits that an intent which was done does not count after all."""
+        self._write(
+            "UPDATE outcomes SET outcome = 'failed', detail = ?, utc = ? "
+            "WHERE intent = ?",
+            (detail, utc_now(), intent),
+        )
+
+    def record_reading(self, intent: int, row: ReadingRow) -> None:
+        """Commits what sensors and zero order said at an intent's step."""
+        self._write(
+            f"INSERT OR REPLACE INTO readings VALUES ({', '.join('?' * 9)})",
+            (intent, *astuple(row)),
+        )
+
+    def readings(self) -> dict[int, ReadingRow]:
+        """Intent -> what sensors and zero order said."""
+        rows = self._read("SELECT * FROM readings ORDER BY intent")
+        return {row[0]: ReadingRow(*row[1:]) for row in rows}
 
     def _outcome(
         self,

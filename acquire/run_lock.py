@@ -4,6 +4,8 @@ import json
 import os
 import socket
 import sys
+from collections.abc import Callable
+from contextlib import suppress
 from io import TextIOWrapper
 from pathlib import Path
 
@@ -21,29 +23,48 @@ class RunLock:
         self.owner = owner
 
     def release(self) -> None:
-        """Lets go. Safe to call twice."""
+        """Lets go, leaving no name behind. Safe to call twice."""
+        if self._handle.closed:
+            return
+        with suppress(OSError):
+            self._handle.seek(0)
+            self._handle.truncate()
         self._handle.close()
 
 
 def take_run_lock(run: Path) -> RunLock:
     """The lock of a run folder. Raises RunRefused naming the owner if it is held."""
-    path = run / NAME
+    lock, _ = lock_file(
+        run / NAME,
+        lambda owner: RunRefused(
+            run,
+            f"another controller works on this run: {owner}",
+            "wait for it, or stop it with Ctrl-C where it runs",
+        ),
+    )
+    return lock
+
+
+def lock_file(path: Path, refusal: Callable[[str], RunRefused]) -> tuple[RunLock, str]:
+    """The lock at ``path``, and who left it behind without letting go (or nobody).
+
+    Raises what ``refusal`` makes of the owner's name while it is held. The system lets
+    go of a lock whose owner died: what such a lock says is only history.
+    """
     # Not inherited by child processes: they must not keep the lock alive.
     handle = open(path, "a+", encoding="utf-8")
     if not _lock(handle):
         owner = _owner_written(handle)
         handle.close()
-        raise RunRefused(
-            run,
-            f"another controller works on this run: {owner}",
-            "wait for it, or stop it with Ctrl-C where it runs",
-        )
+        raise refusal(owner)
+    handle.seek(0)
+    left_by = _owner_written(handle) if handle.read(1) else ""
     owner = describe_owner()
     handle.seek(0)
     handle.truncate()
     handle.write(owner + "\n")
     handle.flush()
-    return RunLock(handle, owner)
+    return RunLock(handle, owner), left_by
 
 
 def describe_owner() -> str:

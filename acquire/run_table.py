@@ -4,14 +4,22 @@ Works from ``job.yaml``, ``run.db`` and ``frames/`` alone; a twin's folder is ne
 looked into.
 """
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, field
 from pathlib import Path
 
 from pitchsweep.acquire.acquire_errors import RunRefused
 from pitchsweep.acquire.fit_input import FitInput, order_table
 from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_file import open_journal
-from pitchsweep.acquire.journal_rows import FaultRow, GateRow, IntentRow, StepSpots
+from pitchsweep.acquire.journal_rows import (
+    FaultRow,
+    GateRow,
+    IntentRow,
+    ReadingRow,
+    StepSpots,
+)
+from pitchsweep.acquire.measured_state import state_of
 from pitchsweep.acquire.resume import standing
 from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
 from pitchsweep.acquire.run_journal import RunJournal
@@ -22,7 +30,7 @@ from pitchsweep.acquire.spot_places import (
 )
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.acquire.stored_spots import spots_of
-from pitchsweep.acquire.sweep_plan import plan_sweep
+from pitchsweep.acquire.sweep_plan import SweepPlan, plan_sweep
 from pitchsweep.analysis.analysis_errors import NoResult
 from pitchsweep.configs.fingerprint import fingerprint
 
@@ -53,6 +61,7 @@ class RunRecord:
     sessions: list[tuple[int, str, str, str | None, str | None]]
     gate: list[GateRow]
     faults: list[FaultRow]
+    readings: dict[int, ReadingRow] = field(default_factory=dict)
 
 
 def read_run(path: Path) -> RunRecord:
@@ -64,25 +73,39 @@ def read_run(path: Path) -> RunRecord:
     folder = open_run_folder(path)
     plan = plan_sweep(folder.job, fingerprint(folder.job))
     with open_journal(folder.journal, read_only=True) as journal:
-        try:
-            now = standing(plan, journal.intents())
-        except ValueError as error:
-            raise RunRefused(path, str(error)) from None
-        store = FrameStore(folder.path)
-        find = spot_finder(folder.job.bench)
-        steps = tuple(
+        return record_of(folder, plan, journal)
+
+
+def record_of(
+    folder: RunFolder, plan: SweepPlan, journal: RunJournal, before: int | None = None
+) -> RunRecord:
+    """The record of what ``journal`` holds, of steps ``before`` that number only.
+
+    Raises RunRefused, StorageFailed.
+    """
+    try:
+        now = standing(plan, journal.intents())
+    except ValueError as error:
+        raise RunRefused(folder.path, str(error)) from None
+    store = FrameStore(folder.path)
+    find = spot_finder(folder.job.bench)
+    rows = [row for row in now.done.values() if before is None or row.step < before]
+    readings = journal.readings()
+    return RunRecord(
+        folder=folder,
+        steps=tuple(
             KeptStep(row, spots_of(journal, store, row, find), _lights(journal, row))
-            for row in now.done.values()
-        )
-        return RunRecord(
-            folder=folder,
-            steps=steps,
-            planned=len(plan.steps),
-            meta=journal.meta(),
-            sessions=journal.sessions(),
-            gate=journal.gate_events(),
-            faults=journal.faults(),
-        )
+            for row in rows
+        ),
+        planned=len(plan.steps),
+        meta=journal.meta(),
+        sessions=journal.sessions(),
+        gate=journal.gate_events(),
+        faults=journal.faults(),
+        readings={
+            row.step: readings[row.intent] for row in rows if row.intent in readings
+        },
+    )
 
 
 def input_from_run(record: RunRecord) -> FitInput:
@@ -94,13 +117,17 @@ def input_from_run(record: RunRecord) -> FitInput:
             remedy=f"go on with: pitchsweep sweep --resume {record.folder.path}",
         )
     warnings = []
-    if len(record.steps) < record.planned:
+    ended_early = record.meta.get("ended_early")
+    if ended_early:
+        warnings.append(
+            f"the sweep ended after {len(record.steps)} of {record.planned} steps: "
+            f"{ended_early}"
+        )
+    elif len(record.steps) < record.planned:
         warnings.append(
             f"the sweep is incomplete: {len(record.steps)} of {record.planned} steps"
         )
-    warnings += [
-        f"fault met during the sweep: {fault.detail}" for fault in record.faults
-    ]
+    warnings += fault_warnings(record.faults)
     clipped = sum(bool(s.saturated) for step in record.steps for s in step.found.spots)
     if clipped:
         warnings.append(
@@ -118,6 +145,28 @@ def input_from_run(record: RunRecord) -> FitInput:
             r for step in record.steps for r in rejected_of(step.found, step.row.step)
         ),
         warnings=tuple(warnings),
+        measured=(state_of(record.readings.values()),),
+    )
+
+
+def fault_warnings(faults: Sequence[FaultRow]) -> list[str]:
+    """What faults a result must be read with, each kind and policy once."""
+    seen: dict[tuple[str, str], list[FaultRow]] = {}
+    for fault in faults:
+        seen.setdefault((fault.what, fault.policy.split(",")[0]), []).append(fault)
+    return [_in_words(rows) for rows in seen.values()]
+
+
+def _in_words(rows: list[FaultRow]) -> str:
+    first = rows[0]
+    if first.what == "warning":
+        return first.detail if len(rows) == 1 else f"{first.detail} (and more)"
+    steps = sorted({row.step for row in rows if row.step is not None})
+    where = f" at step {', '.join(map(str, steps[:5]))}" if steps else ""
+    more = ", ..." if len(steps) > 5 else ""
+    return (
+        f"fault met during the sweep: {first.detail}{where}{more} "
+        f"({first.what}: {first.policy})"
     )
 
 

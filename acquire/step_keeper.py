@@ -11,24 +11,32 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Self
 
+from pitchsweep.acquire.acquire_errors import FaultMet
 from pitchsweep.acquire.bench_devices import FindSpots, Gate, Shot
+from pitchsweep.acquire.bench_watch import spots_fault
 from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_rows import (
     FrameRow,
     GateRow,
     IntentRow,
+    ReadingRow,
     SpotRow,
     StepSpots,
 )
 from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.stored_spots import dark_shots, light_shots
-from pitchsweep.acquire.sweep_plan import Step
-from pitchsweep.acquire.zero_order_watch import WatchState, after_exposure
+from pitchsweep.acquire.sweep_plan import Step, group_of
+from pitchsweep.acquire.zero_order_watch import (
+    WatchState,
+    ZeroPrediction,
+    after_exposure,
+    predict_zero_order,
+)
 from pitchsweep.analysis.pixel_map import screen_from_pixels
 from pitchsweep.analysis.records import Rejection
 from pitchsweep.configs.bench_model import Camera
 from pitchsweep.configs.job_model import Job
-from pitchsweep.drivers.devices import SpotReading
+from pitchsweep.drivers.devices import BenchReading, SpotReading
 from pitchsweep.safety.safety_errors import GateTripped
 
 NO_LIGHT = (Rejection.TOO_FAINT.value, Rejection.ON_MARK.value)
@@ -48,6 +56,18 @@ class TakenStep:
     darks: tuple[Shot, ...]
     lights: tuple[Shot, ...]
     readings: tuple[SpotReading, ...] | None
+    sensed: BenchReading = BenchReading()
+    tries: int = 0
+
+
+@dataclass(frozen=True)
+class SpoiltStep:
+    """A step that was kept and whose spots are not as they should be."""
+
+    step: Step
+    intent: int
+    fault: FaultMet
+    tries: int
 
 
 @dataclass(frozen=True)
@@ -71,7 +91,9 @@ class StepKeeper:
         self._queue: queue.Queue[TakenStep | IntentRow | None] = queue.Queue(DEPTH)
         self._failure: BaseException | None = None
         self._darks: tuple[Shot, ...] | None = None
+        self._group: tuple[int, int, str] | None = None
         self._watch = WatchState()
+        self._spoilt: queue.SimpleQueue[SpoiltStep] = queue.SimpleQueue()
         self._thread = threading.Thread(target=self._serve, name="keeper", daemon=True)
 
     def __enter__(self) -> Self:
@@ -96,6 +118,14 @@ class StepKeeper:
         """Returns when everything handed over is kept. Raises what went wrong."""
         self._queue.join()
         self.raise_failure()
+
+    def take_faults(self) -> list[SpoiltStep]:
+        """Steps found wanting since the last call. Raises what went wrong."""
+        self.raise_failure()
+        taken = []
+        while not self._spoilt.empty():
+            taken.append(self._spoilt.get())
+        return taken
 
     def raise_failure(self) -> None:
         """Raises what the worker met, if anything."""
@@ -139,13 +169,35 @@ class StepKeeper:
                 frames=rows,
                 spots=found,
             )
-        if taken.darks:
-            self._darks = taken.darks
+        if step.kind == "step" and (taken.darks or self._group != group_of(step)):
+            # Never those of another mount or laser.
+            self._darks, self._group = taken.darks or None, group_of(step)
         if found is None:
             found = tools.find(step.step, taken.lights, self._darks_for(step))
             tools.journal.record_spots(taken.intent, found)
+        self._note_reading(taken, found)
         tools.on_kept(step, found)
         self._watch_zero_order(step, found)
+        self._judge_spots(taken, found)
+
+    def _note_reading(self, taken: TakenStep, found: StepSpots) -> None:
+        job, step = self._tools.job, taken.step
+        zero = predict_zero_order(job.bench, job.part, step.incidence_deg)
+        row = reading_row(taken.sensed, found, zero)
+        if row != ReadingRow():
+            self._tools.journal.record_reading(taken.intent, row)
+
+    def _judge_spots(self, taken: TakenStep, found: StepSpots) -> None:
+        job, step = self._tools.job, taken.step
+        fault = spots_fault(
+            found,
+            light_seen_mm(found, job.bench.camera),
+            bench=job.bench,
+            part=job.part,
+            step=step,
+        )
+        if fault is not None and step.kind == "step":
+            self._spoilt.put(SpoiltStep(step, taken.intent, fault, taken.tries))
 
     def _darks_for(self, step: Step) -> tuple[Shot, ...]:
         if step.kind != "step":
@@ -202,6 +254,25 @@ def light_seen_mm(found: StepSpots, camera: Camera) -> list[tuple[float, float]]
         if item.reason not in NO_LIGHT
     ]
     return seen
+
+
+def reading_row(
+    sensed: BenchReading, found: StepSpots, zero: ZeroPrediction
+) -> ReadingRow:
+    """Sensors, and the spot nearest to where the zero order should be."""
+    air = sensed.air
+    there = [s for s in found.spots if zero.has(s.x_mm, s.y_mm)]
+    spot = min(there, key=lambda s: abs(s.x_mm - zero.x_mm), default=None)
+    return ReadingRow(
+        air_C=None if air is None else air.temperature_C,
+        pressure_hPa=None if air is None else air.pressure_hPa,
+        humidity_percent=None if air is None else air.humidity_percent,
+        part_C=None if air is None else air.part_temperature_C,
+        power_mw=sensed.power_mw,
+        zero_x_mm=None if spot is None else spot.x_mm,
+        zero_y_mm=None if spot is None else spot.y_mm,
+        zero_brightness=None if spot is None else spot.brightness,
+    )
 
 
 def spots_from_door(readings: Sequence[SpotReading] | None) -> StepSpots | None:

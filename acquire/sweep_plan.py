@@ -1,8 +1,9 @@
 """Job -> the steps of a sweep, in the order in which they are taken (pure).
 
 Mounts come outermost (a person re-seats the part between them), then repeats with a
-shifted grid, then lasers, then angles. Every step carries the bench time at which the plan places it, so that a
-twin's slow processes depend on the plan and not on interruptions.
+shifted grid, then lasers, then angles. Every step carries the bench time at which the
+plan places it, so that a twin's slow processes depend on the plan and not on
+interruptions.
 """
 
 from dataclasses import dataclass

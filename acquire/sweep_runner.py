@@ -1,29 +1,15 @@
 """The sweep itself: a loop short enough to read aloud. This module acts (devices)."""
 
-from dataclasses import dataclass
+from collections.abc import Callable
 
-from pitchsweep.acquire.bench_devices import BenchDevices, Shot
+from pitchsweep.acquire.acquire_errors import FaultMet
+from pitchsweep.acquire.bench_devices import BenchDevices
+from pitchsweep.acquire.fault_policy import fault_kind, reaction
 from pitchsweep.acquire.resume import Standing
-from pitchsweep.acquire.run_journal import RunJournal
-from pitchsweep.acquire.step_keeper import StepKeeper, TakenStep
-from pitchsweep.acquire.stop_signals import StopSignals
-from pitchsweep.acquire.sweep_plan import Step, SweepPlan
-from pitchsweep.configs.job_model import Job
-from pitchsweep.drivers.devices import Label, SpotReading
-
-SLICE_S = 0.5
-"""Longest wait between two looks at the stop flag."""
-
-
-@dataclass(frozen=True)
-class SweepContext:
-    """What a sweep needs besides its devices."""
-
-    job: Job
-    plan: SweepPlan
-    journal: RunJournal
-    session: int
-    stop: StopSignals
+from pitchsweep.acquire.step_keeper import StepKeeper
+from pitchsweep.acquire.step_taker import StepTaker, SweepContext
+from pitchsweep.acquire.sweep_plan import Step, group_of
+from pitchsweep.drivers.driver_errors import DriverError
 
 
 class SweepRunner:
@@ -35,27 +21,42 @@ class SweepRunner:
         self._context = context
         self._devices = devices
         self._keeper = keeper
-        self._zero_checks = 0
+        self._taker = StepTaker(context, devices, keeper)
+        self._group: tuple[int, int, str] | None = None
 
     def run(self, standing: Standing) -> None:
         """Homes, checks the zero order, takes every remaining step; dark at the end.
 
-        Raises StopRequested, GateTripped, DriverError, StorageFailed; the gate was
-        asked for dark by then.
+        Faults are met as the recipe says. Raises StopRequested, GateTripped,
+        DriverError, FaultMet, StorageFailed; the gate was asked for dark by then.
         """
-        self._zero_checks = standing.zero_checks
         self._find_what_was_not_found(standing)
         try:
             self._devices.gate.dark()
-            self._devices.stage.home()
-            seat: tuple[int, str] | None = None
+            self._meeting_faults(standing.remaining[0], self._devices.stage.home)
             for step in standing.remaining:
-                if (step.mount, step.laser) != seat:
-                    seat = self._begin_group(step, seat)
+                begins = group_of(step) != self._group
+                if begins:
+                    self._finish()
+                if why := self._context.why_over(step):
+                    self._end_early(why)
+                    break
+                if begins:
+                    self._begin_group(step)
                 self._take(step, step.first_frame)
-            self._keeper.drain()
+                self._retake()
+            self._finish()
         finally:
             self._devices.gate.dark()
+
+    def _finish(self) -> None:
+        self._keeper.drain()
+        while self._retake():
+            self._keeper.drain()
+
+    def _end_early(self, why: str) -> None:
+        self._context.journal.set_meta("ended_early", why)
+        self._context.report.say(f"the sweep ends here: {why}")
 
     def _find_what_was_not_found(self, standing: Standing) -> None:
         """Finds spots of steps that an earlier session kept but had no time for."""
@@ -63,106 +64,97 @@ class SweepRunner:
             if self._context.journal.spots(row.intent) is None:
                 self._keeper.find_again(row)
 
-    def _begin_group(self, step: Step, seat: tuple[int, str] | None) -> tuple[int, str]:
+    def _begin_group(self, step: Step) -> None:
         """Seats the part, then waits until the zero order was found where it should."""
-        self._keeper.drain()
-        if seat is None or seat[0] != step.mount:
-            self._devices.world.seat_part(step.mount, step.mount_deg)
-        check = self._context.plan.zero_check_for(step)
-        number = self._context.plan.frames + self._zero_checks * len(check.exposures_ms)
-        self._zero_checks += 1
-        self._take(check, number)
-        self._keeper.drain()
-        return step.mount, step.laser
+        if self._group is None or self._group[0] != step.mount:
+            self._seat(step)
+        self._group = group_of(step)
+        self._check_zero(step)
 
-    def _take(self, step: Step, first_frame: int) -> None:
+    def _seat(self, step: Step) -> None:
+        world, report = self._devices.world, self._context.report
+        if len(self._context.job.recipe.mounts_deg) > 1 and step.step > 0:
+            what = f"seat the part for mount {step.mount + 1}, {step.mount_deg:g} deg"
+            self._ask_person(step, what)
+        world.seat_part(step.mount, step.mount_deg)
+        report.state("sweeping", mount=step.mount + 1)
+
+    def _ask_person(self, step: Step, what: str) -> None:
+        """Waits, dark, until a person has done ``what`` and said so."""
+        self._devices.gate.dark()
+        self._context.report.pause(what)
+        who = self._devices.world.ask_person(what)
         self._context.stop.check()
-        devices = self._devices
-        intent = self._context.journal.intend(self._context.session, step)
-        darks = self._dark_shots(step)
-        devices.stage.move_to(step.stage_deg)
-        self._wait(self._context.job.bench.stage.settle_s)
-        reading = devices.stage.where()
-        self._keeper.raise_failure()
-        try:
-            devices.gate.light_on(
-                step=step.step,
-                commanded_deg=step.stage_deg,
-                readback_deg=reading.angle_deg,
-            )
-            lights, readings = self._expose(step)
-            # A stop during the last exposure made it dark: it must not count.
-            self._context.stop.check()
-        finally:
-            devices.gate.dark()
-        self._keeper.put(
-            TakenStep(
-                step=step,
-                intent=intent,
-                readback_deg=reading.angle_deg,
-                bench_s=devices.clock.now_s(),
-                first_frame=first_frame,
-                darks=darks,
-                lights=lights,
-                readings=readings,
-            )
+        self._context.report.goes_on(step, who, what)
+
+    def _check_zero(self, step: Step) -> None:
+        self._take(self._context.plan.zero_check_for(step), None)
+        self._keeper.drain()
+
+    def _retake(self) -> bool:
+        """Meets what the keeper found wrong with spots; whether there was anything."""
+        found = self._keeper.take_faults()
+        for spoilt in found:
+            does = self._react(spoilt.step, spoilt.fault, spoilt.tries)
+            if does in ("retry", "re-home", "skip"):
+                self._context.journal.void(spoilt.intent, spoilt.fault.detail)
+            if does in ("retry", "re-home") and group_of(spoilt.step) == self._group:
+                self._take(spoilt.step, None, spoilt.tries + 1, does == "re-home")
+        return bool(found)
+
+    def _take(
+        self,
+        step: Step,
+        first_frame: int | None,
+        tries: int = 0,
+        home_first: bool = False,
+    ) -> bool:
+        """Takes a step, meeting faults as the recipe says; whether it was taken."""
+        return self._meeting_faults(
+            step, lambda: self._taker.take(step, first_frame, tries), home_first
         )
 
-    def _wait(self, seconds: float) -> None:
-        left_s = seconds
-        while left_s > 0.0:
-            self._devices.clock.wait(min(left_s, SLICE_S))
-            left_s -= SLICE_S
-            self._context.stop.check()
+    def _meeting_faults(
+        self, step: Step, act: Callable[[], None], home_first: bool = False
+    ) -> bool:
+        tries = 0
+        while True:
+            try:
+                if home_first:
+                    self._home_again(step)
+                act()
+                return True
+            except (DriverError, FaultMet) as error:
+                # What breaks after a request to stop is a consequence of it.
+                self._context.stop.check()
+                self._devices.gate.dark()
+                does = self._react(step, error, tries)
+            if does == "skip":
+                return False
+            home_first = does == "re-home"
+            tries += 1
 
-    def _dark_shots(self, step: Step) -> tuple[Shot, ...]:
-        if not step.dark_due or self._context.job.recipe.record != "frames":
-            return ()
-        first = len(step.exposures_ms)
-        return tuple(
-            self._shot(step, exposure_ms, number)
-            for number, exposure_ms in enumerate(step.exposures_ms, first)
-        )
+    def _react(self, step: Step, error: Exception, tries: int) -> str:
+        """Says what is done about ``error``; raises it where that is stop.
 
-    def _expose(
-        self, step: Step
-    ) -> tuple[tuple[Shot, ...], tuple[SpotReading, ...] | None]:
-        """Light shots, or readings of the spots door; the gate is lit."""
-        if self._context.job.recipe.record == "spots":
-            self._context.stop.check()
-            return (), tuple(self._devices.world.spots(label_for(step, 0)))
-        shots = []
-        for number, exposure_ms in enumerate(step.exposures_ms):
-            if number:
-                self._tell_stage(step)
-            shots.append(self._shot(step, exposure_ms, number))
-        return tuple(shots), None
+        A pause is over when this returns: a person did what they were asked.
+        """
+        kind = fault_kind(error)
+        if kind is None:
+            raise error
+        does = reaction(self._context.job.recipe.faults, kind, tries)
+        text = error.detail if isinstance(error, FaultMet) else str(error)
+        self._context.report.fault(step, kind, " ".join(text.split()), does)
+        if does.does == "stop":
+            raise error
+        if does.does == "pause":
+            self._ask_person(step, f"look at the bench: {kind.replace('_', ' ')}")
+        return does.does
 
-    def _tell_stage(self, step: Step) -> None:
-        """Keeps what the gate knows of the stage fresh between long exposures."""
-        reading = self._devices.stage.where()
-        self._devices.gate.still_at(
-            step=step.step,
-            commanded_deg=step.stage_deg,
-            readback_deg=reading.angle_deg,
-        )
-
-    def _shot(self, step: Step, exposure_ms: float, number: int) -> Shot:
-        self._context.stop.check()
-        label = label_for(step, number)
-        return Shot(exposure_ms, label, self._devices.camera.expose(exposure_ms, label))
-
-
-def label_for(step: Step, exposure: int) -> Label:
-    """The label of one exposure: equal whenever the step is repeated.
-
-    Light exposures count from 0, dark ones go on after them.
-    """
-    return Label(
-        mount=step.mount,
-        laser=step.laser,
-        repeat=0,
-        step=step.step,
-        exposure=exposure,
-        planned_s=step.planned_s,
-    )
+    def _home_again(self, step: Step) -> None:
+        """Searches the zero in the dark; the zero order is checked after it."""
+        self._keeper.drain()
+        self._devices.gate.dark()
+        self._devices.stage.home()
+        if step.kind == "step" and self._group is not None:
+            self._check_zero(step)

@@ -1,19 +1,18 @@
 """One session of a run: lock, journal, bench, runner, ending. Acts (all of them)."""
 
 import sqlite3
-from collections.abc import Callable, Iterator
-from contextlib import AbstractContextManager, contextmanager, suppress
+from collections.abc import Callable
+from contextlib import AbstractContextManager, suppress
 from dataclasses import dataclass
 from pathlib import Path
 
-import numpy as np
-
-from pitchsweep.acquire.acquire_errors import RunRefused, StorageFailed, SweepStopped
-from pitchsweep.acquire.bench_devices import BenchDevices, FindSpots
-from pitchsweep.acquire.frame_store import NO_SPACE, FrameStore
+from pitchsweep.acquire.acquire_errors import JobRefused, RunRefused
+from pitchsweep.acquire.bench_devices import BenchDevices
+from pitchsweep.acquire.bench_lock import refuse_network_folder, take_bench_lock
+from pitchsweep.acquire.disk_room import frames_left, free_bytes, why_too_small
+from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_file import create_journal, open_journal
-from pitchsweep.acquire.journal_rows import StepSpots
-from pitchsweep.acquire.progress import Progress, StepShown, clock_text
+from pitchsweep.acquire.progress import Progress, clock_text
 from pitchsweep.acquire.resume import Standing, standing
 from pitchsweep.acquire.run_folder import (
     RunFolder,
@@ -21,20 +20,25 @@ from pitchsweep.acquire.run_folder import (
     open_run_folder,
 )
 from pitchsweep.acquire.run_journal import RunJournal
-from pitchsweep.acquire.run_lock import take_run_lock
+from pitchsweep.acquire.run_lock import RunLock, take_run_lock
 from pitchsweep.acquire.run_permit import RunPermit, permit_for
+from pitchsweep.acquire.session_ending import ending
+from pitchsweep.acquire.shown_steps import ShownSteps
+from pitchsweep.acquire.status_file import StatusFile
 from pitchsweep.acquire.step_keeper import KeeperTools, StepKeeper
 from pitchsweep.acquire.step_spots import spot_finder
-from pitchsweep.acquire.stop_signals import StopRequested, StopSignals
-from pitchsweep.acquire.sweep_plan import Step, SweepPlan, plan_sweep
-from pitchsweep.acquire.sweep_runner import SweepContext, SweepRunner
-from pitchsweep.analysis.order_visibility import visible_orders
+from pitchsweep.acquire.step_taker import SweepContext
+from pitchsweep.acquire.stop_signals import StopSignals
+from pitchsweep.acquire.sweep_end import SweepEnd
+from pitchsweep.acquire.sweep_plan import SweepPlan, plan_sweep
+from pitchsweep.acquire.sweep_reporter import SweepReporter
+from pitchsweep.acquire.sweep_runner import SweepRunner
+from pitchsweep.acquire.sweep_start import make_ready
+from pitchsweep.acquire.telling import Teller
 from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.job_model import Job
-from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.safety.run_ack import refuse_unacknowledged
 from pitchsweep.safety.run_refusals import refuse_unsafe
-from pitchsweep.safety.safety_errors import SafetyError
 
 
 @dataclass(frozen=True)
@@ -64,6 +68,26 @@ def sweep_job(
     plan = plan_sweep(job, fingerprint(job))
     refuse_unsafe(job)
     permit = permit_for(job, plan, progress.say)
+    runs.mkdir(parents=True, exist_ok=True)
+    refuse_network_folder(runs)
+    too_small = why_too_small(job, frames_left(plan, plan.steps), free_bytes(runs))
+    if too_small:
+        raise JobRefused(job.job, f"{runs}: {too_small}", "make space, or --runs DIR")
+    bench_lock = take_bench_lock(runs, job.bench, progress.say)
+    try:
+        return _sweep_into(runs, job, plan, progress, open_bench, permit)
+    finally:
+        bench_lock.release()
+
+
+def _sweep_into(
+    runs: Path,
+    job: Job,
+    plan: SweepPlan,
+    progress: Progress,
+    open_bench: OpenBench,
+    permit: RunPermit,
+) -> RunFolder:
     folder = create_run_folder(runs, job)
     progress.say(
         f"{len(plan.steps)} steps, {clock_text(plan.duration_s)} of bench time; "
@@ -101,8 +125,11 @@ def resume_run(path: Path, progress: Progress, open_bench: OpenBench) -> RunFold
     refuse_unsafe(folder.job)
     permit = permit_for(folder.job, plan, progress.say)
     lock = take_run_lock(folder.path)
+    bench_lock: RunLock | None = None
     try:
+        bench_lock = take_bench_lock(folder.path.parent, folder.job.bench, progress.say)
         with _journal_to_go_on(folder) as journal:
+            journal.set_meta("ended_early", "")
             _check_same_job(folder, journal)
             progress.say(_where_it_stands(folder, plan, journal))
             _session(
@@ -117,6 +144,8 @@ def resume_run(path: Path, progress: Progress, open_bench: OpenBench) -> RunFold
             )
     finally:
         lock.release()
+        if bench_lock is not None:
+            bench_lock.release()
     return folder
 
 
@@ -171,20 +200,33 @@ def _session(
     now = standing_of(folder, plan, journal)
     if not now.remaining:
         return
+    job = folder.job
     session = journal.begin_session(owner)
-    find = spot_finder(folder.job.bench)
-    with StopSignals() as stop, _ending(folder, journal, session, stop):
+    teller = Teller(job.schedule, folder.path.name, progress.say)
+    report = SweepReporter(journal, progress.say, StatusFile(folder.path), teller)
+    report.state("starting", steps_done=len(now.done), steps=len(plan.steps))
+    with StopSignals() as stop, ending(folder, session, stop, report):
         request = BenchRequest(
             folder, plan, journal, stop, resumed, progress.say, permit
         )
         with open_bench(request) as devices:
             stop.on_request = devices.gate.dark
             stop.check()
-            shown = _Shown(folder.job, plan, len(now.done), progress)
-            tools = _tools(folder, journal, find, devices, shown)
-            context = SweepContext(folder.job, plan, journal, session, stop)
+            start = make_ready(job, devices, journal, stop, report)
+            shown = ShownSteps(job, plan, len(now.done), progress, report.status)
+            over = SweepEnd(folder, plan, journal, devices.clock, start, progress.say)
+            context = SweepContext(
+                job=job,
+                plan=plan,
+                journal=journal,
+                session=session,
+                stop=stop,
+                report=report,
+                why_over=over.before_step,
+                soaked_s=start.soaked_s,
+            )
             try:
-                with StepKeeper(tools) as keeper:
+                with StepKeeper(_tools(folder, journal, devices, shown)) as keeper:
                     SweepRunner(context, devices, keeper).run(now)
                 devices.gate.end()
                 journal.end_session(session, "done")
@@ -195,107 +237,20 @@ def _session(
 
 
 def _tools(
-    folder: RunFolder,
-    journal: RunJournal,
-    find: FindSpots,
-    devices: BenchDevices,
-    shown: "_Shown",
+    folder: RunFolder, journal: RunJournal, devices: BenchDevices, shown: ShownSteps
 ) -> KeeperTools:
     return KeeperTools(
         job=folder.job,
         journal=journal,
         store=FrameStore(folder.path),
-        find=find,
+        find=spot_finder(folder.job.bench),
         gate=devices.gate,
         gate_history=devices.gate_history,
         on_kept=shown.step_kept,
     )
 
 
-@contextmanager
-def _ending(
-    folder: RunFolder, journal: RunJournal, session: int, stop: StopSignals
-) -> Iterator[None]:
-    """Turns what ended a session into its journal row and the error to show."""
-    try:
-        yield
-    except StopRequested as error:
-        _note_ending(journal, session, f"stopped: {error}")
-        raise SweepStopped(folder.path, str(error)) from None
-    except (StorageFailed, sqlite3.OperationalError, OSError) as error:
-        _note_ending(journal, session, f"stopped: {error}")
-        if isinstance(error, StorageFailed) and not _out_of_space(error):
-            raise
-        raise SweepStopped(folder.path, _first_line(error)) from error
-    except (SafetyError, DriverError) as error:
-        # What breaks after a request to stop is a consequence of it.
-        if stop.reason:
-            _note_ending(journal, session, f"stopped: {stop.reason}")
-            raise SweepStopped(folder.path, stop.reason) from None
-        what = "tripped" if isinstance(error, SafetyError) else "device fault"
-        _note_fault(journal, what, _first_line(error))
-        _note_ending(journal, session, f"{what}: {_first_line(error)}")
-        raise
-    except BaseException as error:
-        _note_ending(journal, session, f"broke off: {type(error).__name__}: {error}")
-        raise
-
-
-def _first_line(error: BaseException) -> str:
-    return str(error).splitlines()[0] if str(error) else type(error).__name__
-
-
-def _out_of_space(error: StorageFailed) -> bool:
-    cause = error.__cause__
-    return isinstance(cause, OSError) and cause.errno in NO_SPACE
-
-
-def _note_ending(journal: RunJournal, session: int, ending: str) -> None:
-    # The disk may be full: the session then shows no ending, which says it too.
-    with suppress(sqlite3.Error):
-        journal.end_session(session, ending)
-
-
 def _note_gate(journal: RunJournal, devices: BenchDevices) -> None:
     with suppress(sqlite3.Error), journal.transaction():
         for row in devices.gate_history():
             journal.record_gate(row)
-
-
-def _note_fault(journal: RunJournal, what: str, detail: str) -> None:
-    with suppress(sqlite3.Error):
-        journal.record_fault(what, detail, "stop")
-
-
-class _Shown:
-    """Counts the steps kept and shows them."""
-
-    def __init__(
-        self, job: Job, plan: SweepPlan, done: int, progress: Progress
-    ) -> None:
-        self._job = job
-        self._plan = plan
-        self._done = done
-        self._progress = progress
-
-    def step_kept(self, step: Step, found: StepSpots) -> None:
-        """Shows a step; zero checks are not counted."""
-        if step.kind != "step":
-            return
-        self._done += 1
-        job, plan = self._job, self._plan
-        later = plan.steps[step.step + 1 :]
-        view = visible_orders(job.bench, job.part, step.laser, step.incidence_deg)
-        self._progress.show(
-            StepShown(
-                done=self._done,
-                total=len(plan.steps),
-                incidence_deg=step.incidence_deg,
-                mount=step.mount,
-                laser=step.laser,
-                spots=len(found.spots),
-                orders_expected=int(np.count_nonzero(view.seen)),
-                gate="ready",
-                left_s=plan.duration_s - later[0].planned_s if later else 0.0,
-            )
-        )

@@ -67,14 +67,24 @@ class StageClient:
         start_deg = angle_deg - self._settings.approach_deg
         self._check_travel(start_deg)
         self._check_travel(angle_deg)
-        here = self.where()
-        if here.turning:
-            self.halt()
-            here = self.where()
+        here = self._at_rest()
         self._check_zero(here)
         if here.angle_deg > start_deg:
             here = self._leg(here.angle_deg, start_deg)
         return self._leg(here.angle_deg, angle_deg)
+
+    def _at_rest(self) -> StageReading:
+        """Where it stands; what an earlier motion left turning or stalled is halted."""
+        try:
+            here = self.where()
+        except DeviceRefused as error:
+            if error.reason != "stalled":
+                raise
+        else:
+            if not here.turning:
+                return here
+        self.halt()
+        return self.where()
 
     def halt(self) -> None:
         """Stops a motion where it is."""

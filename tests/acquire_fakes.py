@@ -17,7 +17,13 @@ from pitchsweep.acquire.journal_rows import GateRow
 from pitchsweep.acquire.sweep_session import BenchRequest
 from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.reader import read_job
-from pitchsweep.drivers.devices import Label, SpotReading, StageReading
+from pitchsweep.drivers.devices import (
+    AirReading,
+    BenchReading,
+    Label,
+    SpotReading,
+    StageReading,
+)
 from pitchsweep.safety.safety_errors import GateTripped
 
 
@@ -126,6 +132,16 @@ class FakeBench:
             SpotReading(x + 0.1 * noise.normal(), 0.1 * noise.normal(), 0.1, 0.1, 1.0)
             for x in self.places_mm(label.laser)
         ]
+
+    def sense(self, laser: str, planned_s: float) -> BenchReading:
+        self.count("sense")
+        air = AirReading(20.0, 1013.0, 50.0, 20.0)
+        return BenchReading(air, self.job.bench.lasers[laser].power_mw)
+
+    def ask_person(self, what: str) -> str:
+        self.count("person")
+        assert not self.lit
+        return "somebody"
 
     def expose(self, exposure_ms: float, label: Label) -> NDArray[np.uint16]:
         self.count(f"expose {label.step}.{label.exposure}")

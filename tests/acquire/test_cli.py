@@ -217,7 +217,11 @@ def test_a_trip_exits_3(
 def test_a_device_fault_exits_4(
     tmp_path: Path, fake: FakeBench, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    fake.fail_at, fake.failure = 9, lambda: NoAnswerInTime("stage", "where", 2.0)
+    def silent(what: str) -> None:
+        if what == "move":
+            raise NoAnswerInTime("stage", "where", 2.0)
+
+    fake.on_call = silent
     assert run(["sweep", job_file(tmp_path), "--runs", str(tmp_path / "runs")]) == 4
     refused(capsys, 4, "stage did not answer")
 

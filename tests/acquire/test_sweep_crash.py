@@ -16,6 +16,7 @@ from pitchsweep.acquire.run_lock import take_run_lock
 from pitchsweep.acquire.run_table import input_from_run, read_run
 from pitchsweep.acquire.sweep_session import resume_run, sweep_job
 from pitchsweep.analysis.order_table_file import write_order_table
+from pitchsweep.configs.fault_policies import FaultPolicies
 from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.driver_errors import NoAnswerInTime
 from pitchsweep.safety.safety_errors import GateRefused, GateTripped
@@ -145,17 +146,27 @@ def test_a_zero_order_lost_on_the_way_trips(tmp_path: Path) -> None:
         swept(fake.job, tmp_path, fake)
 
 
-def test_a_device_fault_is_noted_and_the_run_goes_on_later(tmp_path: Path) -> None:
+def test_a_device_fault_that_stays_ends_the_run_which_goes_on_later(
+    tmp_path: Path,
+) -> None:
+    job = small_job(
+        mounts_deg=(0.0, 90.0),
+        start_deg=-10.0,
+        stop_deg=10.0,
+        step_deg=10.0,
+        faults=FaultPolicies(stage_no_answer="stop"),
+    )
     fake = FakeBench(
-        SPOTS, fail_at=20, failure=lambda: NoAnswerInTime("stage", "where", 2.0)
+        job, fail_at=20, failure=lambda: NoAnswerInTime("stage", "where", 2.0)
     )
     with pytest.raises(NoAnswerInTime):
-        swept(SPOTS, tmp_path, fake)
+        swept(job, tmp_path, fake)
     run = only_run(tmp_path)
-    resume_run(run, QuietProgress(), opener(FakeBench(SPOTS)))
+    resume_run(run, QuietProgress(), opener(FakeBench(job)))
     record = read_run(run)
     assert len(record.steps) == record.planned
-    assert "did not answer" in record.faults[0].detail
+    (fault,) = record.faults
+    assert "did not answer" in fault.detail and fault.policy == "stop"
     assert any("did not answer" in w for w in input_from_run(record).warnings)
 
 
