@@ -3,7 +3,8 @@
 from dataclasses import dataclass
 from typing import Any, Protocol
 
-SHARE_OF_A_LINE = 0.1
+LINES = 10
+"""About so many lines a sweep."""
 
 
 @dataclass(frozen=True)
@@ -51,15 +52,15 @@ class LineProgress:
 
     def __init__(self, stream: Any) -> None:
         self._stream = stream
-        self._next = 0.0
+        self._next = 0
 
     def say(self, text: str) -> None:
         print(text, file=self._stream, flush=True)
 
     def show(self, shown: StepShown) -> None:
-        if shown.done >= self._next * shown.total or shown.done == shown.total:
+        if LINES * shown.done >= self._next or shown.done == shown.total:
             self.say(shown.text())
-            self._next = shown.done / shown.total + SHARE_OF_A_LINE
+            self._next = LINES * shown.done + shown.total
 
     def end(self) -> None:
         """Nothing is left on the screen."""
