@@ -74,7 +74,7 @@ class Surface(Sector):
 class PartMount(Settings):
     """What the beam meets on the stage where the part is missing.
 
-    ``tilt_deg``: how far a bare mirror-like mount may lean any way from the part's face.
+    ``tilt_deg``: how far a bare mirror-like mount may lean from the part's face.
     """
 
     acts_as: Literal["stop", "mirror"]

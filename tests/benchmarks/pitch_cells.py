@@ -76,7 +76,8 @@ def main() -> None:
                 rms = np.sqrt(np.mean(kept[:, 0] ** 2))
                 print(
                     f"{name:18} {len(mounts):6d}  {rms:8.3f}  "
-                    f"{3 / np.sqrt(2 * len(kept)):6.3f}  {100 * kept[:, 1].mean():6.1f} %"
+                    f"{3 / np.sqrt(2 * len(kept)):6.3f}  "
+                    f"{100 * kept[:, 1].mean():6.1f} %"
                     f"  {kept[:, 2].mean():.2e}  {np.nanmean(kept[:, 3]):7.3f}  "
                     f"{int(kept[:, 4].sum()):5d}  {len(rows) - len(kept):7d}"
                     f"  {time.monotonic() - start:.0f}",

@@ -1,4 +1,4 @@
-"""The finder beside what a user would otherwise take: time, recall, false, error/bound.
+"""The finder beside what a user would otherwise take: time, recall, error/bound.
 
 Run: python tests/benchmarks/spot_methods.py [frames] [frames for the slow ones] (12, 2).
 Frames of 2448 x 2048, 12 bit, seven spots, clean and under fully developed speckle of
@@ -78,9 +78,7 @@ def main() -> None:
     print(
         "method                           contrast frames  recall  false/f  rms/bound"
     )
-    print(
-        "                                                          ms/frame   times ours"
-    )
+    print(" " * 58 + "ms/frame   times ours")
     noise = wide_scene(0, 12)[1]
     for contrast in (0.0, 1.0):
         methods = {"pitchsweep": finder(noise), **METHODS}
