@@ -1,6 +1,6 @@
 """The finder beside what a user would otherwise take: time, recall, error/bound.
 
-Run: python tests/benchmarks/spot_methods.py [frames] [frames for the slow ones] (12, 2).
+Run: python tests/benchmarks/spot_methods.py [frames] [frames for slow ones] (12, 2).
 Frames of 2448 x 2048, 12 bit, seven spots, clean and under fully developed speckle of
 grain 2 px; seeds 0..n-1; one thread. The last column is time over the finder's time.
 Needs the ``bench`` extra.
