@@ -3,6 +3,7 @@
 Heavy modules are imported by the commands that need them, so that help is quick.
 """
 
+import os
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -193,6 +194,10 @@ def _show(analysed: "Analysed", out: Path | None, as_json: bool) -> None:
 
 def main(arguments: Sequence[str] | None = None) -> None:
     """Runs the command line and exits with its code; never shows a traceback."""
+    # Set before numpy is loaded: small matrices are quicker on one thread, and sums
+    # are the same on every machine size.
+    for library in ("OPENBLAS", "OMP", "MKL"):
+        os.environ.setdefault(f"{library}_NUM_THREADS", "1")
     sys.exit(run(arguments))
 
 

@@ -3,6 +3,7 @@
 from collections.abc import Sequence
 from dataclasses import replace
 
+import cv2
 import numpy as np
 from numpy.typing import NDArray
 
@@ -23,6 +24,7 @@ from pitchsweep.configs.bench_model import Bench, Camera
 
 def spot_finder(bench: Bench) -> FindSpots:
     """A finder for frames of ``bench``: its noise model, pixel map and marks."""
+    cv2.setNumThreads(1)  # the finder has one worker; the sweep has the other core
     camera = bench.camera
     noise = CameraNoise.from_bench(camera)
     places = [pixels_from_screen(*mark, camera) for mark in bench.screen.marks_mm]

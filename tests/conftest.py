@@ -1,10 +1,14 @@
 """Settings for the whole suite: generated cases are the same in every run."""
 
+import os
 import tempfile
 from collections.abc import Iterator
 
 import hypothesis
 import pytest
+
+# As the program itself does; must stand before anything loads numpy.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 
 hypothesis.settings.register_profile("same-every-run", derandomize=True, deadline=None)
 hypothesis.settings.load_profile("same-every-run")
