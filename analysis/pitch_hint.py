@@ -37,6 +37,8 @@ MOST_UNEXPLAINED = 0.2
 WORTH_A_LOOK = 0.05
 FOUND_RANGE = 0.01
 """Relative range of a pitch found from directions; its own u is far smaller."""
+LEAST_KEPT = 0.6
+"""A joint fit that keeps less than this share of the spots on orders keeps to a few."""
 NOT_AN_ORDER = (Rejection.NO_ORDER, Rejection.TWO_ORDERS, Rejection.OFF_TRACK)
 
 
@@ -99,6 +101,14 @@ def _found(
 
 def _refitted(found: UnhintedOrders) -> HintedFit:
     clean = clean_fit(found.problem, FOUND_RANGE, found.first)
+    on_orders = found.first.assigned & (found.first.order != 0)
+    kept = int((clean.used & on_orders).sum())
+    if kept < LEAST_KEPT * on_orders.sum():
+        raise NoResult(
+            f"only {kept} of the {int(on_orders.sum())} spots that lie on orders agree "
+            "in the joint fit: too few to tell the wild ones",
+            remedy="more angles at which an order crosses the screen",
+        )
     return HintedFit(found.problem, clean, found.warnings)
 
 

@@ -223,6 +223,13 @@ def test_a_nominal_pitch_far_off_never_leaves_an_unsettled_fit() -> None:
     assert judged(Unhinted(job, case.sweep), trust_nominal=True)[0] == "right"
 
 
+def test_a_fit_that_keeps_to_a_few_spots_is_refused() -> None:
+    """Eleven spots beside the zero order, several of them wild: the fit held to three
+    that agreed, 8.6 u from the truth."""
+    verdict, why = judged(random_sweep(722))
+    assert verdict == "refused" and "agree in the joint fit" in why
+
+
 def test_a_few_angles_are_refused_not_guessed() -> None:
     job = demo_job(
         "track-740-red", recipe={"start_deg": 4.0, "stop_deg": 8.0, "step_deg": 2.0}
