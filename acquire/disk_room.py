@@ -6,8 +6,8 @@ from pathlib import Path
 from pitchsweep.acquire.sweep_plan import Step, SweepPlan, frames_of
 from pitchsweep.configs.job_model import Job
 
-BYTES_PER_PIXEL = 1.6
-"""A lossless 16-bit frame with camera noise seldom takes more."""
+BYTES_PER_PIXEL = 2.05
+"""A 16-bit frame takes no more, coded or not."""
 JOURNAL_BYTES = 20_000_000
 STEPS_IN_HAND = 4
 

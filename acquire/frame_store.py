@@ -1,4 +1,8 @@
-"""Keeps frames: lossless 16-bit PNG, durable, with checksums. Acts (disk)."""
+"""Keeps frames: lossless, 16 bit, durable, with checksums. Acts (disk).
+
+Small frames are PNG. Coding a large one would take longer than a step, so it is kept
+as a plain TIFF; whoever wants the space back may recode it afterwards.
+"""
 
 import errno
 import hashlib
@@ -13,6 +17,10 @@ from pitchsweep.acquire.acquire_errors import StorageFailed
 from pitchsweep.acquire.durable_files import write_durably
 
 Frame = NDArray[np.uint16]
+
+LARGE_PX = 2_000_000
+PNG: tuple[str, list[int]] = (".png", [cv2.IMWRITE_PNG_COMPRESSION, 1])
+TIFF: tuple[str, list[int]] = (".tif", [cv2.IMWRITE_TIFF_COMPRESSION, 1])
 
 NO_SPACE = (errno.ENOSPC, errno.EDQUOT)
 
@@ -40,11 +48,12 @@ class FrameStore:
         """
         if frame.dtype != np.uint16 or frame.ndim != 2:
             raise ValueError(f"a frame is 2-D uint16, not {frame.dtype} {frame.shape}")
-        file = f"frames/{number:06d}.png"
+        ending, options = TIFF if frame.size >= LARGE_PX else PNG
+        file = f"frames/{number:06d}{ending}"
         path = self._run / file
-        coded, data = cv2.imencode(".png", frame, [cv2.IMWRITE_PNG_COMPRESSION, 1])
+        coded, data = cv2.imencode(ending, frame, options)
         if not coded:
-            raise StorageFailed(path, "the frame could not be coded as PNG")
+            raise StorageFailed(path, f"the frame could not be coded as {ending}")
         content = data.tobytes()
         try:
             write_durably(path, content)

@@ -1,6 +1,7 @@
 """One session of a run: lock, journal, bench, runner, ending. Acts (all of them)."""
 
 import sqlite3
+import sys
 from collections.abc import Callable
 from contextlib import AbstractContextManager, suppress
 from dataclasses import dataclass
@@ -39,6 +40,8 @@ from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.run_ack import refuse_unacknowledged
 from pitchsweep.safety.run_refusals import refuse_unsafe
+
+SWITCH_INTERVAL_S = 0.0005
 
 
 @dataclass(frozen=True)
@@ -201,6 +204,8 @@ def _session(
     if not now.remaining:
         return
     job = folder.job
+    # The thread that drives the bench gets its turn soon, whatever the others compute.
+    sys.setswitchinterval(SWITCH_INTERVAL_S)
     session = journal.begin_session(owner)
     teller = Teller(job.schedule, folder.path.name, progress.say)
     report = SweepReporter(journal, progress.say, StatusFile(folder.path), teller)

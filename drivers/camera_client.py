@@ -96,4 +96,5 @@ def _take_frame(path: Path, shape: tuple[int, int], crc32: int) -> NDArray[np.ui
     if len(data) != 2 * shape[0] * shape[1] or zlib.crc32(data) != crc32:
         why = f"{len(data)} bytes are not the announced frame {shape}"
         raise AnsweredNonsense("camera", data[:16], why)
-    return np.frombuffer(data, dtype="<u2").astype(np.uint16).reshape(shape)
+    frame = np.frombuffer(data, dtype="<u2").reshape(shape)
+    return frame.astype(np.uint16, copy=False)

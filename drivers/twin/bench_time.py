@@ -21,6 +21,13 @@ class BenchTime:
         """The bench time."""
         return self._offset_s + (time.monotonic() if self._real else 0.0)
 
+    def wait_until(self, begun_s: float, seconds: float) -> float:
+        """Lets pass what is left of ``seconds`` since the bench time ``begun_s``.
+
+        In rehearsal nothing else has passed meanwhile.
+        """
+        return self.wait(max(0.0, begun_s + seconds - self.now_s()))
+
     def wait(self, seconds: float) -> float:
         """Lets ``seconds`` (0 or more) pass; returns the bench time then."""
         if not seconds >= 0.0:

@@ -16,10 +16,14 @@ class NoFrame(Exception):
 
 @dataclass(frozen=True)
 class Exposed:
-    """A frame (rows, columns) in digital numbers and the bench time it began at."""
+    """A frame (rows, columns) in digital numbers and the bench time it began at.
+
+    ``left_s`` of bench time must pass before it may be handed over.
+    """
 
     frame: NDArray[np.uint16]
     began_s: float
+    left_s: float = 0.0
 
 
 class CameraFaults:

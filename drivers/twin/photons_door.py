@@ -110,7 +110,7 @@ def expected_electrons(
     parts = min(_MOST_SMEAR_PARTS, 1 + int(abs(motion_deg) / _SMEAR_DEG))
     for part in range(parts):
         moved = motion_deg * (part / (parts - 1) if parts > 1 else 0.0)
-        for blob in _blobs(truth, bench, _turned(steps, moved), exposure_ms / parts):
+        for blob in blobs_of(truth, bench, _turned(steps, moved), exposure_ms / parts):
             add_blob(image, blob, twin_settings(bench).effects)
     return image
 
@@ -142,7 +142,9 @@ def _turned(steps: Steps, moved_deg: float) -> Steps:
     return Steps(**{**steps.__dict__, "stage_deg": steps.stage_deg + moved_deg})
 
 
-def _blobs(truth: Truth, bench: Bench, steps: Steps, exposure_ms: float) -> list[Blob]:
+def blobs_of(
+    truth: Truth, bench: Bench, steps: Steps, exposure_ms: float
+) -> list[Blob]:
     """Every visible order, and its ghost, as blobs on the pixels."""
     settings = twin_settings(bench)
     landing, spread = trace_bundle(truth, bench, steps)

@@ -19,6 +19,7 @@ from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
 from pitchsweep.drivers.twin.kept_state import KeptState, read_state, write_state
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
 from pitchsweep.drivers.twin.photons_door import render
+from pitchsweep.drivers.twin.prepared_frames import PreparedFrames
 from pitchsweep.drivers.twin.spots_door import spots
 from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics
 from pitchsweep.drivers.twin.truth import Truth, twin_settings
@@ -67,6 +68,8 @@ class World:
         self._seat = Seat(0, 0.0)
         self._laser = LaserState(kept.laser_shift_pm, kept.laser_power)
         self._out = False
+        prepared = settings.frames == "prepared"
+        self._prepared = PreparedFrames(truth, bench) if prepared else None
         self._camera_faults = CameraFaults(bench.camera)
         faults.go_on_from(kept.seen)
 
@@ -203,7 +206,17 @@ class World:
             end_deg = self._stage.table_deg(start_s + exposure_ms * 1e-3)
             lit = self.unit.is_lit()
             light = self._light_fault() if lit else ""
-        self.wait(exposure_ms * 1e-3 + self.bench.camera.readout_s)
+        taking_s = exposure_ms * 1e-3 + self.bench.camera.readout_s
+        if self._prepared is not None:
+            frame = self._prepared.frame(
+                _seated(label, seat),
+                exposure_ms=exposure_ms,
+                light_on=lit,
+                stage_deg=start_deg,
+                mount_deg=seat.mount_deg,
+            )
+            return Exposed(frame, start_s, left_s=taking_s)
+        self.wait(taking_s)
         if does == "no-frame":
             raise NoFrame("no frame came from the camera")
         lit = lit and self.unit.is_lit() and light not in ("dropout", "blocked")

@@ -148,11 +148,14 @@ class WorldAsks:
             self._frames += 1
             path = self.spool / f"frame-{self._frames:06d}.raw"
         path.write_bytes(data)
+        crc32 = zlib.crc32(data)
+        if taken.left_s > 0.0:
+            self._world.time.wait_until(taken.began_s, taken.left_s)
         return {
             "file": str(path),
             "rows": int(frame.shape[0]),
             "columns": int(frame.shape[1]),
-            "crc32": zlib.crc32(data),
+            "crc32": crc32,
             "began_s": taken.began_s,
         }
 
