@@ -81,14 +81,13 @@ def log_grey(image: NDArray[np.uint16]) -> NDArray[np.float64]:
     return grey / brightest if brightest > 0.0 else grey
 
 
-def _draw_frame(axes: Axes, frame: FrameShown) -> None:
-    image, block = reduced(frame.image, SHOWN_PX)
+def draw_log_frame(axes: Axes, whole: NDArray[np.uint16], shown_px: int) -> int:
+    """Draws a frame (rows, columns) dark on light by its logarithm; its rows.
+
+    The axes stay in pixels of the whole frame, whatever size is drawn.
+    """
+    image, block = reduced(whole, shown_px)
     rows, columns = (size * block for size in image.shape)
-    axes.set_axis_on()
-    axes.set_xticks([])
-    axes.set_yticks([])
-    for side in axes.spines.values():
-        side.set_visible(True)
     axes.imshow(
         log_grey(image),
         cmap="Greys",
@@ -97,10 +96,22 @@ def _draw_frame(axes: Axes, frame: FrameShown) -> None:
         extent=(-0.5, columns - 0.5, rows - 0.5, -0.5),
         interpolation="nearest",
     )
-    for mark in frame.marks:
-        _draw_mark(axes, mark, rows)
     axes.set_xlim(-0.5, columns - 0.5)
     axes.set_ylim(rows - 0.5, -0.5)
+    # What is drawn on top must not change the limits.
+    axes.set_autoscale_on(False)
+    return int(rows)
+
+
+def _draw_frame(axes: Axes, frame: FrameShown) -> None:
+    axes.set_axis_on()
+    axes.set_xticks([])
+    axes.set_yticks([])
+    for side in axes.spines.values():
+        side.set_visible(True)
+    rows = draw_log_frame(axes, frame.image, SHOWN_PX)
+    for mark in frame.marks:
+        _draw_mark(axes, mark, rows)
     title = (
         f"step {frame.step},  stage {frame.stage_deg:.2f}°,  {frame.exposure_ms:g} ms"
     )

@@ -8,7 +8,7 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Rectangle
 from numpy.typing import NDArray
 
-from pitchsweep.analysis.frame_strip import log_grey, reduced
+from pitchsweep.analysis.frame_strip import draw_log_frame
 from pitchsweep.analysis.picture_style import (
     ACCENT,
     LIMIT,
@@ -88,20 +88,9 @@ def step_png(shown: StepShown) -> bytes:
 
 
 def _draw_frame(axes: Axes, shown: StepShown) -> None:
-    image, block = reduced(shown.image, SHOWN_PX)
-    rows, columns = (size * block for size in image.shape)
-    axes.imshow(
-        log_grey(image),
-        cmap="Greys",
-        vmin=0.0,
-        vmax=1.0,
-        extent=(-0.5, columns - 0.5, rows - 0.5, -0.5),
-        interpolation="nearest",
-    )
+    rows = draw_log_frame(axes, shown.image, SHOWN_PX)
     for window in shown.windows:
         _draw_window(axes, window, rows)
-    axes.set_xlim(-0.5, columns - 0.5)
-    axes.set_ylim(rows - 0.5, -0.5)
     _framed(axes)
     axes.set_title(drawable(shown.title, length=120), pad=3.0)
 
