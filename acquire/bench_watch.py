@@ -19,13 +19,16 @@ PART_MOVED_K = 0.5
 AIR_MOVED_K = 1.0
 PRESSURE_MOVED_HPA = 3.0
 HOLE_ROOM_MM = 1.0
+STRAY = 1.25
+"""Orders other than zero also climb with the groove azimuth, by less than this."""
 
 
 @dataclass(frozen=True)
 class Sensed:
-    """What was first read, and what has been said already."""
+    """What was first read, each laser's power since, and what has been said already."""
 
     first: BenchReading | None = None
+    powers_mw: tuple[tuple[str, float], ...] = ()
     said: frozenset[str] = frozenset()
 
 
@@ -47,7 +50,10 @@ def after_reading(
     """
     first = state.first or reading
     state = replace(state, first=first)
-    fault = _power_fault(reading, bench, part, step)
+    fault = _power_fault(state, reading, bench, part, step)
+    if reading.power_mw is not None and (fault is None or fault.kind == "laser_power"):
+        powers = {**dict(state.powers_mw), step.laser: reading.power_mw}
+        state = replace(state, powers_mw=tuple(powers.items()))
     if fault is None and bench.air_sensor is not None and reading.air is None:
         fault = FaultMet("air_missing", "the air sensor does not answer")
     if fault is not None:
@@ -64,7 +70,7 @@ def after_reading(
 
 
 def _power_fault(
-    reading: BenchReading, bench: Bench, part: Part, step: Step
+    state: Sensed, reading: BenchReading, bench: Bench, part: Part, step: Step
 ) -> FaultMet | None:
     if reading.power_mw is None:
         return None
@@ -73,13 +79,15 @@ def _power_fault(
     text = f"{reading.power_mw:.3g} mW at the part, {nominal_mw:g} mW expected"
     if share < DROPOUT_SHARE:
         return FaultMet("laser_dropout", text)
-    if abs(share - 1.0) <= POWER_CHANGE:
-        return None
-    if order_back_in_hole(bench, part, step):
-        return FaultMet(
-            "laser_feedback", f"an order returns into the beam hole: {text}"
-        )
-    return FaultMet("laser_power", text)
+    # Feedback comes and goes with the angle; what stays is the laser's own power.
+    before_mw = dict(state.powers_mw).get(step.laser, nominal_mw)
+    jumped = abs(reading.power_mw / before_mw - 1.0) > POWER_CHANGE
+    if jumped and order_back_in_hole(bench, part, step):
+        back = "an order returns into the beam hole"
+        return FaultMet("laser_feedback", f"{back}: {text}")
+    if abs(share - 1.0) > POWER_CHANGE:
+        return FaultMet("laser_power", text)
+    return None
 
 
 def order_back_in_hole(bench: Bench, part: Part, step: Step) -> bool:
@@ -126,7 +134,7 @@ def spots_fault(
         return FaultMet("spots_vanished", "no light on the screen at all")
     # Orders keep to a band about the zero order's height; a stray reflection need not.
     strays = [
-        spot for spot in found.spots if abs(spot.y_mm) > 1.5 * zero.allowance_y_mm
+        spot for spot in found.spots if abs(spot.y_mm) > STRAY * zero.allowance_y_mm
     ]
     if strays:
         place = f"x {strays[0].x_mm:.0f}, y {strays[0].y_mm:.0f} mm"

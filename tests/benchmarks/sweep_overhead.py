@@ -4,7 +4,8 @@ Run: python tests/benchmarks/sweep_overhead.py [STEPS] (121)
 Steps of 1 degree at 10 deg/s, settling 0.25 s, exposures 20 and 200 ms, a dark bracket
 every 10 steps, readout 30 ms, frames of 5 megapixels whose noise the twin made before;
 the twin at real speed. Timed from the second step's intent to the last acknowledgement
-in the journal; before it come homing, the zero check and the way to the first angle. Prints resident memory too.
+in the journal; before it come homing, the zero check and the way to the first angle.
+Prints resident memory too.
 """
 
 import sqlite3

@@ -21,6 +21,8 @@ from typing import Any
 
 from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.journal_rows import FaultRow
+from pitchsweep.acquire.sweep_plan import plan_sweep
+from pitchsweep.acquire.zero_order_watch import is_well_seen, predict_zero_order
 from pitchsweep.configs.fault_policies import FaultPolicies
 from pitchsweep.configs.frozen_job import freeze
 from pitchsweep.configs.job_model import Job
@@ -30,8 +32,6 @@ from pitchsweep.configs.twin_faults import TwinFault
 
 PROGRAM = (sys.executable, "-m", "pitchsweep.acquire")
 SIGMAS = 4.0
-LASTING = 10**6
-STAGE_SEARCHES = "re-home"
 
 
 @dataclass(frozen=True)
@@ -80,15 +80,47 @@ CASES = (
 
 def occasion(case: Case, nth: int) -> int:
     """Which occasion the ``nth`` occurrence is; identical frames need one before."""
+    if case.does in ("blocked", "stray-spot"):
+        looks = well_seen_looks()
+        # Only far above or below the band of the orders is a stray spot told apart.
+        return looks[0] if case.does == "stray-spot" else looks[(nth - 1) % len(looks)]
     first = 2 if case.does in ("identical", "stale") else 1
-    # A blocked beam at the zero check is a trip, which no policy decides.
-    first += 2 if case.does in ("blocked", "stray-spot") else 0
     return first + (nth - 1) * case.every
+
+
+def well_seen_looks() -> list[int]:
+    """Looks at the screen (the zero check is the first) that must show a zero order.
+
+    A blocked beam at the zero check is a trip, which no policy decides.
+    """
+    job = swept_job()
+    steps = plan_sweep(job, "").steps
+    return [
+        2 + step.step
+        for step in steps
+        if is_well_seen(
+            job.bench, predict_zero_order(job.bench, job.part, step.incidence_deg)
+        )
+    ]
+
+
+def swept_job() -> Job:
+    """The shipped shim in twelve steps."""
+    job = read_job("demo:shims").job
+    recipe = job.recipe.model_copy(
+        update={
+            "start_deg": -27.5,
+            "stop_deg": 27.5,
+            "step_deg": 5.0,
+            "dark_every_steps": 100,
+        }
+    )
+    return job.model_copy(update={"recipe": recipe})
 
 
 def job_for(case: Case, policy: str, nth: int) -> Job:
     """The shipped shim with twelve steps, sensors, one fault and its policy."""
-    job = read_job("demo:shims").job
+    job = swept_job()
     assert job.bench.twin is not None
     fault = TwinFault.model_validate(
         {
@@ -117,16 +149,7 @@ def job_for(case: Case, policy: str, nth: int) -> Job:
         }
     )
     policies = FaultPolicies.model_validate({case.kind: policy, "retries": 2})
-    recipe = job.recipe.model_copy(
-        update={
-            "start_deg": -27.5,
-            "stop_deg": 27.5,
-            "step_deg": 5.0,
-            "record": case.record,
-            "dark_every_steps": 100,
-            "faults": policies,
-        }
-    )
+    recipe = job.recipe.model_copy(update={"record": case.record, "faults": policies})
     return job.model_copy(update={"bench": bench, "recipe": recipe})
 
 
