@@ -108,6 +108,7 @@ def joined(inputs: Sequence[FitInput]) -> FitInput:
     first = inputs[0]
     if len(inputs) == 1:
         return first
+    _refuse_twice_the_same(inputs)
     for other in inputs[1:]:
         if other.bench.model_copy(update={"twin": None}) != first.bench.model_copy(
             update={"twin": None}
@@ -134,6 +135,16 @@ def joined(inputs: Sequence[FitInput]) -> FitInput:
         rejected=tuple(rejected),
         warnings=tuple(w for item in inputs for w in item.warnings),
     )
+
+
+def _refuse_twice_the_same(inputs: Sequence[FitInput]) -> None:
+    """The same readings counted twice would lower u for nothing."""
+    seen: dict[bytes, str] = {}
+    for item in inputs:
+        spots = np.sort(item.table.x_mm).tobytes()
+        if spots in seen:
+            raise ValueError(f"{item.name} holds the same spots as {seen[spots]}")
+        seen[spots] = item.name
 
 
 def _parts(each: Sequence[Part]) -> tuple[Part, ...]:

@@ -24,6 +24,7 @@ from pitchsweep.analysis.joint_fit import JointFit, solve_joint_fit
 from pitchsweep.analysis.nuisances import fitted_nuisances
 from pitchsweep.analysis.order_visibility import why_no_order
 from pitchsweep.analysis.pitch_hint import fit_with_hint
+from pitchsweep.analysis.prior_pulls import prior_warnings
 from pitchsweep.analysis.records import (
     OrderTable,
     PitchResult,
@@ -93,13 +94,20 @@ def measure_pitch(
     table = repeats_counted(table)
     problem = fit_problem(table, bench, (part, *references), air)
     try:
-        hinted = fit_with_hint(
-            problem, bench=bench, air=air, trust_nominal=trust_nominal
-        )
-        clean = hinted.clean
-        problem, fit, scatter, warnings = _with_honest_scatter(hinted.problem, clean)
-    except np.linalg.LinAlgError:
-        raise NoResult("the spots do not determine the pitch at all") from None
+        # A trial state may overflow; the solver steps back from it, or gives up.
+        with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+            hinted = fit_with_hint(
+                problem, bench=bench, air=air, trust_nominal=trust_nominal
+            )
+            clean = hinted.clean
+            problem, fit, scatter, warnings = _with_honest_scatter(
+                hinted.problem, clean
+            )
+    except (np.linalg.LinAlgError, ArithmeticError):
+        raise NoResult(
+            "the spots do not determine the pitch at all",
+            remedy="check the unit of x_mm and y_mm, the signs of orders and angles",
+        ) from None
     except AmbiguousOrders:
         raise
     except NoResult as error:
@@ -107,7 +115,8 @@ def measure_pitch(
     for index, reason in sorted(clean.reasons.items()):
         refused.append(_rejected_row(table, index, reason))
     warnings = [*hinted.warnings, *warnings, *_off_nominal(problem, fit, part)]
-    warnings += unknown_beam_warnings(table, refused)
+    warnings += prior_warnings(problem, fit)
+    warnings += unknown_beam_warnings(table, refused) + _off_screen(refused, table)
     result = _result(problem, clean, fit, scatter, coverage, warnings, refused)
     sweep = Sweep(problem, clean.order, fit, bench, air)
     result = replace(result, advice=advice(sweep, result))
@@ -271,6 +280,16 @@ def _off_nominal(problem: FitProblem, fit: JointFit, part: Part) -> list[str]:
         f"the pitch is {off:.2f} % from the nominal {part.nominal_pitch_nm:g} nm, "
         f"more than the part file's nominal_within_percent "
         f"({part.nominal_within_percent:g}): is it this part?"
+    ]
+
+
+def _off_screen(refused: list[RejectedSpot], table: OrderTable) -> list[str]:
+    off = sum(r.reason is Rejection.OFF_SCREEN for r in refused)
+    if off <= 0.2 * (off + len(table)):
+        return []
+    return [
+        f"{off} of {off + len(table)} spots lie off the screen that the bench file "
+        "describes: check the unit of x_mm and y_mm and whether they are swapped"
     ]
 
 

@@ -38,6 +38,12 @@ MIRRORED = (
     "bench's stage.direction is wrong; turn one of them over"
 )
 
+ORDERS_TURNED = (
+    "the orders' signs are turned over: positive orders lie to +x of the zero order "
+    "(a person facing the screen sees +x on the left); turn the order column over, or "
+    "the x column where x was typed as seen"
+)
+
 
 @dataclass(frozen=True)
 class Assignment:
@@ -193,17 +199,28 @@ def mirrored(table: OrderTable) -> OrderTable:
     return replace(table, x_mm=-table.x_mm, cxy_mm2=-table.cxy_mm2)
 
 
-def looks_mirrored(problem: FitProblem, pitch_u: float) -> bool:
-    """True when the spots make no sense as they are and do when x is turned over.
+def orders_turned(table: OrderTable) -> OrderTable:
+    """The table with the signs of its given orders turned over."""
+    given = table.order != UNKNOWN_ORDER
+    return replace(table, order=np.where(given, -table.order, table.order))
+
+
+def sign_trouble(problem: FitProblem, pitch_u: float) -> str:
+    """What is turned over, where the spots make sense only so; else empty.
 
     The zero order moves to +x by twice the angle whatever the pitch; it is what
-    tells. A table of one angle near normal incidence cannot tell and gives False.
+    tells a mirrored table. A table of one angle near normal incidence without orders
+    cannot tell.
     """
     straight = _misfit(problem, pitch_u)
     if straight < 0.2:
-        return False
-    turned = replace(problem, table=mirrored(problem.table))
-    return _misfit(turned, pitch_u) < 0.3 * straight
+        return ""
+    table = problem.table
+    tries = [(ORDERS_TURNED, orders_turned(table)), (MIRRORED, mirrored(table))]
+    tries.append((MIRRORED, orders_turned(mirrored(table))))
+    misfits = [_misfit(replace(problem, table=t), pitch_u) for _, t in tries]
+    best = int(np.argmin(misfits))
+    return tries[best][0] if misfits[best] < 0.3 * straight else ""
 
 
 def _misfit(problem: FitProblem, pitch_u: float) -> float:

@@ -17,11 +17,10 @@ from pitchsweep.analysis.joint_fit import (
     solve_joint_fit,
 )
 from pitchsweep.analysis.order_tracking import (
-    MIRRORED,
     Assignment,
     assign_orders,
-    looks_mirrored,
     lowest_orders,
+    sign_trouble,
 )
 from pitchsweep.analysis.records import FloatArray, IntArray, Rejection
 
@@ -52,8 +51,9 @@ def clean_fit(
     instead of those that the nominal pitch predicts. Raises InputRefused for a
     mirrored table, NoResult when no order but the zero order is seen.
     """
-    if first is None and looks_mirrored(problem, pitch_u):
-        raise InputRefused(MIRRORED)
+    trouble = sign_trouble(problem, pitch_u) if first is None else ""
+    if trouble:
+        raise InputRefused(trouble)
     found = first or assign_orders(problem, pitch_u=pitch_u)
     require_orders(problem, found.order, found.assigned)
     start = lowest_orders(found) if first is None else found

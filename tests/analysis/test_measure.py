@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from builders import demo_job, twin_sweep
 
+from pitchsweep.acquire.fit_input import FitInput, joined
 from pitchsweep.analysis.analysis_errors import InputRefused, NoResult
 from pitchsweep.analysis.measure import measure_pitch
 from pitchsweep.analysis.order_tracking import mirrored
@@ -243,3 +244,66 @@ def test_pitch_is_brought_to_twenty_degrees() -> None:
     cold = measure_pitch(table, bench=job.bench, part=job.part)
     result = measure_pitch(table, bench=job.bench, part=part)
     assert cold.pitch_nm / result.pitch_nm - 1.0 == pytest.approx(2.66e-5, rel=1e-3)
+
+
+def test_a_table_in_centimetres_is_refused_with_the_distance_it_would_need() -> None:
+    job = demo_job("shims-spots")
+    table = twin_sweep(job, 7).table
+    small = replace(table, x_mm=table.x_mm / 10.0, y_mm=table.y_mm / 10.0)
+    with pytest.raises(NoResult, match=r"unit of x_mm|determine|nominal"):
+        measure_pitch(small, bench=job.bench, part=job.part)
+
+
+def test_a_table_in_metres_is_refused_without_a_fault() -> None:
+    job = demo_job("shims-spots")
+    table = twin_sweep(job, 7).table
+    tiny = replace(table, x_mm=table.x_mm / 1000.0, y_mm=table.y_mm / 1000.0)
+    with pytest.raises(NoResult):
+        measure_pitch(tiny, bench=job.bench, part=job.part)
+
+
+def test_lengths_a_third_too_large_are_warned_of_or_refused() -> None:
+    job = demo_job("shims-spots")
+    table = twin_sweep(job, 7).table
+    large = replace(table, x_mm=table.x_mm * 1.3, y_mm=table.y_mm * 1.3)
+    try:
+        result = measure_pitch(large, bench=job.bench, part=job.part)
+    except NoResult as error:
+        assert "screen distance" in str(error)
+        return
+    assert any("screen distance" in warning for warning in result.warnings)
+
+
+def test_swapped_columns_are_refused_or_warned_of() -> None:
+    job = demo_job("shims-spots")
+    table = twin_sweep(job, 7).table
+    swapped = replace(table, x_mm=table.y_mm, y_mm=table.x_mm)
+    try:
+        result = measure_pitch(swapped, bench=job.bench, part=job.part)
+    except NoResult:
+        return
+    assert result.warnings
+
+
+def test_a_table_mirrored_with_its_orders_is_named_as_such() -> None:
+    """As a person facing the screen sees it: x and the signs of the orders turned."""
+    job = demo_job("shims-spots")
+    sweep = twin_sweep(job, 4)
+    table = mirrored(replace(sweep.table, order=-sweep.true_order))
+    with pytest.raises(InputRefused, match="mirrored"):
+        measure_pitch(table, bench=job.bench, part=job.part)
+
+
+def test_orders_with_turned_signs_are_named_as_such() -> None:
+    job = demo_job("shims-spots")
+    sweep = twin_sweep(job, 4)
+    table = replace(sweep.table, order=-sweep.true_order)
+    with pytest.raises(InputRefused, match="orders' signs"):
+        measure_pitch(table, bench=job.bench, part=job.part)
+
+
+def test_the_same_spots_are_not_counted_twice() -> None:
+    job = demo_job("shims-spots")
+    given = FitInput("a", twin_sweep(job, 1).table, job.bench, job.part, 0.95)
+    with pytest.raises(ValueError, match="same spots"):
+        joined([given, replace(given, name="b")])
