@@ -1,1 +1,1 @@
-"""The gate, the guard process and the ledger. No safety function: see SAFETY notes."""
+"""The gate, the guard process and the ledger. Not a safety function."""

@@ -13,12 +13,7 @@ CLOCK_READINGS = frozenset({"now", "utcnow", "today"})
 FILE_CALLS = frozenset({"imread", "imwrite", "imreadmulti", "urlopen"})
 
 # The twin computes its rays in its own way: the model that it checks is not its to use.
-MODEL_CODE = (
-    "pitchsweep.analysis.grating",
-    "pitchsweep.analysis.bench_geometry",
-    "pitchsweep.analysis.joint_fit",
-    "pitchsweep.analysis.spot_finding",
-)
+MODEL_CODE = ("pitchsweep.analysis",)
 
 FILES = python_files()
 

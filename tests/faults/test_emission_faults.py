@@ -1,6 +1,6 @@
 """A few of the emission faults; all of them run in tests/benchmarks/emission_faults.py.
 
-The unit's log is the judge. Bounds are those of SAFETY: the unit's own drop-out, plus
+The unit's log is the judge. Bounds: the unit's own drop-out, plus
 the age at which a heartbeat is stale; a loaded computer is allowed half a second more.
 """
 
