@@ -94,8 +94,13 @@ def test_orders_of_a_run_fit_again_as_a_table(
     second = json.loads(capsys.readouterr().out)
     assert second["pitch_nm"] == pytest.approx(first["pitch_nm"], rel=1e-6)
     assert {p.name for p in tmp_path.iterdir()} == {"job.yaml", "runs", "table.csv"}
+    assert run(["fit", str(table), str(table), *demo]) == 2
+    assert "same spots" in capsys.readouterr().err
     out = tmp_path / "out"
-    assert run(["fit", str(table), str(table), *demo, "--out", str(out)]) == 0
+    other = tmp_path / "other.csv"
+    head, *rows = table.read_text().splitlines()
+    other.write_text("\n".join([head, *rows[::2]]) + "\n")
+    assert run(["fit", str(table), str(other), *demo, "--out", str(out)]) == 0
     assert (out / "report.html").exists() and (out / "report.pdf").exists()
 
 
