@@ -16,18 +16,13 @@ class Standing:
     """Where a run stands: intents of done steps, numbers in doubt, steps to do.
 
     ``done`` maps a step number to its valid intent; ``zero_checks`` counts every
-    zero check ever begun; ``first_remaining`` is None when the sweep is complete.
+    zero check ever begun.
     """
 
     done: dict[int, IntentRow]
     in_doubt: tuple[int, ...]
     remaining: tuple[Step, ...]
     zero_checks: int
-
-    @property
-    def first_remaining(self) -> Step | None:
-        """The step to go on with."""
-        return self.remaining[0] if self.remaining else None
 
 
 def standing(plan: SweepPlan, intents: Iterable[IntentRow]) -> Standing:
@@ -67,9 +62,3 @@ def _check_same(step: Step | None, row: IntentRow) -> None:
             f"the journal's step {row.step} is not in this plan: job.yaml or run.db "
             "was changed"
         )
-
-
-def dark_step_of(plan: SweepPlan, step: int) -> int:
-    """The number of the step whose dark frames serve ``step``: the last one due."""
-    due = [s.step for s in plan.steps[: step + 1] if s.dark_due]
-    return due[-1]

@@ -79,11 +79,6 @@ class People:
         """The signer with this public key, revoked or not."""
         return next((s for s in self.signers.values() if s.key == key), None)
 
-    @property
-    def has_officer(self) -> bool:
-        """True when somebody can vouch for others."""
-        return any(s.active and OFFICER in s.roles for s in self.signers.values())
-
 
 def take(people: People, entry: Entry) -> People:
     """The state after ``entry``; ValueError says why it may not stand there."""

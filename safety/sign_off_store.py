@@ -87,19 +87,6 @@ def records_of(home: SafetyHome) -> list[Kept | RecordForged]:
     return sorted(found, key=_age, reverse=True)
 
 
-def judged_for(
-    home: SafetyHome, work: Work, now: PeopleNow, utc_s: float
-) -> list[Judged | RecordForged]:
-    """The records made for this job's name, newest first, each with its verdict."""
-    judged: list[Judged | RecordForged] = []
-    for kept in records_of(home):
-        if isinstance(kept, RecordForged):
-            judged.append(kept)
-        elif kept.record.statement.job == work.job.job:
-            judged.append(Judged(kept, judge(home, kept, work, now, utc_s)))
-    return judged
-
-
 def judge(
     home: SafetyHome, kept: Kept, work: Work, now: PeopleNow, utc_s: float
 ) -> str:
