@@ -116,6 +116,10 @@ class EmissionUnit:
         with self._lock:
             return self._closed[1], self._closed.get(2)
 
+    def note_person(self, does: str) -> None:
+        """Somebody is "asked" to the bench, or has "done" what was asked."""
+        self._log.write("person", does)
+
     def press_reset(self) -> None:
         """The person on the spot presses the reset button."""
         with self._lock:

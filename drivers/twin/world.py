@@ -165,7 +165,9 @@ class World:
 
     def ask_person(self, what: str) -> str:
         """The person does ``what``, which takes bench time; their name."""
+        self.unit.note_person("asked")
         self.wait(60.0 * twin_settings(self.bench).person_min)
+        self.unit.note_person("done")
         return PERSON
 
     def see_spots(self, label: Label) -> list[SpotReading]:

@@ -17,7 +17,6 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import datetime
 from pathlib import Path
-from typing import Any
 
 from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.journal_rows import FaultRow
@@ -185,7 +184,6 @@ def play(job: Job, folder: Path) -> Played:
             for row in journal.intents()
             if row.outcome == "done" and row.kind == "step"
         }
-        waits = _waits(run, journal.gate_events())
     report = run / "report.html"
     truth = json.loads((run / "twin" / "twin_truth.json").read_text())
     result = json.loads(done.stdout) if done.returncode == 0 else None
@@ -197,34 +195,31 @@ def play(job: Job, folder: Path) -> Played:
         steps=len(steps),
         report=report.read_text() if report.exists() else "",
         off_in_u=off,
-        lit=_lit(run),
-        waits=waits,
+        lit=_stretches(run, "light", "on"),
+        waits=_stretches(run, "person", "asked"),
     )
 
 
-def _lit(run: Path) -> list[tuple[float, float]]:
-    """Every stretch of light on the unit's log, UTC seconds."""
-    stretches, since = [], 0.0
-    for line in (run / "twin" / "unit.log").read_text().splitlines():
-        entry = json.loads(line)
-        at_s = datetime.fromisoformat(entry["utc"]).timestamp()
-        if entry["what"] == "light" and entry["value"] == "on":
-            since = at_s
-        elif entry["what"] == "light":
-            stretches.append((since, at_s))
-    return stretches
-
-
-def _waits(run: Path, gate: list[Any]) -> list[tuple[float, float]]:
-    """The moments at which a person had just said that they are done."""
+def _unit_rows(run: Path) -> list[tuple[str, str, float]]:
+    """What happened at the unit, by its own log: what, value and UTC seconds."""
+    rows = map(json.loads, (run / "twin" / "unit.log").read_text().splitlines())
     return [
-        (at_s - 0.002, at_s)
-        for at_s in (
-            datetime.fromisoformat(row.utc).timestamp()
-            for row in gate
-            if row.event == "person"
-        )
+        (row["what"], row["value"], datetime.fromisoformat(row["utc"]).timestamp())
+        for row in rows
     ]
+
+
+def _stretches(run: Path, what: str, begins: str) -> list[tuple[float, float]]:
+    """Every stretch of ``what`` from ``begins`` to its next change, UTC seconds."""
+    stretches: list[tuple[float, float]] = []
+    since = None
+    for name, value, at_s in _unit_rows(run):
+        if name == what and value == begins:
+            since = at_s
+        elif name == what and since is not None:
+            stretches.append((since, at_s))
+            since = None
+    return stretches
 
 
 def check(case: Case, policy: str, played: Played, steps: int = 12) -> None:
