@@ -53,6 +53,7 @@ class Source(StrEnum):
     WORM = "stage errors, worm period"
     SCALE = "stage scale"
     DRIFT = "drift of camera, beam and wavelength"
+    JUMP = "jumps of the laser wavelength"
     STEPS = "stage repeatability"
 
 

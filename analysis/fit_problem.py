@@ -9,6 +9,7 @@ from pitchsweep.analysis.air_index import AirState, air_index
 from pitchsweep.analysis.fit_parameters import ARCSEC, Parameter
 from pitchsweep.analysis.fit_scene import (
     FitScene,
+    WavelengthJump,
     base_pitch_nm,
     fit_scene,
     strain,
@@ -28,7 +29,8 @@ class FitProblem:
     (column Q holds lambda/d, without the order). ``step_group`` (N,) numbers the
     steps, ``by_step`` (N,) sorts by them and ``step_starts`` (S,) says where each
     begins; ``whitener`` (N, 2, 2) turns residuals into independent unit-variance ones.
-    The first parameters are the pitches of ``parts``, in order.
+    The first parameters are the pitches of ``parts``, in order. ``run`` and ``time``
+    (N,) say when each spot was seen.
     """
 
     table: OrderTable
@@ -44,6 +46,9 @@ class FitProblem:
     half_width_mm: float
     half_height_mm: float
     parts: tuple[Part, ...]
+    run: IntArray
+    time: FloatArray
+    jumps: tuple[WavelengthJump, ...] = ()
 
     def sum_by_step(self, rows: FloatArray) -> FloatArray:
         """Sums (S, ...) of ``rows`` (N, ...) over the spots of each step."""
@@ -51,10 +56,14 @@ class FitProblem:
 
 
 def fit_problem(
-    table: OrderTable, bench: Bench, parts: Sequence[Part], air: AirState
+    table: OrderTable,
+    bench: Bench,
+    parts: Sequence[Part],
+    air: AirState,
+    jumps: Sequence[WavelengthJump] = (),
 ) -> FitProblem:
-    """The joint fit of the parts' spots on one bench."""
-    scene = fit_scene(table, bench, parts, air)
+    """The joint fit of the parts' spots on one bench; ``jumps`` of wavelengths in it."""
+    scene = fit_scene(table, bench, parts, air, jumps)
     keys = np.stack(
         [table.step, table.laser, np.round(table.mount_deg * 1e6), scene.run], axis=1
     )
@@ -76,6 +85,9 @@ def fit_problem(
         half_width_mm=bench.screen.width_mm / 2.0,
         half_height_mm=bench.screen.height_mm / 2.0,
         parts=scene.parts,
+        run=scene.run,
+        time=scene.time,
+        jumps=scene.jumps,
     )
 
 

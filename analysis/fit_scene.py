@@ -19,11 +19,24 @@ DEG = ("deg", float(np.rad2deg(1.0)))
 
 
 @dataclass(frozen=True)
+class WavelengthJump:
+    """A laser's wavelength is another from ``since`` on, in one run.
+
+    ``laser`` and ``run`` index the table's; ``since`` counts as the table's time.
+    """
+
+    laser: int
+    run: int
+    since: float
+
+
+@dataclass(frozen=True)
 class FitScene:
     """What the table of unknowns is made for: spots, bench, parts, air.
 
-    ``part`` and ``run`` (N,) index the spots' parts and runs, ``elapsed`` (N,) runs
-    from -1 to 1 over each run.
+    ``part`` and ``run`` (N,) index the spots' parts and runs, ``time`` (N,) is when
+    in its run each was seen, ``elapsed`` (N,) runs from -1 to 1 over each run.
+    ``jumps`` of wavelengths are each left unknown in size.
     """
 
     table: OrderTable
@@ -32,7 +45,9 @@ class FitScene:
     air: AirState
     part: IntArray
     run: IntArray
+    time: FloatArray
     elapsed: FloatArray
+    jumps: tuple[WavelengthJump, ...] = ()
 
     @property
     def everything(self) -> FloatArray:
@@ -41,7 +56,11 @@ class FitScene:
 
 
 def fit_scene(
-    table: OrderTable, bench: Bench, parts: Sequence[Part], air: AirState
+    table: OrderTable,
+    bench: Bench,
+    parts: Sequence[Part],
+    air: AirState,
+    jumps: Sequence[WavelengthJump] = (),
 ) -> FitScene:
     """The scene of a table; time is the steps' order where it was not noted."""
     none = np.zeros(len(table), dtype=np.int64)
@@ -60,7 +79,9 @@ def fit_scene(
         air=air,
         part=table.part if table.part is not None else none,
         run=run,
+        time=time,
         elapsed=elapsed,
+        jumps=tuple(jumps),
     )
 
 

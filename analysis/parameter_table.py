@@ -5,7 +5,12 @@ The angle error of every step is not in it: the solver eliminates it.
 
 from pitchsweep.analysis.fit_parameters import Parameter
 from pitchsweep.analysis.fit_scene import FitScene
-from pitchsweep.analysis.parameters_in_time import drifts, laser_maps, screen_map
+from pitchsweep.analysis.parameters_in_time import (
+    drifts,
+    laser_maps,
+    screen_map,
+    wavelength_jumps,
+)
 from pitchsweep.analysis.parameters_of_bench import (
     air,
     screen_and_beam,
@@ -32,6 +37,7 @@ def parameter_table(scene: FitScene) -> tuple[Parameter, ...]:
         *seats(scene),
         *stage(scene),
         *drifts(scene),
+        *wavelength_jumps(scene),
         *screen_map(scene),
         *laser_maps(scene),
     )

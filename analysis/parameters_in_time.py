@@ -70,6 +70,28 @@ def drifts(scene: FitScene) -> Iterator[Parameter]:
                 )
 
 
+def wavelength_jumps(scene: FitScene) -> Iterator[Parameter]:
+    """The size of every jump, felt by all spots of its laser since then."""
+    for number, jump in enumerate(scene.jumps, start=1):
+        name = scene.table.laser_names[jump.laser]
+        laser = scene.bench.lasers[name]
+        nm = laser.vacuum_wavelength_nm
+        feels = (
+            (scene.table.laser == jump.laser)
+            & (scene.run == jump.run)
+            & (scene.time >= jump.since)
+        )
+        yield log_ratio(
+            f"wavelength jump {number} of {name}",
+            Scope.RUN,
+            Source.JUMP,
+            laser.u_jump_pm * 1e-3 / nm,
+            feels.astype(np.float64),
+            "pm",
+            nm * 1e3,
+        )
+
+
 def _scale_drift(
     scene: FitScene, share: float, shape: FloatArray, label: str
 ) -> Iterator[Parameter]:

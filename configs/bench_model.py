@@ -131,6 +131,7 @@ class InfraredFilter(Settings):
 class Laser(Settings):
     """One laser: vacuum wavelength with its standard uncertainty, power at the part.
 
+    ``u_jump_pm``: size of a mode hop, should the spots show one.
     ``full_drive_mw`` is what reaches the part at full drive with every attenuator out
     (``power_mw`` where it is not given); ``divergence_mrad`` the full 1/e2 angle (the
     smallest that diffraction allows where it is not given).
@@ -139,6 +140,7 @@ class Laser(Settings):
     vacuum_wavelength_nm: Annotated[float, Field(ge=400.0, le=700.0)]
     u_wavelength_nm: Annotated[float, Field(gt=0.0, le=20.0)]
     u_drift_pm: Annotated[float, Field(gt=0.0, le=1000.0)] = 0.5
+    u_jump_pm: Annotated[float, Field(gt=0.0, le=5000.0)] = 300.0
     power_mw: Annotated[float, Field(gt=0.0, le=500.0)]
     full_drive_mw: Annotated[float, Field(gt=0.0, le=1e5)] | None = None
     divergence_mrad: Annotated[float, Field(gt=0.0, le=500.0)] | None = None

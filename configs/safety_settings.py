@@ -25,6 +25,7 @@ NOT_BOUND: Mapping[str, str] = MappingProxyType(
         "bench.air.*": "turns angles into pitch, after the light",
         "bench.drift.*": "weighs spots, after the light",
         "bench.lasers.*.u_drift_pm": "weighs spots, after the light",
+        "bench.lasers.*.u_jump_pm": "weighs spots, after the light",
         "bench.reading_u_mm": "weighs spots, after the light",
         "bench.camera.bits": "how frames are read, after the light",
         "bench.camera.gain_dn_per_e": "how frames are read, after the light",
