@@ -12,6 +12,8 @@ AcquireError
 
 from pathlib import Path
 
+from pitchsweep.configs.typed_command import typed
+
 
 class AcquireError(Exception):
     """Any failure of this room; ``str()`` is one or two plain lines."""
@@ -60,7 +62,7 @@ class SweepStopped(AcquireError):
         self.run = run
         self.reason = reason
         super().__init__(
-            f"stopped, dark: {reason}\n  go on with: pitchsweep sweep --resume {run}"
+            f"stopped, dark: {reason}\n  go on with: {typed('sweep', '--resume', run)}"
         )
 
 

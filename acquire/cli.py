@@ -34,6 +34,30 @@ app = typer.Typer(
     rich_markup_mode=None,
 )
 
+
+def _show_version(asked: bool) -> None:
+    if asked:
+        from importlib.metadata import version
+
+        print(f"pitchsweep {version('pitchsweep')}", flush=True)
+        raise typer.Exit
+
+
+@app.callback()
+def _program(
+    version: Annotated[
+        bool,
+        typer.Option(
+            "--version",
+            is_eager=True,
+            callback=_show_version,
+            help="Show the version and exit.",
+        ),
+    ] = False,
+) -> None:
+    pass
+
+
 Json = Annotated[bool, typer.Option("--json", help="Print the result as JSON.")]
 
 
@@ -106,7 +130,10 @@ def fit(
     ] = False,
     as_json: Json = False,
 ) -> None:
-    """Fit runs, order tables or frames; a run's derived files are written anew."""
+    """Fit runs, order tables or folders of frames.
+
+    The derived files of a run are written anew.
+    """
     from pitchsweep.acquire.fit_sources import FitOptions
 
     options = FitOptions(bench, part, laser, coverage, unknown_pitch, monte_carlo)
@@ -126,7 +153,10 @@ def report(
     ] = None,
     as_json: Json = False,
 ) -> None:
-    """Rebuild a run's report and the other derived files, or draw one step."""
+    """Rebuild a run's report, or draw one of its steps.
+
+    The other derived files of the run are written anew too.
+    """
     from pitchsweep.acquire.run_folder import open_run_folder
 
     if step is not None:
@@ -177,7 +207,7 @@ def _fit_and_show(
 
 
 def _show(analysed: "Analysed", out: Path | None, as_json: bool) -> None:
-    from pitchsweep.acquire.analyse_run import PICTURE, REPORT
+    from pitchsweep.acquire.analyse_run import PAPER, PICTURE, REPORT
     from pitchsweep.analysis.result_file import result_json, summary_lines
     from pitchsweep.safety.safety_errors import CAUTION
 
@@ -187,7 +217,10 @@ def _show(analysed: "Analysed", out: Path | None, as_json: bool) -> None:
         return
     lines = summary_lines(analysed.result)
     if out is not None:
-        lines += [f"Report     {out / REPORT}", f"Picture    {out / PICTURE}"]
+        lines += [
+            f"Report     {out / REPORT} (for paper: {PAPER})",
+            f"Picture    {out / PICTURE}",
+        ]
     lines.append(f"Caution    {CAUTION}")
     print("\n".join(lines), flush=True)
 

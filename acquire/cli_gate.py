@@ -20,18 +20,25 @@ def ack(
         str | None, typer.Option(help="Who acknowledges (asked for if not given).")
     ] = None,
 ) -> None:
-    """Acknowledge a trip, at the bench and by name, so that a run may go on."""
+    """Acknowledge a trip, at the bench and by name.
+
+    Only then may a tripped run go on.
+    """
     from pitchsweep.acquire.ack_run import acknowledge_run
+    from pitchsweep.configs.typed_command import typed
     from pitchsweep.safety.safety_errors import CAUTION
 
     done = acknowledge_run(run, name or _ask_name(), _say)
     print(f"{done.run}: {done.reason}")
-    print(f"go on with: pitchsweep sweep --resume {done.run}")
+    print(f"go on with: {typed('sweep', '--resume', done.run)}")
     print(f"Caution: {CAUTION}", flush=True)
 
 
 def dark() -> None:
-    """Make every running sweep of this user dark at once; needs nothing and no one."""
+    """Make every running sweep of this user dark at once.
+
+    Needs nothing and no one.
+    """
     from pitchsweep.safety.running_guards import find_guards, tell_dark
 
     answers = [tell_dark(guard) for guard in find_guards()]

@@ -64,7 +64,6 @@ def _read(path: Path, options: FitOptions) -> FitSource:
             f"neither a run (no job.yaml) nor a frame set (no {LIST})",
             "give a run folder, a CSV table or a folder of frames",
         )
-    bench, part = _bench_and_part(path, options)
     try:
         raw = path.read_bytes()
     except OSError as error:
@@ -73,6 +72,7 @@ def _read(path: Path, options: FitOptions) -> FitSource:
             allowed="a run folder, a CSV table or a folder of frames",
             file=str(path),
         ) from None
+    bench, part = _bench_and_part(path, options)
     lasers = _lasers(bench, options.laser)
     source = TableSource(str(path), lasers, bench.reading_u_mm)
     table = read_order_table(decode_order_table(raw, str(path)), source)

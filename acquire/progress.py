@@ -24,7 +24,7 @@ class StepShown:
     def text(self) -> str:
         """One line for a log."""
         return (
-            f"step {self.done}/{self.total}, {self.incidence_deg:+.2f} deg, mount "
+            f"{self.done} of {self.total} steps, {self.incidence_deg:+.2f} deg, mount "
             f"{self.mount + 1}, {self.laser}, orders {self.spots} (of "
             f"{self.orders_expected} expected), gate {self.gate}, "
             f"{clock_text(self.left_s)} left"
@@ -76,7 +76,7 @@ class BarProgress:
 
         self._console = Console(file=stream)
         self._bar = Bar(
-            TextColumn("step {task.completed}/{task.total}"),
+            TextColumn("{task.completed} of {task.total} steps"),
             BarColumn(bar_width=24),
             TextColumn("{task.description}"),
             console=self._console,

@@ -33,6 +33,7 @@ from pitchsweep.acquire.stored_spots import spots_of
 from pitchsweep.acquire.sweep_plan import SweepPlan, plan_sweep
 from pitchsweep.analysis.analysis_errors import NoResult
 from pitchsweep.configs.fingerprint import fingerprint
+from pitchsweep.configs.typed_command import typed
 
 
 @dataclass(frozen=True)
@@ -114,7 +115,7 @@ def input_from_run(record: RunRecord) -> FitInput:
     if not record.steps:
         raise NoResult(
             f"{record.folder.path}: no step of this run is acknowledged yet",
-            remedy=f"go on with: pitchsweep sweep --resume {record.folder.path}",
+            remedy=f"go on with: {typed('sweep', '--resume', record.folder.path)}",
         )
     warnings = []
     ended_early = record.meta.get("ended_early")

@@ -9,6 +9,7 @@ from pitchsweep.acquire.frame_store import NO_SPACE
 from pitchsweep.acquire.run_folder import RunFolder
 from pitchsweep.acquire.stop_signals import StopRequested, StopSignals
 from pitchsweep.acquire.sweep_reporter import SweepReporter
+from pitchsweep.configs.typed_command import typed
 from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.safety.safety_errors import SafetyError
 
@@ -74,8 +75,12 @@ class _Ending:
         self.note(f"{what}: {first_line(error)}")
         self._report.state(what.replace(" ", "-"), reason=first_line(error))
         self._report.teller.tell("trip" if tripped else "fault", first_line(error))
-        if not tripped:
-            resume = f"pitchsweep sweep --resume {self._folder.path}"
+        if tripped:
+            ack = typed("ack", self._folder.path)
+            resume = typed("sweep", "--resume", self._folder.path)
+            self._report.say(f"look at the bench, then: {ack}\nand then: {resume}")
+        else:
+            resume = typed("sweep", "--resume", self._folder.path)
             self._report.say(f"dark; when it is mended go on with: {resume}")
 
     def note(self, how: str) -> None:

@@ -123,7 +123,7 @@ def resume_run(path: Path, progress: Progress, open_bench: OpenBench) -> RunFold
     """
     folder = open_run_folder(path)
     if folder.job.bench.ports is not None:
-        refuse_unacknowledged(folder.ledger, folder.path.name)
+        refuse_unacknowledged(folder.ledger, folder.path.name, folder.path)
     plan = plan_sweep(folder.job, fingerprint(folder.job))
     refuse_unsafe(folder.job)
     permit = permit_for(folder.job, plan, progress.say)

@@ -30,6 +30,15 @@ Place = str | Path
 
 DEMO = "demo:"
 PARTS_OF_A_JOB = ("bench", "part", "recipe")
+KINDS: dict[type[Settings], str] = {
+    Job: "job",
+    JobFile: "job",
+    Bench: "bench",
+    Part: "part",
+    Recipe: "recipe",
+    Checklist: "checklist",
+}
+"""What a file of each model is called; the word is also a key of its first block."""
 
 
 @dataclass(frozen=True)
@@ -156,9 +165,22 @@ def _validated(document: YamlDocument, value: Any, model: type[Model]) -> Model:
     try:
         return model.model_validate(value)
     except ValidationError as error:
+        _refuse_other_kind(document, model)
         details = error.errors(include_url=False, include_context=False)
         problems = _unique(_problem(document, model, dict(d)) for d in details)
         raise SettingsRefused(problems) from None
+
+
+def _refuse_other_kind(document: YamlDocument, model: type[Settings]) -> None:
+    """Raises SettingsRefused with one plain line for a sound file of another kind."""
+    wanted = KINDS.get(model)
+    found = {kind for kind in KINDS.values() if kind in document.value}
+    # Only a job file names several of them.
+    given = "job" if "job" in found or len(found) > 1 else next(iter(found), None)
+    if wanted is None or given in (None, wanted):
+        return
+    saying = f"this is a {given} file; a {wanted} file is asked for here"
+    raise SettingsRefused([Problem(document.name, None, "", None, saying)])
 
 
 def _unique(problems: Iterable[Problem]) -> list[Problem]:

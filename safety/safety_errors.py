@@ -58,7 +58,7 @@ class GateTripped(SafetyError):
         self.reason = reason
         super().__init__(
             f"the gate tripped ({event}): {reason}; dark was commanded\nlook at the"
-            f" bench, then 'pitchsweep ack RUN' and 'sweep --resume RUN' ({CAUTION})"
+            f" bench, acknowledge the trip, then resume the run ({CAUTION})"
         )
 
 

@@ -6,6 +6,7 @@ import os
 import subprocess
 import sys
 from collections.abc import Callable
+from importlib.metadata import version
 from pathlib import Path
 
 import cv2
@@ -321,6 +322,11 @@ def test_help_shows_every_verb_and_loads_nothing_heavy() -> None:
     assert done.stdout.splitlines()[-1] == "[] 0"
     for verb in ("sweep", "fit", "report"):
         assert f"  {verb} " in done.stdout
+
+
+def test_the_version_is_the_one_installed(capsys: pytest.CaptureFixture[str]) -> None:
+    assert run(["--version"]) == 0
+    assert capsys.readouterr().out == f"pitchsweep {version('pitchsweep')}\n"
 
 
 def test_a_reader_that_leaves_early_is_no_failure() -> None:

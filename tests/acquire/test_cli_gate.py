@@ -89,7 +89,7 @@ def test_on_hardware_somebody_has_to_press_reset(
 ) -> None:
     folder = hardware_folder(tmp_path, unit.port)
     with pytest.raises(GateRefused, match="pitchsweep ack"):
-        refuse_unacknowledged(folder.ledger, folder.path.name)
+        refuse_unacknowledged(folder.ledger, folder.path.name, folder.path)
     said: list[str] = []
 
     def at_the_bench(text: str) -> None:
@@ -99,7 +99,7 @@ def test_on_hardware_somebody_has_to_press_reset(
     done = acknowledge_run(folder.path, "A. Person", at_the_bench)
     assert done.reason == "acknowledged by A. Person (reset input)"
     assert said == [AT_THE_BENCH]
-    refuse_unacknowledged(folder.ledger, folder.path.name)
+    refuse_unacknowledged(folder.ledger, folder.path.name, folder.path)
     assert unit.rows("light") == []
 
 
@@ -111,7 +111,7 @@ def test_on_hardware_nobody_at_the_bench_means_no(
     with pytest.raises(GateRefused, match="press the reset input"):
         acknowledge_run(folder.path, "A. Person", lambda text: None)
     with pytest.raises(GateRefused, match="nobody"):
-        refuse_unacknowledged(folder.ledger, folder.path.name)
+        refuse_unacknowledged(folder.ledger, folder.path.name, folder.path)
 
 
 def test_a_hardware_run_without_ack_does_not_go_on(

@@ -1,5 +1,7 @@
 """What a refusal says: file, line, key, value, what is allowed."""
 
+import shlex
+from collections.abc import Callable
 from pathlib import Path
 
 import pytest
@@ -16,6 +18,7 @@ from pitchsweep.configs.reader import (
     read_recipe,
 )
 from pitchsweep.configs.recipe_model import Recipe
+from pitchsweep.configs.typed_command import typed
 
 
 def _bench_text() -> str:
@@ -192,3 +195,27 @@ def test_allowed_text_comes_from_the_schema() -> None:
     assert {path: allowed_text(Bench, path) for path in cases} == cases
     assert allowed_text(Recipe, ("exposures_ms",)).startswith("a list of 1 to 6, each")
     assert allowed_text(JobFile, ("job",)).startswith("a name of letters")
+
+
+@pytest.mark.parametrize(
+    ("given", "reader", "wanted"),
+    [
+        (("demo:red-laser", "benches"), read_job, "job"),
+        (("demo:shim-830", "parts"), read_bench, "bench"),
+        (("demo:shims", "jobs"), read_part, "part"),
+        (("demo:one-mount-spots", "recipes"), read_job, "job"),
+    ],
+)
+def test_a_file_of_another_kind_is_called_by_its_name(
+    given: tuple[str, str], reader: Callable[[Path], object], wanted: str
+) -> None:
+    with pytest.raises(SettingsRefused) as refused:
+        reader(find(*given))
+    kind = {"benches": "bench"}.get(given[1], given[1].removesuffix("s"))
+    assert f"this is a {kind} file; a {wanted} file is asked for" in str(refused.value)
+    assert "\n" not in str(refused.value)
+
+
+def test_a_command_to_copy_survives_a_space(tmp_path: Path) -> None:
+    run = tmp_path / "night of 3 May" / "it's one"
+    assert shlex.split(typed("ack", run)) == ["pitchsweep", "ack", str(run)]
