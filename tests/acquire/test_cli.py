@@ -173,7 +173,8 @@ def test_a_bad_row_of_a_frame_set_is_named(
         (["sweep", "demo:track-320-red"], "79.9"),
         (["sweep", "--resume", "nothing"], "no such run folder"),
         (["report", "nothing"], "no such run folder"),
-        (["fit", "nothing.csv"], "--bench"),
+        (["fit", "nothing.csv"], "nothing.csv"),
+        (["fit", __file__], "--bench"),
         (["fit", "."], "frames.csv"),
         (["fit"], "inputs"),
         (
