@@ -1,5 +1,6 @@
 """Image bytes to a frame: grey, whole numbers, in the camera's own bits (pure)."""
 
+import zlib
 from typing import Any
 
 import cv2
@@ -8,6 +9,7 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.analysis_errors import InputRefused
 
+_PNG = b"\x89PNG\r\n\x1a\n"
 _ALLOWED = "a grey PNG, TIFF or PGM image of 8 or 16 bits"
 
 
@@ -20,6 +22,12 @@ def decode_frame(
     in the high bits of a 16-bit word are moved down, see ``in_low_bits``. A colour
     image is taken only where its channels are equal. Raises InputRefused.
     """
+    if content.startswith(_PNG) and not _png_is_whole(content):
+        raise InputRefused(
+            "the image is damaged or was not saved to its end",
+            allowed=_ALLOWED,
+            file=name,
+        )
     try:
         raw = np.frombuffer(content, dtype=np.uint8)
         image = cv2.imdecode(raw, cv2.IMREAD_UNCHANGED) if raw.size else None
@@ -37,6 +45,24 @@ def decode_frame(
     if bits is None or image.dtype == np.uint8:
         return frame
     return in_low_bits(frame, bits=bits, name=name)
+
+
+def _png_is_whole(content: bytes) -> bool:
+    """Whether every chunk up to IEND is there and sound (PNG, W3C, section 5.3).
+
+    Decoders print complaints of their own on stderr instead, and some then go on.
+    """
+    place = len(_PNG)
+    while place + 12 <= len(content):
+        size = int.from_bytes(content[place : place + 4], "big")
+        kind_and_data = memoryview(content)[place + 4 : place + 8 + size]
+        stated = content[place + 8 + size : place + 12 + size]
+        if zlib.crc32(kind_and_data).to_bytes(4, "big") != stated:
+            return False
+        if kind_and_data[:4] == b"IEND":
+            return True
+        place += 12 + size
+    return False
 
 
 def _grey(image: NDArray[Any], name: str) -> NDArray[Any]:

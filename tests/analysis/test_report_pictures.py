@@ -166,8 +166,12 @@ def test_limits_are_drawn_near_and_far() -> None:
 
 def test_a_subset_without_a_pitch_is_left_out() -> None:
     lone = PitchSeen("order +1", np.nan, np.nan, np.nan, np.nan, 3)
-    result = replace(build_result(), pitches_seen=(lone,))
-    ElementTree.fromstring(pitches_seen_svg(result))
+    full = build_result()
+    alone = pitches_seen_svg(replace(full, pitches_seen=(lone,)))
+    ElementTree.fromstring(alone)
+    assert alone == pitches_seen_svg(replace(full, pitches_seen=()))
+    beside = replace(full, pitches_seen=(*full.pitches_seen, lone))
+    assert pitches_seen_svg(beside) == pitches_seen_svg(full)
 
 
 def test_shares_add_up_and_fall() -> None:
