@@ -143,7 +143,8 @@ def _with_speckle(
     if grain is not None and grain.contrast == 0.0:
         return grain, found
     renewed = [refit(scene, item, grain or TYPICAL_SPECKLE) for item in renewed]
-    grain = _measured(renewed)
+    # Weights that allow for speckle may hide that of a faint spot: then the first.
+    grain = _measured(renewed) or grain
     last = grain or TYPICAL_SPECKLE
     renewed = [refit(scene, item, last) for item in renewed]
     return grain, [
