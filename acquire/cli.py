@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
-from pitchsweep.acquire import cli_gate, cli_safety
+from pitchsweep.acquire import cli_bench, cli_gate, cli_safety
 from pitchsweep.acquire.exit_codes import DONE, REFUSED, exit_code_of, message_of
 
 if TYPE_CHECKING:
@@ -169,6 +169,7 @@ def report(
     _fit_and_show([open_run_folder(run).path], run, as_json)
 
 
+cli_bench.register(app)
 cli_gate.register(app)
 cli_safety.register(app)
 

@@ -59,7 +59,7 @@ def _png_is_whole(content: bytes) -> bool:
         stated = content[place + 8 + size : place + 12 + size]
         if zlib.crc32(kind_and_data).to_bytes(4, "big") != stated:
             return False
-        if kind_and_data[:4] == b"IEND":
+        if bytes(kind_and_data[:4]) == b"IEND":
             return True
         place += 12 + size
     return False
