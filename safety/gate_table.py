@@ -36,6 +36,7 @@ class Event(Enum):
     DARK_REQUESTED = "dark-requested"
     ACKNOWLEDGED = "acknowledged"
     RESUMED = "resumed"
+    DISARMED = "disarmed"
     END_REQUESTED = "end-requested"
 
     HEARTBEAT_STALE = "heartbeat-stale"
@@ -104,6 +105,7 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.COLD, Event.DARK_REQUESTED): Move(GateState.COLD, "dark already"),
         (GateState.COLD, Event.ACKNOWLEDGED): _NO_TRIP_COLD,
         (GateState.COLD, Event.RESUMED): _TRIP,
+        (GateState.COLD, Event.DISARMED): _STILL_COLD,
         (GateState.COLD, Event.END_REQUESTED): _END,
         (GateState.COLD, Event.HEARTBEAT_STALE): _TRIP,
         (GateState.COLD, Event.INTERLOCK_OPEN): _TRIP,
@@ -134,6 +136,7 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.READY, Event.DARK_REQUESTED): Move(GateState.READY, "dark already"),
         (GateState.READY, Event.ACKNOWLEDGED): _NO_TRIP_READY,
         (GateState.READY, Event.RESUMED): _TRIP,
+        (GateState.READY, Event.DISARMED): _COLD,
         (GateState.READY, Event.END_REQUESTED): _END,
         (GateState.READY, Event.HEARTBEAT_STALE): _TRIP,
         (GateState.READY, Event.INTERLOCK_OPEN): _TRIP,
@@ -164,6 +167,7 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.LIT, Event.DARK_REQUESTED): _READY,
         (GateState.LIT, Event.ACKNOWLEDGED): _NO_TRIP_LIT,
         (GateState.LIT, Event.RESUMED): _TRIP,
+        (GateState.LIT, Event.DISARMED): _COLD,
         (GateState.LIT, Event.END_REQUESTED): _END,
         (GateState.LIT, Event.HEARTBEAT_STALE): _TRIP,
         (GateState.LIT, Event.INTERLOCK_OPEN): _TRIP,
@@ -196,6 +200,7 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         ),
         (GateState.TRIPPED, Event.ACKNOWLEDGED): _COLD,
         (GateState.TRIPPED, Event.RESUMED): _LATCHED_TWICE,
+        (GateState.TRIPPED, Event.DISARMED): _LATCHED,
         (GateState.TRIPPED, Event.END_REQUESTED): _END,
         (GateState.TRIPPED, Event.HEARTBEAT_STALE): _LATCHED_TWICE,
         (GateState.TRIPPED, Event.INTERLOCK_OPEN): _LATCHED_TWICE,
@@ -226,6 +231,7 @@ TRANSITIONS: Mapping[tuple[GateState, Event], Move] = MappingProxyType(
         (GateState.ENDED, Event.DARK_REQUESTED): _OVER,
         (GateState.ENDED, Event.ACKNOWLEDGED): _OVER,
         (GateState.ENDED, Event.RESUMED): _OVER,
+        (GateState.ENDED, Event.DISARMED): _OVER,
         (GateState.ENDED, Event.END_REQUESTED): _OVER,
         (GateState.ENDED, Event.HEARTBEAT_STALE): _OVER,
         (GateState.ENDED, Event.INTERLOCK_OPEN): _OVER,

@@ -80,6 +80,9 @@ class Guard:
             Request.ACKNOWLEDGE: lambda: self._acknowledge(command.words),
             Request.LIGHT: self._light,
             Request.DARK: self._dark,
+            Request.DISARM: lambda: self._simple(
+                Event.DISARMED, "somebody is asked to the bench"
+            ),
             Request.TRIP: lambda: self._simple(Event.CONTROLLER_FAULT, command.words),
             Request.STOP: lambda: self._simple(
                 Event.END_REQUESTED, "asked by the controller"

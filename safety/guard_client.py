@@ -121,6 +121,13 @@ class GuardClient:
         self._pipe.ask("dark")
         self._pipe.raise_if_stopped()
 
+    def disarm(self) -> None:
+        """Dark and cold, so that a person may open the interlock; ``arm`` ends it.
+
+        Raises GateTripped where the gate has tripped.
+        """
+        self._ask("disarm")
+
     def trip(self, reason: str) -> None:
         """Trips the gate for a fault that the controller saw."""
         self._pipe.ask("trip", reason=reason)

@@ -24,6 +24,7 @@ class Request(Enum):
     PRESS = "press"
     TRIP = "trip"
     STOP = "stop"
+    DISARM = "disarm"
 
 
 @dataclass(frozen=True)

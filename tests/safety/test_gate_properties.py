@@ -23,7 +23,8 @@ class GateAgainstModel(RuleBasedStateMachine):
         self.latched |= event in FAULTS or event is Event.RESUMED
         self.latched &= event is not Event.ACKNOWLEDGED
         self.armed |= event is Event.ARMED
-        self.armed &= event is not Event.ARMING_REFUSED and self.free()
+        taken_down = event in (Event.ARMING_REFUSED, Event.DISARMED)
+        self.armed &= not taken_down and self.free()
         self.light |= event is Event.LIGHT_REQUESTED
         self.light &= event is not Event.DARK_REQUESTED and self.armed
 

@@ -24,10 +24,12 @@ MOVES_WITHOUT_FAULT = {
     (S.READY, E.LIGHT_REQUESTED): S.LIT,
     (S.READY, E.RESUMED): S.TRIPPED,
     (S.READY, E.END_REQUESTED): S.ENDED,
+    (S.READY, E.DISARMED): S.COLD,
     (S.LIT, E.ARMING_REFUSED): S.COLD,
     (S.LIT, E.DARK_REQUESTED): S.READY,
     (S.LIT, E.RESUMED): S.TRIPPED,
     (S.LIT, E.END_REQUESTED): S.ENDED,
+    (S.LIT, E.DISARMED): S.COLD,
     (S.TRIPPED, E.ACKNOWLEDGED): S.COLD,
     (S.TRIPPED, E.END_REQUESTED): S.ENDED,
 }
@@ -47,6 +49,7 @@ def test_the_faults_are_all_events_that_are_no_request() -> None:
         E.ACKNOWLEDGED,
         E.RESUMED,
         E.END_REQUESTED,
+        E.DISARMED,
     }
     assert FAULTS == set(Event) - requests
 
