@@ -11,7 +11,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from pitchsweep.analysis.fit_problem import FitProblem
-from pitchsweep.analysis.joint_fit import FitState, JointFit, predict
+from pitchsweep.analysis.joint_fit import JointFit
+from pitchsweep.analysis.prediction import FitState, predict
 from pitchsweep.analysis.records import FloatArray, IntArray
 
 MOST_STEPS = 12

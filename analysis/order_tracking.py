@@ -12,7 +12,12 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.analysis.fit_problem import FitProblem
-from pitchsweep.analysis.joint_fit import FitState, initial_state, predict, whitened
+from pitchsweep.analysis.prediction import (
+    FitState,
+    initial_state,
+    predict,
+    whitened,
+)
 from pitchsweep.analysis.records import (
     UNKNOWN_ORDER,
     FloatArray,

@@ -8,20 +8,14 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.analysis_errors import InputRefused, NoResult
 from pitchsweep.analysis.fit_problem import FitProblem
-from pitchsweep.analysis.joint_fit import (
-    ROUGHLY_SETTLED,
-    FitState,
-    JointFit,
-    distances_2,
-    initial_state,
-    solve_joint_fit,
-)
+from pitchsweep.analysis.joint_fit import ROUGHLY_SETTLED, JointFit, solve_joint_fit
 from pitchsweep.analysis.order_tracking import (
     Assignment,
     assign_orders,
     lowest_orders,
     sign_trouble,
 )
+from pitchsweep.analysis.prediction import FitState, distances_2, initial_state
 from pitchsweep.analysis.records import FloatArray, IntArray, Rejection
 
 GATE = 5.0

@@ -12,12 +12,8 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.bench_geometry import landing
 from pitchsweep.analysis.fit_problem import FitProblem
-from pitchsweep.analysis.joint_fit import (
-    FitState,
-    initial_state,
-    local_quantities,
-)
 from pitchsweep.analysis.part_ray import Local
+from pitchsweep.analysis.prediction import FitState, initial_state, local_quantities
 from pitchsweep.analysis.records import FloatArray
 from pitchsweep.analysis.zero_track import (
     GATE,

@@ -9,8 +9,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from pitchsweep.analysis.fit_problem import FitProblem
-from pitchsweep.analysis.joint_fit import FitState, local_quantities
 from pitchsweep.analysis.part_ray import Local
+from pitchsweep.analysis.prediction import FitState, local_quantities
 from pitchsweep.analysis.records import FloatArray, IntArray
 from pitchsweep.analysis.spot_directions import Directions
 

@@ -15,8 +15,9 @@ from numpy.typing import NDArray
 from pitchsweep.analysis.air_index import AirState
 from pitchsweep.analysis.fit_parameters import Source
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem, wrapped_deg
-from pitchsweep.analysis.joint_fit import FitState, JointFit, one_step, predict
+from pitchsweep.analysis.joint_fit import JointFit, one_step
 from pitchsweep.analysis.number_text import significant
+from pitchsweep.analysis.prediction import FitState, predict
 from pitchsweep.analysis.records import FloatArray, IntArray, OrderTable
 from pitchsweep.analysis.robust_fit import rescaled
 from pitchsweep.configs.bench_model import Bench

@@ -7,12 +7,8 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.fit_parameters import Kind, Source
 from pitchsweep.analysis.fit_problem import FitProblem
-from pitchsweep.analysis.joint_fit import (
-    FitState,
-    initial_state,
-    predict,
-    solve_joint_fit,
-)
+from pitchsweep.analysis.joint_fit import solve_joint_fit
+from pitchsweep.analysis.prediction import FitState, initial_state, predict
 from pitchsweep.analysis.records import FloatArray
 
 BoolArray = NDArray[np.bool_]

@@ -11,11 +11,11 @@ from pitchsweep.analysis.air_index import AirState
 from pitchsweep.analysis.budget import combined_u, fit_budget
 from pitchsweep.analysis.fit_parameters import Kind
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
-from pitchsweep.analysis.joint_fit import (
+from pitchsweep.analysis.joint_fit import solve_joint_fit
+from pitchsweep.analysis.prediction import (
     FitState,
     initial_state,
     predict,
-    solve_joint_fit,
     whitened,
 )
 from pitchsweep.analysis.records import IntArray

@@ -21,9 +21,11 @@ from scipy.optimize import least_squares  # noqa: E402
 from pitchsweep.analysis.air_index import AirState  # noqa: E402
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem  # noqa: E402
 from pitchsweep.analysis.joint_fit import (  # noqa: E402
+    solve_joint_fit,
+)
+from pitchsweep.analysis.prediction import (  # noqa: E402
     FitState,
     predict,
-    solve_joint_fit,
     whitened,
 )
 from pitchsweep.analysis.records import IntArray  # noqa: E402
