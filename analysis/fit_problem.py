@@ -12,10 +12,11 @@ from pitchsweep.analysis.fit_scene import (
     WavelengthJump,
     base_pitch_nm,
     fit_scene,
+    groove_spread,
     strain,
 )
 from pitchsweep.analysis.parameter_table import parameter_table
-from pitchsweep.analysis.part_ray import N_LOCAL, Local
+from pitchsweep.analysis.part_ray import COVER_INDEX, N_LOCAL, Local
 from pitchsweep.analysis.records import FloatArray, IntArray, OrderTable
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
@@ -96,14 +97,20 @@ def _base(scene: FitScene) -> FloatArray:
     vacuum = [bench.lasers[n].vacuum_wavelength_nm for n in table.laser_names]
     in_air = np.array([nm / air_index(nm, scene.air) for nm in vacuum])
     swept = np.array([base_pitch_nm(p) * (1.0 + strain(p)) for p in scene.parts])
-    cover = np.array([p.cover_mm for p in scene.parts])
+    of_part = {
+        Local.COVER: [p.cover_mm for p in scene.parts],
+        Local.INDEX: [p.cover_index - COVER_INDEX for p in scene.parts],
+        Local.SPREAD: [groove_spread(p, bench.beam) for p in scene.parts],
+    }
     base = np.zeros((len(table), N_LOCAL))
     base[:, Local.Q] = in_air[table.laser] / swept[scene.part]
     base[:, Local.INCIDENCE] = np.deg2rad(
         bench.stage.direction * wrapped_deg(table.stage_deg - table.mount_deg)
     )
     base[:, Local.DISTANCE] = bench.screen.distance_mm
-    base[:, Local.COVER] = cover[scene.part]
+    base[:, Local.FAR] = bench.screen.kind == "camera-at-infinity"
+    for column, each in of_part.items():
+        base[:, column] = np.array(each)[scene.part]
     return base
 
 

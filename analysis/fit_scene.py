@@ -9,7 +9,7 @@ from pitchsweep.analysis.air_index import AirState
 from pitchsweep.analysis.fit_parameters import Kind, Parameter, Scope, Source
 from pitchsweep.analysis.part_ray import Local
 from pitchsweep.analysis.records import FloatArray, IntArray, OrderTable
-from pitchsweep.configs.bench_model import Bench
+from pitchsweep.configs.bench_model import Beam, Bench
 from pitchsweep.configs.part_model import Part
 
 REFERENCE_C = 20.0
@@ -54,6 +54,12 @@ class FitScene:
         """Coefficient of a parameter that every spot feels."""
         return np.ones(len(self.table))
 
+    @property
+    def face_deg(self) -> FloatArray:
+        """How far the part was turned in its own plane at each spot."""
+        face = self.table.face_deg
+        return np.zeros(len(self.table)) if face is None else face
+
 
 def fit_scene(
     table: OrderTable,
@@ -94,6 +100,16 @@ def strain(part: Part) -> float:
     """Thermal strain of the part against 20 deg C (ISO 1, from memory)."""
     material = part.material
     return material.expansion_per_K * (material.temperature_C - REFERENCE_C)
+
+
+def groove_spread(part: Part, beam: Beam) -> float:
+    """Rms turn in radians of the grooves over the beam; 0 where they are straight.
+
+    ``beam.diameter_mm`` is the 1/e^2 diameter, four rms radii.
+    """
+    if part.track_radius_mm is None:
+        return 0.0
+    return beam.diameter_mm / 4.0 / part.track_radius_mm
 
 
 def name_of(scene: FitScene, index: int, name: str) -> str:

@@ -8,6 +8,7 @@ from pitchsweep.analysis.air_index import AirState, air_index, air_index_u
 from pitchsweep.analysis.fit_parameters import ARCSEC, Parameter, Scope, Source
 from pitchsweep.analysis.fit_scene import MM, MRAD, FitScene, local_row, log_ratio
 from pitchsweep.analysis.part_ray import Local
+from pitchsweep.analysis.stage_travel import came_from
 
 
 def wavelengths(scene: FitScene) -> Iterator[Parameter]:
@@ -61,6 +62,17 @@ def screen_and_beam(scene: FitScene) -> Iterator[Parameter]:
         yield local_row(
             label, Scope.BENCH, source, column, u, shown, scene.everything, mean
         )
+    if screen.u_lens_distortion_mm is not None:
+        half = screen.width_mm / 2.0
+        yield local_row(
+            "lens distortion at half the width",
+            Scope.BENCH,
+            Source.LENS,
+            Local.DISTORTION,
+            screen.u_lens_distortion_mm / half**3,
+            ("mm", half**3),
+            scene.everything,
+        )
 
 
 def stage(scene: FitScene) -> Iterator[Parameter]:
@@ -93,4 +105,22 @@ def stage(scene: FitScene) -> Iterator[Parameter]:
         stage.u_scale_ppm * 1e-6,
         ("ppm", 1e6),
         stage.direction * reading,
+    )
+    yield from _leftover_backlash(scene)
+
+
+def _leftover_backlash(scene: FitScene) -> Iterator[Parameter]:
+    """Half of it to either side, where the stage came from both."""
+    stage = scene.bench.stage
+    side = came_from(scene.table.step, scene.table.stage_deg, scene.run)
+    if not (side > 0.0).any() or not (side < 0.0).any():
+        return
+    yield local_row(
+        "leftover backlash",
+        Scope.BENCH,
+        Source.BACKLASH,
+        Local.INCIDENCE,
+        stage.u_backlash_arcsec * ARCSEC,
+        ("arcsec", 1.0 / ARCSEC),
+        0.5 * stage.direction * side,
     )

@@ -3,6 +3,7 @@
 from collections.abc import Iterator
 
 import numpy as np
+from numpy.typing import NDArray
 
 from pitchsweep.analysis.fit_parameters import Parameter, Scope, Source
 from pitchsweep.analysis.fit_scene import (
@@ -12,6 +13,7 @@ from pitchsweep.analysis.fit_scene import (
     REFERENCE_C,
     FitScene,
     base_pitch_nm,
+    groove_spread,
     local_row,
     log_ratio,
     name_of,
@@ -73,6 +75,49 @@ def of_each_part(scene: FitScene) -> Iterator[Parameter]:
             ("1/m", 1e3),
             spots_on(scene, index),
         )
+        yield from _wedged_cover(scene, index)
+        yield from _curved_grooves(scene, index)
+
+
+def _wedged_cover(scene: FitScene, index: int) -> Iterator[Parameter]:
+    """Index and wedge of a cover that is there; the wedge turns with the part."""
+    part, here = scene.parts[index], spots_on(scene, index)
+    if part.cover_mm <= 0.0:
+        return
+    rows = [("cover index", Local.INDEX, part.u_cover_index, ("1", 1.0), here)]
+    # Half a turn in the part's own plane takes the wedge with it.
+    turned, wedge = np.cos(np.deg2rad(scene.face_deg)), part.u_cover_wedge_mrad * 1e-3
+    for label, column in (
+        ("cover wedge across the grooves", Local.WEDGE_G),
+        ("cover wedge along the grooves", Local.WEDGE_H),
+    ):
+        rows.append((label, column, wedge, MRAD, np.round(turned) * here))
+    for label, column, u, shown, feels in rows:
+        mean = part.cover_index if column is Local.INDEX else 0.0
+        name = name_of(scene, index, label)
+        yield local_row(name, Scope.PART, Source.COVER, column, u, shown, feels, mean)
+
+
+def _curved_grooves(scene: FitScene, index: int) -> Iterator[Parameter]:
+    """How far the grooves of a spiral turn within the beam."""
+    part, beam = scene.parts[index], scene.bench.beam
+    spread = groove_spread(part, beam)
+    if part.track_radius_mm is None:
+        return
+    u_relative = np.hypot(
+        beam.u_diameter_mm / beam.diameter_mm,
+        part.u_track_radius_mm / part.track_radius_mm,
+    )
+    yield local_row(
+        name_of(scene, index, "turn of the grooves over the beam, rms"),
+        Scope.PART,
+        Source.SPIRAL,
+        Local.SPREAD,
+        float(spread * u_relative),
+        MRAD,
+        spots_on(scene, index),
+        spread * 1e3,
+    )
 
 
 def seats(scene: FitScene) -> Iterator[Parameter]:
@@ -80,8 +125,8 @@ def seats(scene: FitScene) -> Iterator[Parameter]:
     zero = float(np.deg2rad(scene.bench.stage.u_zero_deg))
     for index, part in enumerate(scene.parts):
         mine = scene.part == index
-        for mount in np.unique(scene.table.mount_deg[mine]):
-            here = (mine & (scene.table.mount_deg == mount)).astype(np.float64)
+        for mount, face, seated in _seats_of(scene, mine):
+            here = seated.astype(np.float64)
             azimuth, tilt = part.u_groove_azimuth_mrad, part.u_tilt_mrad
             surface = part.u_surface_offset_mm
             for label, column, u, shown, feels in (
@@ -91,5 +136,17 @@ def seats(scene: FitScene) -> Iterator[Parameter]:
                 ("part tilt", Local.TILT, tilt * 1e-3, MRAD, here),
                 ("surface offset", Local.SURFACE, surface, MM, here),
             ):
-                name = name_of(scene, index, f"{label}, mount {mount:g} deg")
+                turned = f", face {face:g} deg" if scene.face_deg.any() else ""
+                words = f"{label}, mount {mount:g} deg{turned}"
+                name = name_of(scene, index, words)
                 yield local_row(name, Scope.MOUNT, Source.SEAT, column, u, shown, feels)
+
+
+def _seats_of(
+    scene: FitScene, mine: NDArray[np.bool_]
+) -> Iterator[tuple[float, float, NDArray[np.bool_]]]:
+    """Mount, face and spots of every seating of a part."""
+    pairs = np.stack([scene.table.mount_deg, scene.face_deg], axis=1)
+    for mount, face in np.unique(pairs[mine], axis=0):
+        here = mine & (pairs[:, 0] == mount) & (pairs[:, 1] == face)
+        yield float(mount), float(face), here

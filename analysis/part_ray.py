@@ -12,7 +12,7 @@ from enum import IntEnum
 import numpy as np
 from numpy.typing import NDArray
 
-from pitchsweep.analysis.cover_walk import one_way
+from pitchsweep.analysis.cover_walk import one_way, passage
 from pitchsweep.analysis.records import FloatArray
 
 
@@ -36,9 +36,17 @@ class Local(IntEnum):
     COVER = 14  # thickness of a clear layer through which the part is read
     BEAM_TURN = 15  # beam turned about +y away from -z
     CURVATURE = 16  # of the part along g, convex positive, per millimetre
+    INDEX = 17  # of the cover, less COVER_INDEX
+    WEDGE_G = 18  # the cover's front leaning towards g, against the grooves' plane
+    WEDGE_H = 19  # and towards h
+    SPREAD = 20  # rms turn of curved grooves over the beam
+    DISTORTION = 21  # of the lens: places grow by it times radius squared, per mm^2
+    FAR = 22  # 1: the camera looks at infinity, DISTANCE is its focal length
 
 
 N_LOCAL = len(Local)
+COVER_INDEX = 1.55
+"""Index a cover is counted from: between polycarbonate and glass, common practice."""
 GRAZING = 1e-3
 """Orders whose normal direction cosine is below this are treated as not leaving."""
 
@@ -95,6 +103,7 @@ class Trace:
 
     k: FloatArray  # beam
     frames: tuple[PartFrame, PartFrame, PartFrame, PartFrame]
+    met: FloatArray  # (N, 3) order on g, h, n without the cover's wedge
     kt: FloatArray
     kh: FloatArray
     kn: FloatArray
@@ -110,7 +119,11 @@ class Trace:
     hit: FloatArray  # from the screen origin
     valid: NDArray[np.bool_]
     cover: FloatArray  # (N, 1)
+    index: FloatArray  # of the cover
+    wedge: FloatArray  # (N, 2) lean of the cover's front towards g and h
+    bent: FloatArray  # both passages together, a unit of wedge
     walk: FloatArray  # of the exit point, a unit of cover
+    near: FloatArray  # (N, 1) 0 where places on the part do not matter
 
 
 def _beam(local: FloatArray) -> FloatArray:
@@ -145,35 +158,50 @@ def _turn(angle: FloatArray, axis: int) -> tuple[FloatArray, FloatArray]:
     return turn, slope
 
 
+def _normal_part(
+    along_g: FloatArray, along_h: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """Squared normal component of an order, and the component held off grazing."""
+    square = 1.0 - along_g**2 - along_h**2
+    return square, np.sqrt(np.maximum(square, GRAZING**2))
+
+
 def trace_rays(local: FloatArray) -> Trace:
     """The rays of spots with local quantities (N, N_LOCAL)."""
     frames = _part_frame(local)
     frame, k = frames[0], _beam(local)
-    kt = dot(k, frame.g) + local[:, Local.Q]
-    kh = dot(k, frame.h)
-    kn2 = 1.0 - kt**2 - kh**2
-    kn = np.sqrt(np.maximum(kn2, GRAZING**2))
+    index = COVER_INDEX + local[:, Local.INDEX]
+    wedge = local[:, [Local.WEDGE_G, Local.WEDGE_H]]
+    facing = dot(frame.n, k)
+    met_g, met_h = dot(k, frame.g) + local[:, Local.Q], dot(k, frame.h)
+    met2, met_n = _normal_part(met_g, met_h)
+    bent = passage(-facing, index) + passage(met_n, index)
+    kt, kh = met_g + wedge[:, 0] * bent, met_h + wedge[:, 1] * bent
+    kn2, kn = _normal_part(kt, kh)
     out = kt[:, None] * frame.g + kh[:, None] * frame.h + kn[:, None] * frame.n
     zero = np.zeros_like(kt)
     start = stack(local[:, Local.BEAM_X], local[:, Local.BEAM_Y], zero)
-    facing = dot(frame.n, k)
     reach = (local[:, Local.SURFACE] - dot(frame.n, start)) / facing
     axes, axes_by = _screen_axes(local)
     towards = dot(out, axes[:, 2])
-    valid = (kn2 > GRAZING**2) & (towards > GRAZING) & (facing < -GRAZING)
+    valid = (np.minimum(kn2, met2) > GRAZING**2) & (towards > GRAZING)
     towards = np.where(np.abs(towards) > GRAZING, towards, GRAZING)
-    walk = one_way(k, frame.n) + one_way(out, frame.n)
-    cover = local[:, Local.COVER, None]
+    walk = one_way(k, frame.n, index) + one_way(out, frame.n, index)
+    cover, near = local[:, Local.COVER, None], 1.0 - local[:, Local.FAR, None]
     from_centre = start + reach[:, None] * k + cover * walk
     from_centre[:, 2] -= local[:, Local.DISTANCE]
-    flight = -dot(from_centre, axes[:, 2]) / towards
+    away = np.where(
+        near[:, 0] > 0.0, -dot(from_centre, axes[:, 2]), local[:, Local.DISTANCE]
+    )
+    flight = away / towards
     return Trace(
         k=k,
         frames=frames,
+        met=stack(met_g, met_h, met_n),
         kt=kt,
         kh=kh,
         kn=kn,
-        kn2=kn2,
+        kn2=np.minimum(kn2, met2),
         out=out,
         start=start,
         reach=reach,
@@ -182,8 +210,12 @@ def trace_rays(local: FloatArray) -> Trace:
         axes_by=axes_by,
         towards=towards,
         flight=flight,
-        hit=from_centre + flight[:, None] * out,
-        valid=valid,
+        hit=near * from_centre + flight[:, None] * out,
+        valid=valid & (facing < -GRAZING),
         cover=cover,
+        index=index,
+        wedge=wedge,
+        bent=bent,
         walk=walk,
+        near=near,
     )

@@ -104,6 +104,8 @@ class OrderTable:
     where it is known. ``part`` holds indices into the parts measured together (all
     the first if None), ``run`` which run a spot is of, ``time_s`` when in its run.
     ``shared_*_mm2`` are the parts of the covariance that repeats at one place share.
+    ``face_deg`` is how far the part was turned in its own plane, 0 or 180 (all 0 if
+    None).
     """
 
     step: IntArray
@@ -124,6 +126,7 @@ class OrderTable:
     shared_xx_mm2: FloatArray | None = None
     shared_xy_mm2: FloatArray | None = None
     shared_yy_mm2: FloatArray | None = None
+    face_deg: FloatArray | None = None
 
     def __len__(self) -> int:
         return int(self.step.shape[0])

@@ -39,17 +39,24 @@ MarkMm = tuple[_PlaceMm, _PlaceMm]
 class Screen(Settings):
     """A flat screen facing the part; x, y in mm from where nominal +z meets it.
 
+    ``kind: camera-at-infinity`` stands for a camera that looks at the part itself,
+    focused at infinity: ``distance_mm`` is then its focal length, ``width_mm`` and
+    ``height_mm`` the size of its sensor, x and y places on it (focal length times the
+    tangent of the direction), the tilts those of its axis, and the hole what hides the
+    middle. ``u_lens_distortion_mm`` is by how much the lens may shift half the width.
     ``marks_mm`` are bright fixed marks that every frame shows; they tell the camera's
     shift and scale at each step.
     """
 
-    distance_mm: Annotated[float, Field(ge=20.0, le=5000.0)]
+    kind: Literal["flat-screen", "camera-at-infinity"] = "flat-screen"
+    distance_mm: Annotated[float, Field(ge=5.0, le=5000.0)]
     u_distance_mm: Annotated[float, Field(gt=0.0, le=200.0)] = 5.0
     u_tilt_mrad: Annotated[float, Field(gt=0.0, le=200.0)] = 30.0
     u_offset_mm: Annotated[float, Field(gt=0.0, le=50.0)] = 3.0
-    width_mm: Annotated[float, Field(ge=10.0, le=5000.0)]
-    height_mm: Annotated[float, Field(ge=5.0, le=5000.0)]
+    width_mm: Annotated[float, Field(ge=2.0, le=5000.0)]
+    height_mm: Annotated[float, Field(ge=2.0, le=5000.0)]
     u_map_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.5
+    u_lens_distortion_mm: Annotated[float, Field(gt=0.0, le=20.0)] | None = None
     hole: Hole = Hole()
     marks_mm: Annotated[tuple[MarkMm, ...], Field(max_length=16)] = ()
 
@@ -58,13 +65,18 @@ class Beam(Settings):
     """The beam where it meets the part, and how well its line is known."""
 
     diameter_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 1.0
+    u_diameter_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.2
     u_elevation_mrad: Annotated[float, Field(gt=0.0, le=100.0)] = 5.0
     u_offset_mm: Annotated[float, Field(gt=0.0, le=10.0)] = 0.5
     u_height_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 1.0
 
 
 class Stage(Settings):
-    """The rotation stage: sense, travel, and what is known of its errors."""
+    """The rotation stage: sense, travel, and what is known of its errors.
+
+    ``u_backlash_arcsec``: what may be left of its backlash, though every angle is
+    approached from below, between places come to from below and from above.
+    """
 
     direction: Annotated[Literal[1, -1], NotTruth] = 1
     travel_min_deg: AngleDeg = -180.0
@@ -79,6 +91,7 @@ class Stage(Settings):
     worm_per_turn: Annotated[int, Field(ge=5, le=1000)] | None = None
     u_worm_arcsec: Annotated[float, Field(gt=0.0, le=3600.0)] = 5.0
     u_repeatability_arcsec: Annotated[float, Field(gt=0.0, le=3600.0)] = 5.0
+    u_backlash_arcsec: Annotated[float, Field(gt=0.0, le=3600.0)] = 5.0
     u_harmonics_arcsec: tuple[Positive, Positive, Positive, Positive] = (
         60.0,
         20.0,

@@ -1,6 +1,6 @@
 """What is measured: identity, nominal pitch, tolerance, material, how it may sit."""
 
-from typing import Annotated, Self
+from typing import Annotated, Literal, Self
 
 from pydantic import Field, model_validator
 
@@ -41,7 +41,15 @@ class Material(Settings):
 
 
 class Part(Settings):
-    """A part with grooves: one serial, one lot, one side, one place."""
+    """A part with grooves: one serial, one lot, one side, one place.
+
+    A disc says ``grooves: spiral``, the radius of the track where the beam meets it,
+    and ``read_side``: whether light meets the grooves bare or through the clear cover
+    that ``cover_mm``, ``cover_index`` and ``u_cover_wedge_mrad`` describe (the wedge is
+    how far its faces may be from even). ``clear_width_mm`` is how wide the grooved
+    surface is across the grooves, centred on the stage axis: spots of a beam that
+    overruns it are not used.
+    """
 
     part: Name
     serial: Text
@@ -60,3 +68,37 @@ class Part(Settings):
     cover_mm: Annotated[float, Field(ge=0.0, le=10.0)] = 0.0
     u_cover_mm: Annotated[float, Field(gt=0.0, le=10.0)] = 0.3
     u_surface_offset_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.3
+    grooves: Literal["straight", "spiral"] = "straight"
+    track_radius_mm: Annotated[float, Field(ge=1.0, le=1000.0)] | None = None
+    u_track_radius_mm: Annotated[float, Field(gt=0.0, le=100.0)] = 1.0
+    read_side: Literal["bare", "through-cover"] | None = None
+    cover_index: Annotated[float, Field(ge=1.2, le=2.5)] = 1.55
+    u_cover_index: Annotated[float, Field(gt=0.0, le=0.5)] = 0.03
+    u_cover_wedge_mrad: Annotated[float, Field(gt=0.0, le=20.0)] = 1.0
+    clear_width_mm: Annotated[float, Field(ge=0.1, le=1000.0)] | None = None
+
+    @model_validator(mode="after")
+    def _a_disc_says_how_it_is_read(self) -> Self:
+        if self.grooves == "spiral" and self.read_side is None:
+            raise ValueError(
+                "a part with 'grooves: spiral' is a disc and must say its 'read_side':"
+                " bare, or through-cover with cover_mm"
+            )
+        if self.grooves == "spiral" and self.track_radius_mm is None:
+            raise ValueError(
+                "a part with 'grooves: spiral' needs 'track_radius_mm', the radius of"
+                " the track where the beam meets it"
+            )
+        if self.grooves == "straight" and self.track_radius_mm is not None:
+            raise ValueError("'track_radius_mm' goes with 'grooves: spiral' only")
+        return self
+
+    @model_validator(mode="after")
+    def _the_cover_is_where_it_is_read(self) -> Self:
+        if self.read_side == "through-cover" and self.cover_mm == 0.0:
+            raise ValueError("'read_side: through-cover' needs cover_mm above 0")
+        if self.read_side == "bare" and self.cover_mm > 0.0:
+            raise ValueError(
+                "'read_side: bare' and a cover_mm above 0 exclude each other"
+            )
+        return self

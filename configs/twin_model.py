@@ -16,7 +16,14 @@ Arcsec = Annotated[float, Field(ge=0.0, le=3600.0)]
 
 
 class TwinEffects(Settings):
-    """Effects that can be switched on, each alone, with its size."""
+    """Effects that can be switched on, each alone, with its size.
+
+    ``leftover_backlash_arcsec`` is what is left of the backlash where the stage turned
+    upwards over less than about ``run_up_deg`` after having come down.
+    ``cover_thickness_mm`` and ``track_radius_mm`` stand in place of what is drawn for
+    the part, ``cover_wedge_mrad`` adds to it. ``part_edge_mm``: the part ends so far
+    from the stage axis, on the side to which negative orders go.
+    """
 
     stage_harmonics_arcsec: tuple[Arcsec, Arcsec, Arcsec, Arcsec] = (
         60.0,
@@ -27,6 +34,8 @@ class TwinEffects(Settings):
     worm_arcsec: Arcsec = 0.0
     worm_per_turn: Annotated[int, Field(ge=2, le=1000)] = 180
     backlash_deg: Annotated[float, Field(ge=0.0, le=5.0)] = 0.05
+    leftover_backlash_arcsec: Arcsec = 0.0
+    run_up_deg: Annotated[float, Field(gt=0.0, le=30.0)] = 2.0
     wobble_arcsec: Arcsec = 0.0
     scale_ppm: Annotated[float, Field(ge=-10000.0, le=10000.0)] = 0.0
     map_error_mm: Annotated[float, Field(ge=0.0, le=20.0)] = 0.5
@@ -46,6 +55,9 @@ class TwinEffects(Settings):
     part_radius_m: Annotated[float, Field(ge=0.0, le=1e6)] = 0.0
     cover_thickness_mm: Annotated[float, Field(ge=0.0, le=10.0)] = 0.0
     cover_index: Annotated[float, Field(ge=1.0, le=3.0)] = 1.55
+    cover_wedge_mrad: Annotated[float, Field(ge=-50.0, le=50.0)] = 0.0
+    track_radius_mm: Annotated[float, Field(ge=0.0, le=1000.0)] = 0.0
+    part_edge_mm: Annotated[float, Field(ge=0.0, le=1000.0)] = 0.0
     screen_blur_mm: Annotated[float, Field(ge=0.0, le=50.0)] = 0.8
     speckle_contrast: Fraction = 1.0
     speckle_grain_px: Annotated[float, Field(gt=0.0, le=50.0)] = 2.0

@@ -38,7 +38,7 @@ class Steps:
 
     ``step``, ``stage_deg`` (what the stage reads) and ``planned_s`` have length S.
     ``from_above`` is true where the last motion went down, so that the backlash is on
-    the other side.
+    the other side. ``face_deg`` is how far the part is turned in its own plane.
     """
 
     mount: int
@@ -50,6 +50,12 @@ class Steps:
     planned_s: FloatArray
     from_above: bool = False
     laser_state: LaserState = LaserState()
+    face_deg: float = 0.0
+
+
+def face_side(steps: Steps) -> float:
+    """1, or -1 where the part is turned by half a turn in its own plane."""
+    return float(np.round(np.cos(np.radians(steps.face_deg))))
 
 
 def single_step(
@@ -59,6 +65,7 @@ def single_step(
     mount_deg: float,
     from_above: bool = False,
     laser_state: LaserState = NO_FAULT,
+    face_deg: float = 0.0,
 ) -> Steps:
     """The one step that ``label`` names, at what the stage reads."""
     return Steps(
@@ -71,6 +78,7 @@ def single_step(
         planned_s=np.array([label.planned_s], dtype=np.float64),
         from_above=from_above,
         laser_state=laser_state,
+        face_deg=face_deg,
     )
 
 
@@ -98,7 +106,21 @@ def true_stage_deg(truth: Truth, bench: Bench, steps: Steps) -> FloatArray:
     noise = np.array([_step_noise(truth.seed, steps, int(step)) for step in steps.step])
     lag = twin_settings(bench).effects.backlash_deg if steps.from_above else 0.0
     errors = periodic_error_deg(truth, bench, steps.stage_deg)
-    return steps.stage_deg + errors + sd * noise + lag
+    left = left_backlash_deg(bench, steps.stage_deg)
+    return np.asarray(steps.stage_deg + errors + sd * noise + lag + left)
+
+
+def left_backlash_deg(bench: Bench, stage_deg: FloatArray) -> FloatArray:
+    """What is left of the backlash at places gone to one after the other, each from
+    below (S,); nothing at a single place, whose past the stage itself knows.
+    """
+    effects, left = twin_settings(bench).effects, np.zeros(stage_deg.shape)
+    run_up_deg = bench.stage.approach_deg
+    for i, turned in enumerate(np.diff(stage_deg), start=1):
+        on = run_up_deg + float(turned)
+        run_up_deg = on if turned > 0.0 else bench.stage.approach_deg
+        left[i] = np.exp(-run_up_deg / effects.run_up_deg)
+    return np.asarray(effects.leftover_backlash_arcsec * ARCSEC_DEG * left)
 
 
 def _step_noise(seed: int, steps: Steps, step: int) -> float:

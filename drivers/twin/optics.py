@@ -5,8 +5,10 @@ rotation matrices and vectors throughout, no closed forms.
 """
 
 from dataclasses import dataclass, replace
+from itertools import product
 
 import numpy as np
+from numpy.polynomial.hermite_e import hermegauss
 from numpy.typing import NDArray
 
 from pitchsweep.configs.bench_model import Bench
@@ -14,6 +16,7 @@ from pitchsweep.drivers.twin.effects import (
     Steps,
     air_wavelength_mm,
     beam_direction,
+    face_side,
     grating_period_mm,
     incidence_rad,
     wobble_rad,
@@ -22,16 +25,28 @@ from pitchsweep.drivers.twin.order_brightness import FAINTEST, order_share
 from pitchsweep.drivers.twin.rays import (
     BoolArray,
     FloatArray,
-    diffract,
     dot,
     meet_sphere,
     rotation,
-    sideways_in_cover,
     unit,
 )
-from pitchsweep.drivers.twin.screen import bow_per_mm, land, reported, within_map
+from pitchsweep.drivers.twin.screen import (
+    bow_per_mm,
+    focus,
+    land,
+    reported,
+    within_map,
+)
+from pitchsweep.drivers.twin.through_cover import Cover, Grooves, orders_out
 from pitchsweep.drivers.twin.truth import MountTruth, Truth, twin_settings
 
+_MIDDLE = ((0.0, 1.0),)
+_EVEN = tuple(
+    (float(x), float(np.exp(-0.5 * x**2))) for x in np.linspace(-3.5, 3.5, 57)
+)
+_ROUND = tuple(zip(*(v.tolist() for v in hermegauss(5)), strict=True))
+"""Places across a Gaussian beam in its rms radius, with weights: a comb where an edge
+cuts, Gauss points where everything is smooth."""
 _GRAZING = 0.02
 """Cosine of the incidence beyond which the beam passes the part by."""
 
@@ -58,8 +73,8 @@ class _Pose:
     axes: FloatArray
     surface_offset_mm: float
     bend_per_mm: float
-    cover_mm: float
-    cover_index: float
+    cover: Cover
+    track_per_mm: float
 
 
 @dataclass(frozen=True)
@@ -89,7 +104,8 @@ def possible_orders(truth: Truth, laser: str) -> NDArray[np.int64]:
 
 def trace_orders(truth: Truth, bench: Bench, steps: Steps) -> Landing:
     """Every possible order of ``steps.laser`` at every step, on the screen."""
-    return _trace(truth, bench, steps, _beam_of(truth, bench, steps))
+    beam = _beam_of(truth, bench, steps)
+    return _whole_beam(truth, bench, steps, _trace(truth, bench, steps, beam))
 
 
 def trace_bundle(
@@ -107,7 +123,7 @@ def trace_bundle(
         moved = replace(beam, point=beam.point + np.array(step_mm))
         aside = _trace(truth, bench, steps, moved)
         columns.append((aside.place_mm - chief.place_mm) / apart_mm)
-    return chief, np.stack(columns, axis=-1)
+    return _whole_beam(truth, bench, steps, chief), np.stack(columns, axis=-1)
 
 
 def _beam_of(truth: Truth, bench: Bench, steps: Steps) -> _Beam:
@@ -122,50 +138,105 @@ def _pose_of(truth: Truth, bench: Bench, steps: Steps) -> _Pose:
     axes = part_axes(incidence_rad(truth, bench, steps), mount)
     about_x, about_z = wobble_rad(truth, bench, steps.stage_deg)
     radius_mm = effects.part_radius_m * 1e3
+    part, side = truth.part, face_side(steps)
     return _Pose(
         axes=rotation(0, about_x) @ rotation(2, about_z) @ axes,
         surface_offset_mm=mount.surface_offset_mm,
         bend_per_mm=1.0 / radius_mm if radius_mm > 0.0 else 0.0,
-        cover_mm=effects.cover_thickness_mm,
-        cover_index=effects.cover_index,
+        cover=Cover(
+            part.cover_mm,
+            part.cover_index,
+            side * part.wedge_across_rad,
+            side * part.wedge_along_rad,
+        ),
+        track_per_mm=side / part.track_radius_mm if part.track_radius_mm else 0.0,
     )
 
 
-def _surface_at(pose: _Pose, beam: _Beam) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Where the beam meets the part, and normal and grating vector there, (S, 3)."""
+def _surface_at(pose: _Pose, beam: _Beam) -> tuple[FloatArray, Grooves]:
+    """Where the beam meets the part (S, 3), and the grooves there."""
     across, normal = pose.axes[..., :, 0], pose.axes[..., :, 2]
     apex = pose.surface_offset_mm * normal
     point = meet_sphere(beam.point, beam.direction, apex, normal, pose.bend_per_mm)
     there = unit(normal + pose.bend_per_mm * (point - apex))
-    return point, there, unit(across - dot(across, there) * there)
+    # Grooves of a disc run round its centre, one radius off along the grating vector.
+    outwards = across + pose.track_per_mm * (point - apex)
+    grating = unit(outwards - dot(outwards, there) * there)
+    return point, Grooves(there, grating, np.cross(there, grating))
 
 
 def _trace(truth: Truth, bench: Bench, steps: Steps, beam: _Beam) -> Landing:
     order = possible_orders(truth, steps.laser)
     pose = _pose_of(truth, bench, steps)
-    point, normal, grating = (a[:, None, :] for a in _surface_at(pose, beam))
+    entry, grooves = _surface_at(pose, beam)
     incoming = beam.direction[:, None, :]
     wavelength = air_wavelength_mm(
         truth, bench, steps.laser, steps.planned_s, steps.laser_state.shift_pm
     )
     period = grating_period_mm(truth, bench, steps.planned_s)
     ratio = order[None, :] * (wavelength / period)[:, None]
-    leaving, leaves = diffract(incoming, normal, grating, ratio[..., None])
-    if pose.cover_mm > 0.0:
-        inward = sideways_in_cover(incoming, normal, pose.cover_index)
-        outward = sideways_in_cover(leaving, normal, pose.cover_index)
-        point = point + pose.cover_mm * (inward + outward)
-    place, there = land(point, leaving, truth.screen, bow_per_mm(bench))
+    normal = grooves.normal[:, None, :]
+    met = Grooves(normal, grooves.grating[:, None, :], grooves.along[:, None, :])
+    leaving, leaves, beside = orders_out(incoming, met, ratio[..., None], pose.cover)
+    point = entry[:, None, :] + beside
+    place, there = _arrive(truth, bench, point, leaving)
     share = order_share(
         order[None, :],
         cos_in=np.abs(dot(incoming, normal)[..., 0]),
         cos_out=dot(leaving, normal)[..., 0],
         wavelength_nm=truth.vacuum_wavelength_nm[steps.laser],
         relief=truth.phases.relief,
-        lean=truth.phases.relief_lean,
+        lean=face_side(steps) * truth.phases.relief_lean,
     )
     lit = dot(incoming, normal)[..., 0] < -_GRAZING
     seen = leaves & there & lit & within_map(bench, place) & (share > FAINTEST)
     planned = np.broadcast_to(steps.planned_s[:, None], place.shape[:-1])
-    share = share * steps.laser_state.power
+    share = share * steps.laser_state.power * _on_the_part(bench, steps, pose, entry)
     return Landing(order, reported(truth, bench, place, planned), share, seen)
+
+
+def _arrive(
+    truth: Truth, bench: Bench, point: FloatArray, leaving: FloatArray
+) -> tuple[FloatArray, BoolArray]:
+    """True places on the screen, or on the sensor of a camera focused at infinity."""
+    if bench.screen.kind == "camera-at-infinity":
+        return focus(leaving, truth.screen)
+    return land(point, leaving, truth.screen, bow_per_mm(bench))
+
+
+def _on_the_part(
+    bench: Bench, steps: Steps, pose: _Pose, entry: FloatArray
+) -> FloatArray:
+    """1 (S, 1) where the ray meets the part, 0 where it passes its edge."""
+    edge_mm = twin_settings(bench).effects.part_edge_mm
+    if edge_mm <= 0.0:
+        return np.ones((entry.shape[0], 1))
+    along = face_side(steps) * dot(entry, pose.axes[..., :, 0])
+    return np.asarray(along > -edge_mm, dtype=np.float64)
+
+
+def _whole_beam(truth: Truth, bench: Bench, steps: Steps, chief: Landing) -> Landing:
+    """The centre of light of each order, where the beam's width moves it.
+
+    Rays over the beam's cross-section, weighted by the light in each; on a part with
+    straight grooves that the beam does not overrun the one ray in the middle serves.
+    """
+    across = _EVEN if twin_settings(bench).effects.part_edge_mm > 0.0 else _MIDDLE
+    up = _ROUND if truth.part.track_radius_mm > 0.0 else _MIDDLE
+    if across is _MIDDLE and up is _MIDDLE:
+        return chief
+    rms_mm = bench.beam.diameter_mm / 4.0
+    beam = _beam_of(truth, bench, steps)
+    light, moment = np.zeros_like(chief.share), np.zeros_like(chief.place_mm)
+    total, seen = 0.0, chief.visible.copy()
+    for (x, weight_x), (y, weight_y) in product(across, up):
+        aside = rms_mm * np.array([x, y, 0.0])
+        ray = _trace(truth, bench, steps, replace(beam, point=beam.point + aside))
+        weight = weight_x * weight_y * ray.share
+        seen &= ray.visible
+        total += weight_x * weight_y
+        light += weight
+        moment += weight[..., None] * ray.place_mm
+    place = moment / np.maximum(light, 1e-12)[..., None]
+    seen &= light > FAINTEST * total
+    return replace(chief, place_mm=place, share=light / total, visible=seen)

@@ -71,13 +71,24 @@ def meet_sphere(
     return np.asarray(start + constant / forward * beam)
 
 
-def sideways_in_cover(
-    direction: FloatArray, normal: FloatArray, index: float
-) -> FloatArray:
-    """Sideways step (..., 3) inside a plane cover, per mm of thickness.
+def refract(
+    direction: FloatArray, normal: FloatArray, ratio: float
+) -> tuple[FloatArray, BoolArray]:
+    """Unit vectors (..., 3) behind a face, and whether the light gets through (...).
 
-    ``direction`` is the ray outside; inside, the part along the surface is divided by
-    ``index``. The step points along the ray's own tangential part, tan(angle inside).
+    Snell's law in vectors: the part along the face is multiplied by ``ratio``, the
+    index before over the index behind; the ray keeps to its side of ``normal``. Where
+    nothing gets through the vector lies in the face, finite.
     """
-    tangent = (direction - dot(direction, normal) * normal) / index
-    return np.asarray(tangent / np.sqrt(np.maximum(1.0 - dot(tangent, tangent), 1e-6)))
+    across = dot(direction, normal)
+    tangent = ratio * (direction - across * normal)
+    rest = 1.0 - dot(tangent, tangent)
+    behind = tangent + np.sign(across) * np.sqrt(np.maximum(rest, 0.0)) * normal
+    return np.asarray(unit(behind)), rest[..., 0] > 0.0
+
+
+def sideways(direction: FloatArray, normal: FloatArray) -> FloatArray:
+    """Step (..., 3) along the surface of a ray inside a layer, per mm of thickness."""
+    through = dot(direction, normal)
+    tangent = direction - through * normal
+    return np.asarray(tangent / np.maximum(np.abs(through), 1e-3))

@@ -37,6 +37,23 @@ def land(
     return _flat(origin, heading, travel) - offset, there
 
 
+def focus(direction: FloatArray, screen: ScreenTruth) -> tuple[FloatArray, BoolArray]:
+    """Places (..., 2) on the sensor of a camera focused at infinity, mm, and if seen.
+
+    ``screen.distance_mm`` is the focal length; where a ray starts does not matter.
+    """
+    axes = (
+        rotation(2, screen.roll_rad)
+        @ rotation(1, screen.tilt_y_rad)
+        @ rotation(0, screen.tilt_x_rad)
+    )
+    heading = direction @ axes
+    there = heading[..., 2] > 0.02
+    forward = np.where(there, heading[..., 2], 1.0)[..., None]
+    offset = np.array([screen.offset_x_mm, screen.offset_y_mm])
+    return screen.distance_mm * heading[..., :2] / forward - offset, there
+
+
 def _flat(origin: FloatArray, heading: FloatArray, travel: FloatArray) -> FloatArray:
     return np.asarray(origin[..., :2] + travel[..., None] * heading[..., :2])
 

@@ -52,6 +52,22 @@ class ScreenTruth:
 
 
 @dataclass(frozen=True)
+class PartTruth:
+    """What is true of the part however it sits.
+
+    ``wedge_across_rad`` and ``wedge_along_rad`` lean the outer face of the cover
+    towards the grating vector and along the grooves; ``track_radius_mm`` is 0 where
+    the grooves are straight.
+    """
+
+    cover_mm: float = 0.0
+    cover_index: float = 1.55
+    wedge_across_rad: float = 0.0
+    wedge_along_rad: float = 0.0
+    track_radius_mm: float = 0.0
+
+
+@dataclass(frozen=True)
 class BeamTruth:
     """The line of the beam near the part."""
 
@@ -104,6 +120,7 @@ class Truth:
     air: AirTruth
     phases: Phases
     mounts: tuple[MountTruth, ...]
+    part: PartTruth = PartTruth()
 
     def grating_period_mm(self) -> float:
         """The pitch at the part's own temperature, in mm."""
@@ -157,6 +174,7 @@ def draw_truth(bench: Bench, part: Part, seed: int) -> Truth:
         air=_draw_air(bench, seed),
         phases=_draw_phases(seed),
         mounts=tuple(_draw_mount(bench, part, seed, i) for i in range(MOUNTS_DRAWN)),
+        part=_draw_part(bench, part, seed),
     )
 
 
@@ -215,6 +233,32 @@ def _draw_air(bench: Bench, seed: int) -> AirTruth:
         ),
         pressure_hPa=_normal(seed, "pressure", air.pressure_hPa, air.u_pressure_hPa),
         humidity_percent=min(100.0, max(0.0, humidity)),
+    )
+
+
+def _draw_part(bench: Bench, part: Part, seed: int) -> PartTruth:
+    effects = twin_settings(bench).effects
+    mm, index, wedges = 0.0, effects.cover_index, (0.0, 0.0)
+    if part.cover_mm > 0.0:
+        mm = abs(_normal(seed, "cover", part.cover_mm, part.u_cover_mm))
+        index = _normal(seed, "cover index", part.cover_index, part.u_cover_index)
+        wedge = part.u_cover_wedge_mrad * 1e-3
+        wedges = (
+            _normal(seed, "cover wedge across", 0.0, wedge),
+            _normal(seed, "cover wedge along", 0.0, wedge),
+        )
+    if effects.cover_thickness_mm > 0.0:
+        mm, index = effects.cover_thickness_mm, effects.cover_index
+    radius = effects.track_radius_mm
+    if radius == 0.0 and part.track_radius_mm is not None:
+        u_mm = part.u_track_radius_mm
+        radius = abs(_normal(seed, "track radius", part.track_radius_mm, u_mm))
+    return PartTruth(
+        cover_mm=mm,
+        cover_index=index,
+        wedge_across_rad=wedges[0] + effects.cover_wedge_mrad * 1e-3,
+        wedge_along_rad=wedges[1],
+        track_radius_mm=radius,
     )
 
 

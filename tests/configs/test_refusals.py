@@ -42,12 +42,12 @@ def _refused_bench(tmp_path: Path, old: str, new: str) -> tuple[str, int]:
         (
             "distance_mm: 250.0",
             "distance_mm: -3.0",
-            "screen.distance_mm = -3.0: allowed 20 to 5000",
+            "screen.distance_mm = -3.0: allowed 5 to 5000",
         ),
         (
             "width_mm: 400.0",
             "width_mm: .nan",
-            "screen.width_mm = .nan: allowed 10 to 5000",
+            "screen.width_mm = .nan: allowed 2 to 5000",
         ),
         (
             "u_tilt_mrad: 30.0",
@@ -101,7 +101,7 @@ def test_a_missing_key_is_named_with_the_line_of_its_block(tmp_path: Path) -> No
     block = line - 1
     assert message == (
         f"{tmp_path}/bench.yaml line {block}: screen.distance_mm: is missing; "
-        "allowed 20 to 5000"
+        "allowed 5 to 5000"
     )
 
 
@@ -219,3 +219,31 @@ def test_a_file_of_another_kind_is_called_by_its_name(
 def test_a_command_to_copy_survives_a_space(tmp_path: Path) -> None:
     run = tmp_path / "night of 3 May" / "it's one"
     assert shlex.split(typed("ack", run)) == ["pitchsweep", "ack", str(run)]
+
+
+@pytest.mark.parametrize(
+    ("change", "said"),
+    [
+        ("read_side: bare\n", "must say its 'read_side'"),
+        ("track_radius_mm: 40.0\n", "needs 'track_radius_mm'"),
+    ],
+)
+def test_a_disc_that_does_not_say_how_it_is_read_is_refused(
+    tmp_path: Path, change: str, said: str
+) -> None:
+    text = find("demo:track-740", "parts").read_text(encoding="utf-8")
+    assert change in text
+    path = tmp_path / "disc.yaml"
+    path.write_text(text.replace(change, ""), encoding="utf-8")
+    with pytest.raises(SettingsRefused) as caught:
+        read_part(str(path))
+    assert said in str(caught.value)
+    assert f"{path} line " in str(caught.value)
+
+
+def test_a_cover_without_a_thickness_is_refused(tmp_path: Path) -> None:
+    text = find("demo:track-740", "parts").read_text(encoding="utf-8")
+    path = tmp_path / "disc.yaml"
+    path.write_text(text.replace("side: bare", "side: through-cover"), encoding="utf-8")
+    with pytest.raises(SettingsRefused, match="needs cover_mm above 0"):
+        read_part(str(path))
