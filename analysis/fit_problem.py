@@ -1,9 +1,10 @@
 """The joint fit's problem: spots, unknowns, and the geometry at the prior means."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from pitchsweep.analysis.air_index import AirState, air_index
 from pitchsweep.analysis.fit_parameters import ARCSEC, Parameter
@@ -89,6 +90,27 @@ def fit_problem(
         run=scene.run,
         time=scene.time,
         jumps=scene.jumps,
+    )
+
+
+def some_rows(problem: FitProblem, keep: NDArray[np.bool_] | IntArray) -> FitProblem:
+    """The problem of the spots that ``keep`` (mask or indices) selects."""
+    _, group = np.unique(problem.step_group[keep], return_inverse=True)
+    group = group.reshape(-1).astype(np.int64)
+    by_step = np.argsort(group, kind="stable")
+    n_steps = int(group.max(initial=-1)) + 1
+    return replace(
+        problem,
+        table=problem.table.take(keep),
+        parameters=tuple(
+            replace(p, coefficient=p.coefficient[keep]) for p in problem.parameters
+        ),
+        base=problem.base[keep],
+        step_group=group,
+        by_step=by_step,
+        step_starts=np.searchsorted(group[by_step], np.arange(n_steps)),
+        n_steps=n_steps,
+        whitener=problem.whitener[keep],
     )
 
 

@@ -16,7 +16,7 @@ from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.prediction import FitState, predict, residuals
 from pitchsweep.analysis.records import FloatArray, IntArray
 
-BLOCK_SPOTS = 400
+BLOCK_SPOTS = 1500
 
 
 @dataclass(frozen=True)

@@ -12,7 +12,7 @@ from pitchsweep.analysis.analysis_errors import (
     InputRefused,
     NoResult,
 )
-from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
+from pitchsweep.analysis.fit_problem import FitProblem, fit_problem, some_rows
 from pitchsweep.analysis.fundamental_search import (
     FALSE_ALARM,
     Fold,
@@ -36,7 +36,7 @@ from pitchsweep.analysis.records import (
     Rejection,
 )
 from pitchsweep.analysis.spot_directions import Directions, spot_directions
-from pitchsweep.analysis.zero_track import GATE, some_rows
+from pitchsweep.analysis.zero_track import GATE
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 

@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pitchsweep.analysis.fit_parameters import Kind, Source
-from pitchsweep.analysis.fit_problem import FitProblem
+from pitchsweep.analysis.fit_problem import FitProblem, some_rows
 from pitchsweep.analysis.joint_fit import solve_joint_fit
 from pitchsweep.analysis.prediction import FitState, initial_state, predict
 from pitchsweep.analysis.records import FloatArray
@@ -37,27 +37,6 @@ def coarse_problem(problem: FitProblem) -> FitProblem:
     u = np.sqrt(np.maximum(table.ux_mm, table.uy_mm) ** 2 + extra)
     whitener = np.eye(2)[None] / u[:, None, None]
     return replace(problem, parameters=kept, whitener=whitener)
-
-
-def some_rows(problem: FitProblem, keep: BoolArray) -> FitProblem:
-    """The problem of some of its spots, with the same unknowns."""
-    _, group = np.unique(problem.step_group[keep], return_inverse=True)
-    group = group.reshape(-1).astype(np.int64)
-    by_step = np.argsort(group, kind="stable")
-    n_steps = int(group.max(initial=-1)) + 1
-    return replace(
-        problem,
-        table=problem.table.take(keep),
-        parameters=tuple(
-            replace(p, coefficient=p.coefficient[keep]) for p in problem.parameters
-        ),
-        base=problem.base[keep],
-        step_group=group,
-        by_step=by_step,
-        step_starts=np.searchsorted(group[by_step], np.arange(n_steps)),
-        n_steps=n_steps,
-        whitener=problem.whitener[keep],
-    )
 
 
 @dataclass(frozen=True)

@@ -12,6 +12,7 @@ from pitchsweep.analysis.budget import combined_u, fit_budget
 from pitchsweep.analysis.fit_parameters import Kind
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
 from pitchsweep.analysis.joint_fit import solve_joint_fit
+from pitchsweep.analysis.normal_equations import cut_in_blocks, normal_equations
 from pitchsweep.analysis.prediction import (
     FitState,
     initial_state,
@@ -137,3 +138,35 @@ def test_spots_with_no_weight_do_not_matter() -> None:
     spoilt = replace(problem, table=replace(problem.table, x_mm=x_mm))
     again = solve_joint_fit(spoilt, order, weight)
     assert again.state.values[0] == fit.state.values[0]
+
+
+def test_blocks_make_no_difference_to_the_equations(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """Steps in an order of their own, so that a block's spots lie apart in the table."""
+    problem, order = small_problem()
+    weight = np.linspace(0.5, 1.0, len(order))
+    state = initial_state(problem)
+    whole = normal_equations(cut_in_blocks(problem, order, weight), state)
+    monkeypatch.setattr("pitchsweep.analysis.normal_equations.BLOCK_SPOTS", 7)
+    blocks = cut_in_blocks(problem, order, weight)
+    assert len(blocks.parts) > 5
+    cut = normal_equations(blocks, state)
+    for name in ("dense", "border", "diagonal", "right", "right_step", "residual"):
+        one, other = getattr(whole, name), getattr(cut, name)
+        np.testing.assert_allclose(other, one, rtol=1e-12, atol=1e-12 * np.ptp(one))
+    np.testing.assert_array_equal(cut.used, whole.used)
+
+
+def test_a_start_from_some_of_the_steps_ends_at_the_same_minimum(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    problem, order = small_problem()
+    weight = np.ones(len(order))
+    plain = solve_joint_fit(problem, order, weight)
+    monkeypatch.setattr("pitchsweep.analysis.joint_fit.MANY_STEPS", 10)
+    monkeypatch.setattr("pitchsweep.analysis.joint_fit.SOME_STEPS", 7)
+    assert problem.n_steps > 10
+    fit = solve_joint_fit(problem, order, weight)
+    assert fit.converged
+    assert fit.state.values[0] == pytest.approx(plain.state.values[0], abs=1e-9)
