@@ -16,10 +16,14 @@ from pitchsweep.analysis.pixel_map import (
     screen_from_pixels,
     spot_on_screen,
 )
-from pitchsweep.analysis.records import Spot, SpotSearch
+from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
 from pitchsweep.analysis.spot_search import Exposure, look
 from pitchsweep.analysis.spot_verdicts import judged_look
 from pitchsweep.configs.bench_model import Bench, Camera
+
+_ROOM_SIGMAS = 2.0
+"""A spot nearer to the edge of the beam hole than so many radii has lost light to it,
+as one at the frame's edge."""
 
 
 def spot_finder(bench: Bench) -> FindSpots:
@@ -28,16 +32,57 @@ def spot_finder(bench: Bench) -> FindSpots:
     camera = bench.camera
     noise = CameraNoise.from_bench(camera)
     places = [pixels_from_screen(*mark, camera) for mark in bench.screen.marks_mm]
+    blind = no_screen(bench)
 
     def find(step: int, lights: Sequence[Shot], darks: Sequence[Shot]) -> StepSpots:
         exposures = [Exposure(shot.frame, shot.exposure_ms) for shot in lights]
-        seen = look(exposures, mean_dark(darks), noise)
+        seen = look(exposures, mean_dark(darks), noise, blind=blind)
         marks = find_marks(seen.scene, places)
-        found = without_marks(judged_look(seen, step), marks, step)
+        found = off_the_hole(judged_look(seen, step), bench, step)
+        found = without_marks(found, marks, step)
         rows = tuple(_mark_row(mark, camera) for mark in marks)
         return replace(on_screen(found, camera), marks=rows)
 
     return find
+
+
+def no_screen(bench: Bench) -> NDArray[np.bool_]:
+    """Pixels (rows, columns) within the beam hole, a pixel's diagonal about it too.
+
+    Where the hole takes a part of a spot, the rest tells where its middle is.
+    """
+    camera, hole = bench.camera, bench.screen.hole
+    column, row = pixels_from_screen(hole.x_mm, hole.y_mm, camera)
+    across = np.arange(camera.width_px)[None, :] - column
+    down = np.arange(camera.height_px)[:, None] - row
+    reach = hole.diameter_mm / 2.0 / camera.mm_per_px + 2.0**0.5
+    return np.asarray(np.hypot(across, down) < reach)
+
+
+def off_the_hole(found: SpotSearch, bench: Bench, step: int) -> SpotSearch:
+    """``found`` without spots whose core the beam hole cuts; they are refused."""
+    camera, hole = bench.camera, bench.screen.hole
+    column, row = pixels_from_screen(hole.x_mm, hole.y_mm, camera)
+    radius = hole.diameter_mm / 2.0 / camera.mm_per_px
+
+    def room(spot: Spot) -> float:
+        return float(np.hypot(spot.column_px - column, spot.row_px - row)) - radius
+
+    cut = [s for s in found.spots if room(s) < _ROOM_SIGMAS * s.sigma_px[0]]
+    refused = [
+        RejectedSpot(
+            step,
+            s.column_px,
+            s.row_px,
+            "px",
+            Rejection.ON_HOLE,
+            f"{room(s):.1f} px from the edge of the beam hole",
+            s.snr,
+        )
+        for s in cut
+    ]
+    kept = tuple(s for s in found.spots if s not in cut)
+    return replace(found, spots=kept, rejected=(*found.rejected, *refused))
 
 
 def mean_dark(darks: Sequence[Shot]) -> NDArray[np.float32] | None:

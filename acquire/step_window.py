@@ -12,7 +12,7 @@ from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.journal_rows import IntentRow
 from pitchsweep.acquire.resume import standing
 from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
-from pitchsweep.acquire.step_spots import mean_dark
+from pitchsweep.acquire.step_spots import mean_dark, no_screen
 from pitchsweep.acquire.stored_spots import dark_shots, light_shots
 from pitchsweep.acquire.sweep_plan import plan_sweep
 from pitchsweep.analysis.camera_noise import CameraNoise
@@ -40,7 +40,8 @@ def step_picture(path: Path, step: int, spot: int | None) -> bytes:
     row, lights, darks = _stored(folder, step)
     camera = CameraNoise.from_bench(folder.job.bench.camera)
     exposures = [Exposure(shot.frame, shot.exposure_ms) for shot in lights]
-    seen = look(exposures, mean_dark(darks), camera)
+    blind = no_screen(folder.job.bench)
+    seen = look(exposures, mean_dark(darks), camera, blind=blind)
     windows = _windows(seen, step)
     if spot is not None and not 1 <= spot <= len(windows):
         raise RunRefused(

@@ -67,10 +67,12 @@ def step_scene(
     dark: NDArray[np.float32] | NDArray[np.uint16] | None,
     camera: CameraNoise,
     factor: int,
+    blind: BoolArray | None = None,
 ) -> StepScene:
     """The scene of a bracket (any order), averaged down by ``factor`` for the search.
 
-    Raises ValueError where there is no exposure or the shapes differ.
+    Pixels that are ``blind`` (rows, columns) show no screen and never count. Raises
+    ValueError where there is no exposure or the shapes differ.
     """
     shapes = {e.frame.shape for e in exposures} | (
         set() if dark is None else {dark.shape}
@@ -86,7 +88,9 @@ def step_scene(
         for layer, small, noise_dn in zip(layers, smalls, seen, strict=True)
     ]
     rows, columns = ordered[0].frame.shape
-    hot = None if dark is None else hot_pixels(dark)
+    hot = blind if dark is None else hot_pixels(dark)
+    if blind is not None and hot is not None:
+        hot = hot | blind
     return StepScene(tuple(layers), tuple(smalls), hot, FrameSide(columns, rows), seen)
 
 

@@ -83,13 +83,14 @@ def look(
     *,
     speckle: Speckle | None = None,
     settings: SearchSettings | None = None,
+    blind: NDArray[np.bool_] | None = None,
 ) -> Look:
     """What ``find_spots`` judges: every candidate with its window and fit.
 
-    Inputs and errors as there.
+    Inputs and errors as there; ``blind`` pixels (rows, columns) show no screen.
     """
     settings = settings or SearchSettings()
-    scene = step_scene(exposures, dark, camera, settings.factor)
+    scene = step_scene(exposures, dark, camera, settings.factor, blind)
     light = light_map(scene.smalls)
     grain, measured = speckle or NO_SPECKLE, False
     found = _fit_all(scene, candidates(light, threshold=settings.threshold), grain, [])

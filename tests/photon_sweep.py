@@ -29,13 +29,18 @@ class PhotonSweep:
 def photon_sweep(
     job: Job, truth: Truth, incidence_deg: list[float], *, hours: float = 1.0
 ) -> PhotonSweep:
-    """Steps at the given incidences, spread evenly over ``hours``."""
+    """Steps at the given incidences, spread evenly over ``hours``.
+
+    A dark frame is taken as often as the recipe says.
+    """
     find = spot_finder(job.bench)
     laser = job.recipe.lasers[0]
-    steps, rows, rejected = [], [], []
+    steps: list[SeenStep] = []
+    rows, rejected = [], []
     for number, incidence in enumerate(incidence_deg):
         at_h = hours * number / len(incidence_deg)
-        seen = seen_step(job, truth, incidence, step=number, hours=at_h)
+        old = steps[-1].dark if number % job.recipe.dark_every_steps else None
+        seen = seen_step(job, truth, incidence, step=number, hours=at_h, dark=old)
         shots = [
             Shot(e.exposure_ms, Label(0, laser, 0, number, k), e.frame)
             for k, e in enumerate(seen.exposures)

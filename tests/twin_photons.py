@@ -19,13 +19,19 @@ from pitchsweep.drivers.twin.truth import Truth
 
 @dataclass(frozen=True)
 class SeenStep:
-    """A step's bracket and the true places of its orders, (orders, 2) px and mm."""
+    """A step's bracket and the true places of its orders, (orders, 2) px and mm.
+
+    ``leaving_mm`` and ``leaving`` hold every order that leaves, on the screen or off it
+    or in the hole.
+    """
 
     exposures: list[Exposure]
     dark: FloatArray
     place_px: FloatArray
     place_mm: FloatArray
     order: FloatArray
+    leaving_mm: FloatArray
+    leaving: FloatArray
 
 
 def seen_step(
@@ -37,8 +43,12 @@ def seen_step(
     repeat: int = 0,
     hours: float = 0.0,
     stage_deg: float | None = None,
+    dark: FloatArray | None = None,
 ) -> SeenStep:
-    """Frames and truth of one step of the first mount and laser of ``job``."""
+    """Frames and truth of one step of the first mount and laser of ``job``.
+
+    ``dark``: one taken before, where no new one is to be.
+    """
     bench, laser = job.bench, job.recipe.lasers[0]
     stage = job.bench.stage.direction * incidence_deg
     stage = stage if stage_deg is None else stage_deg
@@ -58,16 +68,8 @@ def seen_step(
         )
         for label, time_ms in zip(labels, job.recipe.exposures_ms, strict=True)
     ]
-    longest = max(job.recipe.exposures_ms)
-    dark = render(
-        truth,
-        bench,
-        labels[0],
-        stage_deg=stage,
-        mount_deg=0.0,
-        exposure_ms=longest,
-        light_on=False,
-    )
+    if dark is None:
+        dark = _dark(job, truth, labels[0], stage)
     landing = trace_orders(
         truth, bench, single_step(labels[0], stage_deg=stage, mount_deg=0.0)
     )
@@ -78,11 +80,26 @@ def seen_step(
         exposures=[
             Exposure(f, t) for f, t in zip(frames, job.recipe.exposures_ms, strict=True)
         ],
-        dark=dark.astype(np.float64),
+        dark=dark,
         place_px=pixel_of(bench.camera, place)[seen],
         place_mm=place[seen],
         order=order[seen].astype(np.float64),
+        leaving_mm=place[landing.visible[0]],
+        leaving=order[landing.visible[0]].astype(np.float64),
     )
+
+
+def _dark(job: Job, truth: Truth, label: Label, stage_deg: float) -> FloatArray:
+    frame = render(
+        truth,
+        job.bench,
+        label,
+        stage_deg=stage_deg,
+        mount_deg=0.0,
+        exposure_ms=max(job.recipe.exposures_ms),
+        light_on=False,
+    )
+    return frame.astype(np.float64)
 
 
 def search_step(
