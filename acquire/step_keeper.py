@@ -14,6 +14,7 @@ from typing import Self
 from pitchsweep.acquire.acquire_errors import FaultMet
 from pitchsweep.acquire.bench_devices import FindSpots, Gate, Shot
 from pitchsweep.acquire.bench_watch import spots_fault
+from pitchsweep.acquire.exposures import ShotToCome, wait_for
 from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_rows import (
     FrameRow,
@@ -37,6 +38,7 @@ from pitchsweep.analysis.records import Rejection
 from pitchsweep.configs.bench_model import Camera
 from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.devices import BenchReading, SpotReading
+from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.safety.safety_errors import GateTripped
 
 NO_LIGHT = (Rejection.TOO_FAINT.value, Rejection.ON_MARK.value)
@@ -46,15 +48,18 @@ DEPTH = 2
 
 @dataclass(frozen=True)
 class TakenStep:
-    """What was exposed at a step; ``readings`` is None unless spots were recorded."""
+    """What was exposed at a step; ``readings`` is None unless spots were recorded.
+
+    Frames may still be on their way.
+    """
 
     step: Step
     intent: int
     readback_deg: float
     bench_s: float
     first_frame: int
-    darks: tuple[Shot, ...]
-    lights: tuple[Shot, ...]
+    darks: tuple[ShotToCome, ...]
+    lights: tuple[ShotToCome, ...]
     readings: tuple[SpotReading, ...] | None
     sensed: BenchReading = BenchReading()
     tries: int = 0
@@ -62,12 +67,13 @@ class TakenStep:
 
 @dataclass(frozen=True)
 class SpoiltStep:
-    """A step that was kept and whose spots are not as they should be."""
+    """A step whose spots are not as they should be, or (``lost``) without frames."""
 
     step: Step
     intent: int
-    fault: FaultMet
+    fault: FaultMet | DriverError
     tries: int
+    lost: bool = False
 
 
 @dataclass(frozen=True)
@@ -153,9 +159,15 @@ class StepKeeper:
 
     def _keep(self, taken: TakenStep) -> None:
         tools, step = self._tools, taken.step
-        numbered = list(enumerate(taken.darks + taken.lights, taken.first_frame))
+        try:
+            darks, lights = wait_for(taken.darks), wait_for(taken.lights)
+        except DriverError as error:
+            # The sweep meets the same fault, and the recipe says what it does then.
+            tools.journal.fail(taken.intent, " ".join(str(error).split()))
+            return
+        numbered = list(enumerate(darks + lights, taken.first_frame))
         rows = [
-            self._stored(number, shot, "dark" if index < len(taken.darks) else "light")
+            self._stored(number, shot, "dark" if index < len(darks) else "light")
             for index, (number, shot) in enumerate(numbered)
         ]
         found = spots_from_door(taken.readings)
@@ -169,11 +181,11 @@ class StepKeeper:
                 frames=rows,
                 spots=found,
             )
-        if step.kind == "step" and (taken.darks or self._group != group_of(step)):
+        if step.kind == "step" and (darks or self._group != group_of(step)):
             # Never those of another mount or laser.
-            self._darks, self._group = taken.darks or None, group_of(step)
+            self._darks, self._group = darks or None, group_of(step)
         if found is None:
-            found = tools.find(step.step, taken.lights, self._darks_for(step))
+            found = tools.find(step.step, lights, self._darks_for(step))
             tools.journal.record_spots(taken.intent, found)
         self._note_reading(taken, found)
         tools.on_kept(step, found)

@@ -4,13 +4,13 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from pitchsweep.acquire.acquire_errors import FaultMet
-from pitchsweep.acquire.bench_devices import BenchDevices, Shot
+from pitchsweep.acquire.bench_devices import BenchDevices
 from pitchsweep.acquire.bench_watch import Sensed, after_reading
 from pitchsweep.acquire.disk_room import free_bytes, why_nearly_full
+from pitchsweep.acquire.exposures import Exposures, ShotToCome, wait_for
 from pitchsweep.acquire.fault_policy import reaction
-from pitchsweep.acquire.frame_checks import FrameChecks
 from pitchsweep.acquire.run_journal import RunJournal
-from pitchsweep.acquire.step_keeper import StepKeeper, TakenStep
+from pitchsweep.acquire.step_keeper import SpoiltStep, StepKeeper, TakenStep
 from pitchsweep.acquire.stop_signals import StopSignals
 from pitchsweep.acquire.sweep_plan import Step, SweepPlan
 from pitchsweep.acquire.sweep_reporter import SweepReporter
@@ -41,22 +41,33 @@ class SweepContext:
 
 
 class StepTaker:
-    """Takes one step at a time, once; whatever happens it is dark afterwards."""
+    """Takes one step at a time, once; whatever happens it is dark afterwards.
+
+    The last frame of a step is read out while the stage turns to the next one, and
+    must be there before the next light.
+    """
 
     def __init__(
-        self, context: SweepContext, devices: BenchDevices, keeper: StepKeeper
+        self,
+        context: SweepContext,
+        devices: BenchDevices,
+        keeper: StepKeeper,
+        exposures: Exposures,
     ) -> None:
         self._context = context
         self._devices = devices
         self._keeper = keeper
-        self._checks = FrameChecks(context.job.bench.camera)
+        self._exposures = exposures
         self._sensed = Sensed()
+        self._last: TakenStep | None = None
+        self._lost: list[SpoiltStep] = []
 
     def take(self, step: Step, first_frame: int | None = None, tries: int = 0) -> None:
         """Takes ``step`` and hands it to the keeper.
 
         Its frames are numbered from ``first_frame``, or from a number that nothing else
-        has. Raises DriverError or FaultMet, the intent being noted as failed.
+        has. Raises DriverError or FaultMet, the intent being noted as failed. What is
+        wrong with the last frame of a step shows in ``take_lost``.
         """
         context, devices = self._context, self._devices
         context.stop.check()
@@ -68,6 +79,7 @@ class StepTaker:
             self._wait(context.job.bench.stage.settle_s)
             reading = devices.stage.where()
             self._keeper.raise_failure()
+            self.wait_for_frames()
             try:
                 devices.gate.light_on(
                     step=step.step,
@@ -80,6 +92,7 @@ class StepTaker:
                 context.stop.check()
             finally:
                 devices.gate.dark()
+            wait_for((*darks, *(lights[:-1] if step.kind == "step" else lights)))
         except (DriverError, FaultMet) as error:
             context.journal.fail(intent, " ".join(str(error).split()))
             raise
@@ -87,20 +100,35 @@ class StepTaker:
             # A number that no other step, check or attempt has.
             most = 2 * len(step.exposures_ms)
             first_frame = context.plan.frames + intent * most
-        self._keeper.put(
-            TakenStep(
-                step=step,
-                intent=intent,
-                readback_deg=reading.angle_deg,
-                bench_s=devices.clock.now_s(),
-                first_frame=first_frame,
-                darks=darks,
-                lights=lights,
-                readings=readings,
-                sensed=sensed,
-                tries=tries,
-            )
+        self._last = TakenStep(
+            step=step,
+            intent=intent,
+            readback_deg=reading.angle_deg,
+            bench_s=devices.clock.now_s(),
+            first_frame=first_frame,
+            darks=darks,
+            lights=lights,
+            readings=readings,
+            sensed=sensed,
+            tries=tries,
         )
+        self._keeper.put(self._last)
+
+    def wait_for_frames(self) -> None:
+        """Returns when every frame exposed so far is there, or known to be lost."""
+        last, self._last = self._last, None
+        if last is None:
+            return
+        try:
+            wait_for(last.lights)
+        except DriverError as error:
+            lost = SpoiltStep(last.step, last.intent, error, last.tries, lost=True)
+            self._lost.append(lost)
+
+    def take_lost(self) -> list[SpoiltStep]:
+        """Steps whose last frame was lost, since the last call."""
+        lost, self._lost = self._lost, []
+        return lost
 
     def _check_disk(self, step: Step) -> None:
         folder = self._context.journal.path.parent
@@ -136,7 +164,7 @@ class StepTaker:
             left_s -= SLICE_S
             self._context.stop.check()
 
-    def _dark_shots(self, step: Step) -> tuple[Shot, ...]:
+    def _dark_shots(self, step: Step) -> tuple[ShotToCome, ...]:
         if not step.dark_due or self._context.job.recipe.record != "frames":
             return ()
         first = len(step.exposures_ms)
@@ -147,7 +175,7 @@ class StepTaker:
 
     def _expose(
         self, step: Step
-    ) -> tuple[tuple[Shot, ...], tuple[SpotReading, ...] | None]:
+    ) -> tuple[tuple[ShotToCome, ...], tuple[SpotReading, ...] | None]:
         """Light shots, or readings of the spots door; the gate is lit."""
         if self._context.job.recipe.record == "spots":
             self._context.stop.check()
@@ -169,12 +197,10 @@ class StepTaker:
             readback_deg=reading.angle_deg,
         )
 
-    def _shot(self, step: Step, exposure_ms: float, number: int) -> Shot:
+    def _shot(self, step: Step, exposure_ms: float, number: int) -> ShotToCome:
         self._context.stop.check()
         label = label_for(step, number, self._context.soaked_s)
-        frame = self._devices.camera.expose(exposure_ms, label)
-        self._checks.check(frame, label)
-        return Shot(exposure_ms, label, frame)
+        return self._exposures.take(exposure_ms, label)
 
 
 def label_for(step: Step, exposure: int, soaked_s: float = 0.0) -> Label:

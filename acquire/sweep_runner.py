@@ -4,6 +4,7 @@ from collections.abc import Callable
 
 from pitchsweep.acquire.acquire_errors import FaultMet
 from pitchsweep.acquire.bench_devices import BenchDevices
+from pitchsweep.acquire.exposures import Exposures
 from pitchsweep.acquire.fault_policy import fault_kind, reaction
 from pitchsweep.acquire.resume import Standing
 from pitchsweep.acquire.step_keeper import StepKeeper
@@ -21,7 +22,8 @@ class SweepRunner:
         self._context = context
         self._devices = devices
         self._keeper = keeper
-        self._taker = StepTaker(context, devices, keeper)
+        self._exposures = Exposures(devices.camera, context.job.bench.camera)
+        self._taker = StepTaker(context, devices, keeper, self._exposures)
         self._group: tuple[int, int, str] | None = None
 
     def run(self, standing: Standing) -> None:
@@ -30,6 +32,10 @@ class SweepRunner:
         Faults are met as the recipe says. Raises StopRequested, GateTripped,
         DriverError, FaultMet, StorageFailed; the gate was asked for dark by then.
         """
+        with self._exposures:
+            self._run(standing)
+
+    def _run(self, standing: Standing) -> None:
         self._find_what_was_not_found(standing)
         try:
             self._devices.gate.dark()
@@ -50,9 +56,13 @@ class SweepRunner:
             self._devices.gate.dark()
 
     def _finish(self) -> None:
-        self._keeper.drain()
+        self._drain()
         while self._retake():
-            self._keeper.drain()
+            self._drain()
+
+    def _drain(self) -> None:
+        self._taker.wait_for_frames()
+        self._keeper.drain()
 
     def _end_early(self, why: str) -> None:
         self._context.journal.set_meta("ended_early", why)
@@ -92,13 +102,19 @@ class SweepRunner:
         self._keeper.drain()
 
     def _retake(self) -> bool:
-        """Meets what the keeper found wrong with spots; whether there was anything."""
-        found = self._keeper.take_faults()
+        """Meets what was found wrong with steps behind us; whether there was anything.
+
+        A step without its frames is taken again unless it is to be skipped; one with
+        strange spots is kept where the recipe does not say otherwise.
+        """
+        found = [*self._taker.take_lost(), *self._keeper.take_faults()]
         for spoilt in found:
             does = self._react(spoilt.step, spoilt.fault, spoilt.tries)
-            if does in ("retry", "re-home", "skip"):
-                self._context.journal.void(spoilt.intent, spoilt.fault.detail)
-            if does in ("retry", "re-home") and group_of(spoilt.step) == self._group:
+            again = does != "skip" if spoilt.lost else does in ("retry", "re-home")
+            if not spoilt.lost and (again or does == "skip"):
+                why = " ".join(str(spoilt.fault).split())
+                self._context.journal.void(spoilt.intent, why)
+            if again and group_of(spoilt.step) == self._group:
                 self._take(spoilt.step, None, spoilt.tries + 1, does == "re-home")
         return bool(found)
 

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from pitchsweep.drivers.devices import Label
+from pitchsweep.drivers.devices import FrameToCome, Label
 from pitchsweep.drivers.driver_errors import (
     AnsweredNonsense,
     DeviceRefused,
@@ -29,6 +29,7 @@ class TwinCameraClient:
 
     def __init__(self, address: TwinAddress) -> None:
         self._link = TwinLink(address)
+        self._frames = TwinLink(address)
         self._index: int | None = 0
 
     def identify(self) -> dict[str, Any]:
@@ -40,9 +41,18 @@ class TwinCameraClient:
     def expose(self, exposure_ms: float, label: Label) -> NDArray[np.uint16]:
         """The frame (rows, columns) exposed from now on, after readout.
 
-        Raises DeviceRefused (also ``stale``: begun before it was asked for), LineBroke
-        when the camera is gone, NoAnswerInTime when no frame comes, AnsweredNonsense
-        where the frame's file is not what the camera announced.
+        Raises what ``begin`` and its frame raise.
+        """
+        return self.begin(exposure_ms, label)()
+
+    def begin(self, exposure_ms: float, label: Label) -> FrameToCome:
+        """Exposes from now on; returns when that is over and the light may go.
+
+        What is returned waits for the readout and gives the frame (rows, columns); any
+        thread may call it, once. Raises DeviceRefused or LineBroke when the camera is
+        gone; the frame raises DeviceRefused (stale: begun before it was asked for),
+        NoAnswerInTime when none comes, AnsweredNonsense where its file is not what the
+        camera announced.
         """
         if self._index is None:
             self._find()
@@ -50,7 +60,7 @@ class TwinCameraClient:
         asked_s = float(self._link.ask("now"))
         try:
             said = self._link.ask(
-                "expose",
+                "begin",
                 exposure_ms=exposure_ms,
                 label=asdict(label),
                 index=self._index,
@@ -61,8 +71,12 @@ class TwinCameraClient:
                 raise DeviceRefused("camera", "declined", error.detail) from None
             self._index = None
             raise LineBroke("camera", "exposing", "it is gone") from None
+        return lambda: self._fetch(int(said["exposure"]), asked_s)
+
+    def _fetch(self, exposure: int, asked_s: float) -> NDArray[np.uint16]:
+        said = self._frames.ask("fetch", exposure=exposure)
         if not said["file"]:
-            raise NoAnswerInTime("camera", "expose", timeout_s)
+            raise NoAnswerInTime("camera", "expose", ANSWER_TIMEOUT_S)
         frame = _take_frame(
             Path(said["file"]), (said["rows"], said["columns"]), said["crc32"]
         )
@@ -73,8 +87,9 @@ class TwinCameraClient:
         return frame
 
     def close(self) -> None:
-        """Closes the connection; the camera goes on."""
+        """Closes the connections; the camera goes on."""
         self._link.close()
+        self._frames.close()
 
     def _find(self) -> None:
         for index in range(MOST_INDICES):
@@ -92,7 +107,7 @@ def _take_frame(path: Path, shape: tuple[int, int], crc32: int) -> NDArray[np.ui
         data = path.read_bytes()
         path.unlink()
     except OSError as error:
-        raise LineBroke(str(path), "fetching a frame", error) from error
+        raise LineBroke("camera", f"fetching {path}", error) from error
     if len(data) != 2 * shape[0] * shape[1] or zlib.crc32(data) != crc32:
         why = f"{len(data)} bytes are not the announced frame {shape}"
         raise AnsweredNonsense("camera", data[:16], why)

@@ -5,8 +5,9 @@ tell them apart. Angles in degrees, times in seconds, frames as uint16 arrays
 (row, column) in digital numbers.
 """
 
+from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any, Protocol
+from typing import Any, Protocol, runtime_checkable
 
 import numpy as np
 from numpy.typing import NDArray
@@ -66,6 +67,10 @@ class BenchReading:
     power_mw: float | None = None
 
 
+FrameToCome = Callable[[], NDArray[np.uint16]]
+"""Waits for the readout and gives the frame; raises DriverError."""
+
+
 class BenchClock(Protocol):
     """Bench time: motion, settling, exposure. Never used for safety."""
 
@@ -96,3 +101,14 @@ class Camera(Protocol):
     def expose(self, exposure_ms: float, label: Label) -> NDArray[np.uint16]: ...
 
     def close(self) -> None: ...
+
+
+@runtime_checkable
+class ReadsOutLater(Protocol):
+    """A camera that says when its exposure is over, before it has read out.
+
+    Only where all pixels end their exposure at once: from then on the light may go and
+    the stage may turn. The next exposure waits until the camera is free.
+    """
+
+    def begin(self, exposure_ms: float, label: Label) -> FrameToCome: ...

@@ -21,12 +21,16 @@ class BenchTime:
         """The bench time."""
         return self._offset_s + (time.monotonic() if self._real else 0.0)
 
-    def wait_until(self, begun_s: float, seconds: float) -> float:
-        """Lets pass what is left of ``seconds`` since the bench time ``begun_s``.
+    @property
+    def is_real(self) -> bool:
+        """Whether it runs with the monotonic clock."""
+        return self._real
 
-        In rehearsal nothing else has passed meanwhile.
-        """
-        return self.wait(max(0.0, begun_s + seconds - self.now_s()))
+    def wait_until(self, bench_s: float) -> None:
+        """Lets pass what is left until ``bench_s``."""
+        left_s = bench_s - self.now_s()
+        if left_s > 0.0:
+            self.wait(left_s)
 
     def wait(self, seconds: float) -> float:
         """Lets ``seconds`` (0 or more) pass; returns the bench time then."""

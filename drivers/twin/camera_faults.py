@@ -18,12 +18,12 @@ class NoFrame(Exception):
 class Exposed:
     """A frame (rows, columns) in digital numbers and the bench time it began at.
 
-    ``left_s`` of bench time must pass before it may be handed over.
+    It may be handed over from the bench time ``ready_s`` on.
     """
 
     frame: NDArray[np.uint16]
     began_s: float
-    left_s: float = 0.0
+    ready_s: float = 0.0
 
 
 class CameraFaults:

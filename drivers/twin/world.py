@@ -12,14 +12,12 @@ from pitchsweep.configs.bench_model import Bench
 from pitchsweep.drivers.devices import AirReading, BenchReading, Label, SpotReading
 from pitchsweep.drivers.twin.bench_sensors import read_air, read_power_mw
 from pitchsweep.drivers.twin.bench_time import BenchTime
-from pitchsweep.drivers.twin.camera_faults import CameraFaults, Exposed, NoFrame
+from pitchsweep.drivers.twin.camera_readout import Exposing, TwinCamera
 from pitchsweep.drivers.twin.effects import LaserState
 from pitchsweep.drivers.twin.emission_unit import EmissionUnit
 from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
 from pitchsweep.drivers.twin.kept_state import KeptState, read_state, write_state
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
-from pitchsweep.drivers.twin.photons_door import render
-from pitchsweep.drivers.twin.prepared_frames import PreparedFrames
 from pitchsweep.drivers.twin.spots_door import spots
 from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics
 from pitchsweep.drivers.twin.truth import Truth, twin_settings
@@ -68,9 +66,7 @@ class World:
         self._seat = Seat(0, 0.0)
         self._laser = LaserState(kept.laser_shift_pm, kept.laser_power)
         self._out = False
-        prepared = settings.frames == "prepared"
-        self._prepared = PreparedFrames(truth, bench) if prepared else None
-        self._camera_faults = CameraFaults(bench.camera)
+        self.camera = TwinCamera(truth, bench, self.time)
         faults.go_on_from(kept.seen)
 
     # The stage, as its firmware sees it. Angles are readings.
@@ -191,53 +187,44 @@ class World:
         )
         return [*seen, STRAY] if does == "stray-spot" else seen
 
-    def expose(self, exposure_ms: float, label: Label) -> Exposed:
-        """A frame exposed from now on; bench time passes for exposure and readout.
+    def begin_exposure(self, exposure_ms: float, label: Label) -> Exposing:
+        """Exposes from now on and returns when that is over; readout is not.
 
         Light that is not there from the first to the last moment gives a dark frame;
-        a stage that turns meanwhile smears. Raises ValueError where the camera
-        refuses, NoFrame where none comes.
+        a stage that turns meanwhile smears. In rehearsal the readout has passed too,
+        so that bench time never depends on who asks for what first. Raises ValueError
+        where the camera refuses.
         """
         fault = self._faults.due("exposure")
         does = "" if fault is None else fault.does
-        self._camera_faults.before(does)
+        self.camera.before(does)
+        self.camera.wait_until_free()
+        exposure_s = exposure_ms * 1e-3
         with self._lock:
             seat = self._seat
             start_s = self.time.now_s()
             start_deg = self._stage.table_deg(start_s)
-            end_deg = self._stage.table_deg(start_s + exposure_ms * 1e-3)
+            end_deg = self._stage.table_deg(start_s + exposure_s)
             lit = self.unit.is_lit()
             light = self._light_fault() if lit else ""
-        taking_s = exposure_ms * 1e-3 + self.bench.camera.readout_s
-        if self._prepared is not None:
-            frame = self._prepared.frame(
-                _seated(label, seat),
-                exposure_ms=exposure_ms,
-                light_on=lit,
-                stage_deg=start_deg,
-                mount_deg=seat.mount_deg,
-            )
-            return Exposed(frame, start_s, left_s=taking_s)
-        self.wait(taking_s)
-        if does == "no-frame":
-            raise NoFrame("no frame came from the camera")
+            laser_state = self._laser
+        readout_s = self.bench.camera.readout_s
+        self.wait(exposure_s if self.time.is_real else exposure_s + readout_s)
         lit = lit and self.unit.is_lit() and light not in ("dropout", "blocked")
-        frame = render(
-            self.truth,
-            self.bench,
-            _seated(label, seat),
+        exposing = Exposing(
+            label=_seated(label, seat),
             exposure_ms=exposure_ms,
-            light_on=lit,
+            lit=lit,
             stage_deg=start_deg,
-            mount_deg=seat.mount_deg,
             motion_deg=end_deg - start_deg,
-            laser_state=self._laser,
+            mount_deg=seat.mount_deg,
+            laser_state=laser_state,
+            does=does,
+            began_s=start_s,
+            ready_s=start_s + exposure_s + readout_s,
         )
-        return self._camera_faults.after(does, Exposed(frame, start_s))
-
-    def camera_index(self) -> int:
-        """Under which index the camera is found; another one after it was gone."""
-        return self._camera_faults.index
+        self.camera.exposed(exposing)
+        return exposing
 
     def _light_fault(self) -> str:
         """What goes wrong with the light at this look at the screen, if anything."""

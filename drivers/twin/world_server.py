@@ -20,13 +20,16 @@ from typing import Any
 import numpy as np
 
 from pitchsweep.drivers.devices import Label
-from pitchsweep.drivers.twin.camera_faults import NoFrame
+from pitchsweep.drivers.twin.camera_faults import Exposed, NoFrame
+from pitchsweep.drivers.twin.camera_readout import Exposing
 from pitchsweep.drivers.twin.world import World
 
 LONGEST_LINE_BYTES = 65536
 SHARED_MEMORY = Path("/dev/shm")
 
 NO_CAMERA = "no camera"
+MOST_UNFETCHED = 4
+"""Exposures that may wait to be fetched."""
 
 Message = dict[str, Any]
 
@@ -83,6 +86,9 @@ class WorldAsks:
         self.spool = spool
         self._world = world
         self._frames = 0
+        self._exposures = 0
+        self._exposed: dict[int, Exposing] = {}
+        self._reading_out = threading.Lock()
         self._lock = threading.Lock()
         self._asks: dict[str, Callable[[Message], Any]] = {
             "now": lambda m: world.time.now_s(),
@@ -98,7 +104,8 @@ class WorldAsks:
             "person": lambda m: world.ask_person(str(m["what"])),
             "spots": self._spots,
             "camera": self._camera,
-            "expose": self._expose,
+            "begin": self._begin,
+            "fetch": self._fetch,
         }
 
     def answer(self, message: Message) -> Message:
@@ -122,7 +129,7 @@ class WorldAsks:
 
     def _check_index(self, message: Message) -> None:
         index = int(message.get("index", 0))
-        if index != self._world.camera_index():
+        if index != self._world.camera.index:
             raise ValueError(f"{NO_CAMERA} at index {index}")
 
     def _camera(self, message: Message) -> Message:
@@ -135,22 +142,37 @@ class WorldAsks:
             "bits": camera.bits,
         }
 
-    def _expose(self, message: Message) -> Message:
+    def _begin(self, message: Message) -> Message:
+        """Answers when the exposure is over; its frame is fetched by the number."""
         self._check_index(message)
-        try:
-            taken = self._world.expose(float(message["exposure_ms"]), _label(message))
-        except NoFrame:
-            return {"file": ""}
+        exposure_ms = float(message["exposure_ms"])
+        exposing = self._world.begin_exposure(exposure_ms, _label(message))
         self._check_index(message)
-        frame = taken.frame
-        data = np.ascontiguousarray(frame, dtype="<u2").tobytes()
+        with self._lock:
+            self._exposures += 1
+            self._exposed[self._exposures] = exposing
+            # What nobody fetched is lost: a client that was killed asks no more.
+            self._exposed.pop(self._exposures - MOST_UNFETCHED, None)
+            return {"exposure": self._exposures, "began_s": exposing.began_s}
+
+    def _fetch(self, message: Message) -> Message:
+        with self._lock:
+            exposing = self._exposed.pop(int(message["exposure"]))
+        with self._reading_out:
+            try:
+                taken = self._world.camera.read_out(exposing)
+            except NoFrame:
+                return {"file": ""}
+        return self._hand_over(taken)
+
+    def _hand_over(self, taken: Exposed) -> Message:
+        frame = np.ascontiguousarray(taken.frame, dtype="<u2")
         with self._lock:
             self._frames += 1
             path = self.spool / f"frame-{self._frames:06d}.raw"
-        path.write_bytes(data)
-        crc32 = zlib.crc32(data)
-        if taken.left_s > 0.0:
-            self._world.time.wait_until(taken.began_s, taken.left_s)
+        path.write_bytes(frame.data)
+        crc32 = zlib.crc32(frame.data)
+        self._world.time.wait_until(taken.ready_s)
         return {
             "file": str(path),
             "rows": int(frame.shape[0]),

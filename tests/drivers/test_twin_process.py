@@ -31,10 +31,16 @@ def twin(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Clients]:
     with running_twin(tmp_path_factory.mktemp("twin")) as clients:
         clients.stage.home()
         yield clients
-        spool = Path(clients.camera._link.ask("expose", **EXPOSURE)["file"]).parent
+        spool = _unfetched_frame(clients).parent
         assert spool.exists()
     assert not spool.exists()
     assert clients.handle.process.returncode == 0
+
+
+def _unfetched_frame(clients: Clients) -> Path:
+    link = clients.camera._link
+    begun = link.ask("begin", **EXPOSURE)
+    return Path(link.ask("fetch", exposure=begun["exposure"])["file"])
 
 
 def test_it_is_a_process_in_a_session_of_its_own(twin: Clients) -> None:
@@ -116,10 +122,25 @@ def test_a_turning_stage_smears(twin: Clients) -> None:
     assert (smeared > threshold).sum() > 1.2 * (still > threshold).sum()
 
 
+def test_a_frame_read_out_later_shows_what_was_there_when_it_was_exposed(
+    twin: Clients,
+) -> None:
+    twin.stage.move_to(9.0)
+    twin.world.seat_part(0, 0.0)
+    twin.unit.keep_lit()
+    whole = twin.camera.expose(5.0, label(4))
+    twin.unit.keep_lit()
+    to_come = twin.camera.begin(5.0, label(4))
+    assert not twin.unit.dark().light_on
+    twin.stage.move_to(14.0)
+    twin.world.seat_part(1, 90.0)
+    assert np.array_equal(to_come(), whole)
+
+
 def test_frames_do_not_pile_up(twin: Clients) -> None:
-    said = twin.camera._link.ask("expose", **EXPOSURE)
-    spool = Path(said["file"]).parent
-    Path(said["file"]).unlink()
+    unfetched = _unfetched_frame(twin)
+    spool = unfetched.parent
+    unfetched.unlink()
     twin.camera.expose(1.0, label(3))
     assert list(spool.iterdir()) == []
 
@@ -167,7 +188,8 @@ def test_questions_that_make_no_sense_are_refused_in_words(twin: Clients) -> Non
         ("dance", {}),
         ("wait", {}),
         ("wait", {"seconds": "x"}),
-        ("expose", {"exposure_ms": 1.0, "label": 3}),
+        ("begin", {"exposure_ms": 1.0, "label": 3}),
+        ("fetch", {"exposure": 77}),
     ):
         with pytest.raises(DeviceRefused, match=ask):
             link.ask(ask, **fields)
