@@ -1,4 +1,6 @@
-"""The verbs of people: ``signer``, ``signoff``, ``ledger``. Parses, calls, prints.
+"""The verbs of people: ``signer``, ``attend``, ``signoff``, ``ledger``.
+
+Parses, calls, prints.
 
 Passphrases are typed, or read from a file that only its owner may read; never from
 the command line, where every other user could see them.
@@ -114,6 +116,57 @@ def signoff(
         print(verbs.sign(job, options, as_json=as_json), flush=True)
 
 
+def attend(
+    job: Annotated[str, typer.Argument(help="A job file or demo:NAME.")],
+    name: Annotated[
+        str | None,
+        typer.Option(help="Who holds the key: safety officer or technician."),
+    ] = None,
+    laser: Annotated[
+        list[str] | None,
+        typer.Option(help="One of the job's lasers; several allowed, else all."),
+    ] = None,
+    step: Annotated[
+        int | None, typer.Option(min=0, help="Stand at this step of the job's plan.")
+    ] = None,
+    minutes: Annotated[
+        float, typer.Option(min=0.1, max=60.0, help="How long it lasts at most.")
+    ] = 15.0,
+    eyewear: Annotated[
+        str | None, typer.Option(help="What is worn and its density, or why none.")
+    ] = None,
+    ceiling_mw: Annotated[float, typer.Option(help="Highest power at the part.")] = 1.0,
+    ceiling_by: Annotated[
+        str | None, typer.Option(help="The safety officer who writes more than 1 mW.")
+    ] = None,
+    twin_person: Annotated[
+        bool,
+        typer.Option("--twin-person", help="The simulated person holds and reads."),
+    ] = False,
+    passphrase_file: PassphraseFile = None,
+    as_json: Json = False,
+) -> None:
+    """Give light while a key is held down, and note the power read meanwhile.
+
+    For alignment and power readings, by somebody who is there: dark 2 s after the last
+    key press, up to 60 minutes. Unattended runs need a power reading made here.
+    """
+    from pitchsweep.acquire import attend_verb as verb
+
+    options = verb.AttendOptions(
+        name=name,
+        lasers=tuple(laser or ()),
+        step=step,
+        minutes=minutes,
+        eyewear=eyewear,
+        ceiling_mw=ceiling_mw,
+        ceiling_by=ceiling_by,
+        twin_person=twin_person,
+        passphrase_files=tuple(passphrase_file or ()),
+    )
+    print(verb.attend(job, options, as_json=as_json), flush=True)
+
+
 @ledger.command("verify")
 def ledger_verify(
     places: Annotated[
@@ -139,6 +192,7 @@ def _ledger() -> None:
 def register(app: typer.Typer) -> None:
     """Adds these verbs to the command line."""
     app.add_typer(signer, name="signer")
+    app.command()(attend)
     app.command()(signoff)
     app.add_typer(ledger, name="ledger")
 

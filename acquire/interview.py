@@ -31,6 +31,12 @@ from pitchsweep.safety.checklist import (
 )
 from pitchsweep.safety.ledger import utc_text
 from pitchsweep.safety.people_ledger import People
+from pitchsweep.safety.power_readings import (
+    attended_answers,
+    latest_readings,
+    reading_in_words,
+    takes_attended_powers,
+)
 from pitchsweep.safety.safety_errors import CAUTION, GateRefused
 from pitchsweep.safety.shown_figures import beam_map_shown, figures_shown
 from pitchsweep.safety.sign_off_making import Work, part_in_words, window_utc_s
@@ -86,7 +92,7 @@ def ask_all(interview: Interview, ask: Ask = ask_at_terminal) -> Answers:
     for number, (name, item) in enumerate(items.items(), start=1):
         head = f"[{number}/{len(items)}] {name}"
         able = [s.name for s in signers if s.role in item.answered_by]
-        asking = Asking(interview.work, name, item, able, last_day)
+        asking = Asking(interview.work, name, item, able, last_day, interview.people)
         answered[name] = _ask_item(head, asking, ask)
     say()
     say(f"signing: {', '.join(f'{s.name} as {s.role}' for s in signers)}")
@@ -104,6 +110,7 @@ class Asking:
     item: Item
     able: list[str]
     last_day: str
+    people: People
 
 
 def _show(interview: Interview) -> None:
@@ -190,6 +197,10 @@ def _ask_item(head: str, asking: Asking, ask: Ask) -> ItemAnswer:
         why = why_answer_will_not_do(item, answer, asking.work.job, asking.last_day)
         if why is None:
             return answer
+        if takes_attended_powers(item):
+            raise GateRefused(
+                f"{NOT_SIGNED}item '{asking.name}': {why}", "read it again: attend JOB"
+            )
         say(f"  will not do: {why}")
 
 
@@ -207,11 +218,21 @@ def _ask_once(asking: Asking, ask: Ask) -> ItemAnswer:
         values["by"] = _one_of(asking.able, "  who says so", ask)
     if item.asks is not None:
         values["words"] = ask(f"  {item.asks}", "") or None
-    values["readings"] = tuple(
-        _ask_reading(asking, of, upper, ask)
-        for of, upper in readings_wanted(item, asking.work.job)
-    )
+    values["readings"] = _readings(asking, ask)
     return _valid(ItemAnswer, values, lambda: _ask_once(asking, ask))
+
+
+def _readings(asking: Asking, ask: Ask) -> tuple[ReadingAnswer, ...]:
+    """What is read off now; powers were read under an attended permit already."""
+    job = asking.work.job
+    if takes_attended_powers(asking.item):
+        for laser, reading in latest_readings(job, asking.people).items():
+            say(f"  {laser}: {reading_in_words(reading)}")
+        return attended_answers(job, asking.people)
+    return tuple(
+        _ask_reading(asking, of, upper, ask)
+        for of, upper in readings_wanted(asking.item, job)
+    )
 
 
 def _ask_reading(

@@ -23,7 +23,12 @@ from pitchsweep.safety.run_refusals import refuse_unsafe
 from pitchsweep.safety.safety_errors import CAUTION, GateRefused, SignerRefused
 from pitchsweep.safety.safety_home import SafetyHome, safety_home
 from pitchsweep.safety.sign_off import LedgerMark, Statement
-from pitchsweep.safety.sign_off_making import Moment, Work, statement_of
+from pitchsweep.safety.sign_off_making import (
+    Moment,
+    Work,
+    refuse_unread_powers,
+    statement_of,
+)
 from pitchsweep.safety.sign_off_store import (
     Judged,
     Kept,
@@ -66,7 +71,7 @@ def sign(place: str, options: SigningOptions, *, as_json: bool) -> str:
     now = read_people(home)
     _refuse_empty(now)
     work = work_for(job, plan, _absolute(options.checklist))
-    answers = _answers(work, now, home, options)
+    answers = _answers(work, now, home, options, place)
     statement = _statement(work, answers, now)
     keys = _keys(home, answers, options)
     kept = sign_and_keep(home, statement, keys)
@@ -172,7 +177,7 @@ def _refuse_empty(now: PeopleNow) -> None:
 
 
 def _answers(
-    work: Work, now: PeopleNow, home: SafetyHome, options: SigningOptions
+    work: Work, now: PeopleNow, home: SafetyHome, options: SigningOptions, place: str
 ) -> Answers:
     if options.answers is not None:
         return read_answers(options.answers)
@@ -180,6 +185,8 @@ def _answers(
         raise GateRefused(
             "an interview needs a terminal", "or give the answers with --answers FILE"
         )
+    # Told before anybody has answered twenty questions; the window comes later.
+    refuse_unread_powers(work, now.people, time.time(), time.time(), place)
     return ask_all(Interview(work, now.people, _pictures(home, work.job)))
 
 

@@ -34,8 +34,9 @@ class Reading(Settings):
     """A number that somebody reads off; both limits belong to what is allowed.
 
     ``each_laser`` asks once for every laser of the job, otherwise once. A limit
-    ``not_above: laser-power`` is the bench file's ``power_mw``, on which the hazard
-    figures rest. ``with_meter`` asks for the instrument and its due date.
+    ``not_above: laser-power`` is the bench file's power at full drive, on which the
+    hazard figures rest; such readings are those made under an attended permit and are
+    taken from the ledger. ``with_meter`` asks for the instrument and its due date.
     """
 
     unit: Literal["mW", "uW", "nm", "mm", "min", "s", "lx"]
@@ -92,12 +93,14 @@ class Signature(Settings):
 class Checklist(Settings):
     """The items and the policy: who signs, and for how long at most.
 
-    Every signature that applies is given by another person.
+    Every signature that applies is given by another person. ``longest_power_age_days``:
+    how old the power readings of an unattended run may be.
     """
 
     checklist: Name
     note: Text | None = None
     longest_window_h: Annotated[float, Field(gt=0.0, le=96.0)] = 24.0
+    longest_power_age_days: Annotated[float, Field(gt=0.0, le=366.0)] = 30.0
     signatures: Annotated[tuple[Signature, ...], Field(min_length=1, max_length=4)]
     items: Annotated[dict[Name, Item], Field(min_length=1, max_length=100)]
 

@@ -41,6 +41,10 @@ class TwinWorldClient:
             air=None if air is None else AirReading(**air), power_mw=said["power_mw"]
         )
 
+    def read_meter(self, laser: str) -> float:
+        """What a meter where the part sits shows now, in mW; 0 in the dark."""
+        return float(self._link.ask("meter", laser=laser))
+
     def ask_person(self, what: str) -> str:
         """The person on the spot does what they are asked; who it was."""
         return str(self._link.ask("person", what=what))

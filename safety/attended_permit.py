@@ -17,6 +17,8 @@ LONGEST_S = 3600.0
 HOLD_S = 2.0
 POWER_CEILING_MW = 1.0
 HIGHEST_CEILING_MW = 500.0
+MAY_HOLD = ("safety-officer", "technician")
+"""Who may hold an attended permit: a witness may not."""
 
 
 @dataclass(frozen=True)
@@ -25,7 +27,8 @@ class AttendedPermit:
 
     ``role`` is the role in which the holder acts, ``eyewear`` the answer given to the
     eyewear item, ``ceiling_by`` the officer who wrote a ceiling above 1 mW. ``key`` is
-    set on a twin, which must then prove itself as for a rehearsal.
+    set on a twin, which must then prove itself as for a rehearsal. ``identifier`` and
+    ``people_ledger`` say where the holder's signature stands: the guard looks.
     """
 
     kind: ClassVar[str] = "attended"
@@ -36,6 +39,8 @@ class AttendedPermit:
     valid_until_utc_s: float
     power_ceiling_mw: float = POWER_CEILING_MW
     ceiling_by: str = ""
+    identifier: str = ""
+    people_ledger: str = ""
     key: bytes | None = field(default=None, repr=False)
 
     def __post_init__(self) -> None:
@@ -63,7 +68,7 @@ def attended_as_mapping(permit: AttendedPermit) -> dict[str, object]:
 
 def attended_from_mapping(values: Mapping[str, object]) -> AttendedPermit:
     """The permit in ``values``; ValueError names what is wrong."""
-    key, by = values.get("key"), values.get("ceiling_by")
+    key = values.get("key")
     return AttendedPermit(
         holder=text(values, "holder"),
         role=text(values, "role"),
@@ -71,9 +76,17 @@ def attended_from_mapping(values: Mapping[str, object]) -> AttendedPermit:
         valid_from_utc_s=number(values, "valid_from_utc_s"),
         valid_until_utc_s=number(values, "valid_until_utc_s"),
         power_ceiling_mw=number(values, "power_ceiling_mw"),
-        ceiling_by=by if isinstance(by, str) else "",
+        ceiling_by=_words(values, "ceiling_by"),
+        identifier=_words(values, "identifier"),
+        people_ledger=_words(values, "people_ledger"),
         key=bytes.fromhex(key) if isinstance(key, str) else None,
     )
+
+
+def _words(values: Mapping[str, object], key: str) -> str:
+    """Text that may be empty."""
+    value = values.get(key)
+    return value if isinstance(value, str) else ""
 
 
 def why_hold_is_released(pressed_s: float, now_s: float) -> str | None:

@@ -14,6 +14,15 @@ from dataclasses import dataclass, field, replace
 from types import MappingProxyType
 from typing import TypeVar
 
+from pitchsweep.safety.attended_entries import (
+    ATTENDED_BEGUN,
+    ATTENDED_ENDED,
+    POWER_READ,
+    Attended,
+    PowerReading,
+    attended_begun,
+    power_read,
+)
 from pitchsweep.safety.ledger_chain import Entry, Judge
 from pitchsweep.safety.signing import ENTRY, signature_holds
 
@@ -67,13 +76,15 @@ class Entered:
 class People:
     """Where the people's ledger stands after some entry.
 
-    ``signers`` by name, ``sign_offs`` by identifier, ``runs`` run -> what its end
-    entry holds.
+    ``signers`` by name, ``sign_offs`` and ``attended`` by identifier, ``powers`` read
+    in their order, ``runs`` run -> what its end entry holds.
     """
 
     signers: Mapping[str, Signer] = field(default_factory=dict)
     sign_offs: Mapping[str, Entered] = field(default_factory=dict)
     runs: Mapping[str, Mapping[str, object]] = field(default_factory=dict)
+    attended: Mapping[str, Attended] = field(default_factory=dict)
+    powers: tuple[PowerReading, ...] = ()
 
     def signer_of(self, key: str) -> Signer | None:
         """The signer with this public key, revoked or not."""
@@ -172,6 +183,42 @@ def _withdrawn(people: People, entry: Entry) -> People:
     return replace(people, sign_offs=_with(people.sign_offs, identifier, gone))
 
 
+def _attended_begun(people: People, entry: Entry) -> People:
+    by = _keys_that_signed(entry)
+    holder = people.signer_of(by[0]) if by else None
+    if holder is None or not holder.active or holder.name != _text(entry, "name"):
+        raise ValueError("gives an attended permit without its holder's signature")
+    officer = _active_officer(people, by)
+    begun = attended_begun(
+        entry,
+        key=holder.key,
+        roles=holder.roles,
+        officer="" if officer is None else officer.name,
+    )
+    if begun.id in people.attended:
+        raise ValueError(f"begins attended permit {begun.id} a second time")
+    return replace(people, attended=_with(people.attended, begun.id, begun))
+
+
+def _power_read(people: People, entry: Entry) -> People:
+    by, found = _keys_that_signed(entry), people.attended.get(_text(entry, "attended"))
+    if found is None:
+        raise ValueError("reads a power under no attended permit")
+    holder = people.signer_of(found.key)
+    if by != (found.key,) or holder is None or not holder.active:
+        raise ValueError("reads a power without the signature of who held the key")
+    return replace(people, powers=(*people.powers, power_read(entry, found)))
+
+
+def _attended_ended(people: People, entry: Entry) -> People:
+    _unchanged(people, entry)
+    found = people.attended.get(_text(entry, "id"))
+    if found is None or found.ended:
+        raise ValueError("ends an attended permit that did not last")
+    over = replace(found, ended=_text(entry, "ending"))
+    return replace(people, attended=_with(people.attended, over.id, over))
+
+
 def _run_ended(people: People, entry: Entry) -> People:
     run = _text(entry, "run")
     _unchanged(people, entry)
@@ -190,6 +237,9 @@ _BY_KIND: Mapping[str, Callable[[People, Entry], People]] = MappingProxyType(
         REVOKED: _revoked,
         SIGNED_OFF: _signed_off,
         WITHDRAWN: _withdrawn,
+        ATTENDED_BEGUN: _attended_begun,
+        POWER_READ: _power_read,
+        ATTENDED_ENDED: _attended_ended,
         RUN_BEGUN: _unchanged,
         RUN_ENDED: _run_ended,
         REPAIRED: _unchanged,

@@ -9,6 +9,7 @@
     sign-offs/ID.json signed records
     revoked/          a file for each sign-off and each key that counts no more
     door-sheets/      one page for the door, for each sign-off
+    attended/ID/      the guard's ledger of each attended permit (and its twin's files)
 
 Every run besides keeps its guard's own ledger; its count and head are entered into the
 people's ledger when the run ends.
@@ -55,6 +56,10 @@ class SafetyHome:
     def revoked(self, what: str) -> Path:
         """The file whose presence revokes a sign-off's identifier or a public key."""
         return self.folder / "revoked" / what
+
+    def attended(self, identifier: str) -> Path:
+        """The folder of the attended permit with this identifier."""
+        return self.folder / "attended" / identifier
 
     def key(self, name: str) -> Path:
         """Where the private key of ``name`` is."""

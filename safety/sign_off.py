@@ -12,7 +12,7 @@ from datetime import UTC, datetime
 
 from pitchsweep.safety.ledger_chain import Signed, canonical_json
 
-FORMAT = "pitchsweep sign-off 1"
+FORMAT = "pitchsweep sign-off 2"
 LONGEST_RECORD = 1024 * 1024
 
 
@@ -43,7 +43,8 @@ class Statement:
     it is bound to; ``work_sha256`` covers unit and permitted angles as the guard gets
     them; ``checklist`` is where the checklist was read; ``figures`` and ``beam_map``
     are the lines that the signers were shown; ``lasers`` what the door sheet says of
-    each; ``answers`` item -> what was stated and answered; ``contacts`` role on the
+    each; ``powers`` the power at the part of each as read under an attended permit;
+    ``answers`` item -> what was stated and answered; ``contacts`` role on the
     door sheet -> words; ``ledger`` where the people's ledger stood.
     """
 
@@ -64,6 +65,7 @@ class Statement:
     figures: tuple[str, ...]
     beam_map: tuple[str, ...]
     lasers: tuple[Mapping[str, object], ...]
+    powers: tuple[Mapping[str, object], ...]
     answers: Mapping[str, Mapping[str, object]]
     contacts: Mapping[str, str]
     ledger: LedgerMark
@@ -138,12 +140,12 @@ def _statement(values: Mapping[str, object]) -> Statement:
         odd = ", ".join(sorted(set(values) ^ names))
         raise ValueError(f"its statement has other fields than it should: {odd}")
     whole: dict[str, object] = dict(values)
-    for name in ("signers", "needed", "figures", "beam_map", "lasers"):
+    for name in ("signers", "needed", "figures", "beam_map", "lasers", "powers"):
         if not isinstance(whole[name], list):
             raise TypeError(f"{name} is no list")
     whole["signers"] = tuple(SignsAs(**_texts(s)) for s in _list(whole, "signers"))
     whole["needed"] = tuple(tuple(roles) for roles in _list(whole, "needed"))
-    for name in ("figures", "beam_map", "lasers"):
+    for name in ("figures", "beam_map", "lasers", "powers"):
         whole[name] = tuple(_list(whole, name))
     whole["ledger"] = _mark(whole["ledger"])
     for name in ("settings", "answers", "contacts"):

@@ -52,6 +52,7 @@ def why_not_in_force(record: SignOff, people: People, utc_s: float) -> str | Non
     return (
         _why_not_entered(record, people)
         or _why_signers_do_not_count(record, people)
+        or why_powers_do_not_count(record, people)
         or why_outside_window(record, utc_s)
     )
 
@@ -64,6 +65,41 @@ def why_outside_window(record: SignOff, utc_s: float) -> str | None:
         return f"it is not valid yet: it begins {statement.valid_from}"
     if not utc_s < end:
         return f"it has expired: it ended {statement.valid_until}"
+    return None
+
+
+def why_powers_do_not_count(record: SignOff, people: People) -> str | None:
+    """None when the power of every laser was read under an attended permit.
+
+    Each reading must be the ledger's own, its reader not revoked, and none made since
+    may be above what was signed for.
+    """
+    statement = record.statement
+    lasers = [str(laser["laser"]) for laser in statement.lasers]
+    if sorted(lasers) != sorted(str(power["laser"]) for power in statement.powers):
+        return "not every laser has a power reading made under an attended permit"
+    for power in statement.powers:
+        laser, most_mw = str(power["laser"]), power["highest_allowed_mw"]
+        of_it = [
+            reading
+            for reading in people.powers
+            if (reading.bench, reading.simulated, reading.laser)
+            == (statement.bench, statement.simulated, laser)
+        ]
+        own = next((r for r in of_it if r.hash == power["hash"]), None)
+        if own is None or (own.n, own.value_mw) != (power["entry"], power["value_mw"]):
+            return f"the people's ledger has no such power reading of laser '{laser}'"
+        reader = people.signer_of(own.key)
+        if reader is None or not reader.active:
+            return f"the power of laser '{laser}' was read by '{own.by}', now revoked"
+        if not isinstance(most_mw, int | float):
+            return f"it does not say how much power laser '{laser}' may have"
+        above = [r for r in of_it if r.n >= own.n and not r.value_mw <= most_mw]
+        if above:
+            return (
+                f"laser '{laser}' was read at {above[0].value_mw:g} mW on"
+                f" {above[0].utc}, above the {most_mw:g} mW that it may have"
+            )
     return None
 
 

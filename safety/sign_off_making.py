@@ -7,6 +7,7 @@ from pitchsweep.configs.checklist_model import Checklist
 from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.part_model import Part
 from pitchsweep.configs.safety_settings import bound_settings, settings_sha256
+from pitchsweep.configs.typed_command import typed
 from pitchsweep.safety import sign_off
 from pitchsweep.safety.checklist import (
     answers_as_signed,
@@ -19,6 +20,12 @@ from pitchsweep.safety.checklist import (
 )
 from pitchsweep.safety.ledger import utc_text
 from pitchsweep.safety.people_ledger import People
+from pitchsweep.safety.power_readings import (
+    Needed,
+    powers_as_signed,
+    why_power_is_unknown,
+    with_attended_powers,
+)
 from pitchsweep.safety.safety_errors import GateRefused, SignerRefused
 from pitchsweep.safety.shown_figures import beam_map_shown, figures_shown, lasers_shown
 from pitchsweep.safety.sign_off import LedgerMark, Statement, utc_seconds
@@ -53,7 +60,8 @@ def statement_of(work: Work, answers: Answers, moment: Moment) -> Statement:
     """The statement to be signed.
 
     Raises SignerRefused for a signer who is unknown, revoked or without the role,
-    GateRefused for answers with which nobody may sign or a window out of bounds.
+    GateRefused for answers with which nobody may sign, a window out of bounds, or a
+    power that nobody read under an attended permit.
     """
     job, checklist = work.job, work.checklist
     here = circumstances_of(job)
@@ -62,6 +70,13 @@ def statement_of(work: Work, answers: Answers, moment: Moment) -> Statement:
     needed = signatures_needed(checklist, here)
     _refuse_people(needed, signers)
     start_s, end_s = window_utc_s(answers, checklist, moment.utc_s)
+    refuse_unread_powers(work, moment.people, moment.utc_s, end_s)
+    try:
+        answers = with_attended_powers(answers, items, job, moment.people)
+    except ValueError as error:
+        raise GateRefused(
+            f"not signed: {error}", "leave it out of the answers, or read it again"
+        ) from None
     flaws = flaws_of(answers, items, job, utc_text(end_s)[:10])
     if flaws:
         raise GateRefused(
@@ -86,10 +101,27 @@ def statement_of(work: Work, answers: Answers, moment: Moment) -> Statement:
         figures=figures_shown(job),
         beam_map=beam_map_shown(job),
         lasers=lasers_shown(job),
+        powers=powers_as_signed(job, moment.people),
         answers=answers_as_signed(answers, items, job),
         contacts=contacts_of(answers, items),
         ledger=moment.ledger,
     )
+
+
+def refuse_unread_powers(
+    work: Work, people: People, now_utc_s: float, end_utc_s: float, place: str = "JOB"
+) -> None:
+    """GateRefused unless every laser's power was read under an attended permit.
+
+    ``place`` is what the job was called by.
+    """
+    needed = Needed(work.job, work.checklist, now_utc_s, utc_text(end_utc_s)[:10])
+    why = why_power_is_unknown(needed, people)
+    if why is not None:
+        raise GateRefused(
+            f"not signed: {why}",
+            f"read it first: {typed('attend', place)}",
+        )
 
 
 def part_in_words(part: Part) -> str:

@@ -17,13 +17,21 @@ from pitchsweep.configs.answers_model import Answers, ItemAnswer, ReadingAnswer,
 from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.reader import read_job
+from pitchsweep.safety.attended_entries import (
+    ATTENDED_BEGUN,
+    ATTENDED_ENDED,
+    POWER_READ,
+)
 from pitchsweep.safety.checklist import (
     circumstances_of,
     items_that_apply,
     readings_wanted,
 )
+from pitchsweep.safety.hazard_figures import full_drive_mw
+from pitchsweep.safety.ledger import utc_text
 from pitchsweep.safety.ledger_chain import canonical_json, entry_hash
-from pitchsweep.safety.people_store import read_people
+from pitchsweep.safety.people_store import enter, read_people
+from pitchsweep.safety.power_readings import latest_readings
 from pitchsweep.safety.safety_home import SafetyHome
 from pitchsweep.safety.sign_off import LedgerMark, Statement
 from pitchsweep.safety.sign_off_making import Moment, Work, statement_of
@@ -126,8 +134,58 @@ def good_answers(work: Work, *signers: tuple[str, str], **more: Any) -> Answers:
     return Answers.model_validate(values)
 
 
+def attended_begun(at: Office, job: Job, **changes: Any) -> dict[str, Any]:
+    """What an attended permit of the officer's for ``job`` says in the ledger."""
+    bench = job.bench
+    return {
+        "id": new_identifier(),
+        "name": OFFICER,
+        "role": "safety-officer",
+        "bench": bench.bench,
+        "unit": bench.emission.unit_identity,
+        "simulated": bench.twin is not None,
+        "job": job.job,
+        "lasers": list(job.recipe.lasers),
+        "eyewear": "density 2, worn",
+        "ceiling_mw": 5.0,
+        "valid_until": utc_text(time.time() + 600.0),
+        **changes,
+    }
+
+
+def power_read(job: Job, laser: str, attended: str, **changes: Any) -> dict[str, Any]:
+    """What a power reading of ``laser`` says: half of its full drive."""
+    settings = job.bench.lasers[laser]
+    return {
+        "attended": attended,
+        "laser": laser,
+        "wavelength_nm": settings.vacuum_wavelength_nm,
+        "value_mw": 0.5 * full_drive_mw(settings),
+        "meter": "m 1",
+        "meter_due": "2999-01-01",
+        "lit_s": 2.0,
+        **changes,
+    }
+
+
+def with_powers(at: Office, job: Job, **changes: Any) -> Office:
+    """``at`` with the power of every laser of ``job`` read under a permit."""
+    read = latest_readings(job, read_people(at.home).people)
+    left = [name for name in job.recipe.lasers if name not in read or changes]
+    if left:
+        keys, begun = [at.keys[OFFICER]], attended_begun(at, job)
+        enter(at.home, ATTENDED_BEGUN, begun, keys)
+        for name in left:
+            reading = power_read(job, name, begun["id"], **changes)
+            enter(at.home, POWER_READ, reading, keys)
+        ended = {"id": begun["id"], "ending": "done", "entries": 0, "head": ""}
+        enter(at.home, ATTENDED_ENDED, ended)
+    return at
+
+
 def stated(at: Office, work: Work, answers: Answers | None = None) -> Statement:
     """The statement that ``answers`` lead to now."""
+    with_powers(at, work.job)
     now = read_people(at.home)
     moment = Moment(
         time.time(), new_identifier(), now.people, LedgerMark(now.entries, now.head)
@@ -145,6 +203,14 @@ def signed(at: Office, work: Work, answers: Answers | None = None) -> Kept:
 def verdict(at: Office, kept: Kept, work: Work, after_s: float = 0.0) -> str:
     """Why ``kept`` does not count for ``work``; empty when it does."""
     return judge(at.home, kept, work, read_people(at.home), time.time() + after_s)
+
+
+def secret(folder: Path, text: str = PASSPHRASE, name: str = "pass") -> str:
+    """A private file with a passphrase; its path."""
+    path = folder / name
+    path.write_text(text + "\n")
+    path.chmod(0o600)
+    return str(path)
 
 
 def ledger_lines(home: SafetyHome) -> list[dict[str, Any]]:

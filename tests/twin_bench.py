@@ -61,6 +61,15 @@ def small_job(speed: str = "rehearsal") -> Job:
     )
 
 
+def short_job() -> Job:
+    """The small job with five angles."""
+    job = small_job()
+    recipe = job.recipe.model_copy(
+        update={"start_deg": -20.0, "stop_deg": 20.0, "step_deg": 10.0}
+    )
+    return job.model_copy(update={"recipe": recipe})
+
+
 @contextmanager
 def running_twin(
     directory: Path, *faults: Fault, seed: int = 5, speed: str = "rehearsal"

@@ -56,12 +56,34 @@ def read_power_mw(
     laser_state: LaserState,
     lit: bool,
 ) -> float | None:
-    """Power at the part, None where no sensor is declared; 0 in the dark.
+    """What the bench's power sensor says; None where none is declared."""
+    if bench.power_sensor is None:
+        return None
+    return power_at_part_mw(
+        truth,
+        bench,
+        label,
+        stage_deg=stage_deg,
+        mount_deg=mount_deg,
+        laser_state=laser_state,
+        lit=lit,
+    )
+
+
+def power_at_part_mw(
+    truth: Truth,
+    bench: Bench,
+    label: Label,
+    *,
+    stage_deg: float,
+    mount_deg: float,
+    laser_state: LaserState,
+    lit: bool,
+) -> float:
+    """Power at the part; 0 in the dark.
 
     An order that goes back into the beam hole disturbs the laser.
     """
-    if bench.power_sensor is None:
-        return None
     if not lit:
         return 0.0
     effects = twin_settings(bench).effects

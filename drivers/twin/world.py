@@ -10,7 +10,11 @@ from pathlib import Path
 
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.drivers.devices import AirReading, BenchReading, Label, SpotReading
-from pitchsweep.drivers.twin.bench_sensors import read_air, read_power_mw
+from pitchsweep.drivers.twin.bench_sensors import (
+    power_at_part_mw,
+    read_air,
+    read_power_mw,
+)
 from pitchsweep.drivers.twin.bench_time import BenchTime
 from pitchsweep.drivers.twin.camera_readout import Exposing, TwinCamera
 from pitchsweep.drivers.twin.effects import LaserState
@@ -158,6 +162,20 @@ class World:
             )
         air = None if fault else read_air(self.truth, self.bench, planned_s)
         return BenchReading(air, power_mw)
+
+    def read_meter(self, laser: str) -> float:
+        """What a meter where the part sits shows now, in mW; no fault falls due."""
+        with self._lock:
+            now_s = self.time.now_s()
+            return power_at_part_mw(
+                self.truth,
+                self.bench,
+                Label(self._seat.mount, laser, 0, 0, 0, now_s),
+                stage_deg=self._stage.table_deg(now_s),
+                mount_deg=self._seat.mount_deg,
+                laser_state=self._laser,
+                lit=self.unit.is_lit() and not self._out,
+            )
 
     def ask_person(self, what: str) -> str:
         """The person does ``what``, which takes bench time; their name."""

@@ -101,6 +101,7 @@ class WorldAsks:
             "cut-power": lambda m: world.cut_power(),
             "air": lambda m: asdict(world.read_air()),
             "sense": self._sense,
+            "meter": lambda m: world.read_meter(str(m["laser"])),
             "person": lambda m: world.ask_person(str(m["what"])),
             "spots": self._spots,
             "camera": self._camera,

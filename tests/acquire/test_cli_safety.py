@@ -15,7 +15,9 @@ from sign_off_builders import (
     good_answers,
     ledger_lines,
     office,
+    secret,
     signed,
+    with_powers,
     work_of,
     write_ledger,
 )
@@ -33,6 +35,8 @@ from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.ledger import Ledger
 from pitchsweep.safety.people_store import read_people
 from pitchsweep.safety.safety_errors import GateRefused
+from pitchsweep.safety.safety_home import SafetyHome
+from pitchsweep.safety.signers import open_signer
 from pitchsweep.safety.unattended_permit import UnattendedPermit
 
 JOB = "demo:shims-spots"
@@ -62,13 +66,6 @@ def cli(capsys: pytest.CaptureFixture[str]) -> Run:
     return call
 
 
-def secret(folder: Path, text: str = PASSPHRASE, name: str = "pass") -> str:
-    path = folder / name
-    path.write_text(text + "\n")
-    path.chmod(0o600)
-    return str(path)
-
-
 def answers_file(folder: Path, job: Job = WORK.job) -> str:
     path = folder / "answers.yaml"
     answers = good_answers(WORK if job is WORK.job else work_of(job))
@@ -80,7 +77,8 @@ def answers_file(folder: Path, job: Job = WORK.job) -> str:
 def test_from_nobody_to_a_verified_sign_off(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, cli: Run
 ) -> None:
-    monkeypatch.setenv("PITCHSWEEP_HOME", str(tmp_path / "new"))
+    home = SafetyHome(tmp_path / "new")
+    monkeypatch.setenv("PITCHSWEEP_HOME", str(home.folder))
     with_pass = ("--passphrase-file", secret(tmp_path))
     assert cli("signoff", JOB)[0] == 3
     code, out, _ = cli("signer", "enrol", "ada", "--role", "safety-officer", *with_pass)
@@ -88,6 +86,10 @@ def test_from_nobody_to_a_verified_sign_off(
     code, out, _ = cli("signer", "list")
     assert code == 0 and "safety-officer" in out and "first here" in out
     answers = answers_file(tmp_path)
+    code, _, err = cli("signoff", JOB, "--answers", answers, *with_pass)
+    assert code == 3 and "no power reading made under an attended permit" in err
+    ada = open_signer(home, OFFICER, PASSPHRASE)
+    with_powers(Office(home, {OFFICER: ada}), WORK.job)
     sheet = tmp_path / "door.html"
     code, out, _ = cli(
         "signoff", JOB, "--answers", answers, "--door-sheet", str(sheet), *with_pass
@@ -167,6 +169,7 @@ def test_passphrases_come_from_private_files(
     at: Office, cli: Run, tmp_path: Path
 ) -> None:
     answers = answers_file(tmp_path)
+    with_powers(at, WORK.job)
     wrong = secret(tmp_path, "wrong wrong", "wrong")
     code, _, err = cli("signoff", JOB, "--answers", answers, "--passphrase-file", wrong)
     assert code == 2 and "does not open the key" in err
@@ -185,10 +188,11 @@ def test_passphrases_come_from_private_files(
 
 def test_answers_that_will_not_do(at: Office, cli: Run, tmp_path: Path) -> None:
     path = Path(answers_file(tmp_path))
+    with_powers(at, WORK.job)
     text = path.read_text()
     with_pass = ("--passphrase-file", secret(tmp_path))
     for old, new, code, said in (
-        ("value: 0.45", "value: 0.95", 3, "item 'power': red: 0.95 mW: allowed 0 to"),
+        ("value: 0.45", "value: 0.95", 3, "item 'power': red 0.95 mW is not what was"),
         ("value: 0.45", "value: -1", 2, "line"),
         ("2999-01-01", "2001-01-01", 3, "was due on"),
         ("  door:\n    yes: true", "  door:\n    yes: false", 3, "'door': is answered"),
@@ -201,7 +205,7 @@ def test_answers_that_will_not_do(at: Office, cli: Run, tmp_path: Path) -> None:
         path.write_text(dumped.replace(old, new))
         found, out, err = cli("signoff", JOB, "--answers", str(path), *with_pass)
         assert (found, out) == (code, "") and said in err, err
-    assert read_people(at.home).entries == 3
+    assert read_people(at.home).entries == 6
 
 
 def test_a_signer_is_enrolled_and_revoked(at: Office, cli: Run, tmp_path: Path) -> None:
@@ -277,7 +281,7 @@ def test_a_run_and_the_peoples_ledger_hold_each_other(
     write_ledger(at.home, ledger_lines(at.home)[:4])
     at.home.register.unlink()
     assert run(["ledger", "verify", str(path)]) == 3
-    assert "cut off: 5 entries" in capsys.readouterr().out
+    assert "cut off: 8 entries" in capsys.readouterr().out
 
 
 def permit_said(job: Job) -> tuple[object, list[str]]:

@@ -1,6 +1,7 @@
 """The interview, its person played by a script of questions and answers."""
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import pytest
 from sign_off_builders import (
@@ -10,6 +11,7 @@ from sign_off_builders import (
     demo_work,
     office,
     stated,
+    with_powers,
     with_strong_laser,
 )
 
@@ -62,7 +64,21 @@ class Person:
 
 
 def interview(at: Office, person: Person, work: Work = WORK) -> Answers:
+    with_powers(at, work.job)
     return ask_all(Interview(work, read_people(at.home).people, ()), person)
+
+
+def typed_in() -> Work:
+    """The work with a checklist whose power is read off now, up to 0.9 mW."""
+    item = WORK.checklist.items["power"]
+    assert item.reading is not None
+    asked = {"not_above": None, "each_laser": False, "upper": 0.9}
+    reading = item.reading.model_copy(update=asked)
+    items = {
+        **WORK.checklist.items,
+        "power": item.model_copy(update={"reading": reading}),
+    }
+    return replace(WORK, checklist=WORK.checklist.model_copy(update={"items": items}))
 
 
 def test_good_answers_lead_to_a_statement(
@@ -75,7 +91,8 @@ def test_good_answers_lead_to_a_statement(
     assert statement.contacts["eye-injury"] == "eye clinic, 0555 0199"
     assert statement.contacts["morning"] == "Bo at 07:30"
     reading = answers.items["power"].readings[0]
-    assert (reading.of, reading.value, reading.meter_due) == ("red", 0.85, "2999-01-31")
+    assert (reading.of, reading.value, reading.meter_due) == ("red", 0.45, "2999-01-01")
+    assert not any("mW" in question for question in person.asked)
     shown = capsys.readouterr()
     assert shown.out == ""
     for words in (
@@ -85,6 +102,7 @@ def test_good_answers_lead_to_a_statement(
         "beam map of job",
         "21 items",
         "[21/21] eye-injury",
+        "red: 0.45 mW by m 1 (due 2999-01-01) on",
         "combustibles",
     ):
         assert words in shown.err, words
@@ -109,7 +127,7 @@ def test_it_ends_without_signing(at: Office, first: dict[str, str], words: str) 
     ("first", "said"),
     [
         ({"mW": "ninety"}, "that is no number"),
-        ({"mW": "0.95"}, "will not do: red: 0.95 mW: allowed 0 to 0.9 mW"),
+        ({"mW": "0.95"}, "will not do: 0.95 mW: allowed 0 to 0.9 mW"),
         ({"mW": "-1"}, "that will not do"),
         ({"due": "31.1.2999"}, "that will not do"),
         ({"due": "2001-01-31"}, "was due on 2001-01-31"),
@@ -131,13 +149,14 @@ def test_what_will_not_do_is_said_and_asked_again(
     said: str,
     capsys: pytest.CaptureFixture[str],
 ) -> None:
-    answers = interview(at, Person(**first))
+    work = typed_in()
+    answers = interview(at, Person(**first), work)
     assert said in capsys.readouterr().err
-    assert stated(at, WORK, answers)
+    assert stated(at, work, answers)
 
 
 def test_a_comma_is_a_decimal_point_too(at: Office) -> None:
-    answers = interview(at, Person(mW="0,5"))
+    answers = interview(at, Person(mW="0,5"), typed_in())
     assert answers.items["power"].readings[0].value == 0.5
 
 

@@ -9,24 +9,16 @@ from pathlib import Path
 
 import pytest
 from sign_off_builders import office, signed, work_of
-from twin_bench import small_job
+from twin_bench import short_job
 
 from pitchsweep.acquire.bench_session import open_twin_bench
 from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.ledger_verbs import verify_ledgers
 from pitchsweep.acquire.progress import progress_for
 from pitchsweep.acquire.sweep_session import sweep_job
-from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.people_store import read_people
 from pitchsweep.safety.safety_errors import GateRefused
 from pitchsweep.safety.sign_off_store import revoke
-
-
-def short(job: Job) -> Job:
-    recipe = job.recipe.model_copy(
-        update={"start_deg": -20.0, "stop_deg": 20.0, "step_deg": 10.0}
-    )
-    return job.model_copy(update={"recipe": recipe})
 
 
 def test_light_under_a_sign_off_is_recorded_everywhere(
@@ -34,7 +26,7 @@ def test_light_under_a_sign_off_is_recorded_everywhere(
     monkeypatch: pytest.MonkeyPatch,
     capsys: pytest.CaptureFixture[str],
 ) -> None:
-    at, job = office(tmp_path), short(small_job())
+    at, job = office(tmp_path), short_job()
     monkeypatch.setenv("PITCHSWEEP_HOME", str(at.home.folder))
     kept = signed(at, work_of(job))
     number = kept.record.statement.id
@@ -57,7 +49,7 @@ def test_light_under_a_sign_off_is_recorded_everywhere(
 def test_a_sign_off_revoked_before_arming_keeps_the_bench_dark(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    at, job = office(tmp_path), short(small_job())
+    at, job = office(tmp_path), short_job()
     monkeypatch.setenv("PITCHSWEEP_HOME", str(at.home.folder))
     kept = signed(at, work_of(job))
 

@@ -66,9 +66,9 @@ def test_a_good_one_counts_and_survives_its_file(at: Office) -> None:
     assert verdict(at, kept, WORK) == ""
     assert read_again(kept) == kept
     statement = kept.record.statement
-    assert statement.simulated and statement.ledger.entries == 3
-    assert statement.ledger.head == ledger_lines(at.home)[2]["hash"]
-    assert kept.record.entered.head == ledger_lines(at.home)[3]["hash"]
+    assert statement.simulated and statement.ledger.entries == 6
+    assert statement.ledger.head == ledger_lines(at.home)[5]["hash"]
+    assert kept.record.entered.head == ledger_lines(at.home)[6]["hash"]
 
 
 def test_a_window_is_kept_at_both_ends(at: Office) -> None:
