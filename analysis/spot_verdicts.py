@@ -12,7 +12,13 @@ import numpy as np
 from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
 from pitchsweep.analysis.speckle_grain import Speckle
 from pitchsweep.analysis.spot_fit import Shape
-from pitchsweep.analysis.spot_judgement import SpotLimits, judged, light_over_noise
+from pitchsweep.analysis.spot_judgement import (
+    SpotLimits,
+    clipped_core,
+    judged,
+    light_over_noise,
+    misfit,
+)
 from pitchsweep.analysis.spot_scene import (
     FittedCandidate,
     StepScene,
@@ -20,7 +26,10 @@ from pitchsweep.analysis.spot_scene import (
 )
 
 _SKIRTS = ((5.0, 0.1), (10.0, 0.04))
-"""Within so many radii of a spot, what is fainter than this share is part of it."""
+"""Within so many radii of a spot, what is fainter than this share is part of it;
+twice the share where that spot's own height says little."""
+_LOBED = 0.3
+"""A spot of which this share is no Gaussian has lobes."""
 
 
 @dataclass(frozen=True)
@@ -42,14 +51,14 @@ def verdicts(
     """A verdict for each of ``seen.fits``, in order; refused ones have a score."""
     limits = limits or SpotLimits()
     out: list[Spot | RejectedSpot] = []
-    bright: list[Shape] = []
+    bright: list[FittedCandidate] = []
     for item in seen.fits:
         verdict = _verdict(seen, item, bright, limits, step)
         if isinstance(verdict, RejectedSpot):
             verdict = replace(verdict, score=light_over_noise(item.fit))
         out.append(verdict)
         if item.fit.converged:
-            bright.append(item.fit.shape)
+            bright.append(item)
     return out
 
 
@@ -76,7 +85,7 @@ def nearer(shape: Shape, other: Shape, sigmas: float) -> bool:
 def _verdict(
     seen: Look,
     item: FittedCandidate,
-    bright: Sequence[Shape],
+    bright: Sequence[FittedCandidate],
     limits: SpotLimits,
     step: int,
 ) -> Spot | RejectedSpot:
@@ -84,7 +93,7 @@ def _verdict(
     if isinstance(alone, RejectedSpot):
         return alone
     shape = item.fit.shape
-    if _in_skirt(shape, bright):
+    if _in_skirt(seen, shape, bright, limits):
         reason, detail = Rejection.SHAPE, "faint, in the skirts of a much brighter spot"
     elif lost_in_unevenness(seen.scene, item.fit):
         reason, detail = Rejection.TOO_FAINT, "the background around it is as uneven"
@@ -93,10 +102,23 @@ def _verdict(
     return RejectedSpot(step, shape.column_px, shape.row_px, "px", reason, detail)
 
 
-def _in_skirt(shape: Shape, bright: Sequence[Shape]) -> bool:
+def _in_skirt(
+    seen: Look, shape: Shape, bright: Sequence[FittedCandidate], limits: SpotLimits
+) -> bool:
     """Whether a much brighter spot is so near that this is a part of it."""
-    return any(
-        shape.height < share * other.height and nearer(other, shape, sigmas)
-        for other in bright
-        for sigmas, share in _SKIRTS
-    )
+    for other in bright:
+        share = shape.height / other.fit.shape.height
+        for sigmas, most in _SKIRTS:
+            if share >= 2.0 * most or not nearer(other.fit.shape, shape, sigmas):
+                continue
+            if share < most or _has_vague_height(seen, other, limits):
+                return True
+    return False
+
+
+def _has_vague_height(seen: Look, item: FittedCandidate, limits: SpotLimits) -> bool:
+    """Whether a fitted height says little: clipped everywhere, or several lobes."""
+    if clipped_core(item.window, item.fit) > limits.clipped_core:
+        return True
+    share = misfit(item.fit, seen.speckle).share
+    return share > _LOBED * (1.0 + seen.speckle.contrast)
