@@ -21,6 +21,7 @@ from pitchsweep.analysis.part_ray import (
     stack,
     trace_rays,
 )
+from pitchsweep.analysis.place_on_part import chain_place, where_it_meets
 from pitchsweep.analysis.records import FloatArray
 
 __all__ = ["GRAZING", "N_LOCAL", "Landing", "Local", "landing", "order_direction"]
@@ -57,19 +58,19 @@ def landing(local: FloatArray) -> Landing:
     Invalid rows (order not leaving, or missing the screen plane) hold finite
     numbers that mean nothing; ``valid`` tells them.
     """
-    spread = local[:, Local.SPREAD]
-    there = _over_the_beam(local) if spread.any() else _of_one_ray(local)
+    wide = local[:, Local.BEAM_RMS].any()
+    there = _over_the_beam(local) if wide else _of_one_ray(local)
     return _through_the_lens(there, local[:, Local.DISTORTION])
 
 
 def _of_one_ray(local: FloatArray) -> Landing:
-    trace = trace_rays(_with_curvature(local))
+    trace = trace_rays(where_it_meets(local))
     jacobian = np.zeros((local.shape[0], 2, N_LOCAL))
     _put_part_tangents(trace, jacobian)
     _put_cover_tangents(trace, jacobian)
     _put_beam_tangents(trace, local, jacobian)
     _put_screen_tangents(trace, jacobian)
-    _chain_curvature(local, jacobian)
+    chain_place(local, jacobian)
     return Landing(
         x_mm=dot(trace.hit, trace.axes[:, 0]) + local[:, Local.SCREEN_X],
         y_mm=dot(trace.hit, trace.axes[:, 1]) + local[:, Local.SCREEN_Y],
@@ -82,15 +83,15 @@ def _of_one_ray(local: FloatArray) -> Landing:
 def _over_the_beam(local: FloatArray) -> Landing:
     """The mean over a beam on grooves that turn across it.
 
-    Two rays, one rms turn to either side, have the mean of a Gaussian beam to third
-    order in the turn.
+    Two rays, one rms radius above and below, have the mean of a Gaussian beam to third
+    order in the radius.
     """
     ends = []
     for side in (1.0, -1.0):
-        turned = local.copy()
-        turned[:, Local.AZIMUTH] += side * local[:, Local.SPREAD]
-        end = _of_one_ray(turned)
-        end.jacobian[:, :, Local.SPREAD] = side * end.jacobian[:, :, Local.AZIMUTH]
+        moved = local.copy()
+        moved[:, Local.BEAM_Y] += side * local[:, Local.BEAM_RMS]
+        end = _of_one_ray(moved)
+        end.jacobian[:, :, Local.BEAM_RMS] = side * end.jacobian[:, :, Local.BEAM_Y]
         ends.append(end)
     one, other = ends
     return Landing(
@@ -120,33 +121,6 @@ def _through_the_lens(there: Landing, distortion: FloatArray) -> Landing:
         valid=there.valid,
         leaving=there.leaving,
     )
-
-
-def _place_on_part(local: FloatArray) -> FloatArray:
-    """Where along g the beam meets the part (N,), counted from the stage axis."""
-    a = local[:, Local.INCIDENCE]
-    off = local[:, Local.BEAM_X] - local[:, Local.SURFACE] * np.sin(a)
-    return np.asarray(off / np.cos(a))
-
-
-def _with_curvature(local: FloatArray) -> FloatArray:
-    """A curved part is met at another incidence: the normal leans by place / radius."""
-    bent = local.copy()
-    bent[:, Local.INCIDENCE] += local[:, Local.CURVATURE] * _place_on_part(local)
-    return bent
-
-
-def _chain_curvature(local: FloatArray, jacobian: FloatArray) -> None:
-    """From derivatives by the incidence met to those by what makes it."""
-    a, bend = local[:, Local.INCIDENCE], local[:, Local.CURVATURE]
-    met = jacobian[:, :, Local.INCIDENCE].copy()
-    place = _place_on_part(local)
-    off = local[:, Local.BEAM_X] * np.sin(a) - local[:, Local.SURFACE]
-    by_a, by_x, by_s = off / np.cos(a) ** 2, 1.0 / np.cos(a), -np.tan(a)
-    jacobian[:, :, Local.CURVATURE] = met * place[:, None]
-    jacobian[:, :, Local.INCIDENCE] += met * (bend * by_a)[:, None]
-    jacobian[:, :, Local.BEAM_X] += met * (bend * by_x)[:, None]
-    jacobian[:, :, Local.SURFACE] += met * (bend * by_s)[:, None]
 
 
 def _put(trace: Trace, jacobian: FloatArray, column: int, d_hit: FloatArray) -> None:

@@ -12,9 +12,10 @@ from pitchsweep.analysis.fit_scene import (
     FitScene,
     WavelengthJump,
     base_pitch_nm,
+    counted_rms_mm,
     fit_scene,
-    groove_spread,
     strain,
+    track_per_mm,
 )
 from pitchsweep.analysis.parameter_table import parameter_table
 from pitchsweep.analysis.part_ray import COVER_INDEX, N_LOCAL, Local
@@ -122,7 +123,8 @@ def _base(scene: FitScene) -> FloatArray:
     of_part = {
         Local.COVER: [p.cover_mm for p in scene.parts],
         Local.INDEX: [p.cover_index - COVER_INDEX for p in scene.parts],
-        Local.SPREAD: [groove_spread(p, bench.beam) for p in scene.parts],
+        Local.TRACK: [track_per_mm(p) for p in scene.parts],
+        Local.BEAM_RMS: [counted_rms_mm(p, bench.beam) for p in scene.parts],
     }
     base = np.zeros((len(table), N_LOCAL))
     base[:, Local.Q] = in_air[table.laser] / swept[scene.part]
@@ -133,6 +135,7 @@ def _base(scene: FitScene) -> FloatArray:
     base[:, Local.FAR] = bench.screen.kind == "camera-at-infinity"
     for column, each in of_part.items():
         base[:, column] = np.array(each)[scene.part]
+    base[:, Local.TRACK] *= np.round(np.cos(np.deg2rad(scene.face_deg)))
     return base
 
 

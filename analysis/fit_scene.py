@@ -102,14 +102,17 @@ def strain(part: Part) -> float:
     return material.expansion_per_K * (material.temperature_C - REFERENCE_C)
 
 
-def groove_spread(part: Part, beam: Beam) -> float:
-    """Rms turn in radians of the grooves over the beam; 0 where they are straight.
+def track_per_mm(part: Part) -> float:
+    """Curvature of the grooves where the beam meets them; 0 where they are straight."""
+    return 0.0 if part.track_radius_mm is None else 1.0 / part.track_radius_mm
+
+
+def counted_rms_mm(part: Part, beam: Beam) -> float:
+    """Rms radius of the beam where its width counts, on curved grooves; else 0.
 
     ``beam.diameter_mm`` is the 1/e^2 diameter, four rms radii.
     """
-    if part.track_radius_mm is None:
-        return 0.0
-    return beam.diameter_mm / 4.0 / part.track_radius_mm
+    return 0.0 if part.track_radius_mm is None else beam.diameter_mm / 4.0
 
 
 def name_of(scene: FitScene, index: int, name: str) -> str:

@@ -11,7 +11,9 @@ from pitchsweep.analysis.analysis_errors import (
     InputRefused,
     NoResult,
 )
+from pitchsweep.analysis.assumptions import assumed_absent
 from pitchsweep.analysis.budget import READINGS, combined_u, fit_budget
+from pitchsweep.analysis.clipping import overrun
 from pitchsweep.analysis.consistency import (
     disagreement_lines,
     disagreements,
@@ -43,12 +45,6 @@ from pitchsweep.configs.part_model import Part
 WORST_RELATIVE_U = 0.1
 """A pitch known worse than this is no result."""
 PERCENT_LEVEL = 2e-3
-ASSUMED_ABSENT = (
-    "jumps of camera, beam or wavelength during the sweep",
-    "wobble of the stage axis, leftover backlash, a worm period that is not declared",
-    "grooves curved across the beam, clipping of the beam by the part's edge",
-    "pitch gradient across the beam's footprint",
-)
 
 
 @dataclass(frozen=True)
@@ -91,6 +87,7 @@ def measure_pitch(
     table = _on_screen(table, bench, refused)
     if len(table) == 0:
         raise NoResult("no spot lies on the screen outside the beam hole")
+    table = _within_the_part(table, bench, (part, *references), refused)
     table = repeats_counted(table)
     problem = fit_problem(table, bench, (part, *references), air)
     try:
@@ -118,6 +115,7 @@ def measure_pitch(
     warnings += prior_warnings(problem, fit)
     warnings += unknown_beam_warnings(table, refused) + _off_screen(refused, table)
     result = _result(problem, clean, fit, scatter, coverage, warnings, refused)
+    result = replace(result, assumed_absent=assumed_absent(bench, part))
     sweep = Sweep(problem, clean.order, fit, bench, air)
     result = replace(result, advice=advice(sweep, result))
     if generator is None:
@@ -160,6 +158,24 @@ def _on_screen(
     for index in np.flatnonzero(off & ~on_hole):
         refused.append(_rejected_row(table, int(index), Rejection.OFF_SCREEN))
     return table.take(~(on_hole | off))
+
+
+def _within_the_part(
+    table: OrderTable,
+    bench: Bench,
+    parts: tuple[Part, ...],
+    refused: list[RejectedSpot],
+) -> OrderTable:
+    cut = overrun(table, bench, parts)
+    if cut.all():
+        raise NoResult(
+            "the beam overruns the part's clear_width_mm at every step",
+            remedy="use a narrower beam, or check clear_width_mm and the beam's"
+            " diameter_mm and u_offset_mm",
+        )
+    for index in np.flatnonzero(cut):
+        refused.append(_rejected_row(table, int(index), Rejection.OVERRUN))
+    return table.take(~cut)
 
 
 def _rejected_row(table: OrderTable, index: int, reason: Rejection) -> RejectedSpot:
@@ -263,7 +279,6 @@ def _result(
         fitted_y_mm=fit.y_mm[used],
         residual_x=fit.residual[used, 0],
         residual_y=fit.residual[used, 1],
-        assumed_absent=ASSUMED_ABSENT,
     )
 
 

@@ -13,7 +13,7 @@ from pitchsweep.analysis.fit_scene import (
     REFERENCE_C,
     FitScene,
     base_pitch_nm,
-    groove_spread,
+    counted_rms_mm,
     local_row,
     log_ratio,
     name_of,
@@ -99,9 +99,12 @@ def _wedged_cover(scene: FitScene, index: int) -> Iterator[Parameter]:
 
 
 def _curved_grooves(scene: FitScene, index: int) -> Iterator[Parameter]:
-    """How far the grooves of a spiral turn within the beam."""
+    """The width over which the grooves of a spiral turn within the beam.
+
+    What is not known of the radius counts as if it were the beam's.
+    """
     part, beam = scene.parts[index], scene.bench.beam
-    spread = groove_spread(part, beam)
+    rms_mm = counted_rms_mm(part, beam)
     if part.track_radius_mm is None:
         return
     u_relative = np.hypot(
@@ -109,14 +112,14 @@ def _curved_grooves(scene: FitScene, index: int) -> Iterator[Parameter]:
         part.u_track_radius_mm / part.track_radius_mm,
     )
     yield local_row(
-        name_of(scene, index, "turn of the grooves over the beam, rms"),
+        name_of(scene, index, "rms radius of the beam on curved grooves"),
         Scope.PART,
         Source.SPIRAL,
-        Local.SPREAD,
-        float(spread * u_relative),
-        MRAD,
+        Local.BEAM_RMS,
+        float(rms_mm * u_relative),
+        MM,
         spots_on(scene, index),
-        spread * 1e3,
+        rms_mm,
     )
 
 

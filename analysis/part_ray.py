@@ -39,9 +39,10 @@ class Local(IntEnum):
     INDEX = 17  # of the cover, less COVER_INDEX
     WEDGE_G = 18  # the cover's front leaning towards g, against the grooves' plane
     WEDGE_H = 19  # and towards h
-    SPREAD = 20  # rms turn of curved grooves over the beam
-    DISTORTION = 21  # of the lens: places grow by it times radius squared, per mm^2
-    FAR = 22  # 1: the camera looks at infinity, DISTANCE is its focal length
+    TRACK = 20  # curvature of the grooves, per millimetre; their centre towards -g
+    BEAM_RMS = 21  # rms radius of a beam whose width counts
+    DISTORTION = 22  # of the lens: places grow by it times radius squared, per mm^2
+    FAR = 23  # 1: the camera looks at infinity, DISTANCE is its focal length
 
 
 N_LOCAL = len(Local)

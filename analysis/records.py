@@ -34,6 +34,7 @@ class Rejection(StrEnum):
     FIT_FAILED = "spot-fit-did-not-converge"
     GRAZING = "order-too-near-grazing"
     ON_MARK = "on-a-mark-of-the-frame"
+    OVERRUN = "beam-wider-than-the-part"
 
 
 @dataclass(frozen=True)

@@ -3,10 +3,12 @@
 ``motor_deg`` is the mechanical position of the motor side; the reading is the motor
 side less what the stage is wrong about while its zero is lost. The table side lags
 behind by the backlash after turning downwards: table = motor + slack, slack between
-0 (last turned upwards) and ``backlash_deg`` (last turned downwards).
+0 (last turned upwards) and ``backlash_deg`` (last turned downwards). A part of it is
+wound up in what turns the table and unwinds only over a run-up in the other direction.
 """
 
 from dataclasses import dataclass
+from math import exp
 from typing import Any
 
 RESOLUTION_DEG = 1e-4
@@ -21,13 +23,26 @@ class Rest:
     slack_deg: float
     homed: bool
     wrong_by_deg: float
+    run_up_deg: float = 0.0
+
+
+@dataclass(frozen=True)
+class Windup:
+    """How much of the backlash stays wound up, and over what run-up it unwinds."""
+
+    size_deg: float = 0.0
+    run_up_deg: float = 1.0
 
 
 class StageMechanics:
     """One rotation stage; every method takes the bench time at which it happens."""
 
-    def __init__(self, rest: Rest, *, backlash_deg: float) -> None:
+    def __init__(
+        self, rest: Rest, *, backlash_deg: float, windup: Windup = Windup()
+    ) -> None:
         self._backlash_deg = backlash_deg
+        self._windup = windup
+        self._run_up_deg = rest.run_up_deg
         self._slack_deg = rest.slack_deg
         self._start_deg = rest.motor_deg
         self._target_deg = rest.motor_deg
@@ -53,7 +68,10 @@ class StageMechanics:
     def table_deg(self, now_s: float) -> float:
         """Where the part stands: the motor side plus the slack of the backlash."""
         motor_deg = self.motor_deg(now_s)
-        return motor_deg + self._slack_at(motor_deg)
+        wound = 1.0
+        if self._run_up_at(motor_deg) > 0.0:
+            wound = exp(-self._run_up_at(motor_deg) / self._windup.run_up_deg)
+        return motor_deg + self._slack_at(motor_deg) + self._windup.size_deg * wound
 
     def turning(self, now_s: float) -> bool:
         """Whether it turns."""
@@ -92,11 +110,13 @@ class StageMechanics:
         motor_deg = self.motor_deg(now_s)
         homed = self.homed(now_s)
         wrong = 0.0 if homed else self._wrong_by_deg
-        return Rest(motor_deg, self._slack_at(motor_deg), homed, wrong)
+        run_up_deg = self._run_up_at(motor_deg)
+        return Rest(motor_deg, self._slack_at(motor_deg), homed, wrong, run_up_deg)
 
     def _arrive(self, now_s: float) -> float:
         kept = self.rest(now_s)
         self._slack_deg = kept.slack_deg
+        self._run_up_deg = kept.run_up_deg
         self._homed = kept.homed
         self._wrong_by_deg = kept.wrong_by_deg
         self._seeking = self._seeking and now_s < self._ends_s
@@ -115,6 +135,12 @@ class StageMechanics:
         table_deg = self._start_deg + self._slack_deg
         lowest, highest = motor_deg, motor_deg + self._backlash_deg
         return min(max(table_deg, lowest), highest) - motor_deg
+
+    def _run_up_at(self, motor_deg: float) -> float:
+        """How far it has turned the same way, upwards positive."""
+        turned_deg = motor_deg - self._start_deg
+        onwards = turned_deg * self._run_up_deg >= 0.0
+        return turned_deg + (self._run_up_deg if onwards else 0.0)
 
     def _wrong_by(self, now_s: float) -> float:
         return 0.0 if self.homed(now_s) else self._wrong_by_deg

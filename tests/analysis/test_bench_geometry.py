@@ -22,8 +22,10 @@ def local_rows(n: int = 60, seed: int = 3) -> np.ndarray:
     local[:, Local.SCREEN_Y] = rng.normal(0.0, 3.0, n)
     local[:, Local.COVER] = rng.normal(0.6, 0.3, n)
     local[:, Local.INDEX] = rng.normal(0.0, 0.05, n)
-    for column in (Local.WEDGE_G, Local.WEDGE_H, Local.SPREAD):
+    for column in (Local.WEDGE_G, Local.WEDGE_H):
         local[:, column] = rng.normal(0.0, 0.01, n)
+    local[:, Local.TRACK] = rng.choice([-0.05, 0.05], n)
+    local[:, Local.BEAM_RMS] = rng.uniform(0.1, 0.5, n)
     local[:, Local.CURVATURE] = rng.normal(0.0, 1e-4, n)
     local[:, Local.DISTORTION] = rng.normal(0.0, 1e-7, n)
     return local

@@ -10,12 +10,14 @@ from math import asin, sin, tan
 import numpy as np
 import pytest
 import twin_scene as scene
+from builders import demo_job, twin_sweep
 
 from pitchsweep.analysis.bench_geometry import N_LOCAL, Local, landing
+from pitchsweep.analysis.measure import measure_pitch
 from pitchsweep.analysis.part_ray import COVER_INDEX
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.drivers.twin.optics import trace_orders
-from pitchsweep.drivers.twin.truth import PartTruth, Truth
+from pitchsweep.drivers.twin.truth import BeamTruth, MountTruth, PartTruth, Truth
 
 PITCH_NM = 1600.0
 DISTANCE_MM = 250.0
@@ -48,17 +50,35 @@ def local_of(truth: Truth, bench: Bench, angle_deg: float) -> np.ndarray:
     local[:, Local.WEDGE_G] = part.wedge_across_rad
     local[:, Local.WEDGE_H] = part.wedge_along_rad
     if part.track_radius_mm:
-        local[:, Local.SPREAD] = DIAMETER_MM / 4.0 / part.track_radius_mm
+        local[:, Local.TRACK] = 1.0 / part.track_radius_mm
+        local[:, Local.BEAM_RMS] = DIAMETER_MM / 4.0
+    local[:, Local.BEAM_X] = truth.beam.offset_mm
+    local[:, Local.BEAM_Y] = truth.beam.height_mm
+    local[:, Local.ELEVATION] = truth.beam.elevation_rad
+    local[:, Local.AZIMUTH] = truth.mounts[0].groove_azimuth_rad
+    # A positive tilt of the twin is a right-handed turn about +x.
+    local[:, Local.TILT] = -truth.mounts[0].part_tilt_rad
+    local[:, Local.SURFACE] = truth.mounts[0].surface_offset_mm
     local[:, Local.FAR] = bench.screen.kind == "camera-at-infinity"
     return local
 
 
-def worst_mm(part: PartTruth, kind: str = "flat-screen") -> float:
+SEAT = MountTruth(0.0, 0.01, 0.008, 0.3)
+BEAM = BeamTruth(0.004, 0.5, 1.0)
+
+
+def worst_mm(
+    part: PartTruth,
+    kind: str = "flat-screen",
+    beam: BeamTruth = BEAM,
+    seat: MountTruth = SEAT,
+) -> float:
     """Furthest that fit and twin are from each other on the screen, in mm."""
     bench = scene.bench()
     screen = bench.screen.model_copy(update={"kind": kind})
     bench = bench.model_copy(update={"screen": screen})
-    truth = replace(scene.ideal(bench, scene.part(PITCH_NM)), part=part)
+    truth = scene.ideal(bench, scene.part(PITCH_NM))
+    truth = replace(truth, part=part, beam=beam, mounts=(seat,) * 8)
     worst = 0.0
     for angle in ANGLES_DEG:
         seen = trace_orders(truth, bench, scene.steps(angle))
@@ -83,8 +103,10 @@ def test_a_wedge_agrees_to_its_square() -> None:
 
 
 def test_curved_grooves_agree_with_rays_over_the_whole_beam() -> None:
-    bent = PartTruth(track_radius_mm=25.0)
-    assert worst_mm(bent) < 1e-4
+    bent, still = PartTruth(track_radius_mm=25.0), MountTruth(0.0, 0.0, 0.0, 0.0)
+    assert worst_mm(bent, beam=BeamTruth(0.0, 0.5, 0.0), seat=still) < 1e-4
+    # What the tilt of the seat does to the place on the part is left out in the fit.
+    assert worst_mm(bent) < 0.06
 
 
 def test_a_camera_at_infinity_agrees_and_does_not_see_the_cover() -> None:
@@ -137,7 +159,25 @@ def test_curved_grooves_look_wider_apart_by_half_the_square_of_their_turn() -> N
     local = np.zeros((1, N_LOCAL))
     local[0, [Local.Q, Local.DISTANCE, Local.FAR]] = q, 1.0, 1.0
     straight = landing(local).x_mm[0]
-    local[0, Local.SPREAD] = turn
+    local[0, [Local.BEAM_RMS, Local.TRACK]] = 25.0 * turn, 1.0 / 25.0
     # x = p / sqrt(1 - q^2) with p the component across: the sum of squares stays q^2.
     bent = landing(local).x_mm[0]
     assert bent / straight == pytest.approx(1.0 - turn**2 / 2.0, abs=turn**4)
+
+
+def test_a_declared_width_keeps_the_overrunning_beam_out() -> None:
+    """Steep steps, at which the beam may be cut, are left out and said to be."""
+    effects = {"part_edge_mm": 1.2}
+    wide = {"start_deg": -75.0, "stop_deg": 75.0, "step_deg": 3.0}
+    job = demo_job("shims-spots", effects=effects, recipe=wide)
+    sweep = twin_sweep(job, 2)
+    part = job.part.model_copy(update={"clear_width_mm": 4.0})
+    result = measure_pitch(sweep.table, bench=job.bench, part=part)
+    kept = np.abs(result.table.stage_deg).max()
+    # 0.75 mm and twice hypot(0.5, 0.3 sin a) mm must be within 2 mm * cos a.
+    assert kept == 24.0
+    reasons = {row["reason"] for row in result.rejected_counts()}
+    assert "beam-wider-than-the-part" in reasons
+    assert not any("clipping" in item for item in result.assumed_absent)
+    plain = measure_pitch(sweep.table, bench=job.bench, part=job.part)
+    assert any("clipping" in item for item in plain.assumed_absent)

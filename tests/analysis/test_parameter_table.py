@@ -129,3 +129,18 @@ def test_parts_of_a_sweep_that_disagree_enlarge_u() -> None:
     honest = measure_pitch(table, bench=job.bench, part=job.part)
     assert result.u_pitch_nm > 1.5 * honest.u_pitch_nm
     assert result.warnings
+
+
+def test_a_stage_scale_that_the_spots_contradict_is_named() -> None:
+    """A closure said to hold to 1 ppm on a stage that is off by 300."""
+    wide = {"start_deg": -75.0, "stop_deg": 75.0}
+    twin, effects = {"spot_reading_mm": 0.03}, {"scale_ppm": 300.0}
+    job = demo_job("shims-four-mounts", recipe=wide, twin=twin, effects=effects)
+    result = measure_pitch(twin_sweep(job, 1).table, bench=job.bench, part=job.part)
+    (warning,) = (w for w in result.warnings if w.startswith("stage scale"))
+    assert "known to 1 ppm" in warning
+    honest = demo_job("shims-four-mounts", recipe=wide, twin=twin)
+    table = twin_sweep(honest, 1).table
+    result = measure_pitch(table, bench=honest.bench, part=honest.part)
+    assert not result.warnings
+    assert any("closure recorded" in item for item in result.assumed_absent)

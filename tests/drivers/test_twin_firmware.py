@@ -1,6 +1,7 @@
 """The twin's firmware and mechanics without a process: clocks are by hand."""
 
 import json
+import math
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -11,7 +12,7 @@ from hypothesis import strategies as st
 from pitchsweep.drivers.twin.emission_unit import EmissionUnit
 from pitchsweep.drivers.twin.fault_schedule import Fault, FaultSchedule
 from pitchsweep.drivers.twin.kept_state import KeptState, read_state, write_state
-from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics
+from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics, Windup
 from pitchsweep.drivers.twin.unit_firmware import UnitFirmware
 from pitchsweep.drivers.twin.unit_log import UnitLog
 
@@ -164,3 +165,18 @@ def test_kept_state_comes_back(tmp_path: Path) -> None:
     write_state(path, state)
     assert read_state(path) == state
     assert [entry.name for entry in tmp_path.iterdir()] == ["state.json"]
+
+
+def test_what_stays_wound_up_unwinds_over_the_run_up() -> None:
+    windup = Windup(size_deg=0.01, run_up_deg=2.0)
+    stage = StageMechanics(Rest(0.0, 0.0, True, 0.0), backlash_deg=0.1, windup=windup)
+    stage.move(40.0, 10.0, 0.0)
+    assert stage.table_deg(100.0) == pytest.approx(40.0, abs=1e-8)
+    stage.move(29.5, 10.0, 100.0)
+    stage.move(30.0, 10.0, 200.0)
+    left = 0.01 * math.exp(-0.5 / 2.0)
+    assert stage.table_deg(300.0) == pytest.approx(30.0 + left)
+    again = StageMechanics(stage.rest(300.0), backlash_deg=0.1, windup=windup)
+    again.move(31.5, 10.0, 400.0)
+    left = 0.01 * math.exp(-2.0 / 2.0)
+    assert again.table_deg(500.0) == pytest.approx(31.5 + left)
