@@ -42,11 +42,13 @@ KNOWN_BETTER = {
     Source.SCREEN: "a screen placed",
     Source.BEAM: "a beam aligned",
     Source.SEAT: "a part seated",
-    Source.COVER: "a cover thickness known",
+    Source.COVER: "a cover known",
     Source.CURVATURE: "a part curvature known",
+    Source.SPIRAL: "a beam diameter known",
     Source.HARMONICS: "a stage calibrated",
     Source.WORM: "a worm error known",
     Source.SCALE: "a stage scale known",
+    Source.BACKLASH: "a leftover backlash known",
 }
 """Sources that somebody can know better, and how that is said."""
 
@@ -206,7 +208,7 @@ def _variance_with(sweep: Sweep, extra: _Extra) -> float:
     more, more_order = _readings(sweep, extra)
     table = _stacked(problem.table, more)
     order = np.concatenate([sweep.order, more_order])
-    wider = fit_problem(table, sweep.bench, problem.parts, sweep.air)
+    wider = fit_problem(table, sweep.bench, problem.parts, sweep.air, problem.jumps)
     known = {
         p.name: v for p, v in zip(problem.parameters, fit.state.values, strict=True)
     }
