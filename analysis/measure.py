@@ -34,7 +34,7 @@ from pitchsweep.analysis.records import (
     Rejection,
 )
 from pitchsweep.analysis.robust_fit import CleanFit, rescaled, residual_2
-from pitchsweep.analysis.second_look import advice, monte_carlo
+from pitchsweep.analysis.second_look import advice, monte_carlo, with_draws
 from pitchsweep.analysis.shared_places import repeats_counted
 from pitchsweep.analysis.unknown_beams import unknown_beam_warnings
 from pitchsweep.analysis.weak_directions import weak_directions
@@ -75,9 +75,9 @@ def measure_pitch(
     ``rejected`` lists candidates refused before. Orders are counted from the part's
     nominal pitch until the spots contradict it; ``trust_nominal`` False counts them
     without (then half and double are judged by the spots' light). ``generator``: draw
-    all inputs with it too (JCGM 101), to say whether that bears the result out. Raises
-    InputRefused for a mirrored or empty table or a laser the bench does not have;
-    NoResult when the data do not determine a pitch, or several alike.
+    all inputs with it too (JCGM 101), and take U from them where they do not bear it
+    out. Raises InputRefused for a mirrored or empty table or a laser the bench does not
+    have; NoResult when the data do not determine a pitch, or several alike.
     """
     _check(table, bench)
     air = air or AirState(
@@ -121,7 +121,7 @@ def measure_pitch(
     if generator is None:
         return result
     drawn = monte_carlo(sweep, result, max(scatter.dof, 1.0), generator)
-    return replace(result, monte_carlo=drawn)
+    return with_draws(result, drawn, part.tolerance)
 
 
 def _check(table: OrderTable, bench: Bench) -> None:

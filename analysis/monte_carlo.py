@@ -2,7 +2,9 @@
 
 JCGM 101 7.9 (adaptive procedure) and 8 (validation), from memory: blocks of draws are
 added until twice the standard deviation of the mean of the blocks' results is below the
-tolerance for the estimate, its u and both ends of the interval.
+tolerance for the estimate, its u and both ends of the interval. Where the draws are to
+judge another evaluation at a tolerance, they must themselves be settled to a fifth of
+it.
 """
 
 import math
@@ -17,6 +19,8 @@ DIGITS = 2
 """Significant digits of u that count."""
 FEWEST_BLOCKS = 5
 """JCGM 101 would stop after two, whose scatter can be small by chance."""
+JUDGING = 0.2
+"""Share of the tolerance to which draws settle that judge another interval (8.2)."""
 MOST_LOST = 1e-3
 """Share of the draws that may give no value."""
 
@@ -54,8 +58,9 @@ def adaptive_draws(
     coverage: float,
     block: int,
     most: int,
+    share: float = 1.0,
 ) -> Propagated:
-    """Draws until they are settled to the tolerance of their u.
+    """Draws until they are settled to ``share`` of the tolerance of their u.
 
     ``draw`` (n) gives n values of the result; it is asked for ``block`` at a time, at
     most ``most`` in all. The interval is probabilistically symmetric.
@@ -70,7 +75,7 @@ def adaptive_draws(
         figures.append(_figures(kept, coverage))
         mean, u, low, high = (float(f) for f in _figures(values, coverage))
         lost = drawn - len(values)
-        settled = _settled(np.stack(figures), tolerance_of(u))
+        settled = _settled(np.stack(figures), share * tolerance_of(u))
         settled = settled and lost <= MOST_LOST * drawn
         if settled or drawn + block > most:
             return Propagated(mean, u, low, high, drawn, lost, settled)
@@ -92,6 +97,9 @@ def _settled(figures: FloatArray, tolerance: float) -> bool:
 
 
 def agrees(drawn: Propagated, *, low: float, high: float, tolerance: float) -> bool:
-    """Whether an interval found otherwise is the drawn one within ``tolerance``."""
+    """Whether an interval found otherwise is the drawn one within ``tolerance``.
+
+    JCGM 101 8.1: both ends are to agree. Draws that did not settle bear nothing out.
+    """
     apart = max(abs(low - drawn.low), abs(high - drawn.high))
     return drawn.settled and apart <= tolerance

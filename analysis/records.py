@@ -199,8 +199,9 @@ class MonteCarlo:
     """The pitch when all inputs are drawn (JCGM 101), all in nm.
 
     ``low_nm`` and ``high_nm`` bound the result's coverage symmetrically in
-    probability. ``settled``: the draws met ``tolerance_nm``; ``lost`` of them gave no
-    pitch. ``validated``: the interval pitch +- U agrees with it within the tolerance.
+    probability. ``settled``: the draws met a fifth of ``tolerance_nm``; ``lost`` of
+    them gave no pitch. ``validated``: the interval pitch +- k u of the fit agrees with
+    it within the tolerance; where it does not, U is taken from the drawn interval.
     """
 
     pitch_nm: float

@@ -23,12 +23,12 @@ from pitchsweep.analysis.drawn_descent import (
 )
 from pitchsweep.analysis.fit_problem import FitProblem
 from pitchsweep.analysis.joint_fit import JointFit
-from pitchsweep.analysis.monte_carlo import Propagated, adaptive_draws
+from pitchsweep.analysis.monte_carlo import JUDGING, Propagated, adaptive_draws
 from pitchsweep.analysis.records import FloatArray, IntArray
 
 ROWS_AT_ONCE = 4096
 """Spots times draws that are traced in one go."""
-SMALLEST_BLOCK, LARGEST_BLOCK, MOST_DRAWS = 500, 10_000, 50_000
+SMALLEST_BLOCK, LARGEST_BLOCK, MOST_DRAWS = 500, 10_000, 200_000
 
 
 @dataclass(frozen=True)
@@ -53,7 +53,7 @@ def redrawn_pitch(
     stated: Stated,
     generator: np.random.Generator,
 ) -> Propagated:
-    """Mean, u and interval of the pitch in nm."""
+    """Mean, u and interval of the pitch in nm, settled well enough to judge U."""
     at = minimum_of(problem, order, fit)
 
     def draw(count: int) -> FloatArray:
@@ -63,7 +63,9 @@ def redrawn_pitch(
 
     enough = math.ceil(100.0 / (1.0 - stated.coverage))
     block = min(LARGEST_BLOCK, max(enough, SMALLEST_BLOCK))
-    return adaptive_draws(draw, coverage=stated.coverage, block=block, most=MOST_DRAWS)
+    return adaptive_draws(
+        draw, coverage=stated.coverage, block=block, most=MOST_DRAWS, share=JUDGING
+    )
 
 
 def drawn_values(

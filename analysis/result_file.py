@@ -114,16 +114,19 @@ def summary_lines(result: PitchResult) -> list[str]:
 
 
 def drawn_words(drawn: MonteCarlo) -> str:
-    """The Monte Carlo interval, and whether it bears the stated one out."""
+    """The Monte Carlo interval, and whether it bears pitch +- k u of the fit out."""
     low = rounded(drawn.low_nm, drawn.u_nm)
     high = rounded(drawn.high_nm, drawn.u_nm)
+    within = f"within {significant(drawn.tolerance_nm)} nm"
     if not drawn.settled:
-        verdict = "not settled to"
+        verdict = f"not settled to a fifth of {significant(drawn.tolerance_nm)} nm"
+    elif drawn.validated:
+        verdict = f"U of the fit agrees {within}"
     else:
-        verdict = "agrees within" if drawn.validated else "does not agree within"
+        verdict = f"U of the fit does not agree {within} and holds both ends instead"
     return (
         f"{low.value} to {high.value} nm, u {low.u} nm, from {drawn.draws} draws of all"
-        f" inputs; {verdict} {significant(drawn.tolerance_nm)} nm"
+        f" inputs; {verdict}"
     )
 
 

@@ -10,7 +10,12 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from pitchsweep.analysis.monte_carlo import adaptive_draws, agrees, tolerance_of
+from pitchsweep.analysis.monte_carlo import (
+    JUDGING,
+    adaptive_draws,
+    agrees,
+    tolerance_of,
+)
 
 Floats = NDArray[np.float64]
 Draw = Callable[[int], Floats]
@@ -43,6 +48,18 @@ def test_four_rectangular_inputs() -> None:
     drawn = adaptive_draws(draw, coverage=0.95, block=10_000, most=10**6)
     assert drawn.u == pytest.approx(2.0, abs=0.05)
     assert (drawn.low, drawn.high) == pytest.approx((-3.88, 3.88), abs=0.05)
+
+
+def test_validation_asks_for_draws_settled_to_a_fifth_of_the_tolerance() -> None:
+    """8.2 (M): the guide's +-3.92 differs from +-3.879 by more than 0.005 (3 digits
+    of u), by less than 0.05 (2 digits); to judge either, draws settle to a fifth."""
+    draw = rectangles(np.random.default_rng(2))
+    rough = adaptive_draws(draw, coverage=0.95, block=10_000, most=10**7)
+    fine = adaptive_draws(draw, coverage=0.95, block=10_000, most=10**7, share=JUDGING)
+    assert fine.settled and fine.draws > 10 * rough.draws
+    assert (fine.low, fine.high) == pytest.approx((-3.879, 3.879), abs=0.01)
+    assert agrees(fine, low=-3.92, high=3.92, tolerance=tolerance_of(2.0))
+    assert not agrees(fine, low=-3.92, high=3.92, tolerance=tolerance_of(2.0, 3))
 
 
 def test_one_rectangle_far_larger_than_the_others() -> None:
