@@ -11,6 +11,7 @@ from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 
+from pitchsweep.acquire.acquire_errors import RunRefused
 from pitchsweep.acquire.bench_session import (
     BAUD,
     UNIT_DIALECT,
@@ -54,8 +55,8 @@ def acknowledge_run(
 ) -> Acknowledgement:
     """Acknowledges the last trip or end of the run at ``path`` in ``name``.
 
-    Raises RunRefused for a folder that is no run or is in use, GateRefused when nobody
-    comes to the bench in five minutes or the name is missing, DriverError.
+    Raises RunRefused for a folder that is no run, is in use or is complete, GateRefused
+    when nobody comes to the bench in five minutes or the name is missing, DriverError.
     """
     folder = open_run_folder(path)
     lock = take_run_lock(folder.path)
@@ -73,6 +74,7 @@ def _acknowledge(
         journal = None
         if folder.journal.exists():
             journal = stack.enter_context(open_journal(folder.journal))
+            _refuse_complete(folder, journal)
         if why_run_is_not_acknowledged(ledger, folder.path.name) is None:
             return Acknowledgement(folder.path, "acknowledged already, not used yet")
         with _guard_at_bench(folder, history.add, say, name) as guard:
@@ -80,6 +82,17 @@ def _acknowledge(
         if journal is not None:
             _note(journal, history, ledger)
         return Acknowledgement(folder.path, reason)
+
+
+def _refuse_complete(folder: RunFolder, journal: RunJournal) -> None:
+    """A sweep that went to its end has no trip; any other end counts as one."""
+    sessions, early = journal.sessions(), journal.meta().get("ended_early")
+    if sessions and sessions[-1][-1] == "done" and not early:
+        raise RunRefused(
+            folder.path,
+            "the run is complete: there is nothing to acknowledge",
+            "begin a new one with 'pitchsweep sweep JOB'",
+        )
 
 
 @contextmanager

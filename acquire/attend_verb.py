@@ -22,6 +22,7 @@ from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.reader import read_job
 from pitchsweep.safety.attended_permit import MAY_HOLD, POWER_CEILING_MW
 from pitchsweep.safety.hazard_figures import full_drive_mw, laser_figures
+from pitchsweep.safety.lasers_alight import lasers_alight
 from pitchsweep.safety.people_ledger import OFFICER
 from pitchsweep.safety.people_store import PeopleNow, read_people
 from pitchsweep.safety.run_refusals import refuse_unsafe
@@ -119,12 +120,12 @@ def _terms(
 
 def _places(job: Job, plan: SweepPlan, options: AttendOptions) -> tuple[Place, ...]:
     """A step of the plan for each laser: its beams are in the beam map."""
-    recipe, steps = job.recipe.lasers, {s.step: s for s in plan.steps}
-    chosen = options.lasers or tuple(recipe)
-    odd = [name for name in chosen if name not in recipe]
+    lasers, steps = lasers_alight(job), {s.step: s for s in plan.steps}
+    chosen = options.lasers or lasers
+    odd = [name for name in chosen if name not in lasers]
     if odd:
         raise GateRefused(
-            f"the job has no laser '{odd[0]}'", f"it has {', '.join(recipe)}"
+            f"the job has no laser '{odd[0]}'", f"it has {', '.join(lasers)}"
         )
     if options.step is not None and options.step not in steps:
         raise GateRefused(
@@ -132,10 +133,11 @@ def _places(job: Job, plan: SweepPlan, options: AttendOptions) -> tuple[Place, .
         )
     places = []
     for name in dict.fromkeys(chosen):
-        first = next(s for s in plan.steps if s.laser == name)
+        # A laser of the bench that the recipe does not use stands at its first step.
+        first = next((s for s in plan.steps if s.laser == name), plan.steps[0])
         step = first if options.step is None else steps[options.step]
         power_mw = full_drive_mw(job.bench.lasers[name])
-        places.append(Place(name, first.step, step.stage_deg, power_mw))
+        places.append(Place(name, step.step, step.stage_deg, power_mw))
     return tuple(places)
 
 

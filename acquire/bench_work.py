@@ -40,8 +40,14 @@ def work_digest(plan: SweepPlan, bench: Bench) -> str:
 
 
 def step_powers_mw(plan: SweepPlan, bench: Bench) -> dict[int, float]:
-    """The power at the part of every step and zero check."""
+    """The power at the part of every step and zero check.
+
+    It is the sum of all lasers where they may be alight together: nobody can tell.
+    """
     steps = (*plan.steps, *plan.zero_checks)
+    if bench.emission.lasers_at_once == "all":
+        all_mw = sum(laser.power_mw for laser in bench.lasers.values())
+        return {s.step: all_mw for s in steps}
     return {s.step: bench.lasers[s.laser].power_mw for s in steps}
 
 

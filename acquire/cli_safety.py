@@ -20,7 +20,7 @@ PassphraseFile = Annotated[
         help="FILE, or NAME=FILE for one of several; mode 600. Else it is asked for.",
     ),
 ]
-VERBS = ("show", "verify", "revoke")
+VERBS = ("form", "show", "verify", "revoke")
 
 signer = typer.Typer(no_args_is_help=True, help="Who may sign on this computer.")
 ledger = typer.Typer(no_args_is_help=True, help="The record of what people did.")
@@ -75,12 +75,13 @@ def signoff(
     words: Annotated[
         list[str],
         typer.Argument(
-            metavar="[show|verify|revoke] JOB",
+            metavar="[form|show|verify|revoke] JOB",
             help="A job file or demo:NAME; without a verb: interview and sign.",
         ),
     ],
     answers: Annotated[
-        Path | None, typer.Option(help="Answers from this YAML file, asking nothing.")
+        Path | None,
+        typer.Option(help="Answers from this YAML file; 'form' prints one to fill in."),
     ] = None,
     checklist: Annotated[
         str, typer.Option(help="A checklist file, or demo:NAME for a shipped one.")
@@ -97,13 +98,18 @@ def signoff(
 ) -> None:
     """Sign a job off for an unattended run, or show, verify, revoke its sign-off.
 
+    ``signoff form JOB > answers.yaml`` prints an answers file with every item to be
+    filled in.
+
     A sign-off authorises nothing in law: interlock, local rules and the laser safety
     officer decide.
     """
     verb, job = _verb_and_job(words)
     from pitchsweep.acquire import sign_off_verbs as verbs
 
-    if verb == "show":
+    if verb == "form":
+        print(verbs.form(job, checklist), end="", flush=True)
+    elif verb == "show":
         print(verbs.show(job, as_json=as_json), flush=True)
     elif verb == "verify":
         print(verbs.verify(job, as_json=as_json), flush=True)

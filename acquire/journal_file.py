@@ -4,6 +4,7 @@ Refuses a folder that does not honour locking, and any file that is not a sound
 journal of this version.
 """
 
+import os
 import sqlite3
 from pathlib import Path
 
@@ -38,14 +39,15 @@ def create_journal(path: Path) -> RunJournal:
 def open_journal(path: Path, *, read_only: bool = False) -> RunJournal:
     """The journal at ``path``.
 
-    ``read_only`` serves analysis: nothing is written into it. Raises RunRefused when
-    the file is missing, damaged, foreign or of another version.
+    ``read_only`` serves analysis: nothing is written into it, and its folder may be
+    one in which nobody may write. Raises RunRefused when the file is missing, damaged,
+    foreign or of another version.
     """
     if not path.is_file():
         raise RunRefused(path, "no run journal here", "give the folder of a run")
     connection: sqlite3.Connection | None = None
     try:
-        connection = _connect(path)
+        connection = _connect_to_read(path) if read_only else _connect(path)
         _check_identity(connection, path)
         if read_only:
             connection.execute("PRAGMA query_only=1")
@@ -65,6 +67,21 @@ def open_journal(path: Path, *, read_only: bool = False) -> RunJournal:
     except RunRefused:
         _close(connection)
         raise
+
+
+def _connect_to_read(path: Path) -> sqlite3.Connection:
+    """A connection for reading; where the folder is sealed, one that needs no file."""
+    if os.access(path.parent, os.W_OK):
+        return _connect(path)
+    ahead = path.with_name(f"{path.name}-wal")
+    if ahead.exists() and ahead.stat().st_size:
+        raise RunRefused(
+            path,
+            "it was not closed, and its folder cannot be written to",
+            "copy the run folder to where you may write, then try again",
+        )
+    place = f"{path.resolve().as_uri()}?mode=ro&immutable=1"
+    return sqlite3.connect(place, uri=True, isolation_level=None)
 
 
 def _close(connection: sqlite3.Connection | None) -> None:

@@ -92,7 +92,7 @@ def _meta(run: Path) -> Mapping[str, str]:
     path = run / "run.db"
     if not path.exists():
         return {}
-    with open_journal(path) as journal:
+    with open_journal(path, read_only=True) as journal:
         return journal.meta()
 
 

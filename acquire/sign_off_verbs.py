@@ -6,6 +6,7 @@ import time
 from dataclasses import dataclass
 from pathlib import Path
 
+from pitchsweep.acquire.answers_form import answers_form
 from pitchsweep.acquire.bench_work import work_for
 from pitchsweep.acquire.interview import Interview, ask_all
 from pitchsweep.acquire.passphrases import Passphrases
@@ -18,6 +19,7 @@ from pitchsweep.configs.reader import DEMO, read_answers, read_job
 from pitchsweep.safety.beam_map import beam_map
 from pitchsweep.safety.beam_map_text import beam_map_lines
 from pitchsweep.safety.door_sheet import door_sheet
+from pitchsweep.safety.lasers_alight import lasers_alight
 from pitchsweep.safety.people_store import PeopleNow, read_people
 from pitchsweep.safety.run_refusals import refuse_unsafe
 from pitchsweep.safety.safety_errors import CAUTION, GateRefused, SignerRefused
@@ -80,6 +82,16 @@ def sign(place: str, options: SigningOptions, *, as_json: bool) -> str:
     if as_json:
         return json.dumps({**_values(Judged(kept, "")), "door_sheet": str(sheet)})
     return "\n".join([*_lines(kept), f"Door sheet {sheet}", f"Caution    {CAUTION}"])
+
+
+def form(place: str, checklist: str) -> str:
+    """An answers file for ``place``, everything in it still to be answered.
+
+    Raises SettingsRefused, GateRefused for a job that nobody may sign.
+    """
+    job, plan = _job_and_plan(place)
+    refuse_unsafe(job)
+    return answers_form(work_for(job, plan, _absolute(checklist)))
 
 
 def show(place: str, *, as_json: bool) -> str:
@@ -198,7 +210,7 @@ def _pictures(home: SafetyHome, job: Job) -> tuple[Path, ...]:
     table = folder / f"{job.job}.txt"
     write_new(table, "\n".join(beam_map_lines(found)) + "\n")
     written = [table]
-    for laser in job.recipe.lasers:
+    for laser in lasers_alight(job):
         path = folder / f"{job.job}-{laser}.svg"
         write_new(path, beam_map_svg(job, found, laser))
         written.append(path)

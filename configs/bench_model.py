@@ -187,12 +187,16 @@ class Emission(Settings):
 
     ``keep-alive``: a unit that is spoken to and drops out by itself. ``pulses``: a
     time-out relay fed over a modem control line, which closes after several pulses.
+    ``lasers_at_once``: whether a selector or the wiring lets one laser at a time
+    through (``one``), or all of the bench may be alight behind the unit together
+    (``all``): the unit has one line and cannot tell which of them are.
     """
 
     line: Literal["keep-alive", "pulses"] = "keep-alive"
     switches: Literal["head-shutter", "laser"] = "head-shutter"
     keep_alive_ms: Annotated[int, Field(ge=50, le=250)] = 200
     unit_identity: Name = "bench-unit-1"
+    lasers_at_once: Literal["one", "all"] = "all"
     interlock_channels: Annotated[Literal[1, 2], NotTruth] = 1
 
     @field_validator("line", mode="before")

@@ -9,8 +9,9 @@ from pitchsweep.analysis.order_visibility import wavelength_over_pitch
 from pitchsweep.analysis.records import FloatArray, IntArray
 from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.beam_cones import Cones, Spread, spread_of
-from pitchsweep.safety.beam_faults import Fault, faults_by_bit
+from pitchsweep.safety.beam_faults import Fault, Ray, faults_by_bit
 from pitchsweep.safety.hazard_figures import full_drive_mw
+from pitchsweep.safety.lasers_alight import lasers_alight, may_be_together
 from pitchsweep.safety.surroundings import NOTHING, Surroundings
 
 
@@ -41,9 +42,16 @@ def light_of(job: Job, name: str, around: Surroundings) -> Light:
         ratio=wavelength_over_pitch(job.bench, job.part, name),
         spread=spread_of(job.bench, job.part, name),
         around=around,
-        faults=faults_by_bit(around, laser, power_mw),
+        faults=faults_by_bit(around, rays_with(job, name)),
         margin_deg=enclosure.margin_deg if enclosure else 0.0,
     )
+
+
+def rays_with(job: Job, name: str) -> tuple[Ray, ...]:
+    """What a surface in a beam of ``name`` must bear: all that may be lit with it."""
+    names = lasers_alight(job) if may_be_together(job) else (name,)
+    lasers = [job.bench.lasers[one] for one in names]
+    return tuple(Ray(laser, full_drive_mw(laser)) for laser in lasers)
 
 
 @dataclass(frozen=True)

@@ -30,6 +30,7 @@ from pitchsweep.safety.beam_judgement import (
     met_names,
 )
 from pitchsweep.safety.beam_steps import LitAngle, lit_angles, steps_text
+from pitchsweep.safety.lasers_alight import at_once_in_words, lasers_alight
 from pitchsweep.safety.refusals import Refusal
 from pitchsweep.safety.surroundings import NOTHING, surroundings_of
 
@@ -83,7 +84,8 @@ class BeamMap:
     """Every beam of a job, and the enclosure around it (None: nothing is declared).
 
     ``closed_all_round``: whether some declared surface covers every direction, as a
-    part that hangs loose would need.
+    part that hangs loose would need; ``at_once``: which lasers may be alight together,
+    in words.
     """
 
     job: str
@@ -92,15 +94,20 @@ class BeamMap:
     enclosure: Enclosure | None
     beams: tuple[Beam, ...]
     closed_all_round: bool
+    at_once: str = ""
 
 
 def beam_map(job: Job) -> BeamMap:
-    """The beam map of ``job``: all lasers of its recipe at all its angles."""
+    """The beam map of ``job``: all lasers that may be alight, at all its angles.
+
+    Where several may be so together, whatever stops one beam must bear them all: their
+    zero orders and straight ways coincide.
+    """
     enclosure = job.bench.enclosure
     around = surroundings_of(enclosure.surfaces if enclosure else ())
     angles = lit_angles(job)
     beams: list[Beam] = []
-    for name in job.recipe.lasers:
+    for name in lasers_alight(job):
         light = light_of(job, name, around)
         beams.extend(_order_beams(light, angles))
         beams.extend(_missing_part_beams(job, light, angles))
@@ -111,6 +118,7 @@ def beam_map(job: Job) -> BeamMap:
         enclosure=enclosure,
         beams=tuple(beams),
         closed_all_round=not bool((around.bits == NOTHING).any()),
+        at_once=at_once_in_words(job),
     )
 
 

@@ -36,6 +36,7 @@ from pitchsweep.configs.enclosure_model import Surface
 from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.beam_cones import reached, spread_of
 from pitchsweep.safety.beam_faults import faults_by_bit
+from pitchsweep.safety.beam_judgement import rays_with
 from pitchsweep.safety.beam_map import Beam, BeamKind, BeamMap
 from pitchsweep.safety.beam_steps import lit_angles
 from pitchsweep.safety.hazard_figures import full_drive_mw
@@ -76,7 +77,7 @@ def _draw(figure: Figure, job: Job, found: BeamMap, laser: str) -> None:
     around = figure.add_subplot(grid[1])
     _draw_all_round(around, surfaces)
     power_mw = full_drive_mw(job.bench.lasers[laser])
-    _draw_reach(around, job, laser, power_mw)
+    _draw_reach(around, job, laser)
     above.set_title(drawable(f"{laser}, {power_mw:.3g} mW in each beam, from above"))
     unstopped = any(beam.fault is not None for beam in beams)
     around.set_title(
@@ -209,7 +210,7 @@ def _name_surface(axes: Axes, surface: Surface) -> None:
     )
 
 
-def _draw_reach(axes: Axes, job: Job, laser: str, power_mw: float) -> None:
+def _draw_reach(axes: Axes, job: Job, laser: str) -> None:
     """The cells into which an order may go; darker where nothing there stops it."""
     edges = (
         np.arange(-180.0, 180.1, REACH_CELL_DEG),
@@ -229,7 +230,7 @@ def _draw_reach(axes: Axes, job: Job, laser: str, power_mw: float) -> None:
     around = surroundings_of(
         job.bench.enclosure.surfaces if job.bench.enclosure else ()
     )
-    bad = sum(faults_by_bit(around, job.bench.lasers[laser], power_mw))
+    bad = sum(faults_by_bit(around, rays_with(job, laser)))
     met = around.met_by_cones(azimuth, elevation, np.zeros_like(azimuth))
     shape = (len(middles[1]), len(middles[0]))
     for colour, where in (

@@ -4,6 +4,15 @@ from collections.abc import Iterator, Sequence
 
 from pitchsweep.safety.beam_map import Beam, BeamMap, refusals
 
+COLUMNS = (
+    "incidence: angles of the part, in degrees; azimuth: where the beam goes, seen",
+    "from above, 0 towards laser and screen, 90 towards +x, 180 straight on, '-' where",
+    "it only leaves with the grooves turned; mW: full drive, in every beam; may meet:",
+    "each declared surface within what is known of the direction, grooves any way",
+    "round. ghost: turned back once inside the part; gone through: behind the part.",
+)
+"""What the columns mean, in words."""
+
 HEAD = (
     f"{'laser':<8} {'beam':<25} {'order':>5}  {'incidence':<13}  {'azimuth':<13}"
     f" {'mW':>6}  may meet"
@@ -21,6 +30,9 @@ def beam_map_lines(found: BeamMap) -> tuple[str, ...]:
         key = (beam.laser, beam.kind, beam.order, beam.at.left_behind)
         rows.setdefault(key, []).append(beam)
     lines = [f"Beam map of job '{found.job}' on bench '{found.bench}'", *_around(found)]
+    if found.at_once:
+        lines.append(f"{found.at_once[:1].upper()}{found.at_once[1:]}.")
+    lines += COLUMNS
     if any(beam.at.left_behind for beam in found.beams):
         lines.append("'left': the part stayed as in another mount of the recipe.")
     lines += [HEAD, *(_row(beams) for beams in rows.values())]

@@ -8,7 +8,12 @@ from pitchsweep.configs.answers_model import Answers, ItemAnswer, ReadingAnswer
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.checklist_model import Applies, Checklist, Item, Reading
 from pitchsweep.configs.job_model import Job
-from pitchsweep.safety.hazard_figures import full_drive_mw, laser_figures
+from pitchsweep.safety.hazard_figures import (
+    class_together,
+    full_drive_mw,
+    laser_figures,
+)
+from pitchsweep.safety.lasers_alight import lasers_alight, may_be_together
 
 CLASSES = ("1", "1M", "2", "2M", "3R", "3B", "4")
 """From harmless to dangerous; the estimate knows those without an M only."""
@@ -20,7 +25,8 @@ LONGEST_ON_DOOR = 160
 class Circumstances:
     """What the conditions of items and signatures are compared with.
 
-    ``laser_class`` is the highest estimate among the lasers of the recipe.
+    ``laser_class`` is the highest estimate among the lasers that may be alight, and of
+    all of them where they may be so together.
     """
 
     laser_class: str
@@ -32,8 +38,10 @@ class Circumstances:
 
 def circumstances_of(job: Job, *, unattended: bool = True) -> Circumstances:
     """The circumstances of ``job``. Raises OutsideHazardLimits."""
-    bench, names = job.bench, job.recipe.lasers
+    bench, names = job.bench, lasers_alight(job)
     classes = [laser_figures(bench, name).estimate.laser_class for name in names]
+    if may_be_together(job):
+        classes.append(class_together(bench, names).laser_class)
     return Circumstances(
         laser_class=max(classes, key=CLASSES.index),
         doubled=any(bench.lasers[name].frequency_doubled for name in names),
@@ -86,7 +94,7 @@ def readings_wanted(item: Item, job: Job) -> tuple[tuple[str | None, float], ...
         return ()
     if not reading.each_laser:
         return ((None, _upper(reading, job.bench, None)),)
-    return tuple((n, _upper(reading, job.bench, n)) for n in job.recipe.lasers)
+    return tuple((n, _upper(reading, job.bench, n)) for n in lasers_alight(job))
 
 
 @dataclass(frozen=True)

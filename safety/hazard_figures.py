@@ -103,7 +103,8 @@ class SummedHazard:
     """Several lasers into one eye: sums of irradiance over limit, rule by rule.
 
     Heat adds to heat and blue light to blue light; ``skin`` likewise. Above 1 the
-    limit is passed; ``worst`` is the larger of the eye's two.
+    limit is passed; ``worst`` is the larger of the eye's two, ``density`` what a filter
+    equally dense at all of them would need.
     """
 
     exposure_s: float
@@ -115,6 +116,11 @@ class SummedHazard:
     def worst(self) -> float:
         """The larger of the two sums for the eye."""
         return max(self.thermal, self.photochemical)
+
+    @property
+    def density(self) -> float:
+        """Optical density that brings the worst sum down to 1."""
+        return optical_density(self.worst, 1.0)
 
 
 def full_drive_mw(laser: Laser) -> float:
@@ -144,6 +150,21 @@ def laser_figures(bench: Bench, name: str) -> HazardFigures:
         estimate=estimate_class(wavelength_nm, power_mw, beam_mm, u_wavelength_nm=u_nm),
         accidental_s=BLINK_S if counts else LONG_LOOK_S,
         times=tuple(_time_figures(laser, beam_mm, time_s) for time_s in TIMES_S),
+    )
+
+
+def class_together(bench: Bench, names: Sequence[str]) -> ClassEstimate:
+    """The class of all of ``names`` in one beam: the sum at the shortest wavelength.
+
+    Limits are lowest there, so this is never too low. Raises as laser_figures.
+    """
+    lasers = [bench.lasers[name] for name in names]
+    worst = min(lasers, key=lambda one: one.vacuum_wavelength_nm - one.u_wavelength_nm)
+    return estimate_class(
+        worst.vacuum_wavelength_nm,
+        sum(full_drive_mw(laser) for laser in lasers),
+        bench.beam.diameter_mm,
+        u_wavelength_nm=worst.u_wavelength_nm,
     )
 
 

@@ -10,6 +10,16 @@ HEAD = (
     "  exposure  eye limit (rule)         x limit   x skin  density"
     "   direct     lens    matt"
 )
+COLUMNS = (
+    "  exposure: how long somebody looks; eye limit: irradiance over a 7 mm pupil and"
+    " the rule it comes from (heat on the retina, or blue light)",
+    "  x limit: this beam over 7 mm, as a multiple of the eye's limit; x skin: the beam"
+    " itself, as a multiple of the skin's",
+    "  density: optical density that brings it down to the eye's limit",
+    "  direct, lens, matt: how far the hazard reaches along the beam, behind a lens of"
+    " 50 mm focal length, from a matt white surface",
+)
+"""What the columns of the table mean, in words."""
 
 
 def figures_lines(figures: HazardFigures) -> tuple[str, ...]:
@@ -36,7 +46,8 @@ def summed_line(summed: SummedHazard, names: Sequence[str]) -> str:
     verdict = "within the limits" if summed.worst <= 1.0 else "above the limits"
     return (
         f"{' + '.join(names)} for {summed.exposure_s:g} s: {summed.thermal:.3g} x"
-        f" thermal, {summed.photochemical:.3g} x photochemical: {verdict}"
+        f" thermal, {summed.photochemical:.3g} x photochemical, {summed.skin:.2g} x"
+        f" skin, density {summed.density:.2f}: {verdict}"
     )
 
 

@@ -13,6 +13,7 @@ from pitchsweep.configs.checklist_model import Checklist, Item
 from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.attended_entries import PowerReading
 from pitchsweep.safety.hazard_figures import full_drive_mw
+from pitchsweep.safety.lasers_alight import lasers_alight
 from pitchsweep.safety.people_ledger import People
 from pitchsweep.safety.sign_off import utc_seconds
 
@@ -33,20 +34,20 @@ class Needed:
 
 
 def latest_readings(job: Job, people: People) -> dict[str, PowerReading]:
-    """Laser of the recipe -> its latest reading on this bench; missing where none."""
+    """Laser that may be lit -> its latest reading on this bench; missing where none."""
     here = (job.bench.bench, job.bench.twin is not None)
     return {
         reading.laser: reading
         for reading in people.powers
         if (reading.bench, reading.simulated) == here
-        and reading.laser in job.recipe.lasers
+        and reading.laser in lasers_alight(job)
     }
 
 
 def why_power_is_unknown(needed: Needed, people: People) -> str | None:
     """None when every laser's power was read as an unattended run needs it."""
     found = latest_readings(needed.job, people)
-    for name in needed.job.recipe.lasers:
+    for name in lasers_alight(needed.job):
         reading = found.get(name)
         if reading is None:
             return (
@@ -91,7 +92,7 @@ def reading_in_words(reading: PowerReading) -> str:
 
 
 def powers_as_signed(job: Job, people: People) -> tuple[Mapping[str, object], ...]:
-    """The latest reading of every laser of the recipe as JSON values to be signed."""
+    """The latest reading of every laser that may be lit, as values to be signed."""
     found = latest_readings(job, people)
     return tuple(
         {
@@ -105,7 +106,7 @@ def powers_as_signed(job: Job, people: People) -> tuple[Mapping[str, object], ..
             "entry": found[name].n,
             "hash": found[name].hash,
         }
-        for name in job.recipe.lasers
+        for name in lasers_alight(job)
     )
 
 

@@ -11,8 +11,13 @@ from dataclasses import dataclass
 from pitchsweep.configs.bench_model import Bench, Laser
 from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.exposure_limits import worst_wavelength_nm
-from pitchsweep.safety.hazard_figures import full_drive_mw
-from pitchsweep.safety.laser_class import estimate_class
+from pitchsweep.safety.hazard_figures import class_together, full_drive_mw
+from pitchsweep.safety.laser_class import ClassEstimate, estimate_class
+from pitchsweep.safety.lasers_alight import (
+    lasers_alight,
+    may_be_together,
+    strongest_mw,
+)
 from pitchsweep.safety.safety_errors import OutsideHazardLimits
 
 
@@ -27,12 +32,13 @@ class Refusal:
 def refuse_outright(job: Job) -> tuple[Refusal, ...]:
     """Every reason to refuse the job's lasers, the recipe's first in its order.
 
-    All lasers of the recipe are judged at full drive; empty when nothing stands against
-    them here (which permits nothing by itself).
+    All lasers that may be alight are judged at full drive, and all of them together
+    where that may be; empty when nothing stands against them here (which permits
+    nothing by itself).
     """
-    return tuple(
-        refusal for name in job.recipe.lasers for refusal in _of_laser(job.bench, name)
-    )
+    names = lasers_alight(job)
+    each = tuple(r for name in names for r in _of_laser(job.bench, name))
+    return each or (tuple(_together(job)) if may_be_together(job) else ())
 
 
 def _of_laser(bench: Bench, name: str) -> Iterator[Refusal]:
@@ -56,6 +62,23 @@ def _of_laser(bench: Bench, name: str) -> Iterator[Refusal]:
         )
 
 
+def _together(job: Job) -> Iterator[Refusal]:
+    """What stands against the sum of lasers none of which is refused alone."""
+    bench, names = job.bench, lasers_alight(job)
+    what = f"lasers {', '.join(names)} may be alight together and are"
+    one = "let one at a time through and declare it (emission.lasers_at_once: one)"
+    yield from _for_class(bench, what, class_together(bench, names), one)
+    if bench.enclosure is not None:
+        ceiling_mw = bench.enclosure.power_ceiling_mw
+        if strongest_mw(job) > ceiling_mw:
+            yield Refusal(
+                f"lasers {', '.join(names)} together give {strongest_mw(job):g} mW at"
+                f" full drive, above the bench's ceiling of {ceiling_mw:g} mW"
+                " (enclosure.power_ceiling_mw)",
+                f"{one}, or have the officer raise the ceiling",
+            )
+
+
 def _by_class(bench: Bench, name: str, laser: Laser) -> Iterator[Refusal]:
     found = estimate_class(
         laser.vacuum_wavelength_nm,
@@ -63,18 +86,23 @@ def _by_class(bench: Bench, name: str, laser: Laser) -> Iterator[Refusal]:
         bench.beam.diameter_mm,
         u_wavelength_nm=laser.u_wavelength_nm,
     )
+    yield from _for_class(bench, f"laser '{name}' is", found, "take a weaker laser")
+
+
+def _for_class(
+    bench: Bench, what: str, found: ClassEstimate, weaker: str
+) -> Iterator[Refusal]:
     enclosed = bench.enclosure is not None and bench.enclosure.declared_class == 1
     if found.laser_class == "4":
         yield Refusal(
-            f"laser '{name}' is estimated as class 4 ({found.reason})",
-            "class 4 is never run from here: take a weaker laser",
+            f"{what} estimated as class 4 ({found.reason})",
+            f"class 4 is never run from here: {weaker}",
         )
     elif found.laser_class == "3B" and not enclosed:
         yield Refusal(
-            f"laser '{name}' is estimated as class 3B ({found.reason}) and the bench"
+            f"{what} estimated as class 3B ({found.reason}) and the bench"
             " declares no class 1 enclosure",
-            "enclose the bench and declare it (enclosure.declared_class), or take a"
-            " weaker laser",
+            f"enclose the bench and declare it (enclosure.declared_class), or {weaker}",
         )
 
 

@@ -5,19 +5,40 @@ from collections.abc import Mapping
 
 from pitchsweep.configs.job_model import Job
 from pitchsweep.safety.beam_map import BeamMap, beam_map
-from pitchsweep.safety.exposure_limits import UNATTENDED_S
-from pitchsweep.safety.hazard_figures import laser_figures, summed_hazard
-from pitchsweep.safety.hazard_text import figures_lines, summed_line, wrapped
+from pitchsweep.safety.exposure_limits import TIMES_S
+from pitchsweep.safety.hazard_figures import (
+    class_together,
+    laser_figures,
+    summed_hazard,
+)
+from pitchsweep.safety.hazard_text import (
+    COLUMNS,
+    figures_lines,
+    summed_line,
+    wrapped,
+)
+from pitchsweep.safety.lasers_alight import (
+    at_once_in_words,
+    lasers_alight,
+    may_be_together,
+)
 
 
 def figures_shown(job: Job) -> tuple[str, ...]:
-    """The hazard figures of every laser of the recipe, and of all of them together."""
-    names = job.recipe.lasers
-    lines = [line for n in names for line in figures_lines(laser_figures(job.bench, n))]
-    if len(names) > 1:
-        summed = summed_hazard(job.bench, names, UNATTENDED_S)
-        lines.append(summed_line(summed, names))
-    return tuple(lines)
+    """The hazard figures of every laser that may be alight, and of all together."""
+    names, bench = lasers_alight(job), job.bench
+    lines = [line for n in names for line in figures_lines(laser_figures(bench, n))]
+    lines += COLUMNS
+    lines.append(at_once_in_words(job))
+    if may_be_together(job):
+        sums = [summed_hazard(bench, names, time_s) for time_s in TIMES_S]
+        lines += [summed_line(one, names) for one in sums]
+        together = class_together(bench, names)
+        lines.append(
+            f"together, all taken as of the shortest wavelength: estimated class"
+            f" {together.laser_class}, {together.reason}"
+        )
+    return wrapped(lines)
 
 
 def beam_map_shown(job: Job) -> tuple[str, ...]:
@@ -28,6 +49,7 @@ def beam_map_shown(job: Job) -> tuple[str, ...]:
 def beam_map_lines(found: BeamMap) -> tuple[str, ...]:
     """A summary of ``found``: one line a laser and kind of beam, with what it meets."""
     lines = [f"beam map of job '{found.job}' on bench '{found.bench}'"]
+    lines.append(f"  {found.at_once}")
     alike: dict[tuple[str, str], Counter[str]] = {}
     powers: dict[tuple[str, str], float] = {}
     for beam in found.beams:
@@ -49,7 +71,7 @@ def beam_map_lines(found: BeamMap) -> tuple[str, ...]:
 
 def lasers_shown(job: Job) -> tuple[Mapping[str, object], ...]:
     """What the door sheet says of each laser: class, wavelength, power, density."""
-    return tuple(_laser_shown(job, name) for name in job.recipe.lasers)
+    return tuple(_laser_shown(job, name) for name in lasers_alight(job))
 
 
 def _laser_shown(job: Job, name: str) -> Mapping[str, object]:

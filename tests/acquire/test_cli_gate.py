@@ -12,6 +12,7 @@ from pitchsweep.acquire import ack_run
 from pitchsweep.acquire.ack_run import AT_THE_BENCH, acknowledge_run
 from pitchsweep.acquire.bench_session import open_twin_bench
 from pitchsweep.acquire.cli import run
+from pitchsweep.acquire.journal_file import create_journal, open_journal
 from pitchsweep.acquire.progress import progress_for
 from pitchsweep.acquire.run_folder import RunFolder, create_run_folder
 from pitchsweep.acquire.sweep_session import resume_run
@@ -65,6 +66,21 @@ def test_ack_of_a_twins_run_is_in_the_ledger_and_serves_once(
     assert "already" in capsys.readouterr().out
     Ledger(folder.ledger).append("guard-started", {"run": folder.path.name})
     assert "nobody" in str(why_run_is_not_acknowledged(folder.ledger, folder.path.name))
+
+
+def test_a_complete_run_has_nothing_to_acknowledge(
+    folder: RunFolder, capsys: pytest.CaptureFixture[str]
+) -> None:
+    with create_journal(folder.journal) as journal:
+        journal.end_session(journal.begin_session("me"), "stopped: SIGINT")
+        journal.end_session(journal.begin_session("me"), "done")
+    assert run(["ack", str(folder.path), "--name", "A. Person"]) == 2
+    assert "complete: there is nothing to acknowledge" in capsys.readouterr().err
+    assert not folder.ledger.exists()
+    # A sweep that its schedule ended is not: going on counts as a trip.
+    with open_journal(folder.journal) as journal:
+        journal.set_meta("ended_early", "the schedule says to stop by 06:00Z")
+    assert run(["ack", str(folder.path), "--name", "A. Person"]) == 0
 
 
 def test_ack_needs_a_name(

@@ -1,11 +1,13 @@
 """``signer``, ``signoff`` and ``ledger`` from outside: codes, plain lines, files."""
 
 import json
+import os
 from collections.abc import Callable
 from pathlib import Path
 
 import pytest
 from acquire_fakes import FakeBench, QuietProgress, opener, small_job
+from repository import ROOT
 from sign_off_builders import (
     OFFICER,
     PASSPHRASE,
@@ -264,6 +266,52 @@ def run_under_sign_off(at: Office, folder: Path) -> Path:
         journal.set_meta("ledger_entries", str(entry.n))
         journal.set_meta("ledger_head", entry.hash)
     return path
+
+
+def test_verifying_needs_no_folder_that_can_be_written_to(
+    at: Office,
+    capsys: pytest.CaptureFixture[str],
+    tmp_path: Path,
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    path = run_under_sign_off(at, tmp_path)
+    real = os.access
+    monkeypatch.setattr(os, "access", lambda p, mode: mode != os.W_OK and real(p, mode))
+    for place in (path, at.home.folder):
+        place.chmod(0o555)
+    before = sorted(path.iterdir())
+    assert run(["ledger", "verify", str(path)]) == 0
+    assert capsys.readouterr().out.count("holds  ") == 2
+    assert sorted(path.iterdir()) == before
+    if os.getuid() == 0:
+        (path / "run.db-wal").write_bytes(b"x" * 32)
+        assert run(["ledger", "verify", str(path)]) == 2
+        assert "it was not closed" in capsys.readouterr().err
+    for place in (path, at.home.folder):
+        place.chmod(0o755)
+
+
+def test_the_form_is_the_documented_example(
+    at: Office, cli: Run, tmp_path: Path
+) -> None:
+    """What README says of answers: print the form, fill it in, sign with it."""
+    code, text, _ = cli("signoff", "form", JOB)
+    assert code == 0 and max(map(len, text.splitlines())) <= 90
+    path = tmp_path / "answers.yaml"
+    sign = ("signoff", JOB, "--answers", str(path))
+    with_pass = ("--passphrase-file", secret(tmp_path))
+    path.write_text(text)
+    # Every line that is still empty is named, so there are more than two.
+    assert run([*sign, *with_pass]) == 2
+    with_powers(at, WORK.job)
+    path.write_text(text.replace("NAME", "ada").replace('""', '"Bo, 0555 0100"'))
+    code, _, err = cli(*sign, *with_pass)
+    assert code == 3 and "item 'key': is answered no" in err
+    path.write_text(path.read_text().replace("yes: false", "yes: true"))
+    assert cli(*sign, *with_pass)[0] == 0
+    assert cli("signoff", "verify", JOB)[0] == 0
+    readme = (ROOT / "README.md").read_text(encoding="utf-8")
+    assert "signoff form" in readme and "yes: true" in readme
 
 
 def test_a_run_and_the_peoples_ledger_hold_each_other(
