@@ -9,6 +9,7 @@ from typing import Annotated, Literal, Self
 from pydantic import Field, field_validator, model_validator
 
 from pitchsweep.configs.enclosure_model import Enclosure
+from pitchsweep.configs.ports_model import CameraPort, Ports, SerialPort, StagePort
 from pitchsweep.configs.sensor_model import AirSensor, PowerSensor
 from pitchsweep.configs.settings_base import (
     AngleDeg,
@@ -211,22 +212,6 @@ class Emission(Settings):
         )
 
 
-class SerialPort(Settings):
-    """A serial port and the dialect spoken on it."""
-
-    port: Text
-    dialect: Name
-    baud: Annotated[int, Field(ge=1200, le=4_000_000)] = 115200
-
-
-class Ports(Settings):
-    """The ports of a bench with hardware."""
-
-    stage: SerialPort
-    unit: SerialPort
-    camera: Text
-
-
 class Bench(Settings):
     """A bench: either a twin or ports, never both."""
 
@@ -253,12 +238,35 @@ class Bench(Settings):
             raise ValueError("a bench has either 'twin:' or 'ports:', exactly one")
         return self
 
+    @model_validator(mode="after")
+    def _ports_fit_what_they_serve(self) -> Self:
+        if self.ports is None:
+            return self
+        for name, sensor, port in (
+            ("air", self.air_sensor, self.ports.air),
+            ("power", self.power_sensor, self.ports.power),
+        ):
+            if (sensor is None) != (port is None):
+                raise ValueError(
+                    f"{name}_sensor and ports.{name} go together: give both or none"
+                )
+        camera, bits = self.ports.camera, self.camera.bits
+        eight = camera.by == "network-video" or (
+            camera.by == "usb-video" and camera.pixel_format != "Y16"
+        )
+        if eight and bits != 8:
+            raise ValueError(
+                f"camera.bits is {bits}, and {camera.by} of this format gives 8"
+            )
+        return self
+
 
 __all__ = [
     "Air",
     "Beam",
     "Bench",
     "Camera",
+    "CameraPort",
     "Emission",
     "Enclosure",
     "Fraction",
@@ -270,4 +278,5 @@ __all__ = [
     "Screen",
     "SerialPort",
     "Stage",
+    "StagePort",
 ]

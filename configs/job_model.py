@@ -39,3 +39,21 @@ class Job(Settings):
                 known = ", ".join(sorted(self.bench.lasers))
                 raise ValueError(f"recipe names laser '{laser}'; the bench has {known}")
         return self
+
+    @model_validator(mode="after")
+    def _hardware_can_do_it(self) -> Self:
+        ports = self.bench.ports
+        if ports is None:
+            return self
+        if self.recipe.record == "spots":
+            raise ValueError(
+                "recipe.record is spots, which a simulated bench alone can tell; a"
+                " bench with ports records frames"
+            )
+        fixed_ms = ports.camera.fixed_exposure_ms
+        if fixed_ms is not None and self.recipe.exposures_ms != (fixed_ms,):
+            raise ValueError(
+                f"the camera's exposure is fixed at {fixed_ms:g} ms:"
+                f" recipe.exposures_ms must be [{fixed_ms:g}]"
+            )
+        return self

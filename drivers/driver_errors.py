@@ -22,6 +22,7 @@ RefusalReason = Literal[
     "wrong-frame",
     "black",
     "white",
+    "automatic",
 ]
 
 

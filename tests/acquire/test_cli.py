@@ -12,6 +12,7 @@ from pathlib import Path
 import cv2
 import pytest
 from acquire_fakes import FakeBench, Killed, QuietProgress, opener, small_job
+from port_builders import with_ports
 
 from pitchsweep.acquire import bench_session, exit_codes
 from pitchsweep.acquire.acquire_errors import SweepStopped
@@ -199,14 +200,7 @@ def test_refused_input_exits_2_in_two_lines(
 def test_a_bench_with_ports_exits_3(
     tmp_path: Path, fake: FakeBench, capsys: pytest.CaptureFixture[str]
 ) -> None:
-    ports = {
-        "stage": {"port": "COM1", "dialect": "rotary-line"},
-        "unit": {"port": "COM2", "dialect": "emission-line"},
-        "camera": "usb:0",
-    }
-    values = {**JOB.bench.model_dump(), "twin": None, "ports": ports}
-    bench = type(JOB.bench).model_validate(values)
-    job = job_file(tmp_path, JOB.model_copy(update={"bench": bench}))
+    job = job_file(tmp_path, with_ports(JOB))
     assert run(["sweep", job, "--runs", str(tmp_path / "runs")]) == 3
     refused(capsys, 3, "ports")
     assert run(["sweep", job, "--twin-seed", "1"]) == 2

@@ -7,6 +7,7 @@ from pathlib import Path
 import pytest
 from builders import demo_job
 from emulated_unit import EmulatedUnit
+from port_builders import with_ports
 
 from pitchsweep.acquire import ack_run
 from pitchsweep.acquire.ack_run import AT_THE_BENCH, acknowledge_run
@@ -16,7 +17,6 @@ from pitchsweep.acquire.journal_file import create_journal, open_journal
 from pitchsweep.acquire.progress import progress_for
 from pitchsweep.acquire.run_folder import RunFolder, create_run_folder
 from pitchsweep.acquire.sweep_session import resume_run
-from pitchsweep.configs.bench_model import Bench, Ports, SerialPort
 from pitchsweep.safety.ledger import Ledger, verify
 from pitchsweep.safety.run_ack import (
     refuse_unacknowledged,
@@ -39,18 +39,8 @@ def unit(tmp_path: Path) -> Iterator[EmulatedUnit]:
 
 def hardware_folder(tmp_path: Path, unit_port: str) -> RunFolder:
     """A run on a bench with ports whose unit is emulated on a pseudo-terminal."""
-    job = demo_job("shims-spots")
-    ports = Ports(
-        stage=SerialPort(port="/dev/null", dialect="rotary-line"),
-        unit=SerialPort(port=unit_port, dialect="emission-line"),
-        camera="none",
-    )
-    bench = Bench.model_validate_json(
-        Bench.model_construct(
-            **{**vars(job.bench), "twin": None, "ports": ports}
-        ).model_dump_json()
-    )
-    return create_run_folder(tmp_path, job.model_copy(update={"bench": bench}))
+    unit = {"port": unit_port, "dialect": "emission-line"}
+    return create_run_folder(tmp_path, with_ports(demo_job("shims-spots"), unit=unit))
 
 
 def test_ack_of_a_twins_run_is_in_the_ledger_and_serves_once(

@@ -8,6 +8,7 @@ from typing import Any
 
 import pytest
 from acquire_fakes import FakeBench, Killed, QuietProgress, opener, small_job
+from port_builders import with_ports
 
 from pitchsweep.acquire.acquire_errors import RunRefused, SweepStopped
 from pitchsweep.acquire.fit_input import FitInput
@@ -234,15 +235,8 @@ def test_a_changed_job_file_is_refused(tmp_path: Path) -> None:
 
 
 def test_a_bench_with_ports_is_refused_before_a_folder_is_made(tmp_path: Path) -> None:
-    ports = {
-        "stage": {"port": "COM1", "dialect": "rotary-line"},
-        "unit": {"port": "COM2", "dialect": "emission-line"},
-        "camera": "usb:0",
-    }
-    values = {**SPOTS.bench.model_dump(), "twin": None, "ports": ports}
-    bench = type(SPOTS.bench).model_validate(values)
     with pytest.raises(GateRefused, match="ports"):
-        swept(SPOTS.model_copy(update={"bench": bench}), tmp_path, FakeBench(SPOTS))
+        swept(with_ports(SPOTS), tmp_path, FakeBench(SPOTS))
     assert not list(tmp_path.iterdir())
 
 

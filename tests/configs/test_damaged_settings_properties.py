@@ -6,6 +6,7 @@ from typing import Any
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+from port_builders import STILLS, port_values
 from settings_damage import NEW_KEY, Field, damaged, damages, fields
 
 from pitchsweep.configs.bench_model import Bench
@@ -18,11 +19,13 @@ from pitchsweep.configs.recipe_model import Recipe
 from pitchsweep.configs.settings_base import Settings
 from pitchsweep.configs.yaml_lines import parse_yaml
 
-WITH_PORTS = {
-    "stage": {"port": "/dev/a", "dialect": "plain", "baud": 9600},
-    "unit": {"port": "/dev/b", "dialect": "plain", "baud": 9600},
-    "camera": "camera-0",
-}
+SENSOR = {"dialect": "air-line", "baud": 9600}
+WITH_PORTS = port_values(
+    stage={"port": "/dev/a", "dialect": "rotary-line", "identity": "stage 7"},
+    air={"port": "/dev/c", **SENSOR},
+    power={"port": "/dev/d", **SENSOR},
+    camera={**STILLS, "gain": 1, "pixel_format": "Y16"},
+)
 
 
 def _whole(model: type[Settings]) -> dict[str, Any]:

@@ -106,8 +106,10 @@ def test_a_missing_key_is_named_with_the_line_of_its_block(tmp_path: Path) -> No
 
 
 def test_a_bench_with_twin_and_ports_is_refused(tmp_path: Path) -> None:
-    port = "{port: /dev/x, dialect: plain}"
-    ports = f"ports:\n  stage: {port}\n  unit: {port}\n  camera: none\ntwin:"
+    stage = "{port: /dev/x, dialect: rotary-line}"
+    unit = "{port: /dev/y, dialect: emission-line}"
+    camera = "{by: usb-video, address: /dev/video0}"
+    ports = f"ports:\n  stage: {stage}\n  unit: {unit}\n  camera: {camera}\ntwin:"
     message, _ = _refused_bench(tmp_path, "twin:", ports)
     assert "either 'twin:' or 'ports:', exactly one" in message
 

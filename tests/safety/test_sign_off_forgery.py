@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from port_builders import invented_ports
 from sign_off_builders import (
     OFFICER,
     TECHNICIAN,
@@ -25,7 +26,6 @@ from sign_off_builders import (
     write_ledger,
 )
 
-from pitchsweep.configs.bench_model import Ports, SerialPort
 from pitchsweep.safety.ledger_chain import Signed
 from pitchsweep.safety.people_ledger import SIGNED_OFF
 from pitchsweep.safety.people_store import enter, rebuild_register
@@ -126,9 +126,7 @@ def test_another_benchs_and_another_jobs_sign_off(at: Office) -> None:
 
 def test_a_rehearsed_sign_off_is_none_for_a_real_bench(at: Office) -> None:
     kept = signed(at, WORK)
-    port = SerialPort(port="/dev/null", dialect="rotary-line")
-    ports = Ports(stage=port, unit=port, camera="cam")
-    real = changed(WORK, bench={"twin": None, "ports": ports})
+    real = changed(WORK, bench={"twin": None, "ports": invented_ports()})
     assert "for a simulated bench, this one is real" in verdict(at, kept, real)
 
 
