@@ -3,12 +3,12 @@
 Rules of the file: a header names the columns (any order); ``#`` starts a comment line;
 fields are separated by commas and numbers use a decimal point. ``order``,
 ``mount_deg``, ``ux_mm`` and ``uy_mm`` may be blank or absent, ``laser`` only where one
-laser is known. The covariance of x and y is not in the file: it reads as zero.
+laser is known. ``brightness`` is there for every row or for none. The covariance of x
+and y is not in the file: it reads as zero.
 """
 
 import csv
 import io
-import math
 import re
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
@@ -17,7 +17,16 @@ from typing import TypeVar
 import numpy as np
 
 from pitchsweep.analysis.analysis_errors import InputRefused
-from pitchsweep.analysis.records import UNKNOWN_ORDER, OrderTable
+from pitchsweep.analysis.order_table_cells import (
+    Field,
+    angle_of,
+    brightness_of,
+    order_of,
+    place_of,
+    step_of,
+    uncertainty_of,
+)
+from pitchsweep.analysis.records import UNKNOWN_ORDER, FloatArray, OrderTable
 
 COLUMNS = (
     "step",
@@ -30,16 +39,11 @@ COLUMNS = (
     "ux_mm",
     "uy_mm",
 )
+BRIGHTNESS = "brightness"
+KNOWN = (*COLUMNS, BRIGHTNESS)
 REQUIRED = ("step", "stage_deg", "x_mm", "y_mm")
-MAX_STEP = 2**31 - 1
-MAX_ORDER = 1000
-MAX_ANGLE_DEG = 3600.0
-MAX_MM = 1.0e5
 
 _T = TypeVar("_T")
-_WHOLE = re.compile(r"[+-]?[0-9]{1,10}")
-_NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]+)?")
-_DECIMAL_COMMA = re.compile(r"[+-]?[0-9]+,[0-9]+([eE][+-]?[0-9]+)?")
 
 
 @dataclass(frozen=True)
@@ -53,26 +57,6 @@ class TableSource:
     file: str
     laser_names: tuple[str, ...]
     reading_u_mm: float
-
-
-@dataclass(frozen=True)
-class _Field:
-    """One cell with its place."""
-
-    text: str
-    column: str
-    line: int
-    file: str
-
-    def refused(self, problem: str, allowed: str) -> InputRefused:
-        return InputRefused(
-            problem,
-            allowed=allowed,
-            file=self.file,
-            line=self.line,
-            column=self.column,
-            value=self.text,
-        )
 
 
 def decode_order_table(raw: bytes, file: str) -> str:
@@ -126,8 +110,8 @@ def write_order_table(table: OrderTable, *, comments: Sequence[str] = ()) -> str
     for comment in comments:
         out.write("".join(f"# {line}\n" for line in comment.splitlines()))
     writer = csv.writer(out, lineterminator="\n")
-    writer.writerow(COLUMNS)
-    columns = (
+    names = [*COLUMNS]
+    columns: list[Iterable[object]] = [
         table.step.tolist(),
         map(repr, table.stage_deg.tolist()),
         map(repr, table.mount_deg.tolist()),
@@ -137,7 +121,11 @@ def write_order_table(table: OrderTable, *, comments: Sequence[str] = ()) -> str
         map(repr, table.y_mm.tolist()),
         map(repr, table.ux_mm.tolist()),
         map(repr, table.uy_mm.tolist()),
-    )
+    ]
+    if table.brightness is not None:
+        names.append(BRIGHTNESS)
+        columns.append(map(repr, table.brightness.tolist()))
+    writer.writerow(names)
     writer.writerows(zip(*columns, strict=True))
     return out.getvalue()
 
@@ -164,10 +152,10 @@ def _rows(text: str, file: str) -> Iterable[tuple[int, list[str]]]:
 def _checked_header(names: list[str], line: int, source: TableSource) -> list[str]:
     _check_separator(names, line, source.file)
     for name in names:
-        if name not in COLUMNS:
+        if name not in KNOWN:
             raise InputRefused(
                 "unknown column" if name else "a column has no name",
-                allowed=f"the columns {', '.join(COLUMNS)}",
+                allowed=f"the columns {', '.join(KNOWN)}",
                 file=source.file,
                 line=line,
                 value=name,
@@ -207,7 +195,7 @@ def _check_separator(names: list[str], line: int, file: str) -> None:
 
 def _cells(
     fields: list[str], line: int, header: list[str], file: str
-) -> dict[str, _Field]:
+) -> dict[str, Field]:
     if len(fields) != len(header):
         hint = "; decimal commas?" if len(fields) > len(header) else ""
         raise InputRefused(
@@ -217,86 +205,44 @@ def _cells(
             line=line,
         )
     return {
-        name: _Field(text, name, line, file)
+        name: Field(text, name, line, file)
         for name, text in zip(header, fields, strict=True)
     }
 
 
-def _table(cells: list[dict[str, _Field]], source: TableSource) -> OrderTable:
-    def column(name: str, read: Callable[[_Field], _T], blank: _T) -> list[_T]:
+def _table(cells: list[dict[str, Field]], source: TableSource) -> OrderTable:
+    def column(name: str, read: Callable[[Field], _T], blank: _T) -> list[_T]:
         values = (row.get(name) for row in cells)
         return [read(v) if v is not None and v.text else blank for v in values]
 
-    def needed(name: str, read: Callable[[_Field], _T]) -> list[_T]:
+    def needed(name: str, read: Callable[[Field], _T]) -> list[_T]:
         return [read(row[name]) for row in cells]
 
     u_mm = float(source.reading_u_mm)
     return OrderTable(
-        step=np.array(needed("step", _step), dtype=np.int64),
-        stage_deg=np.array(needed("stage_deg", _angle), dtype=np.float64),
-        mount_deg=np.array(column("mount_deg", _angle, 0.0), dtype=np.float64),
+        step=np.array(needed("step", step_of), dtype=np.int64),
+        stage_deg=np.array(needed("stage_deg", angle_of), dtype=np.float64),
+        mount_deg=np.array(column("mount_deg", angle_of, 0.0), dtype=np.float64),
         laser=np.array([_laser(row, source) for row in cells], dtype=np.int64),
         laser_names=source.laser_names,
-        order=np.array(column("order", _order, UNKNOWN_ORDER), dtype=np.int64),
-        x_mm=np.array(needed("x_mm", _place), dtype=np.float64),
-        y_mm=np.array(needed("y_mm", _place), dtype=np.float64),
-        ux_mm=np.array(column("ux_mm", _uncertainty, u_mm), dtype=np.float64),
-        uy_mm=np.array(column("uy_mm", _uncertainty, u_mm), dtype=np.float64),
+        order=np.array(column("order", order_of, UNKNOWN_ORDER), dtype=np.int64),
+        x_mm=np.array(needed("x_mm", place_of), dtype=np.float64),
+        y_mm=np.array(needed("y_mm", place_of), dtype=np.float64),
+        ux_mm=np.array(column("ux_mm", uncertainty_of, u_mm), dtype=np.float64),
+        uy_mm=np.array(column("uy_mm", uncertainty_of, u_mm), dtype=np.float64),
         cxy_mm2=np.zeros(len(cells)),
+        brightness=_brightness(cells),
     )
 
 
-def _step(field: _Field) -> int:
-    return _whole(field, 0, MAX_STEP)
+def _brightness(cells: list[dict[str, Field]]) -> FloatArray | None:
+    """The column of brightness; None where it is absent or all blank."""
+    if not any(row[BRIGHTNESS].text for row in cells if BRIGHTNESS in row):
+        return None
+    return np.array([brightness_of(row[BRIGHTNESS]) for row in cells], dtype=np.float64)
 
 
-def _order(field: _Field) -> int:
-    return _whole(field, -MAX_ORDER, MAX_ORDER)
-
-
-def _whole(field: _Field, low: int, high: int) -> int:
-    allowed = f"a whole number from {low} to {high}"
-    if not _WHOLE.fullmatch(field.text):
-        raise field.refused("not a whole number" if field.text else "blank", allowed)
-    number = int(field.text)
-    if not low <= number <= high:
-        raise field.refused("out of range", allowed)
-    return number
-
-
-def _angle(field: _Field) -> float:
-    return _number(field, -MAX_ANGLE_DEG, MAX_ANGLE_DEG, "degrees")
-
-
-def _place(field: _Field) -> float:
-    return _number(field, -MAX_MM, MAX_MM, "mm")
-
-
-def _uncertainty(field: _Field) -> float:
-    number = _number(field, 0.0, MAX_MM, "mm")
-    if number <= 0.0:
-        raise field.refused(
-            "an uncertainty must be above zero",
-            f"a number of mm above 0 to {MAX_MM:g}, or blank for the bench's own",
-        )
-    return number
-
-
-def _number(field: _Field, low: float, high: float, unit: str) -> float:
-    allowed = f"a finite number of {unit} from {low:g} to {high:g}"
-    if not field.text:
-        raise field.refused("blank", allowed)
-    if _DECIMAL_COMMA.fullmatch(field.text):
-        raise field.refused("decimal comma", f"{allowed}, with a decimal point")
-    if not _NUMBER.fullmatch(field.text):
-        raise field.refused("not a finite number", allowed)
-    number = float(field.text)
-    if not math.isfinite(number) or not low <= number <= high:
-        raise field.refused("out of range", allowed)
-    return number
-
-
-def _laser(row: dict[str, _Field], source: TableSource) -> int:
+def _laser(row: dict[str, Field], source: TableSource) -> int:
     field = row.get("laser")
     known = source.laser_names
     if field is None or not field.text:

@@ -249,7 +249,7 @@ def _require_no_half(
 
 def _half_text(between: InBetween, pitch_nm: float, directions: Directions) -> str:
     if directions.coarse.table.brightness is None:
-        why = "the table says nothing about brightness"
+        why = "the table says nothing about brightness (column brightness)"
     elif between.sites < FEWEST_SITES:
         why = f"too few places on the screen ({between.sites}) would have shown them"
     else:

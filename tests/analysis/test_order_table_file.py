@@ -8,12 +8,15 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from pitchsweep.analysis.analysis_errors import InputRefused
-from pitchsweep.analysis.order_table_file import (
-    COLUMNS,
+from pitchsweep.analysis.order_table_cells import (
     MAX_ANGLE_DEG,
+    MAX_BRIGHTNESS,
     MAX_MM,
     MAX_ORDER,
     MAX_STEP,
+)
+from pitchsweep.analysis.order_table_file import (
+    COLUMNS,
     TableSource,
     decode_order_table,
     read_order_table,
@@ -86,6 +89,28 @@ def test_written_tables_read_back_bit_for_bit(rows: list[tuple[float, ...]]) -> 
     table = table_of(rows, TWO_LASERS.laser_names)
     text = write_order_table(table, comments=("invented data", "two\nlines"))
     assert_same_bits(read_order_table(text, TWO_LASERS), table)
+
+
+@given(rows=st.lists(ROWS, min_size=1, max_size=5), light=st.data())
+def test_brightness_reads_back_bit_for_bit(
+    rows: list[tuple[float, ...]], light: st.DataObject
+) -> None:
+    lights = st.floats(0.0, MAX_BRIGHTNESS)
+    values = light.draw(st.lists(lights, min_size=len(rows), max_size=len(rows)))
+    plain = table_of(rows, TWO_LASERS.laser_names)
+    table = dataclasses.replace(plain, brightness=np.array(values))
+    assert_same_bits(read_order_table(write_order_table(table), TWO_LASERS), table)
+
+
+def test_brightness_blank_in_every_row_is_not_known() -> None:
+    text = "step,stage_deg,x_mm,y_mm,brightness\n0,1,2,3,\n1,2,3,4,\n"
+    assert read_order_table(text, ONE_LASER).brightness is None
+
+
+def test_brightness_blank_in_some_rows_is_refused() -> None:
+    text = "step,stage_deg,x_mm,y_mm,brightness\n0,1,2,3,7\n1,2,3,4,\n"
+    with pytest.raises(InputRefused, match="line 3, column brightness.*blank"):
+        read_order_table(text, ONE_LASER)
 
 
 @given(rows=st.lists(ROWS, min_size=1, max_size=5), order=st.permutations(range(9)))
