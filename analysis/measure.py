@@ -113,7 +113,9 @@ def measure_pitch(
         refused.append(_rejected_row(table, index, reason))
     warnings = [*hinted.warnings, *warnings, *_off_nominal(problem, fit, part)]
     warnings += prior_warnings(problem, fit)
-    warnings += unknown_beam_warnings(table, refused) + _off_screen(refused, table)
+    # What concerns people's eyes is said first.
+    warnings = unknown_beam_warnings(table, refused) + warnings
+    warnings += _off_screen(refused, table)
     result = _result(problem, clean, fit, scatter, coverage, warnings, refused)
     result = replace(result, assumed_absent=assumed_absent(bench, part))
     sweep = Sweep(problem, clean.order, fit, bench, air)
