@@ -12,8 +12,13 @@ from contextlib import ExitStack, contextmanager
 from pathlib import Path
 
 from pitchsweep.acquire.bench_devices import BenchDevices
-from pitchsweep.acquire.bench_work import permitted_steps, step_powers_mw
+from pitchsweep.acquire.bench_work import (
+    permitted_steps,
+    step_lasers,
+    step_powers_mw,
+)
 from pitchsweep.acquire.journal_rows import GateRow
+from pitchsweep.acquire.power_watch import PowerWatch
 from pitchsweep.acquire.run_folder import JOB
 from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.run_permit import entered
@@ -81,8 +86,9 @@ class TwinPerson:
 class GuardGate:
     """The guard as a sweep's gate; the ledger's head goes into the journal.
 
-    ``powers_mw``: step -> power at the part. Nothing on a simulated bench reads it, so
-    the laser's full drive is told.
+    ``powers_mw``: step -> power at the part as the bench file has it, told until (and
+    unless) a sensor reads it; ``lasers``: step -> the laser lit there, for ``watch``,
+    which reads that sensor.
     """
 
     def __init__(
@@ -91,20 +97,28 @@ class GuardGate:
         journal: RunJournal,
         ledger: Path,
         powers_mw: Mapping[int, float],
+        lasers: Mapping[int, str] | None = None,
     ) -> None:
+        self.watch: PowerWatch | None = None
         self._powers_mw = powers_mw
+        self._lasers = lasers or {}
+        self._read: tuple[float, float] | None = None
         self._guard = guard
         self._journal = journal
         self._ledger = ledger
 
     def light_on(self, *, step: int, commanded_deg: float, readback_deg: float) -> None:
         """Light at ``step``. Raises GateTripped or GateRefused."""
-        power_mw = self._powers_mw.get(step, math.nan)
+        power_mw, self._read = self._powers_mw.get(step, math.nan), None
         self._guard.light_on(step, commanded_deg, readback_deg, power_mw)
+        if self.watch is not None:
+            self.watch.lit(self._lasers.get(step, ""))
 
     def still_at(self, *, step: int, commanded_deg: float, readback_deg: float) -> None:
         """A fresh reading of the stage, for the next heartbeats."""
         self._guard.check()
+        declared = (self._powers_mw.get(step, math.nan), time.monotonic())
+        power_mw, power_at_s = self._read or declared
         self._guard.report_stage(
             StageReport(
                 step,
@@ -112,12 +126,15 @@ class GuardGate:
                 readback_deg,
                 time.monotonic(),
                 turning=False,
-                power_mw=self._powers_mw.get(step, math.nan),
+                power_mw=power_mw,
+                power_at_s=power_at_s,
             )
         )
 
     def dark(self) -> None:
         """Dark, returned from when the unit was asked. Raises GateTripped."""
+        if self.watch is not None:
+            self.watch.dark()
         self._guard.dark()
 
     def trip(self, reason: str) -> None:
@@ -130,6 +147,11 @@ class GuardGate:
         found = verify(self._ledger)
         self._journal.set_meta("ledger_entries", str(found.count))
         self._journal.set_meta("ledger_head", found.head)
+
+    def power_read(self, power_mw: float) -> None:
+        """The power at the part as a sensor has just read it."""
+        self._read = (power_mw, time.monotonic())
+        self._guard.report_power(power_mw)
 
 
 @contextmanager
@@ -165,17 +187,25 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
         )
         stage = StageClient(line, world, bench.stage)
         stack.callback(stage.close)
+        gate = GuardGate(
+            guard,
+            request.journal,
+            ledger,
+            step_powers_mw(request.plan, bench),
+            step_lasers(request.plan),
+        )
+        if bench.power_sensor is not None:
+            # A line of its own: the other one may wait for bench time to pass.
+            sensor = TwinWorldClient(twin.address)
+            stack.callback(sensor.close)
+            watch = PowerWatch(sensor.read_meter, gate.power_read)
+            gate.watch = stack.enter_context(watch)
         yield BenchDevices(
             stage=stage,
             camera=camera,
             clock=world,
             world=world,
-            gate=GuardGate(
-                guard,
-                request.journal,
-                ledger,
-                step_powers_mw(request.plan, bench),
-            ),
+            gate=gate,
             gate_history=history.take,
         )
 

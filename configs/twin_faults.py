@@ -28,11 +28,18 @@ ACTIONS_AT: dict[str, tuple[str, ...]] = {
         "white",
         "gone",
     ),
-    "light": ("dropout", "power-drop", "mode-hop", "blocked", "stray-spot"),
+    "light": (
+        "dropout",
+        "power-drop",
+        "power-rise",
+        "mode-hop",
+        "blocked",
+        "stray-spot",
+    ),
     "sensors": ("missing",),
 }
 """Occasion -> what can go wrong then. "light" is counted at every look at the screen
-while the light is on; "power-drop" and "mode-hop" last from then on."""
+while the light is on; "power-drop", "power-rise" and "mode-hop" last from then on."""
 
 Occasion = Literal[
     "stage-ask", "stage-move", "unit-ask", "unit-keep", "exposure", "light", "sensors"

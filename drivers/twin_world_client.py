@@ -5,6 +5,8 @@ from dataclasses import asdict
 from pitchsweep.drivers.devices import AirReading, BenchReading, Label, SpotReading
 from pitchsweep.drivers.twin_link import ANSWER_TIMEOUT_S, TwinAddress, TwinLink
 
+METER_TIMEOUT_S = 1.0
+
 
 class TwinWorldClient:
     """The twin's bench clock (a BenchClock), spots door, air, door and reset button."""
@@ -20,9 +22,9 @@ class TwinWorldClient:
         """Lets bench time pass: at once in rehearsal, by sleeping at real speed."""
         self._link.ask("wait", seconds=seconds, timeout_s=seconds + ANSWER_TIMEOUT_S)
 
-    def seat_part(self, mount: int, mount_deg: float) -> None:
+    def seat_part(self, mount: int, mount_deg: float, face_deg: float = 0.0) -> None:
         """The person on the spot seats the part as mount number ``mount``."""
-        self._link.ask("seat", mount=mount, mount_deg=mount_deg)
+        self._link.ask("seat", mount=mount, mount_deg=mount_deg, face_deg=face_deg)
 
     def spots(self, label: Label) -> list[SpotReading]:
         """Spots of this moment; none without light and none while the stage turns."""
@@ -43,7 +45,8 @@ class TwinWorldClient:
 
     def read_meter(self, laser: str) -> float:
         """What a meter where the part sits shows now, in mW; 0 in the dark."""
-        return float(self._link.ask("meter", laser=laser))
+        said = self._link.ask("meter", laser=laser, timeout_s=METER_TIMEOUT_S)
+        return float(said)
 
     def ask_person(self, what: str) -> str:
         """The person on the spot does what they are asked; who it was."""

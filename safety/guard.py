@@ -71,6 +71,7 @@ class Guard:
         """Does ``command`` at once and says whether it was done."""
         if command.beat is not None:
             self._beat = command.beat
+            self._judge_beat()
         if command.request is Request.PRESS:
             self._pressed_s = max(self._pressed_s, command.sent_s)
         acts: dict[Request, Callable[[], Reply]] = {
@@ -115,6 +116,14 @@ class Guard:
     def end(self, reason: str) -> None:
         """Dark at once and for good."""
         self._move(Event.END_REQUESTED, reason)
+
+    def _judge_beat(self) -> None:
+        """What a heartbeat says is acted on at once."""
+        if not self._gate.emission:
+            return
+        fault = first_fault(self._view(), self._world.checks.on_beat)
+        if fault is not None:
+            self._move(fault.event, fault.reason)
 
     def _begin_trial(self) -> Reply:
         outcome = self._gate.look(Event.ARMED)
@@ -188,8 +197,8 @@ class Guard:
         self._light_was_seen = False
         self._teller.lit(self._lit_step)
         self._move(Event.LIGHT_REQUESTED, f"step {self._lit_step}")
-        kept = self._try(self._watch.keep)
-        if kept and not (view.settings.rises_within_s or self._watch.shows_light()):
+        lit = self._try(self._watch.light_up)
+        if lit and not (view.settings.rises_within_s or self._watch.shows_light()):
             self._move(Event.LIGHT_DROPPED, "asked for light, the unit stays dark")
 
     def _simple(self, event: Event, reason: str) -> Reply:

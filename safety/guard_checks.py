@@ -236,6 +236,9 @@ CHECKS: Mapping[GateState, tuple[Check, ...]] = MappingProxyType(
 )
 """Must hold on every tick of a state."""
 
+ON_BEAT: tuple[Check, ...] = (heartbeat_is_fresh, *_STAGE)
+"""Must hold of a heartbeat when it comes while lit; the tick looks at it again."""
+
 BEFORE_ARMING: tuple[Check, ...] = (*_ALWAYS, light_is_off, arming_is_proven)
 """Must hold when the gate is armed; a failure refuses and does not trip."""
 

@@ -10,6 +10,7 @@ import sys
 import threading
 import time
 from collections.abc import Callable
+from dataclasses import replace
 from types import TracebackType
 from typing import IO, Protocol, Self
 
@@ -135,6 +136,17 @@ class GuardClient:
     def report_stage(self, stage: StageReport) -> None:
         """What the next heartbeats say of the stage."""
         self._stage = stage
+
+    def report_power(self, power_mw: float) -> None:
+        """The power at the part, read just now; the guard has judged it on return.
+
+        Raises GateTripped where it is above the limit, GuardLost.
+        """
+        stage = self._stage
+        if stage is not None:
+            now_s = self._now()
+            self._stage = replace(stage, power_mw=power_mw, power_at_s=now_s)
+            self._ask("beat", **self._stage_fields())
 
     def check(self) -> None:
         """Raises GateTripped after a trip, GuardLost when the guard is gone."""

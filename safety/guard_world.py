@@ -8,7 +8,12 @@ from typing import Protocol
 from pitchsweep.drivers.emission_client import UnitState
 from pitchsweep.safety.gate_event import GateEvent
 from pitchsweep.safety.gate_table import GateState
-from pitchsweep.safety.guard_checks import BEFORE_ARMING, BEFORE_LIGHT, CHECKS
+from pitchsweep.safety.guard_checks import (
+    BEFORE_ARMING,
+    BEFORE_LIGHT,
+    CHECKS,
+    ON_BEAT,
+)
 from pitchsweep.safety.guard_view import Check
 from pitchsweep.safety.permit import NONCE_BYTES
 
@@ -19,6 +24,8 @@ class UnitLine(Protocol):
     def identify(self) -> str: ...
 
     def prove(self, nonce: bytes) -> bytes: ...
+
+    def light_up(self) -> UnitState: ...
 
     def keep_lit(self) -> UnitState: ...
 
@@ -39,6 +46,7 @@ class GuardChecks:
         default_factory=lambda: CHECKS
     )
     before_light: tuple[Check, ...] = field(default_factory=lambda: BEFORE_LIGHT)
+    on_beat: tuple[Check, ...] = field(default_factory=lambda: ON_BEAT)
     before_arming: tuple[Check, ...] = field(default_factory=lambda: BEFORE_ARMING)
 
 

@@ -23,12 +23,12 @@ from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
 from pitchsweep.drivers.twin.kept_state import KeptState, read_state, write_state
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
 from pitchsweep.drivers.twin.spots_door import spots
-from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics
+from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics, Windup
 from pitchsweep.drivers.twin.truth import Truth, twin_settings
 
 STALL_SHARE = 0.4
 ASTRAY_DEG = 0.3
-POWER_AFTER_DROP = 0.7
+POWER_AFTER_DROP, POWER_AFTER_RISE = 0.7, 1.5
 PERSON = "twin-person"
 STRAY = SpotReading(x_mm=77.0, y_mm=44.0, ux_mm=0.1, uy_mm=0.1, brightness=0.02)
 """A reflection that is no order of the part."""
@@ -36,10 +36,11 @@ STRAY = SpotReading(x_mm=77.0, y_mm=44.0, ux_mm=0.1, uy_mm=0.1, brightness=0.02)
 
 @dataclass(frozen=True)
 class Seat:
-    """How the part is seated: index of the mount and its angle."""
+    """How the part is seated: index of the mount, its angle, turn in its own plane."""
 
     mount: int
     mount_deg: float
+    face_deg: float = 0.0
 
 
 class World:
@@ -63,8 +64,13 @@ class World:
         self._faults = faults
         self._state_path = state_path
         self._lock = threading.RLock()
+        effects = settings.effects
         self._stage = StageMechanics(
-            kept.stage, backlash_deg=settings.effects.backlash_deg
+            kept.stage,
+            backlash_deg=effects.backlash_deg,
+            windup=Windup(
+                effects.leftover_backlash_arcsec / 3600.0, effects.run_up_deg
+            ),
         )
         self._saved = kept.stage
         self._seat = Seat(0, 0.0)
@@ -128,10 +134,10 @@ class World:
             self._save_at_rest(now_s)
         return now_s
 
-    def seat(self, mount: int, mount_deg: float) -> None:
+    def seat(self, mount: int, mount_deg: float, face_deg: float = 0.0) -> None:
         """The person on the spot seats the part anew."""
         with self._lock:
-            self._seat = Seat(mount, mount_deg)
+            self._seat = Seat(mount, mount_deg, face_deg)
 
     def cut_power(self) -> None:
         """The stage loses its zero and the unit its light, as in a power cut."""
@@ -150,7 +156,7 @@ class World:
         fault = self._faults.due("sensors")
         with self._lock:
             stage_deg, seat = self._stage.table_deg(self.time.now_s()), self._seat
-            label = Label(seat.mount, laser, 0, 0, 0, planned_s)
+            label = Label(seat.mount, laser, 0, 0, 0, planned_s, seat.face_deg)
             power_mw = read_power_mw(
                 self.truth,
                 self.bench,
@@ -251,6 +257,8 @@ class World:
         self._out = does == "dropout"
         if does == "power-drop":
             self._laser = replace(self._laser, power=POWER_AFTER_DROP)
+        if does == "power-rise":
+            self._laser = replace(self._laser, power=POWER_AFTER_RISE)
         if does == "mode-hop":
             hop_pm = twin_settings(self.bench).effects.mode_hop_pm
             self._laser = replace(self._laser, shift_pm=hop_pm)
@@ -285,6 +293,7 @@ def _seated(label: Label, seat: Seat) -> Label:
         step=label.step,
         exposure=label.exposure,
         planned_s=label.planned_s,
+        face_deg=seat.face_deg,
     )
 
 

@@ -292,7 +292,7 @@ def test_verifying_needs_no_folder_that_can_be_written_to(
 
 
 def test_the_form_is_the_documented_example(
-    at: Office, cli: Run, tmp_path: Path
+    at: Office, cli: Run, tmp_path: Path, capsys: pytest.CaptureFixture[str]
 ) -> None:
     """What README says of answers: print the form, fill it in, sign with it."""
     code, text, _ = cli("signoff", "form", JOB)
@@ -303,6 +303,7 @@ def test_the_form_is_the_documented_example(
     path.write_text(text)
     # Every line that is still empty is named, so there are more than two.
     assert run([*sign, *with_pass]) == 2
+    assert "items.key.words = ''" in capsys.readouterr().err
     with_powers(at, WORK.job)
     path.write_text(text.replace("NAME", "ada").replace('""', '"Bo, 0555 0100"'))
     code, _, err = cli(*sign, *with_pass)

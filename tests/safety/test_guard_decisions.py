@@ -77,7 +77,7 @@ def test_the_light_is_off_before_the_reason_is_told() -> None:
 def test_light_without_arming_is_refused() -> None:
     rig = Rig()
     assert not rig.light()
-    assert rig.state == "cold" and "keep" not in rig.unit.asked
+    assert rig.state == "cold" and not {"light", "keep"} & set(rig.unit.asked)
 
 
 def test_arming_needs_a_heartbeat_but_does_not_trip_without() -> None:
@@ -197,7 +197,7 @@ def test_a_wrong_light_request_trips_and_never_lights(
     assert rig.arm()
     assert not rig.light(**change)  # type: ignore[arg-type]
     assert (rig.state, rig.events[-1].event) == ("tripped", event)
-    assert "keep" not in rig.unit.asked
+    assert not {"light", "keep"} & set(rig.unit.asked)
 
 
 def test_while_ready_the_stage_may_turn_anywhere() -> None:
@@ -258,6 +258,7 @@ def without(check: Any) -> Any:
             for state, checks in whole.by_state.items()
         },
         before_light=tuple(c for c in whole.before_light if c is not check),
+        on_beat=tuple(c for c in whole.on_beat if c is not check),
         before_arming=tuple(c for c in whole.before_arming if c is not check),
     )
 
