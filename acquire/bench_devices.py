@@ -54,7 +54,9 @@ class Gate(Protocol):
 class World(Protocol):
     """What a person or the bench does on request: re-seat the part, tell spots."""
 
-    def seat_part(self, mount: int, mount_deg: float) -> None: ...
+    def seat_part(
+        self, mount: int, mount_deg: float, face_deg: float = 0.0
+    ) -> None: ...
 
     def spots(self, label: Label) -> Sequence[SpotReading]: ...
 

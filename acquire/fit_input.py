@@ -67,6 +67,7 @@ class SpotPlace:
     shared_xx_mm2: float = 0.0
     shared_xy_mm2: float = 0.0
     shared_yy_mm2: float = 0.0
+    face_deg: float = 0.0
 
 
 def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> OrderTable:
@@ -92,6 +93,7 @@ def order_table(rows: Sequence[SpotPlace], laser_names: tuple[str, ...]) -> Orde
         shared_xx_mm2=column("shared_xx_mm2"),
         shared_xy_mm2=column("shared_xy_mm2"),
         shared_yy_mm2=column("shared_yy_mm2"),
+        face_deg=column("face_deg"),
     )
 
 
@@ -183,6 +185,7 @@ def _moved(table: OrderTable, steps: int, turn: int, part: int) -> OrderTable:
         "mount_deg": table.mount_deg + TURN_DEG * turn,
         "run": np.full(len(table), turn, dtype=np.int64),
         "part": np.full(len(table), part, dtype=np.int64),
+        "face_deg": np.zeros(len(table)) if table.face_deg is None else table.face_deg,
     }
     return OrderTable(**columns)
 

@@ -22,6 +22,7 @@ from pitchsweep.analysis.report_context import GateRow as GateShown
 from pitchsweep.analysis.result_file import order_text
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
+from pitchsweep.configs.recipe_model import Recipe
 
 MOST_FRAMES = 6
 PER_STEP = ("light-requested", "dark-requested")
@@ -68,7 +69,7 @@ def _facts(record: RunRecord) -> tuple[Fact, ...]:
             f"{recipe.recipe}: {_angle(recipe.start_deg)} to"
             f" {_angle(recipe.stop_deg)} deg by {_angle(recipe.step_deg)} deg,"
             f" {recipe.angle_order}, mounts at"
-            f" {', '.join(map(_angle, recipe.mounts_deg))} deg,"
+            f" {', '.join(map(_angle, recipe.mounts_deg))} deg{_faces(recipe)},"
             f" {', '.join(recipe.lasers)}",
         ),
         Fact(
@@ -94,6 +95,12 @@ def _permit_facts(meta: Mapping[str, str]) -> list[Fact]:
         words = f"{meta['people_ledger_entries']}, head {meta['people_ledger_head']}"
         facts.append(Fact("People's ledger entries", words))
     return facts
+
+
+def _faces(recipe: Recipe) -> str:
+    if not any(recipe.faces_deg):
+        return ""
+    return f" turned in the part's plane by {', '.join(map(_angle, recipe.faces_deg))}"
 
 
 def _angle(deg: float) -> str:

@@ -33,6 +33,7 @@ from pitchsweep.acquire.stored_spots import spots_of
 from pitchsweep.acquire.sweep_plan import SweepPlan, plan_sweep
 from pitchsweep.analysis.analysis_errors import NoResult
 from pitchsweep.configs.fingerprint import fingerprint
+from pitchsweep.configs.recipe_model import Recipe
 from pitchsweep.configs.typed_command import typed
 
 
@@ -135,7 +136,8 @@ def input_from_run(record: RunRecord) -> FitInput:
             f"{clipped} spots were saturated in every exposure and fitted from their "
             "wings: add a shorter exposure to the recipe"
         )
-    places = places_of([(step.found, _place(step)) for step in record.steps])
+    recipe = job.recipe
+    places = places_of([(s.found, _place(s, recipe)) for s in record.steps])
     return FitInput(
         name=str(record.folder.path),
         table=order_table(places, job.recipe.lasers),
@@ -171,13 +173,14 @@ def _in_words(rows: list[FaultRow]) -> str:
     )
 
 
-def _place(step: KeptStep) -> StepPlace:
+def _place(step: KeptStep, recipe: Recipe) -> StepPlace:
     return StepPlace(
         step=step.row.step,
         stage_deg=step.stage_deg,
         mount_deg=step.row.mount_deg,
         laser=step.row.laser,
         time_s=step.row.planned_s,
+        face_deg=recipe.face_of(step.row.mount),
     )
 
 

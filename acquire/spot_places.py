@@ -25,6 +25,7 @@ class StepPlace:
     mount_deg: float
     laser: str
     time_s: float | None = None
+    face_deg: float = 0.0
 
 
 def speckle_of(steps: Iterable[StepSpots]) -> Speckle | None:
@@ -97,6 +98,7 @@ def _place(spot: SpotRow, at: StepPlace, share: float) -> SpotPlace:
         cxy_mm2=xy + more * sxy,
         brightness=spot.brightness,
         time_s=at.time_s,
+        face_deg=at.face_deg,
         shared_xx_mm2=share * sxx,
         shared_xy_mm2=share * sxy,
         shared_yy_mm2=share * syy,

@@ -43,6 +43,7 @@ class Step:
     planned_s: float
     first_frame: int
     repeat: int = 0
+    face_deg: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -105,6 +106,7 @@ def plan_sweep(job: Job, fingerprint: str) -> SweepPlan:
             planned_s=clock_s,
             first_frame=frame,
             repeat=repeat,
+            face_deg=recipe.face_of(mount),
         )
         steps.append(step)
         clock_s += step_duration_s(job.bench, step, previous)
@@ -241,6 +243,7 @@ def _zero_checks(
             dark_due=False,
             planned_s=start.planned_s,
             first_frame=first_frame,
+            face_deg=start.face_deg,
         )
         for number, start in enumerate(starts.values())
     )

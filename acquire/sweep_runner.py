@@ -85,8 +85,10 @@ class SweepRunner:
         world, report = self._devices.world, self._context.report
         if len(self._context.job.recipe.mounts_deg) > 1 and step.step > 0:
             what = f"seat the part for mount {step.mount + 1}, {step.mount_deg:g} deg"
+            if any(self._context.job.recipe.faces_deg):
+                what += f", turned in its own plane by {step.face_deg:g} deg"
             self._ask_person(step, what)
-        world.seat_part(step.mount, step.mount_deg)
+        world.seat_part(step.mount, step.mount_deg, step.face_deg)
         report.state("sweeping", mount=step.mount + 1)
 
     def _ask_person(self, step: Step, what: str) -> None:

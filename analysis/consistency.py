@@ -18,6 +18,7 @@ from pitchsweep.analysis.records import (
     OrderTable,
     PitchSeen,
 )
+from pitchsweep.analysis.stage_travel import came_from
 
 LIMIT = 4.0
 """Deviation in its own u beyond which a subset is said to disagree."""
@@ -28,7 +29,9 @@ def subsets(
     order: IntArray,
     incidence_rad: FloatArray,
 ) -> Iterator[tuple[str, NDArray[np.bool_]]]:
-    """Named parts of the sweep: orders (each with the zero order), sides, halves."""
+    """Named parts of the sweep: orders (each with the zero order), sides, halves,
+    mounts, faces, ways the stage came, lasers.
+    """
     zero = order == 0
     present = [int(m) for m in np.unique(order) if m != 0]
     if len(present) > 1:
@@ -47,6 +50,14 @@ def subsets(
     if len(mounts) > 1:
         for mount in mounts:
             yield f"mount {mount:g} deg", table.mount_deg == mount
+    if table.face_deg is not None and len(np.unique(table.face_deg)) > 1:
+        for face in np.unique(table.face_deg):
+            yield f"face {face:g} deg", table.face_deg == face
+    run = table.run if table.run is not None else np.zeros(len(table), np.int64)
+    side = came_from(table.step, table.stage_deg, run)
+    if (side > 0.0).any() and (side < 0.0).any():
+        yield "steps come to from below", side < 0.0
+        yield "steps come to from above", side > 0.0
     if len(table.laser_names) > 1:
         for index, name in enumerate(table.laser_names):
             yield f"laser {name}", table.laser == index

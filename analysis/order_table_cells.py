@@ -67,6 +67,14 @@ def angle_of(field: Field) -> float:
     return _number(field, -MAX_ANGLE_DEG, MAX_ANGLE_DEG, "degrees")
 
 
+def face_of(field: Field) -> float:
+    """The turn of a cell in the part's own plane, degrees. Raises InputRefused."""
+    number = angle_of(field)
+    if number not in (0.0, 180.0):
+        raise field.refused("no half turn", "0 or 180 degrees in the part's own plane")
+    return number
+
+
 def place_of(field: Field) -> float:
     """The place of a cell, mm. Raises InputRefused."""
     return _number(field, -MAX_MM, MAX_MM, "mm")

@@ -3,8 +3,9 @@
 Rules of the file: a header names the columns (any order); ``#`` starts a comment line;
 fields are separated by commas and numbers use a decimal point. ``order``,
 ``mount_deg``, ``ux_mm`` and ``uy_mm`` may be blank or absent, ``laser`` only where one
-laser is known. ``brightness`` is there for every row or for none. The covariance of x
-and y is not in the file: it reads as zero.
+laser is known. ``face_deg`` (0 or 180, the turn in the part's own plane) may be there
+too. ``brightness`` is there for every row or for none. The covariance of x and y is not
+in the file: it reads as zero.
 """
 
 import csv
@@ -21,6 +22,7 @@ from pitchsweep.analysis.order_table_cells import (
     Field,
     angle_of,
     brightness_of,
+    face_of,
     order_of,
     place_of,
     step_of,
@@ -40,7 +42,9 @@ COLUMNS = (
     "uy_mm",
 )
 BRIGHTNESS = "brightness"
-KNOWN = (*COLUMNS, BRIGHTNESS)
+FACE = "face_deg"
+"""A further column, written only where a part was turned in its own plane."""
+KNOWN = (*COLUMNS, BRIGHTNESS, FACE)
 REQUIRED = ("step", "stage_deg", "x_mm", "y_mm")
 
 _T = TypeVar("_T")
@@ -125,6 +129,9 @@ def write_order_table(table: OrderTable, *, comments: Sequence[str] = ()) -> str
     if table.brightness is not None:
         names.append(BRIGHTNESS)
         columns.append(map(repr, table.brightness.tolist()))
+    if table.face_deg is not None and table.face_deg.any():
+        names.append(FACE)
+        columns.append(map(repr, table.face_deg.tolist()))
     writer.writerow(names)
     writer.writerows(zip(*columns, strict=True))
     return out.getvalue()
@@ -219,6 +226,7 @@ def _table(cells: list[dict[str, Field]], source: TableSource) -> OrderTable:
         return [read(row[name]) for row in cells]
 
     u_mm = float(source.reading_u_mm)
+    faces = np.array(column(FACE, face_of, 0.0), dtype=np.float64)
     return OrderTable(
         step=np.array(needed("step", step_of), dtype=np.int64),
         stage_deg=np.array(needed("stage_deg", angle_of), dtype=np.float64),
@@ -232,6 +240,7 @@ def _table(cells: list[dict[str, Field]], source: TableSource) -> OrderTable:
         uy_mm=np.array(column("uy_mm", uncertainty_of, u_mm), dtype=np.float64),
         cxy_mm2=np.zeros(len(cells)),
         brightness=_brightness(cells),
+        face_deg=faces if faces.any() else None,
     )
 
 

@@ -48,10 +48,11 @@ def sharing(table: OrderTable) -> FloatArray:
     nothing = np.zeros(n, dtype=np.int64)
     run = nothing if table.run is None else table.run
     part = nothing if table.part is None else table.part
+    face = nothing if table.face_deg is None else table.face_deg
     order = np.lexsort(
-        (table.step, table.stage_deg, table.laser, table.mount_deg, part, run)
+        (table.step, table.stage_deg, table.laser, table.mount_deg, face, part, run)
     )
-    seats = np.stack([table.mount_deg, table.laser, run, part], axis=1)[order]
+    seats = np.stack([table.mount_deg, face, table.laser, run, part], axis=1)[order]
     stage, step = table.stage_deg[order], table.step[order]
     place = np.stack([table.x_mm, table.y_mm], axis=1)[order]
     counts = np.ones(n)

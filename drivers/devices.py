@@ -18,7 +18,8 @@ class Label:
     """Names one exposure of a run; equal labels mean the same exposure, repeated.
 
     ``planned_s`` is the bench time at which the plan places the step, so that slow
-    processes of a twin depend on the plan and not on interruptions.
+    processes of a twin depend on the plan and not on interruptions. ``face_deg`` is
+    how far the part is turned in its own plane.
     """
 
     mount: int
@@ -27,6 +28,7 @@ class Label:
     step: int
     exposure: int
     planned_s: float = 0.0
+    face_deg: float = 0.0
 
 
 @dataclass(frozen=True)

@@ -52,16 +52,18 @@ def twin_sweep(
     pace_s: float = 3,
     first_mount: int = 0,
     first_step: int = 0,
+    faces_deg: Sequence[float] = (),
 ) -> TwinSweep:
     """All mounts of a job, one laser, steps in an up-down order, orders blanked.
 
     ``first_mount`` and ``first_step`` number on from an earlier sweep of the same seed,
-    so that seats and noise are fresh and time goes on.
+    so that seats and noise are fresh and time goes on. ``faces_deg`` (one a mount) are
+    turns in the part's own plane.
     """
     truth = draw_truth(job.bench, job.part, seed)
     incidence = planned_incidence_deg(job)
     laser = job.recipe.lasers[0]
-    sweeps, first = [], first_step
+    sweeps, faces, first = [], [], first_step
     for index, mount in enumerate(mounts_deg or job.recipe.mounts_deg, first_mount):
         step = first + np.arange(len(incidence))
         stage = mount + job.bench.stage.direction * incidence
@@ -73,8 +75,10 @@ def twin_sweep(
             step=step,
             stage_deg=stage,
             planned_s=pace_s * step,
+            face_deg=faces_deg[index - first_mount] if faces_deg else 0.0,
         )
         sweeps.append(sweep_spots(truth, job.bench, steps))
+        faces.append(np.full(len(sweeps[-1].step), steps.face_deg))
         first += len(incidence)
 
     def column(name: str) -> Any:
@@ -95,5 +99,6 @@ def twin_sweep(
         cxy_mm2=np.zeros(n),
         brightness=column("brightness"),
         time_s=pace_s * column("step"),
+        face_deg=np.concatenate(faces) if faces_deg else None,
     )
     return TwinSweep(table, truth, column("order"))

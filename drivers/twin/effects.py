@@ -65,7 +65,6 @@ def single_step(
     mount_deg: float,
     from_above: bool = False,
     laser_state: LaserState = NO_FAULT,
-    face_deg: float = 0.0,
 ) -> Steps:
     """The one step that ``label`` names, at what the stage reads."""
     return Steps(
@@ -78,7 +77,7 @@ def single_step(
         planned_s=np.array([label.planned_s], dtype=np.float64),
         from_above=from_above,
         laser_state=laser_state,
-        face_deg=face_deg,
+        face_deg=label.face_deg,
     )
 
 

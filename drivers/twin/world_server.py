@@ -93,7 +93,9 @@ class WorldAsks:
         self._asks: dict[str, Callable[[Message], Any]] = {
             "now": lambda m: world.time.now_s(),
             "wait": lambda m: world.wait(float(m["seconds"])),
-            "seat": lambda m: world.seat(int(m["mount"]), float(m["mount_deg"])),
+            "seat": lambda m: world.seat(
+                int(m["mount"]), float(m["mount_deg"]), float(m.get("face_deg", 0.0))
+            ),
             "door": lambda m: world.unit.set_door(
                 bool(m["closed"]), channel=m.get("channel")
             ),

@@ -1,6 +1,7 @@
 import numpy as np
 import pytest
 from acquire_fakes import small_job
+from builders import demo_job
 from hypothesis import given
 from hypothesis import strategies as st
 
@@ -12,6 +13,7 @@ from pitchsweep.acquire.sweep_plan import (
     plan_sweep,
 )
 from pitchsweep.configs.reader import read_job
+from pitchsweep.configs.recipe_model import Recipe
 
 
 @given(
@@ -104,3 +106,27 @@ def test_a_sweep_that_never_sees_the_zero_order_is_refused() -> None:
     job = small_job(start_deg=44.0, stop_deg=46.0, step_deg=1.0)
     with pytest.raises(JobRefused, match="zero order cannot be watched"):
         plan_sweep(job, "x")
+
+
+def test_a_part_turned_in_its_own_plane_is_a_seating_of_its_own() -> None:
+    faces = {"mounts_deg": (0.0, 0.0), "faces_deg": (0.0, 180.0)}
+    job = demo_job("shims-spots", recipe=faces)
+    plan = plan_sweep(job, "x")
+    assert {(s.mount, s.face_deg) for s in plan.steps} == {(0, 0.0), (1, 180.0)}
+    assert [c.face_deg for c in plan.zero_checks] == [0.0, 180.0]
+
+
+@pytest.mark.parametrize(
+    ("faces", "said"),
+    [
+        ((0.0,), "one entry for each"),
+        ((180.0, 180.0), "differ"),
+        ((0.0, 90.0), "0 or 180"),
+    ],
+)
+def test_faces_that_make_no_sense_are_refused(
+    faces: tuple[float, ...], said: str
+) -> None:
+    recipe = demo_job("shims-spots").recipe.model_dump()
+    with pytest.raises(ValueError, match=said):
+        Recipe(**{**recipe, "mounts_deg": (0.0, 0.0), "faces_deg": faces})

@@ -263,3 +263,12 @@ def test_any_row_is_read_or_refused(tail: str) -> None:
         assert len(str(error).splitlines()) <= 2
     else:
         assert np.isfinite(table.x_mm).all()
+
+
+def test_turns_in_the_parts_own_plane_are_written_where_there_are_any() -> None:
+    text = "step,stage_deg,x_mm,y_mm,laser,face_deg\n0,1,2,3,red,0\n1,1,2,3,red,180\n"
+    table = read_order_table(text, TWO_LASERS)
+    assert table.face_deg is not None and table.face_deg.tolist() == [0.0, 180.0]
+    assert_same_bits(read_order_table(write_order_table(table), TWO_LASERS), table)
+    with pytest.raises(InputRefused, match="0 or 180"):
+        read_order_table(text.replace("180", "90"), TWO_LASERS)

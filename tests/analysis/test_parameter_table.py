@@ -13,6 +13,8 @@ from pitchsweep.analysis.fit_parameters import Kind, Parameter, Scope, Source
 from pitchsweep.analysis.fit_scene import fit_scene
 from pitchsweep.analysis.measure import measure_pitch
 from pitchsweep.analysis.parameter_table import parameter_table
+from pitchsweep.configs.bench_model import Hole, Screen
+from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.part_model import Certified
 
 AIR = AirState(20.0, 1013.25, 50.0)
@@ -144,3 +146,90 @@ def test_a_stage_scale_that_the_spots_contradict_is_named() -> None:
     result = measure_pitch(table, bench=honest.bench, part=honest.part)
     assert not result.warnings
     assert any("closure recorded" in item for item in result.assumed_absent)
+
+
+def disc(**changes: float) -> Job:
+    """A disc read through 0.6 mm, in the twin as in its part file."""
+    covered = {
+        "read_side": "through-cover",
+        "cover_mm": 0.6,
+        "u_cover_mm": 0.02,
+        "u_cover_wedge_mrad": 1.0,
+    }
+    coarse = {"start_deg": -60.0, "stop_deg": 60.0, "step_deg": 2.0}
+    return demo_job("track-740-red", part={**covered, **changes}, recipe=coarse)
+
+
+@pytest.mark.parametrize("seed", [1, 2])
+def test_a_disc_read_through_its_cover_is_measured(seed: int) -> None:
+    job = disc()
+    sweep = twin_sweep(job, seed)
+    assert 0.5 < sweep.truth.part.cover_mm < 0.7
+    result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
+    assert abs(result.pitch_nm - sweep.truth.pitch_nm) < 3.0 * result.u_pitch_nm
+    assert result.u_pitch_nm < 3e-4 * result.pitch_nm
+    names = {n.name for n in result.nuisance}
+    assert {"cover index", "cover wedge across the grooves"} <= names
+    assert any("rms radius of the beam" in name for name in names)
+
+
+def test_half_a_turn_in_its_own_plane_tells_the_wedge_of_a_cover() -> None:
+    """The wedge turns with the part and the stage's errors do not."""
+    job = disc(u_cover_wedge_mrad=5.0)
+    known = {}
+    for faces in ((0.0, 0.0), (0.0, 180.0)):
+        sweep = twin_sweep(job, 3, mounts_deg=(0.0, 0.001), faces_deg=faces)
+        result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
+        assert abs(result.pitch_nm - sweep.truth.pitch_nm) < 4.0 * result.u_pitch_nm
+        known[faces] = result.u_pitch_nm
+        seats = [n.name for n in result.nuisance if n.name.startswith("zero offset")]
+        assert len(seats) == 2
+    seen = {s.subset for s in result.pitches_seen}
+    assert {"face 0 deg", "face 180 deg"} <= seen
+    assert known[(0.0, 180.0)] < known[(0.0, 0.0)]
+
+
+def test_leftover_backlash_is_found_and_the_ways_are_compared() -> None:
+    effects, fine = {"leftover_backlash_arcsec": 12.0}, {"spot_reading_mm": 0.02}
+    job = demo_job("shims-spots", effects=effects, twin=fine)
+    sweep = twin_sweep(job, 4)
+    result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
+    (lag,) = (n for n in result.nuisance if n.name == "leftover backlash")
+    # Steps from above have a run-up of 0.5 of the 2 degrees over which it unwinds.
+    assert lag.value == pytest.approx(12.0 * np.exp(-0.25), abs=4.0 * lag.u)
+    assert lag.u < 3.0
+    assert "steps come to from above" in {s.subset for s in result.pitches_seen}
+    assert abs(result.pitch_nm - sweep.truth.pitch_nm) < 3.0 * result.u_pitch_nm
+
+
+def test_a_camera_at_infinity_measures_too() -> None:
+    """A lens of 60 mm on a sensor of 36 x 24 mm, no screen."""
+    screen = Screen(
+        kind="camera-at-infinity",
+        distance_mm=60.0,
+        u_distance_mm=0.6,
+        u_tilt_mrad=10.0,
+        u_offset_mm=0.5,
+        width_mm=36.0,
+        height_mm=24.0,
+        u_map_mm=0.01,
+        u_lens_distortion_mm=0.1,
+        hole=Hole(diameter_mm=0.5),
+    )
+    twin = {"spot_reading_mm": 0.005}
+    effects = {"map_error_mm": 0.01, "distortion_mm": 0.05}
+    plan = {"start_deg": -70.0, "stop_deg": 70.0}
+    job = demo_job(
+        "shims-spots", bench={"screen": screen}, twin=twin, effects=effects, recipe=plan
+    )
+    for seed in (1, 2):
+        sweep = twin_sweep(job, seed)
+        result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
+        off = result.pitch_nm - sweep.truth.pitch_nm
+        assert abs(off) < 3.0 * result.u_pitch_nm
+        assert result.u_pitch_nm < 2e-3 * result.pitch_nm
+        (lens,) = (n for n in result.nuisance if n.name.startswith("lens distortion"))
+        assert lens.value == pytest.approx(0.05, abs=4.0 * lens.u)
+        (focal,) = (n for n in result.nuisance if n.name == "screen distance")
+        true_mm = sweep.truth.screen.distance_mm
+        assert focal.value == pytest.approx(true_mm, abs=4.0 * focal.u)
