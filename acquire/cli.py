@@ -84,12 +84,17 @@ def sweep(
     from pitchsweep.acquire.bench_session import open_twin_bench
     from pitchsweep.acquire.progress import progress_for
     from pitchsweep.acquire.sweep_session import resume_run, sweep_job
+    from pitchsweep.acquire.watched_sources import sources_of, watching
+    from pitchsweep.configs.reader import read_job
 
     progress = progress_for(sys.stderr)
     if resume is not None:
         folder = resume_run(resume, progress, open_twin_bench)
     else:
-        folder = sweep_job(_job(str(job), twin_seed), runs, progress, open_twin_bench)
+        loaded = read_job(str(job))
+        open_bench = watching(open_twin_bench, sources_of(loaded))
+        seeded = _seeded(loaded.job, twin_seed)
+        folder = sweep_job(seeded, runs, progress, open_bench)
     progress.say(f"sweep complete; fitting {folder.path}")
     _fit_and_show([folder.path], folder.path, as_json)
 
@@ -174,10 +179,7 @@ cli_gate.register(app)
 cli_safety.register(app)
 
 
-def _job(place: str, twin_seed: int | None) -> "Job":
-    from pitchsweep.configs.reader import read_job
-
-    job = read_job(place).job
+def _seeded(job: "Job", twin_seed: int | None) -> "Job":
     if twin_seed is None:
         return job
     if job.bench.twin is None:

@@ -6,9 +6,9 @@ there is one, so that the whole way can be tried; otherwise it rehearses.
 
 import sqlite3
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from contextlib import contextmanager, suppress
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 
 from pitchsweep.acquire.bench_work import work_for
@@ -17,6 +17,8 @@ from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.sweep_plan import SweepPlan
 from pitchsweep.configs.config_errors import SettingsRefused
 from pitchsweep.configs.job_model import Job
+from pitchsweep.configs.reader import find
+from pitchsweep.safety.file_watch import file_sha256
 from pitchsweep.safety.ledger import verify
 from pitchsweep.safety.people_ledger import RUN_BEGUN, RUN_ENDED
 from pitchsweep.safety.people_store import PeopleNow, enter, read_people
@@ -38,10 +40,14 @@ Say = Callable[[str], None]
 
 @dataclass(frozen=True)
 class RunPermit:
-    """A sign-off in force and its home; both None where the run rehearses."""
+    """A sign-off in force and its home; both None where the run rehearses.
+
+    ``sources``: path -> SHA-256 of the files that the job was read from.
+    """
 
     kept: Kept | None = None
     home: SafetyHome | None = None
+    sources: Mapping[str, str] = field(default_factory=dict)
 
     def for_guard(self, proof_key: bytes | None) -> Permit:
         """The permit as the guard takes it; ``proof_key`` is the twin's, if it is one.
@@ -64,8 +70,13 @@ class RunPermit:
     def watched(self) -> dict[str, str]:
         """Files that must stay as they are while the run lasts, and absent ones."""
         if self.kept is None or self.home is None:
-            return {}
-        return watched_files(self.home, self.kept)
+            return dict(self.sources)
+        checklist = find(self.kept.record.statement.checklist, "checklists")
+        return {
+            **self.sources,
+            **watched_files(self.home, self.kept),
+            str(checklist): file_sha256(checklist),
+        }
 
     @property
     def in_words(self) -> str:

@@ -61,9 +61,9 @@ def small_job(speed: str = "rehearsal") -> Job:
     )
 
 
-def short_job() -> Job:
+def short_job(speed: str = "rehearsal") -> Job:
     """The small job with five angles."""
-    job = small_job()
+    job = small_job(speed)
     recipe = job.recipe.model_copy(
         update={"start_deg": -20.0, "stop_deg": 20.0, "step_deg": 10.0}
     )
@@ -113,3 +113,9 @@ def label(step: int = 0, exposure: int = 0) -> Label:
     """A label of mount 0, the job's first laser."""
     laser = small_job().recipe.lasers[0]
     return Label(0, laser, 0, step, exposure, 3.0 * step)
+
+
+def light_anew(unit: EmissionClient) -> None:
+    """Lights the unit, or holds it lit, for one keep-alive time."""
+    unit.state()
+    unit.light_up()

@@ -30,8 +30,8 @@ from twin_bench import short_job, unit_log
 from pitchsweep.acquire.bench_session import open_twin_bench
 from pitchsweep.acquire.cli import run
 from pitchsweep.acquire.sweep_session import sweep_job
-from pitchsweep.configs.bench_model import Ports, SerialPort
 from pitchsweep.configs.frozen_job import freeze, plain_yaml
+from pitchsweep.configs.ports_model import CameraPort, Ports, SerialPort, StagePort
 from pitchsweep.safety.people_store import read_people
 
 JOB = "demo:shims-spots"
@@ -206,10 +206,14 @@ def test_a_simulated_person_does_not_hold_a_real_benchs_key(
     at: Office, tmp_path: Path, capsys: pytest.CaptureFixture[str]
 ) -> None:
     job = short_job()
-    port = SerialPort(port="/dev/null", dialect="emission-line")
-    ports = Ports(stage=port, unit=port, camera="none")
+    ports = Ports(
+        stage=StagePort(port="/dev/null", dialect="rotary-line"),
+        unit=SerialPort(port="/dev/zero", dialect="emission-line"),
+        camera=CameraPort(by="usb-video", address="/dev/video0", pixel_format="Y16"),
+    )
     bench = job.bench.model_copy(update={"twin": None, "ports": ports})
-    job = job.model_copy(update={"bench": bench})
+    recipe = job.recipe.model_copy(update={"record": "frames"})
+    job = job.model_copy(update={"bench": bench, "recipe": recipe})
     (tmp_path / "job.yaml").write_text(freeze(job))
     assert run(["attend", "job.yaml", "--name", "ada", "--twin-person"]) == 3
     assert "no simulated person" in capsys.readouterr().err

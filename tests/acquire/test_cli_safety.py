@@ -30,10 +30,10 @@ from pitchsweep.acquire.run_folder import open_run_folder
 from pitchsweep.acquire.run_permit import entered, permit_for
 from pitchsweep.acquire.sweep_plan import plan_sweep
 from pitchsweep.acquire.sweep_session import sweep_job
-from pitchsweep.configs.bench_model import Ports, SerialPort
 from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.frozen_job import freeze, plain_yaml
 from pitchsweep.configs.job_model import Job
+from pitchsweep.configs.ports_model import CameraPort, Ports, SerialPort, StagePort
 from pitchsweep.safety.ledger import Ledger
 from pitchsweep.safety.people_store import read_people
 from pitchsweep.safety.safety_errors import GateRefused
@@ -363,10 +363,14 @@ def test_at_real_speed_the_window_must_last(at: Office) -> None:
 
 
 def hardware() -> Job:
-    port = SerialPort(port="/dev/null", dialect="rotary-line")
-    ports = Ports(stage=port, unit=port, camera="cam")
+    ports = Ports(
+        stage=StagePort(port="/dev/null", dialect="rotary-line"),
+        unit=SerialPort(port="/dev/zero", dialect="emission-line"),
+        camera=CameraPort(by="usb-video", address="/dev/video0", pixel_format="Y16"),
+    )
     bench = WORK.job.bench.model_copy(update={"twin": None, "ports": ports})
-    return WORK.job.model_copy(update={"bench": bench})
+    recipe = WORK.job.recipe.model_copy(update={"record": "frames"})
+    return WORK.job.model_copy(update={"bench": bench, "recipe": recipe})
 
 
 def test_a_bench_with_ports_needs_a_sign_off(

@@ -8,6 +8,7 @@ import sys
 from pathlib import Path
 
 import pytest
+from acquire_fakes import QuietProgress
 from sign_off_builders import office, signed, work_of
 from twin_bench import short_job
 
@@ -16,8 +17,11 @@ from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.ledger_verbs import verify_ledgers
 from pitchsweep.acquire.progress import progress_for
 from pitchsweep.acquire.sweep_session import sweep_job
+from pitchsweep.acquire.watched_sources import sources_of, watching
+from pitchsweep.configs.frozen_job import freeze
+from pitchsweep.configs.reader import read_job
 from pitchsweep.safety.people_store import read_people
-from pitchsweep.safety.safety_errors import GateRefused
+from pitchsweep.safety.safety_errors import GateRefused, GateTripped
 from pitchsweep.safety.sign_off_store import revoke
 
 
@@ -72,3 +76,31 @@ def test_a_sign_off_revoked_before_arming_keeps_the_bench_dark(
     log = (run / "twin" / "unit.log").read_text()
     assert '"on"' not in "".join(x for x in log.splitlines() if '"light"' in x)
     assert read_people(at.home).people.runs[run.name]["ending"] == "GateRefused"
+
+
+def test_the_job_s_own_file_edited_while_it_runs_makes_it_dark(tmp_path: Path) -> None:
+    """As the run's frozen copy does, which the guard watches too."""
+    original = tmp_path / "mine.yaml"
+    job = short_job("real")
+    quick = job.bench.stage.model_copy(update={"speed_deg_per_s": 360.0})
+    bench = job.bench.model_copy(update={"stage": quick})
+    original.write_text(freeze(job.model_copy(update={"bench": bench})))
+    opened = watching(open_twin_bench, sources_of(read_job(original)))
+
+    class EditsDuringTheSweep(QuietProgress):
+        """Somebody adds a remark once the first step is done."""
+
+        def show(self, shown: object) -> None:
+            with original.open("a") as file:
+                file.write("# another thought\n")
+
+    job = read_job(original).job
+    with pytest.raises(
+        GateTripped, match=r"mine.yaml was changed since the start"
+    ) as trip:
+        sweep_job(job, tmp_path / "runs", EditsDuringTheSweep(), opened)
+    assert trip.value.event == "settings-changed"
+    (run,) = (tmp_path / "runs").iterdir()
+    rows = map(json.loads, (run / "twin" / "unit.log").read_text().splitlines())
+    lights = [r["value"] for r in rows if r["what"] == "light"]
+    assert lights[0] == "on" and lights[-1] == "off"
