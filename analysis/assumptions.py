@@ -10,6 +10,8 @@ def assumed_absent(bench: Bench, part: Part) -> tuple[str, ...]:
     if bench.stage.worm_per_turn is None:
         wobble += ", a worm period that is not declared"
     items = ["jumps of camera or beam during the sweep", wobble]
+    if not any(laser.may_jump for laser in bench.lasers.values()):
+        items.append("jumps of the wavelength too small for these spots to show")
     if bench.stage.closure_recorded_on is not None:
         items.append(
             f"a stage scale that is off by more than the {bench.stage.u_scale_ppm:g}"

@@ -28,6 +28,7 @@ MEANING = {
     Source.BACKLASH: "stage angles that differ after coming from below and from above",
     Source.SCALE: "degrees of the stage that are too long or too short",
     Source.DRIFT: "wandering of camera, beam and wavelength during a run",
+    Source.JUMP: "sizes of the jumps that the laser wavelength made",
     Source.STEPS: "stage angles that are wrong by chance, step by step",
 }
 MOST_CORRELATED = 5

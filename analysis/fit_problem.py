@@ -65,7 +65,7 @@ def fit_problem(
     air: AirState,
     jumps: Sequence[WavelengthJump] = (),
 ) -> FitProblem:
-    """The joint fit of the parts' spots on one bench; ``jumps`` of wavelengths in it."""
+    """The joint fit of the parts' spots on one bench, with ``jumps`` in it."""
     scene = fit_scene(table, bench, parts, air, jumps)
     keys = np.stack(
         [table.step, table.laser, np.round(table.mount_deg * 1e6), scene.run], axis=1

@@ -22,6 +22,11 @@ from pitchsweep.analysis.consistency import (
 from pitchsweep.analysis.decision import coverage_factor, decide, effective_dof
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
 from pitchsweep.analysis.fit_scene import REFERENCE_C, base_pitch_nm
+from pitchsweep.analysis.fit_with_jumps import (
+    FitWithJumps,
+    fit_with_jumps,
+    overlooked_lines,
+)
 from pitchsweep.analysis.joint_fit import JointFit, solve_joint_fit
 from pitchsweep.analysis.nuisances import fitted_nuisances
 from pitchsweep.analysis.order_visibility import why_no_order
@@ -66,6 +71,7 @@ def measure_pitch(
     rejected: tuple[RejectedSpot, ...] = (),
     trust_nominal: bool = True,
     generator: np.random.Generator | None = None,
+    advise: bool = True,
 ) -> PitchResult:
     """The pitch of ``part`` at 20 deg C that all spots of ``table`` give together.
 
@@ -76,8 +82,9 @@ def measure_pitch(
     nominal pitch until the spots contradict it; ``trust_nominal`` False counts them
     without (then half and double are judged by the spots' light). ``generator``: draw
     all inputs with it too (JCGM 101), and take U from them where they do not bear it
-    out. Raises InputRefused for a mirrored or empty table or a laser the bench does not
-    have; NoResult when the data do not determine a pitch, or several alike.
+    out; ``advise`` False leaves out what would help. Raises InputRefused for a mirrored
+    or empty table or a laser the bench does not have; NoResult when the data do not
+    determine a pitch, or several alike.
     """
     _check(table, bench)
     air = air or AirState(
@@ -96,9 +103,10 @@ def measure_pitch(
             hinted = fit_with_hint(
                 problem, bench=bench, air=air, trust_nominal=trust_nominal
             )
-            clean = hinted.clean
+            carried = fit_with_jumps(hinted.problem, hinted.clean, bench, air)
+            clean = carried.clean
             problem, fit, scatter, warnings = _with_honest_scatter(
-                hinted.problem, clean
+                carried.problem, clean
             )
     except (np.linalg.LinAlgError, ArithmeticError):
         raise NoResult(
@@ -111,14 +119,17 @@ def measure_pitch(
         raise NoResult(_with_reason(str(error), table, bench, part)) from None
     for index, reason in sorted(clean.reasons.items()):
         refused.append(_rejected_row(table, index, reason))
-    warnings = [*hinted.warnings, *warnings, *_off_nominal(problem, fit, part)]
+    warnings = [*hinted.warnings, *carried.warnings, *warnings]
+    warnings += _off_nominal(problem, fit, part)
     warnings += prior_warnings(problem, fit)
     # What concerns people's eyes is said first.
     warnings = unknown_beam_warnings(table, refused) + warnings
     warnings += _off_screen(refused, table)
-    result = _result(problem, clean, fit, scatter, coverage, warnings, refused)
+    result = _result(problem, carried, fit, scatter, coverage, warnings, refused)
     result = replace(result, assumed_absent=assumed_absent(bench, part))
     sweep = Sweep(problem, clean.order, fit, bench, air)
+    if not advise:
+        return result
     result = replace(result, advice=advice(sweep, result))
     if generator is None:
         return result
@@ -229,17 +240,18 @@ def _with_honest_scatter(
 
 def _result(
     problem: FitProblem,
-    clean: CleanFit,
+    carried: FitWithJumps,
     fit: JointFit,
     scatter: _Scatter,
     coverage: float,
     warnings: list[str],
     refused: list[RejectedSpot],
 ) -> PitchResult:
-    part = problem.parts[0]
+    part, clean = problem.parts[0], carried.clean
     pitch_nm = base_pitch_nm(part) * math.exp(fit.state.values[0])
     seen = pitches_seen(problem, clean.order, fit, pitch_nm)
     budget = fit_budget(problem, fit, pitch_nm) + disagreement_lines(seen)
+    budget += overlooked_lines(carried, pitch_nm)
     u_nm = combined_u(budget)
     if not math.isfinite(u_nm) or u_nm > WORST_RELATIVE_U * pitch_nm:
         raise NoResult(
@@ -281,6 +293,7 @@ def _result(
         fitted_y_mm=fit.y_mm[used],
         residual_x=fit.residual[used, 0],
         residual_y=fit.residual[used, 1],
+        jumps=carried.jumps,
     )
 
 

@@ -35,6 +35,7 @@ class Rejection(StrEnum):
     GRAZING = "order-too-near-grazing"
     ON_MARK = "on-a-mark-of-the-frame"
     OVERRUN = "beam-wider-than-the-part"
+    LASER_JUMP = "near-a-wavelength-jump"
 
 
 @dataclass(frozen=True)
@@ -216,6 +217,21 @@ class MonteCarlo:
 
 
 @dataclass(frozen=True)
+class JumpSeen:
+    """A jump of a laser's wavelength before ``step`` of ``run``, as the fit sizes it.
+
+    ``gain``: by how much chi-squared falls with it.
+    """
+
+    laser: str
+    run: int
+    step: int
+    size_pm: float
+    u_pm: float
+    gain: float
+
+
+@dataclass(frozen=True)
 class PitchResult:
     """What the joint fit says of one part, and everything the report shows.
 
@@ -252,6 +268,7 @@ class PitchResult:
     assumed_absent: tuple[str, ...] = ()
     advice: tuple[str, ...] = ()
     monte_carlo: MonteCarlo | None = None
+    jumps: tuple[JumpSeen, ...] = ()
     software: str = ""
     inputs_sha256: str = ""
 

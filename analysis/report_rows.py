@@ -37,6 +37,7 @@ REJECTION_WORDS = {
     "second-candidate-for-one-order": "a better spot was found for the same order",
     "on-a-mark-of-the-frame": "lies on or beside a mark of the screen frame",
     "beam-wider-than-the-part": "the beam overran the part's clear width",
+    "near-a-wavelength-jump": "seen about when the laser wavelength jumped",
     "off-its-track": "too far from the track of its order",
     "stated-error-too-large": "its own position error is too large to help",
     "shape-not-a-spot": "does not have the shape of a spot",

@@ -57,6 +57,7 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
         "pitches_seen": [_pitch_seen(seen) for seen in result.pitches_seen],
         **_decision(result.decision),
         **_drawn(result.monte_carlo),
+        "jumps": [vars(jump) for jump in result.jumps],
         "advice": list(result.advice),
         "assumed_absent": list(result.assumed_absent),
         "warnings": list(result.warnings),

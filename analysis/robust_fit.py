@@ -121,6 +121,30 @@ def _soft_fit(
     return fit, scale_2
 
 
+@dataclass(frozen=True)
+class SoftFit:
+    """A fit that leans on no spot too much: weights (N,), scatter of the readings."""
+
+    fit: JointFit
+    weight: FloatArray
+    scale_2: float
+
+
+def softened(problem: FitProblem, clean: CleanFit) -> SoftFit:
+    """The fit of ``clean`` once more with the spots that it found off their tracks."""
+    kept = dict(clean.reasons)
+    assigned = clean.used.copy()
+    for row, why in clean.reasons.items():
+        if why is Rejection.OFF_TRACK:
+            assigned[row] = True
+            del kept[row]
+    found = Assignment(clean.order, assigned, residual_2(clean.fit), kept)
+    fit, _ = _soft_fit(problem, found, clean.fit.state)
+    weight, scale_2 = _faded(residual_2(fit), assigned & fit.used)
+    fit = solve_joint_fit(problem, clean.order, weight, fit.state)
+    return SoftFit(fit, weight, scale_2)
+
+
 def _faded(distance_2: FloatArray, used: NDArray[np.bool_]) -> tuple[FloatArray, float]:
     """Weights (N,) fading with the distance, and the variance factor they rest on."""
     scale_2 = _scale_2(distance_2, used)

@@ -145,7 +145,8 @@ class InfraredFilter(Settings):
 class Laser(Settings):
     """One laser: vacuum wavelength with its standard uncertainty, power at the part.
 
-    ``u_jump_pm``: size of a mode hop, should the spots show one.
+    ``u_jump_pm``: size of a mode hop, should the spots show one; ``may_jump`` also
+    counts hops too small for them to show.
     ``full_drive_mw`` is what reaches the part at full drive with every attenuator out
     (``power_mw`` where it is not given); ``divergence_mrad`` the full 1/e2 angle (the
     smallest that diffraction allows where it is not given).
@@ -155,6 +156,7 @@ class Laser(Settings):
     u_wavelength_nm: Annotated[float, Field(gt=0.0, le=20.0)]
     u_drift_pm: Annotated[float, Field(gt=0.0, le=1000.0)] = 0.5
     u_jump_pm: Annotated[float, Field(gt=0.0, le=5000.0)] = 300.0
+    may_jump: bool = False
     power_mw: Annotated[float, Field(gt=0.0, le=500.0)]
     full_drive_mw: Annotated[float, Field(gt=0.0, le=1e5)] | None = None
     divergence_mrad: Annotated[float, Field(gt=0.0, le=500.0)] | None = None
