@@ -137,7 +137,8 @@ def _world(going: Visit, keys: Keys, seen: Watched) -> HoldWorld:
 
 def _show_line(seen: Watched, state: str, *, last: bool = False) -> None:
     """One line that is written over while it stays the same line."""
-    meter = "" if seen.meter_mw is None else f"  meter {seen.meter_mw:.3f} mW"
+    shown = "meter" if state == "LIGHT" else "the meter showed"
+    meter = "" if seen.meter_mw is None else f"  {shown} {seen.meter_mw:.3f} mW"
     text = f"  {state}  {seen.laser}{meter}"
     if text == seen.shown and not last:
         return

@@ -62,7 +62,11 @@ def ask_at_terminal(question: str, default: str) -> str:
     """One line typed by a person; the default where nothing was typed."""
     shown = default or None
     typed = typer.prompt(
-        question, default=shown or "", show_default=bool(default), err=True
+        question,
+        default=shown or "",
+        show_default=bool(default),
+        prompt_suffix=" " if question.endswith("?") and not default else ": ",
+        err=True,
     )
     return str(typed).strip()
 
@@ -206,6 +210,10 @@ def _ask_item(head: str, asking: Asking, ask: Ask) -> ItemAnswer:
 
 def _ask_once(asking: Asking, ask: Ask) -> ItemAnswer:
     item, values = asking.item, dict[str, object]()
+    if takes_attended_powers(item):
+        read = latest_readings(asking.work.job, asking.people)
+        for laser, reading in read.items():
+            say(f"  {laser}: {reading_in_words(reading)}")
     choice = _yes_no("  is it so", ask, absent=item.may_be_absent)
     if choice == "a":
         return ItemAnswer(absent=True)
@@ -226,8 +234,6 @@ def _readings(asking: Asking, ask: Ask) -> tuple[ReadingAnswer, ...]:
     """What is read off now; powers were read under an attended permit already."""
     job = asking.work.job
     if takes_attended_powers(asking.item):
-        for laser, reading in latest_readings(job, asking.people).items():
-            say(f"  {laser}: {reading_in_words(reading)}")
         return attended_answers(job, asking.people)
     return tuple(
         _ask_reading(asking, of, upper, ask)

@@ -30,6 +30,7 @@ def door_sheet(record: SignOff, here: tzinfo | None = None) -> str:
         "ends_here": _local(statement.valid_until, here),
         "made": _short(statement.made),
         "long_look": f"{UNATTENDED_S:g} s",
+        "together_mw": _together_mw(statement),
         "caution": CAUTION_SENTENCE,
         "size_pt": _size_pt(statement),
     }
@@ -47,6 +48,13 @@ def _size_pt(statement: Statement) -> float:
     lines = 1.5 * len(statement.lasers)
     lines += sum(len(words) / LETTERS_A_LINE for words in statement.contacts.values())
     return next(size for most, size in SIZES_PT if lines <= most)
+
+
+def _together_mw(statement: Statement) -> float | None:
+    """Full drive of all lasers that may be alight together; None where none may."""
+    if not any(laser["together"] for laser in statement.lasers):
+        return None
+    return sum(float(str(laser["power_mw"])) for laser in statement.lasers)
 
 
 def _short(utc: str) -> str:

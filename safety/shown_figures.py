@@ -29,7 +29,7 @@ def figures_shown(job: Job) -> tuple[str, ...]:
     names, bench = lasers_alight(job), job.bench
     lines = [line for n in names for line in figures_lines(laser_figures(bench, n))]
     lines += COLUMNS
-    lines.append(at_once_in_words(job))
+    lines.append(f"  {at_once_in_words(job)}")
     if may_be_together(job):
         sums = [summed_hazard(bench, names, time_s) for time_s in TIMES_S]
         lines += [summed_line(one, names) for one in sums]
@@ -87,4 +87,5 @@ def _laser_shown(job: Job, name: str) -> Mapping[str, object]:
         "accidental_s": figures.accidental_s,
         "accidental_density": round(figures.at(figures.accidental_s).density, 2),
         "reach_m": round(figures.unattended.direct_m, 1),
+        "together": may_be_together(job),
     }

@@ -72,3 +72,13 @@ def test_more_to_say_is_set_smaller(record: SignOff) -> None:
         return page.split("html { font-size: ")[1].split("pt")[0]
 
     assert float(size(1, 40)) > float(size(3, 150)) > float(size(8, 160))
+
+
+def test_it_says_the_powers_read_and_what_lasers_may_do_together(
+    record: SignOff,
+) -> None:
+    page = door_sheet(record)
+    assert "green 0.45 mW on" in page and "together" not in page
+    lasers = tuple({**laser, "together": True} for laser in record.statement.lasers)
+    both = replace(record.statement, lasers=lasers * 2)
+    assert "<b>together: 1.8 mW</b>" in door_sheet(replace(record, statement=both))
