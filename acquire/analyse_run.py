@@ -11,7 +11,12 @@ import numpy as np
 from pitchsweep.acquire.acquire_errors import RunRefused
 from pitchsweep.acquire.durable_files import write_durably
 from pitchsweep.acquire.fit_input import FitInput, joined
-from pitchsweep.acquire.fit_sources import FitSource
+from pitchsweep.acquire.fit_sources import (
+    MONTE_CARLO,
+    RESULT,
+    UNKNOWN_PITCH,
+    FitSource,
+)
 from pitchsweep.acquire.measured_state import measure
 from pitchsweep.acquire.run_report import (
     context_of_run,
@@ -28,9 +33,8 @@ from pitchsweep.analysis.records import (
 from pitchsweep.analysis.result_file import result_json
 from pitchsweep.configs.fingerprint import fingerprint
 
-ORDERS, RESULT, REPORT, PAPER, PICTURE = (
+ORDERS, REPORT, PAPER, PICTURE = (
     "orders.csv",
-    "result.json",
     "report.html",
     "report.pdf",
     "result.png",
@@ -68,6 +72,7 @@ def analyse(
             str(error),
             "fit them one by one",
         ) from None
+    drawn = (MONTE_CARLO,) if draw_inputs else ()
     result = measure(
         given,
         trust_nominal=trust_nominal,
@@ -76,6 +81,7 @@ def analyse(
     result = replace(
         result,
         warnings=(*given.warnings, *result.warnings),
+        asked=(*(() if trust_nominal else (UNKNOWN_PITCH,)), *drawn),
         software=software_name(),
         inputs_sha256=inputs_sha256(given),
     )

@@ -116,7 +116,9 @@ def fit(
     ] = None,
     coverage: Annotated[
         float | None,
-        typer.Option(min=0.5, max=0.9999, help="Coverage of a table's U (0.95)."),
+        typer.Option(
+            min=0.5, max=0.9999, help="Coverage of U (0.95, or the run's own)."
+        ),
     ] = None,
     out: Annotated[
         Path | None, typer.Option(help="Write the derived files into this folder.")
@@ -162,6 +164,7 @@ def report(
 
     The other derived files of the run are written anew too.
     """
+    from pitchsweep.acquire.fit_sources import options_of_run
     from pitchsweep.acquire.run_folder import open_run_folder
 
     if step is not None:
@@ -171,7 +174,8 @@ def report(
         return
     if spot is not None:
         raise typer.BadParameter("--spot belongs to --step")
-    _fit_and_show([open_run_folder(run).path], run, as_json)
+    path = open_run_folder(run).path
+    _fit_and_show([path], run, as_json, options_of_run(path))
 
 
 cli_bench.register(app)

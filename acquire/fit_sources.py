@@ -1,7 +1,8 @@
 """What a user names (runs, tables, frame folders) as fit inputs. Acts (disk)."""
 
+import json
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from pitchsweep.acquire.acquire_errors import RunRefused
@@ -18,6 +19,10 @@ from pitchsweep.analysis.order_table_file import (
 from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.part_model import Part
 from pitchsweep.configs.reader import read_bench, read_part
+
+RESULT = "result.json"
+UNKNOWN_PITCH, MONTE_CARLO = "unknown-pitch", "monte-carlo"
+"""What can be asked for beyond a plain fit, as the result says it."""
 
 
 @dataclass(frozen=True)
@@ -48,11 +53,29 @@ def read_sources(paths: Sequence[Path], options: FitOptions) -> list[FitSource]:
     return [_read(path, options) for path in paths]
 
 
+def options_of_run(run: Path) -> FitOptions:
+    """What a run's result was asked with; a plain fit where there is no result yet."""
+    try:
+        known = json.loads((run / RESULT).read_text(encoding="utf-8"))
+        asked, coverage = known["asked"], known["coverage"]
+        if not (isinstance(asked, list) and 0.0 < float(coverage) < 1.0):
+            return FitOptions()
+    except (OSError, ValueError, KeyError, TypeError):
+        return FitOptions()
+    return FitOptions(
+        coverage=float(coverage),
+        unknown_pitch=UNKNOWN_PITCH in asked,
+        monte_carlo=MONTE_CARLO in asked,
+    )
+
+
 def _read(path: Path, options: FitOptions) -> FitSource:
     if path.is_dir():
         if is_run_folder(path):
             record = read_run(path)
-            return FitSource(input_from_run(record), record)
+            given = input_from_run(record)
+            coverage = options.coverage or given.coverage
+            return FitSource(replace(given, coverage=coverage), record)
         if (path / LIST).is_file():
             bench, part = _bench_and_part(path, options)
             coverage = options.coverage or 0.95

@@ -14,7 +14,11 @@ import numpy as np
 
 from pitchsweep.acquire.acquire_errors import JobRefused
 from pitchsweep.acquire.zero_order_watch import zero_check_incidence_deg
-from pitchsweep.analysis.order_visibility import visible_orders, why_no_order
+from pitchsweep.analysis.order_visibility import (
+    remedy_of_no_order,
+    visible_orders,
+    why_no_order,
+)
 from pitchsweep.configs.bench_model import Bench, Stage
 from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.recipe_model import Recipe
@@ -208,7 +212,7 @@ def refuse_without_orders(job: Job, grid_deg: tuple[float, ...]) -> None:
             raise JobRefused(
                 job.job,
                 f"laser '{laser}' on {job.part.nominal_pitch_nm:g} nm: {why}",
-                "sweep to steeper angles or take a laser of shorter wavelength",
+                remedy_of_no_order(job.bench, job.part, laser),
             )
 
 

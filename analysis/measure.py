@@ -1,7 +1,7 @@
 """From an order table to the pitch, its uncertainty and the decision."""
 
 import math
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
@@ -20,6 +20,11 @@ from pitchsweep.analysis.consistency import (
     pitches_seen,
 )
 from pitchsweep.analysis.decision import coverage_factor, decide, effective_dof
+from pitchsweep.analysis.fit_doubts import (
+    off_nominal,
+    off_screen_warnings,
+    plain_warnings,
+)
 from pitchsweep.analysis.fit_problem import FitProblem, fit_problem
 from pitchsweep.analysis.fit_scene import REFERENCE_C, base_pitch_nm
 from pitchsweep.analysis.fit_with_jumps import (
@@ -27,18 +32,19 @@ from pitchsweep.analysis.fit_with_jumps import (
     fit_with_jumps,
     overlooked_lines,
 )
-from pitchsweep.analysis.joint_fit import JointFit, solve_joint_fit
+from pitchsweep.analysis.joint_fit import JointFit
 from pitchsweep.analysis.nuisances import fitted_nuisances
-from pitchsweep.analysis.order_visibility import why_no_order
+from pitchsweep.analysis.order_visibility import remedy_of_no_order, why_no_order
 from pitchsweep.analysis.pitch_hint import fit_with_hint
 from pitchsweep.analysis.prior_pulls import prior_warnings
+from pitchsweep.analysis.readings_scatter import Scatter, with_honest_scatter
 from pitchsweep.analysis.records import (
     OrderTable,
     PitchResult,
     RejectedSpot,
     Rejection,
 )
-from pitchsweep.analysis.robust_fit import CleanFit, rescaled, residual_2
+from pitchsweep.analysis.screen_area import off_screen, on_hole
 from pitchsweep.analysis.second_look import advice, monte_carlo, with_draws
 from pitchsweep.analysis.shared_places import repeats_counted
 from pitchsweep.analysis.unknown_beams import unknown_beam_warnings
@@ -49,15 +55,6 @@ from pitchsweep.configs.part_model import Part
 
 WORST_RELATIVE_U = 0.1
 """A pitch known worse than this is no result."""
-PERCENT_LEVEL = 2e-3
-
-
-@dataclass(frozen=True)
-class _Scatter:
-    """How the readings scatter against what they state."""
-
-    reduced_chi2: float
-    dof: float
 
 
 def measure_pitch(
@@ -105,7 +102,7 @@ def measure_pitch(
             )
             carried = fit_with_jumps(hinted.problem, hinted.clean, bench, air)
             clean = carried.clean
-            problem, fit, scatter, warnings = _with_honest_scatter(
+            problem, fit, scatter, warnings = with_honest_scatter(
                 carried.problem, clean
             )
     except (np.linalg.LinAlgError, ArithmeticError):
@@ -116,17 +113,23 @@ def measure_pitch(
     except AmbiguousOrders:
         raise
     except NoResult as error:
-        raise NoResult(_with_reason(str(error), table, bench, part)) from None
+        raise _with_reason(error, table, bench, part) from None
     for index, reason in sorted(clean.reasons.items()):
         refused.append(_rejected_row(table, index, reason))
     warnings = [*hinted.warnings, *carried.warnings, *warnings]
-    warnings += _off_nominal(problem, fit, part)
+    warnings += off_nominal(problem, fit, part)
     warnings += prior_warnings(problem, fit)
     # What concerns people's eyes is said first.
     warnings = unknown_beam_warnings(table, refused) + warnings
-    warnings += _off_screen(refused, table)
+    warnings += off_screen_warnings(refused, table)
     result = _result(problem, carried, fit, scatter, coverage, warnings, refused)
-    result = replace(result, assumed_absent=assumed_absent(bench, part))
+    result = replace(
+        result,
+        assumed_absent=assumed_absent(bench, part),
+        part=part.part,
+        serial=part.serial,
+        simulated=bench.twin is not None,
+    )
     sweep = Sweep(problem, clean.order, fit, bench, air)
     if not advise:
         return result
@@ -146,31 +149,29 @@ def _check(table: OrderTable, bench: Bench) -> None:
             raise InputRefused(f"laser '{name}' is not on the bench; it has {known}")
 
 
-def _with_reason(text: str, table: OrderTable, bench: Bench, part: Part) -> str:
+def _with_reason(
+    error: NoResult, table: OrderTable, bench: Bench, part: Part
+) -> NoResult:
     """The refusal, with why no order could be there if that is the cause."""
     incidence = np.unique(bench.stage.direction * (table.stage_deg - table.mount_deg))
     for name in table.laser_names:
         reason = why_no_order(bench, part, name, incidence)
         if reason:
-            return f"{text}: {reason}"
-    return text
+            remedy = remedy_of_no_order(bench, part, name)
+            return NoResult(f"{error.reason}: {reason}", remedy=remedy)
+    return error
 
 
 def _on_screen(
     table: OrderTable, bench: Bench, refused: list[RejectedSpot]
 ) -> OrderTable:
-    hole, screen = bench.screen.hole, bench.screen
-    radius = hole.diameter_mm / 2.0 + bench.beam.diameter_mm
-    on_hole = np.hypot(table.x_mm - hole.x_mm, table.y_mm - hole.y_mm) < radius
-    margin = 3.0 * screen.u_offset_mm
-    off = (np.abs(table.x_mm) > screen.width_mm / 2.0 + margin) | (
-        np.abs(table.y_mm) > screen.height_mm / 2.0 + margin
-    )
-    for index in np.flatnonzero(on_hole):
+    cut = on_hole(bench, table.x_mm, table.y_mm)
+    off = off_screen(bench, table.x_mm, table.y_mm)
+    for index in np.flatnonzero(cut):
         refused.append(_rejected_row(table, int(index), Rejection.ON_HOLE))
-    for index in np.flatnonzero(off & ~on_hole):
+    for index in np.flatnonzero(off & ~cut):
         refused.append(_rejected_row(table, int(index), Rejection.OFF_SCREEN))
-    return table.take(~(on_hole | off))
+    return table.take(~(cut | off))
 
 
 def _within_the_part(
@@ -202,47 +203,11 @@ def _rejected_row(table: OrderTable, index: int, reason: Rejection) -> RejectedS
     )
 
 
-def scatter_of(problem: FitProblem, clean: CleanFit, fit: JointFit) -> _Scatter:
-    """Reduced chi-squared of the readings, with what the unknowns absorb taken off."""
-    absorbed = 0.0
-    for index, parameter in enumerate(problem.parameters):
-        known = fit.covariance[index, index] / parameter.u_prior**2
-        absorbed += 1.0 - min(1.0, float(known))
-    pulls = fit.step_variance * (1.0 / problem.u_step_rad**2)
-    absorbed += float(np.sum(1.0 - np.minimum(1.0, pulls)))
-    dof = 2.0 * float(clean.used.sum()) - absorbed
-    if dof < 0.5:
-        return _Scatter(math.nan, 0.0)
-    return _Scatter(float(np.sum(residual_2(fit)[clean.used])) / dof, dof)
-
-
-def _with_honest_scatter(
-    problem: FitProblem, clean: CleanFit
-) -> tuple[FitProblem, JointFit, _Scatter, list[str]]:
-    """Readings that scatter more than stated are taken at their scatter."""
-    fit = clean.fit
-    scatter = scatter_of(problem, clean, fit)
-    warnings: list[str] = []
-    if scatter.dof <= 0.0:
-        return problem, fit, scatter, warnings
-    excess = scatter.reduced_chi2 - 1.0
-    if excess > 3.0 * math.sqrt(2.0 / scatter.dof):
-        factor = math.sqrt(scatter.reduced_chi2)
-        warnings.append(
-            f"spots scatter {factor:.2f} times their stated uncertainty; the readings' "
-            "share of the uncertainty is enlarged by that"
-        )
-        problem = rescaled(problem, factor)
-        weight = clean.used.astype(np.float64)
-        fit = solve_joint_fit(problem, clean.order, weight, fit.state)
-    return problem, fit, scatter, warnings
-
-
 def _result(
     problem: FitProblem,
     carried: FitWithJumps,
     fit: JointFit,
-    scatter: _Scatter,
+    scatter: Scatter,
     coverage: float,
     warnings: list[str],
     refused: list[RejectedSpot],
@@ -266,7 +231,7 @@ def _result(
         [(readings_u, max(scatter.dof, 1.0)), (_other_u(u_nm, readings_u), math.inf)]
     )
     k = coverage_factor(coverage, dof)
-    warnings = warnings + disagreements(seen) + _plain_warnings(pitch_nm, u_nm, clean)
+    warnings = warnings + disagreements(seen) + plain_warnings(pitch_nm, u_nm, clean)
     used = clean.used
     table = replace(problem.table, order=clean.order).take(used)
     return PitchResult(
@@ -299,42 +264,3 @@ def _result(
 
 def _other_u(u_nm: float, readings_u_nm: float) -> float:
     return math.sqrt(max(0.0, u_nm**2 - readings_u_nm**2))
-
-
-def _off_nominal(problem: FitProblem, fit: JointFit, part: Part) -> list[str]:
-    pitch_nm = base_pitch_nm(problem.parts[0]) * math.exp(fit.state.values[0])
-    off = 100.0 * abs(pitch_nm / part.nominal_pitch_nm - 1.0)
-    if off <= part.nominal_within_percent:
-        return []
-    return [
-        f"the pitch is {off:.2f} % from the nominal {part.nominal_pitch_nm:g} nm, "
-        f"more than the part file's nominal_within_percent "
-        f"({part.nominal_within_percent:g}): is it this part?"
-    ]
-
-
-def _off_screen(refused: list[RejectedSpot], table: OrderTable) -> list[str]:
-    off = sum(r.reason is Rejection.OFF_SCREEN for r in refused)
-    if off <= 0.2 * (off + len(table)):
-        return []
-    return [
-        f"{off} of {off + len(table)} spots lie off the screen that the bench file "
-        "describes: check the unit of x_mm and y_mm and whether they are swapped"
-    ]
-
-
-def _plain_warnings(pitch_nm: float, u_nm: float, clean: CleanFit) -> list[str]:
-    warnings = []
-    if u_nm > PERCENT_LEVEL * pitch_nm:
-        warnings.append(
-            f"percent-level result (standard uncertainty {100.0 * u_nm / pitch_nm:.2g} "
-            "%): it rests on the screen distance in the bench file; a sweep of angles "
-            "with the zero order in view measures the distance itself"
-        )
-    n_used, n_all = int(clean.used.sum()), clean.used.shape[0]
-    if n_used < 0.8 * n_all:
-        warnings.append(
-            f"{n_all - n_used} of {n_all} spots on the screen were not used: look at "
-            "the rejected spots for ghosts, second gratings or a wrong nominal pitch"
-        )
-    return warnings

@@ -110,6 +110,14 @@ def why_no_order(
     )
 
 
+def remedy_of_no_order(bench: Bench, part: Part, laser: str) -> str:
+    """What helps where no order but zero is seen."""
+    if wavelength_over_pitch(bench, part, laser) >= 2.0:
+        longest = 2.0 * part.nominal_pitch_nm
+        return f"no angle helps: take a laser of less than {longest:g} nm"
+    return "sweep to steeper angles or take a laser of shorter wavelength"
+
+
 def _nothing_leaves(
     bench: Bench, part: Part, laser: str, view: OrderVisibility, whose: str
 ) -> str:

@@ -239,7 +239,7 @@ class PitchResult:
     and ``residual_x``/``residual_y`` (in units of the stated standard uncertainty)
     align with it. ``incidence_deg`` is the fitted incidence of every used spot.
     ``advice`` says what the data leave weak and what would help; ``monte_carlo`` is
-    there on request.
+    there on request. ``asked`` names what was asked for beyond a plain fit.
     """
 
     pitch_nm: float
@@ -269,6 +269,10 @@ class PitchResult:
     advice: tuple[str, ...] = ()
     monte_carlo: MonteCarlo | None = None
     jumps: tuple[JumpSeen, ...] = ()
+    part: str = ""
+    serial: str = ""
+    simulated: bool = False
+    asked: tuple[str, ...] = ()
     software: str = ""
     inputs_sha256: str = ""
 

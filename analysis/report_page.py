@@ -11,6 +11,7 @@ from jinja2 import Environment, PackageLoader, StrictUndefined
 
 from pitchsweep.analysis.budget_picture import budget_shares, budget_svg
 from pitchsweep.analysis.budget_words import INDEPENDENT, correlation_words
+from pitchsweep.analysis.decision_words import decision_mark
 from pitchsweep.analysis.frame_strip import frames_png
 from pitchsweep.analysis.number_text import (
     percent,
@@ -33,12 +34,13 @@ from pitchsweep.analysis.report_rows import (
 )
 from pitchsweep.analysis.report_words import (
     BUDGET_SAID,
-    DECISION_MARKS,
     DIGITS_SAID,
+    DRAWN_SAID,
     FOLDED,
     FRAMES_SAID,
     NUISANCES_SAID,
     PITCHES_SAID,
+    PREDICTED_SAID,
     RESIDUALS_SAID,
     SIMULATED_SAID,
     STANDING_CAUTIONS,
@@ -83,12 +85,14 @@ def _values(result: PitchResult, context: ReportContext) -> dict[str, Any]:
         "simulated_said": SIMULATED_SAID,
         "nuisances_said": NUISANCES_SAID,
         "digits_said": DIGITS_SAID,
+        "drawn_said": DRAWN_SAID,
+        "predicted_said": PREDICTED_SAID,
         "pitch": pitch.value,
         "expanded": pitch.u,
         "k": f"{result.k:.2f}",
         "coverage": plain_percent(result.coverage),
         "at_c": f"{result.pitch_at_C:g}",
-        "decision_mark": DECISION_MARKS[decision.outcome],
+        "decision_mark": decision_mark(result),
         "decision_class": decision.outcome or "none",
         "probability": _probability(decision),
         "rule": decision.rule,

@@ -15,6 +15,7 @@ from reportlab.platypus import (
 )
 
 from pitchsweep.analysis.budget_picture import budget_drawing
+from pitchsweep.analysis.decision_words import decision_mark
 from pitchsweep.analysis.frame_strip import frames_drawing
 from pitchsweep.analysis.number_text import percent, plain_percent, rounded
 from pitchsweep.analysis.pdf_document import document_bytes
@@ -28,6 +29,7 @@ from pitchsweep.analysis.report_context import PartFacts, ReportContext
 from pitchsweep.analysis.report_pdf_tables import (
     absent_words,
     budget_table,
+    correlated_words,
     gate_table,
     nuisance_table,
     reason_table,
@@ -36,17 +38,19 @@ from pitchsweep.analysis.report_pdf_tables import (
 from pitchsweep.analysis.report_rows import part_rows, result_facts, run_rows
 from pitchsweep.analysis.report_words import (
     BUDGET_SAID,
-    DECISION_MARKS,
     DIGITS_SAID,
+    DRAWN_SAID,
     FRAMES_SAID,
     NUISANCES_SAID,
     PITCHES_SAID,
+    PREDICTED_SAID,
     RESIDUALS_SAID,
     SIMULATED_SAID,
     STANDING_CAUTIONS,
     TRACKS_SAID,
 )
 from pitchsweep.analysis.residual_picture import residuals_drawing
+from pitchsweep.analysis.result_file import drawn_words
 from pitchsweep.analysis.track_picture import tracks_drawing
 
 GATE_SHOWN = 40
@@ -118,7 +122,7 @@ def _result_box(result: PitchResult) -> Flowable:
         paragraph(said, "soft"),
         paragraph(f"{pitch.value} nm ± {pitch.u} nm", "big"),
         paragraph(factor, "soft"),
-        paragraph(DECISION_MARKS[decision.outcome], "decision"),
+        paragraph(decision_mark(result), "decision"),
     ]
     if decision.conformance_probability is not None:
         chance = percent(decision.conformance_probability)
@@ -166,7 +170,12 @@ def _picture_sections(
         blocks += [_gap(2), seen_table(result)]
     budget = pictured(_lower(budget_drawing(result)), BUDGET_SAID)
     blocks += _section("Uncertainty budget", budget)
-    blocks += [_gap(2), budget_table(result)]
+    blocks += [_gap(2), budget_table(result), paragraph(correlated_words(result))]
+    if result.monte_carlo is not None:
+        blocks += [paragraph(f"{DRAWN_SAID}: {drawn_words(result.monte_carlo)}.")]
+    if result.advice:
+        blocks += _section("What would help", [_item(said) for said in result.advice])
+        blocks += [paragraph(PREDICTED_SAID, "caption")]
     if context.frames:
         strip = pictured(frames_drawing(context.frames), FRAMES_SAID)
         blocks += _section("Frames", strip)

@@ -5,6 +5,7 @@ from collections.abc import Sequence
 from reportlab.platypus import Flowable, KeepTogether, Table
 
 from pitchsweep.analysis.budget_picture import budget_shares
+from pitchsweep.analysis.budget_words import INDEPENDENT, correlation_words
 from pitchsweep.analysis.number_text import rounded, significant
 from pitchsweep.analysis.pdf_style import paragraph
 from pitchsweep.analysis.pdf_tables import Column, Far, table
@@ -62,6 +63,15 @@ def absent_words(result: PitchResult) -> str:
         return ""
     absent = "; ".join(result.assumed_absent)
     return f"Assumed absent, and in no line of the budget: {absent}."
+
+
+def correlated_words(result: PitchResult) -> str:
+    """How the lines of the budget hang together, and what goes with the pitch."""
+    told = correlation_words(result.nuisance)
+    if not told:
+        return INDEPENDENT
+    fitted = "Quantities fitted beside the pitch that go most with it (correlation)"
+    return f"{INDEPENDENT} {fitted}: {told}."
 
 
 def seen_table(result: PitchResult) -> Flowable:

@@ -9,12 +9,6 @@ STANDING_CAUTIONS = (
     " interlocks, local rules and the local laser safety officer decide.",
     "Nothing in this report classifies a laser or authorises its use.",
 )
-DECISION_MARKS = {
-    "conforms": "Conforms.",
-    "does-not-conform": "Does not conform.",
-    "undecided": "Undecided: too near a limit for this uncertainty.",
-    None: "No decision: no tolerance was given.",
-}
 
 TRACKS_SAID = (
     "Where every beam met the screen while the stage turned. Markers are readings,"
@@ -50,6 +44,8 @@ NUISANCES_SAID = (
     " column is how far each moved from what was known before, in units of the"
     " uncertainty known before."
 )
+DRAWN_SAID = "All inputs drawn at random (JCGM 101)"
+PREDICTED_SAID = "Predicted with the model of this fit; no readings are invented."
 DIGITS_SAID = (
     "The pitch is stated with the expanded uncertainty U = k u. Digits beyond the"
     " second of the uncertainty are not given."

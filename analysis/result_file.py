@@ -5,8 +5,8 @@ import math
 from typing import Any
 
 from pitchsweep.analysis.analysis_errors import NoResult
+from pitchsweep.analysis.decision_words import decision_words
 from pitchsweep.analysis.number_text import (
-    percent,
     plain_percent,
     relative,
     rounded,
@@ -21,13 +21,6 @@ from pitchsweep.analysis.records import (
     PitchSeen,
 )
 
-DECISION_WORDS = {
-    "conforms": "conforms",
-    "does-not-conform": "does not conform",
-    "undecided": "undecided: too near a limit for this uncertainty",
-}
-NO_DECISION = "no decision: no tolerance was given"
-
 
 def result_dict(result: PitchResult) -> dict[str, Any]:
     """Every key of result.json, in plain Python types that JSON can hold.
@@ -40,6 +33,9 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
     """
     _check_finite(result)
     return {
+        "part": result.part,
+        "serial": result.serial,
+        "simulated": result.simulated,
         "pitch_nm": float(result.pitch_nm),
         "u_pitch_nm": float(result.u_pitch_nm),
         "U_pitch_nm": float(result.U_pitch_nm),
@@ -61,6 +57,7 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
         "advice": list(result.advice),
         "assumed_absent": list(result.assumed_absent),
         "warnings": list(result.warnings),
+        "asked": list(result.asked),
         "software": result.software,
         "inputs_sha256": result.inputs_sha256,
     }
@@ -88,6 +85,16 @@ def spots_words(count: int) -> str:
     return f"{count} spot" if count == 1 else f"{count} spots"
 
 
+def unused_words(result: PitchResult) -> str:
+    """How many spots were not used, and for which reasons."""
+    said = f"{spots_words(len(result.rejected))} not used"
+    reasons = [
+        f"{row['count']} {row['reason'].replace('-', ' ')}"
+        for row in result.rejected_counts()
+    ]
+    return f"{said} ({', '.join(reasons)})" if reasons else said
+
+
 def agreement_words(result: PitchResult) -> str:
     """Reduced chi-squared, or that there are too few spots for one."""
     if not math.isfinite(result.reduced_chi2):
@@ -103,9 +110,8 @@ def summary_lines(result: PitchResult) -> list[str]:
         f"Pitch      {pitch.value} nm +/- {pitch.u} nm at {result.pitch_at_C:g} C",
         f"           k = {result.k:.2f}, coverage {plain_percent(result.coverage)},"
         f" U/pitch = {relative(result.U_pitch_nm, result.pitch_nm)}",
-        f"Decision   {decision_words(result.decision)}",
-        f"Used       {used_words(result)},"
-        f" orders {used}; {len(result.rejected)} spots not used",
+        f"Decision   {decision_words(result)}",
+        f"Used       {used_words(result)}, orders {used}; {unused_words(result)}",
         f"Agreement  reduced chi-squared {agreement_words(result)}",
     ]
     if result.monte_carlo is not None:
@@ -129,16 +135,6 @@ def drawn_words(drawn: MonteCarlo) -> str:
         f"{low.value} to {high.value} nm, u {low.u} nm, from {drawn.draws} draws of all"
         f" inputs; {verdict}"
     )
-
-
-def decision_words(decision: Decision) -> str:
-    """The decision in words with the probability that the part conforms."""
-    if decision.outcome is None:
-        return NO_DECISION
-    words = DECISION_WORDS.get(decision.outcome, decision.outcome)
-    if decision.conformance_probability is None:
-        return words
-    return f"{words} (probability {percent(decision.conformance_probability)})"
 
 
 def order_text(order: int) -> str:

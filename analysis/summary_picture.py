@@ -6,6 +6,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from pitchsweep.analysis.decision_words import decision_words
 from pitchsweep.analysis.number_text import plain_percent, rounded
 from pitchsweep.analysis.picture_style import (
     INK,
@@ -18,7 +19,6 @@ from pitchsweep.analysis.picture_style import (
 from pitchsweep.analysis.records import PitchResult
 from pitchsweep.analysis.report_context import ReportContext
 from pitchsweep.analysis.residual_picture import draw_residuals
-from pitchsweep.analysis.result_file import decision_words
 from pitchsweep.analysis.track_picture import draw_hole, draw_tracks
 
 
@@ -74,7 +74,7 @@ def _draw_words(axes: Axes, result: PitchResult, context: ReportContext) -> None
             8.5,
             SOFT_INK,
         ),
-        (0.10, drawable(decision_words(result.decision), length=90), 9.5, INK),
+        (0.10, drawable(decision_words(result), length=90), 9.5, INK),
     ]
     for height, text, size, colour in lines:
         axes.text(

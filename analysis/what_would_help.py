@@ -20,6 +20,7 @@ from pitchsweep.analysis.number_text import significant
 from pitchsweep.analysis.prediction import FitState, predict
 from pitchsweep.analysis.records import FloatArray, IntArray, OrderTable
 from pitchsweep.analysis.robust_fit import rescaled
+from pitchsweep.analysis.screen_area import counts
 from pitchsweep.configs.bench_model import Bench
 
 WORTH_SAYING = 0.9
@@ -217,17 +218,10 @@ def _variance_with(sweep: Sweep, extra: _Extra) -> float:
     seen = predict(wider, order, state)
     weight = np.concatenate([fit.used, np.zeros(len(more), dtype=np.bool_)])
     new = np.arange(len(table)) >= len(problem.table)
-    there = _on_screen(sweep.bench, seen.x_mm, seen.y_mm) & seen.valid
-    _, covariance = one_step(wider, order, state, (weight | new & there) * 1.0)
+    there = counts(sweep.bench, seen.x_mm, seen.y_mm) & seen.valid
+    weight |= new & there
+    _, covariance = one_step(wider, order, state, weight.astype(np.float64))
     return float(covariance[0, 0])
-
-
-def _on_screen(bench: Bench, x_mm: FloatArray, y_mm: FloatArray) -> Any:
-    screen, hole = bench.screen, bench.screen.hole
-    radius = hole.diameter_mm / 2.0 + bench.beam.diameter_mm
-    inside = np.abs(x_mm) < screen.width_mm / 2.0
-    inside &= np.abs(y_mm) < screen.height_mm / 2.0
-    return inside & (np.hypot(x_mm - hole.x_mm, y_mm - hole.y_mm) > radius)
 
 
 def _readings(sweep: Sweep, extra: _Extra) -> tuple[OrderTable, IntArray]:

@@ -177,7 +177,7 @@ def test_a_table_without_anything_else_gives_a_report() -> None:
     ("outcome", "words"),
     [
         ("does-not-conform", "Does not conform."),
-        ("undecided", "Undecided: too near a limit for this uncertainty."),
+        ("undecided", "Undecided: the uncertainty is too large for this tolerance."),
     ],
 )
 def test_other_decisions_in_words(outcome: str, words: str) -> None:

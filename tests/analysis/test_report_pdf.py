@@ -11,7 +11,7 @@ from pypdf.generic import DictionaryObject
 from result_builder import build_context, build_result, build_table_result
 
 from pitchsweep.analysis.pdf_style import CUT, LONGEST_TEXT, fitted, printable
-from pitchsweep.analysis.records import Decision, Nuisance, PitchSeen
+from pitchsweep.analysis.records import Decision, MonteCarlo, Nuisance, PitchSeen
 from pitchsweep.analysis.report_context import GateRow, PartFacts, ReportContext
 from pitchsweep.analysis.report_pdf import GATE_SHOWN, report_pdf
 from pitchsweep.analysis.report_rows import budget_row, nuisance_rows, seen_rows
@@ -187,7 +187,7 @@ def test_nasty_texts_stay_text_and_long_ones_are_cut() -> None:
     context = replace(build_context(), frames=(), part=part, gate_history=gate)
     text = " ".join(texts(report_pdf(result, context)))
     assert [shown for shown in NASTY.values() if shown not in text] == []
-    assert "Undecided: too near a limit for this uncertainty." in text
+    assert "Undecided: the uncertainty is too large for this tolerance." in text
     assert f"The last {GATE_SHOWN} of 90 changes." in text
     assert "at 049" not in text and "at 050" in text and "at 089" in text
 
@@ -198,3 +198,18 @@ def test_long_texts_are_cut_with_a_sign_that_they_are() -> None:
     assert printable("x" * 9999).endswith(CUT)
     assert fitted("short", size=7.0, width=300.0) == "short"
     assert fitted("long " * 99, size=7.0, width=60.0).endswith(CUT)
+
+
+def test_draws_correlations_and_advice_are_on_paper_too() -> None:
+    drawn = MonteCarlo(
+        830.42, 0.031, 830.36, 830.48, 36_000, 0, 0.0005, settled=True, validated=True
+    )
+    advice = ("a mount half a turn away would bring u from 0.031 to 0.012 nm",)
+    beside = replace(build_result().nuisance[0], correlation=-0.71)
+    result = replace(
+        build_result(), monte_carlo=drawn, advice=advice, nuisance=(beside,)
+    )
+    text = " ".join(texts(report_pdf(result, build_context())))
+    assert "from 36000 draws of all inputs; U of the fit agrees within" in text
+    assert advice[0] in text and "What would help" in text
+    assert f"{beside.name} (\N{MINUS SIGN}0.71)" in text

@@ -8,16 +8,26 @@ import pytest
 from result_builder import build_result, build_table_result
 
 from pitchsweep.analysis.analysis_errors import NoResult
-from pitchsweep.analysis.records import BudgetLine, Decision
+from pitchsweep.analysis.decision_words import decision_words
+from pitchsweep.analysis.records import (
+    BudgetLine,
+    Decision,
+    RejectedSpot,
+    Rejection,
+)
 from pitchsweep.analysis.result_file import (
-    decision_words,
     order_text,
     result_dict,
     result_json,
     summary_lines,
+    unused_words,
 )
 
 PROMISED = {
+    "part",
+    "serial",
+    "simulated",
+    "asked",
     "pitch_nm",
     "u_pitch_nm",
     "U_pitch_nm",
@@ -98,11 +108,26 @@ def test_the_summary_of_a_coarse_result_claims_no_decimals() -> None:
     assert "no decision: no tolerance was given" in text
 
 
-def test_decisions_in_words() -> None:
-    undecided = Decision("undecided", "guarded", 0.912, 1.0, 2.0)
-    assert decision_words(undecided) == (
-        "undecided: too near a limit for this uncertainty (probability 91.2 %)"
-    )
+@pytest.mark.parametrize(
+    ("upper_nm", "words"),
+    [
+        (2.0, "undecided: too near a limit for this uncertainty"),
+        (1.1, "undecided: the uncertainty is too large for this tolerance"),
+    ],
+)
+def test_undecided_says_whether_any_pitch_could_have_conformed(
+    upper_nm: float, words: str
+) -> None:
+    undecided = Decision("undecided", "guarded", 0.912, 1.0, upper_nm)
+    result = replace(build_result(), decision=undecided)  # U is 0.0634 nm
+    assert decision_words(result) == f"{words} (probability 91.2 %)"
+
+
+def test_spots_not_used_are_counted_with_their_reasons() -> None:
+    spot = RejectedSpot(3, 1.0, 2.0, "mm", Rejection.OFF_TRACK)
+    result = replace(build_result(), rejected=(spot,))
+    assert unused_words(result) == "1 spot not used (1 off its track)"
+    assert unused_words(replace(result, rejected=())) == "0 spots not used"
 
 
 def test_orders_carry_their_sign() -> None:
