@@ -103,6 +103,7 @@ def powers_as_signed(job: Job, people: People) -> tuple[Mapping[str, object], ..
             "meter_due": found[name].meter_due,
             "read": found[name].utc,
             "by": found[name].by,
+            "key": found[name].key,
             "entry": found[name].n,
             "hash": found[name].hash,
         }

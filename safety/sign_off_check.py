@@ -87,7 +87,8 @@ def why_powers_do_not_count(record: SignOff, people: People) -> str | None:
             == (statement.bench, statement.simulated, laser)
         ]
         own = next((r for r in of_it if r.hash == power["hash"]), None)
-        if own is None or (own.n, own.value_mw) != (power["entry"], power["value_mw"]):
+        claimed = (power["entry"], power["value_mw"], power["key"])
+        if own is None or (own.n, own.value_mw, own.key) != claimed:
             return f"the people's ledger has no such power reading of laser '{laser}'"
         reader = people.signer_of(own.key)
         if reader is None or not reader.active:

@@ -120,7 +120,8 @@ def mark_revoked(home: SafetyHome, what: str) -> None:
 def watched_files(home: SafetyHome, kept: Kept) -> dict[str, str]:
     """Path -> SHA-256 (empty: must stay absent) of what a guard looks at all night."""
     statement = kept.record.statement
-    marks = [statement.id, *(signer.key for signer in statement.signers)]
+    readers = [str(power["key"]) for power in statement.powers]
+    marks = [statement.id, *(signer.key for signer in statement.signers), *readers]
     return {
         str(kept.path): file_sha256(kept.path),
         **{str(home.revoked(mark)): "" for mark in marks},

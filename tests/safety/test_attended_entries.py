@@ -35,7 +35,9 @@ from pitchsweep.safety.people_store import enter, read_people
 from pitchsweep.safety.permit_proof import why_permit_is_unproven
 from pitchsweep.safety.power_readings import Needed, why_power_is_unknown
 from pitchsweep.safety.safety_errors import GateRefused, LedgerBroken
-from pitchsweep.safety.sign_off import utc_seconds
+from pitchsweep.safety.sign_off import LedgerMark, utc_seconds
+from pitchsweep.safety.sign_off_making import Moment, statement_of
+from pitchsweep.safety.sign_off_store import sign_and_keep, watched_files
 from pitchsweep.safety.signers import revoke_signer
 
 WORK = demo_work()
@@ -104,9 +106,6 @@ def test_a_power_is_read_by_the_holder_while_the_permit_lasts(at: Office) -> Non
 def test_nobody_signs_without_a_power_reading(at: Office) -> None:
     people = read_people(at.home)
     assert not people.people.powers
-    from pitchsweep.safety.sign_off import LedgerMark
-    from pitchsweep.safety.sign_off_making import Moment, statement_of
-
     moment = Moment(time.time(), "a1", people.people, LedgerMark(3, people.head))
     with pytest.raises(GateRefused, match="laser 'red' has no power reading"):
         statement_of(WORK, good_answers(WORK), moment)
@@ -163,20 +162,16 @@ def test_a_sign_off_names_its_readings_and_falls_with_them(at: Office) -> None:
 def test_readings_that_the_ledger_does_not_have(at: Office) -> None:
     statement = stated(at, WORK)
     (power,) = statement.powers
-    from pitchsweep.safety.sign_off_store import sign_and_keep
-
     for powers, why in (
         ((), "not every laser"),
         (({**power, "value_mw": 0.4},), "no such power reading"),
         (({**power, "hash": "00" * 32},), "no such power reading"),
         (({**power, "entry": 4},), "no such power reading"),
+        (({**power, "key": "00" * 32},), "no such power reading"),
         (({**power, "highest_allowed_mw": 0.2},), "above the 0.2 mW"),
         (({**power, "highest_allowed_mw": None},), "does not say how much"),
     ):
-        forged = replace(
-            statement, powers=powers, id=f"a{len(why)}{why[-1]}{len(powers)}"
-        )
-        forged = replace(forged, id=str(time.monotonic_ns()))
+        forged = replace(statement, powers=powers, id=str(time.monotonic_ns()))
         kept = sign_and_keep(at.home, forged, [at.keys[OFFICER]])
         assert why in verdict(at, kept, WORK), powers
 
@@ -189,6 +184,9 @@ def test_a_reading_falls_with_its_reader(at: Office) -> None:
     assert verdict(at, kept, WORK) == ""
     revoke_signer(at.home, TECHNICIAN, "left", at.keys[OFFICER])
     assert "was read by 'bo', now revoked" in verdict(at, kept, WORK)
+    # A guard that runs meanwhile sees it by this file.
+    bo = str(at.home.revoked(at.keys[TECHNICIAN].public))
+    assert watched_files(at.home, kept)[bo] == "" and Path(bo).exists()
     with pytest.raises(GateRefused, match="'bo' was revoked since"):
         stated(at, WORK)
 
