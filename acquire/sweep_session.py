@@ -36,9 +36,9 @@ from pitchsweep.acquire.sweep_reporter import SweepReporter
 from pitchsweep.acquire.sweep_runner import SweepRunner
 from pitchsweep.acquire.sweep_start import make_ready
 from pitchsweep.acquire.telling import Teller
+from pitchsweep.acquire.unacknowledged import refuse_unacknowledged
 from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.job_model import Job
-from pitchsweep.safety.run_ack import refuse_unacknowledged
 from pitchsweep.safety.run_refusals import refuse_unsafe
 
 SWITCH_INTERVAL_S = 0.0005

@@ -48,7 +48,8 @@ class EmissionClient:
     """Questions to the unit, each with a deadline of ``timeout_s``.
 
     Every method raises NoAnswerInTime, AnsweredNonsense, LineBroke or DeviceRefused.
-    Nothing is ever repeated by itself: light is held only by calling ``keep_lit``.
+    Nothing is ever repeated by itself: light comes only by calling ``light_up`` and is
+    held only by calling ``keep_lit``.
     """
 
     def __init__(
@@ -56,6 +57,7 @@ class EmissionClient:
     ) -> None:
         self._line = line
         self._timeout_s = timeout_s
+        self._ticket = 0
 
     def identify(self) -> str:
         """The identity that the unit states."""
@@ -69,9 +71,16 @@ class EmissionClient:
         """
         return self._ask("prove", challenge=nonce).data("digest")
 
+    def light_up(self) -> UnitState:
+        """Asks for light, for one keep-alive time.
+
+        DeviceRefused unless the unit's latest answer is younger than that.
+        """
+        return self._standing("light", ticket=self._ticket)
+
     def keep_lit(self) -> UnitState:
-        """Asks for light, or holds it for one more keep-alive time."""
-        return _read_state(self._ask("keep"))
+        """Holds the light for one more keep-alive time; DeviceRefused in the dark."""
+        return self._standing("keep")
 
     def ready_trial(self) -> None:
         """Nothing is needed before the time-out is tried."""
@@ -81,19 +90,24 @@ class EmissionClient:
 
         ``lapse_count`` rises by one when it has run out. DeviceRefused while lit.
         """
-        return _read_state(self._ask("try"))
+        return self._standing("try")
 
     def dark(self) -> UnitState:
         """Takes the light away at once."""
-        return _read_state(self._ask("dark"))
+        return self._standing("dark")
 
     def state(self) -> UnitState:
         """Asks without changing anything; does not hold the light."""
-        return _read_state(self._ask("state"))
+        return self._standing("state")
 
     def close(self) -> None:
         """Closes the line. Closing does not ask for dark; the unit lapses by itself."""
         self._line.close()
+
+    def _standing(self, name: str, **fields: object) -> UnitState:
+        answer = self._ask(name, **fields)
+        self._ticket = int(answer.number_of("ticket"))
+        return _read_state(answer)
 
     def _ask(self, name: str, **fields: object) -> Answer:
         return self._line.ask(name, timeout_s=self._timeout_s, **fields)

@@ -69,9 +69,13 @@ class PulseLineClient:
         answer = self._line.ask("prove", timeout_s=ASK_TIMEOUT_S, challenge=nonce)
         return answer.data("digest")
 
-    def keep_lit(self) -> UnitState:
-        """Half a pulse, with the light let through."""
+    def light_up(self) -> UnitState:
+        """Half a pulse, with the light let through from now on."""
         self._let_through(True)
+        return self._half_pulse()
+
+    def keep_lit(self) -> UnitState:
+        """Half a pulse; after a pause the relay wants a whole train of them."""
         return self._half_pulse()
 
     def ready_trial(self) -> None:

@@ -3,9 +3,7 @@
 import time
 from pathlib import Path
 
-from pitchsweep.configs.typed_command import typed
 from pitchsweep.safety.ack_record import run_entries, why_not_acknowledged_yet
-from pitchsweep.safety.safety_errors import GateRefused
 
 
 def why_run_is_not_acknowledged(ledger: Path, run: str) -> str | None:
@@ -18,15 +16,6 @@ def why_run_is_not_acknowledged(ledger: Path, run: str) -> str | None:
     return why_not_acknowledged_yet(
         entries, now_utc_s=time.time(), booted_utc_s=booted_utc_s()
     )
-
-
-def refuse_unacknowledged(ledger: Path, run: str, folder: Path) -> None:
-    """Raises GateRefused for a run that has to be acknowledged before it goes on."""
-    reason = why_run_is_not_acknowledged(ledger, run)
-    if reason is not None:
-        raise GateRefused(
-            f"run {run}: {reason}", f"go to the bench, then: {typed('ack', folder)}"
-        )
 
 
 def booted_utc_s() -> float:

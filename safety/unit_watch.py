@@ -30,8 +30,14 @@ class UnitWatch:
         """Asks how the unit stands."""
         self._took(self._now(), self._unit.state())
 
+    def light_up(self) -> None:
+        """Asks for light, right after a look."""
+        asked_s = self._now()
+        self._took(asked_s, self._unit.light_up())
+        self.kept_s = asked_s
+
     def keep(self) -> None:
-        """Asks for light, or holds it."""
+        """Holds the light."""
         asked_s = self._now()
         self._took(asked_s, self._unit.keep_lit())
         self.kept_s = asked_s

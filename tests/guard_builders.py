@@ -63,8 +63,15 @@ class FakeUnit:
             raise DeviceRefused(self.identity, "declined", "no key")
         return challenge_answer(self.key, nonce)
 
+    def light_up(self) -> UnitState:
+        self._hear("light")
+        return self._hold()
+
     def keep_lit(self) -> UnitState:
         self._hear("keep")
+        return self._hold()
+
+    def _hold(self) -> UnitState:
         self.lit = True
         self.lit_until_s = self.clock.now_s + self.keep_alive_s
         return self._standing()

@@ -1,11 +1,11 @@
 """A small bench with a twin, and clients on its ports, for tests of the process."""
 
 import json
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import Any, TypeVar
 
 from builders import demo_job
 
@@ -23,6 +23,8 @@ from pitchsweep.drivers.twin_world_client import TwinWorldClient
 
 UNIT_TIMEOUT_S = 2.0
 """Longer than the guard's, so that a busy machine does not fail these tests."""
+
+Found = TypeVar("Found")
 
 
 @dataclass(frozen=True)
@@ -113,6 +115,26 @@ def label(step: int = 0, exposure: int = 0) -> Label:
     """A label of mount 0, the job's first laser."""
     laser = small_job().recipe.lasers[0]
     return Label(0, laser, 0, step, exposure, 3.0 * step)
+
+
+def while_lit(
+    unit: EmissionClient,
+    act: Callable[[], Found],
+    first: Callable[[], None] = lambda: None,
+) -> Found:
+    """What ``act`` gives under light; done again where a busy machine lost it.
+
+    ``first`` is done before the light is asked for, each time.
+    """
+    for _ in range(100):
+        first()
+        light_anew(unit)
+        lapses = unit.state().lapse_count
+        found = act()
+        after = unit.state()
+        if after.light_on and after.lapse_count == lapses:
+            return found
+    raise AssertionError("the light could not be held")
 
 
 def light_anew(unit: EmissionClient) -> None:

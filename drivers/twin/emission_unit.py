@@ -40,8 +40,26 @@ class EmissionUnit:
         self._closed = {number: True for number in range(1, channels + 1)}
         self._resets = 0
         self._lapses = 0
+        self._ticket = 0
+        self._ticket_s = float("-inf")
 
-    def keep(self, for_s: float | None = None) -> None:
+    def light_up(self, ticket: int) -> bool:
+        """Lights up for one keep-alive time; False for any but a fresh last ticket."""
+        with self._lock:
+            fresh = self._clock() - self._ticket_s <= self.keep_alive_s
+            if ticket != self._ticket or not fresh:
+                return False
+        self.energise()
+        return True
+
+    def keep(self) -> bool:
+        """Stays lit for one more keep-alive time; False in the dark."""
+        if not self.is_lit():
+            return False
+        self.energise()
+        return True
+
+    def energise(self, for_s: float | None = None) -> None:
         """Lights up, or stays lit for ``for_s`` more (None: one keep-alive time)."""
         with self._lock:
             self._lapse_if_due()
@@ -140,12 +158,15 @@ class EmissionUnit:
                 self._jammed and self._clock() >= self._lit_until_s
             )
             second = self._closed.get(2)
+            self._ticket += 1
+            self._ticket_s = self._clock()
             return (
                 f"LIGHT {'LIT' if held else 'DARK'}"
                 f" DOOR {_contact(self._closed[1])}"
                 f" SECOND {'ABSENT' if second is None else _contact(second)}"
                 f" SHUTTER {'CLEAR' if clear else 'SHUT'}"
                 f" RESETS {self._resets} LAPSES {self._lapses}"
+                f" TICKET {self._ticket}"
             )
 
     def _lapse_if_due(self) -> None:

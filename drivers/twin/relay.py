@@ -66,7 +66,7 @@ class TimeOutRelay:
             if not level:
                 self._unit.dark("no longer let through")
             elif left_s > 0.0:
-                self._unit.keep(left_s)
+                self._unit.energise(left_s)
 
     @property
     def cts(self) -> bool:
@@ -117,4 +117,4 @@ class TimeOutRelay:
             return
         self._closed_until_s = now_s + self._unit.keep_alive_s
         if self._through:
-            self._unit.keep()
+            self._unit.energise()

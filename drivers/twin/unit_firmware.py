@@ -2,6 +2,7 @@
 
 import hashlib
 import hmac
+from collections.abc import Callable
 
 from pitchsweep.drivers.twin.emission_unit import EmissionUnit
 from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
@@ -11,7 +12,7 @@ LONGEST_CHALLENGE_BYTES = 32
 
 
 class UnitFirmware:
-    """Answers WHO, PROVE, KEEP, TRY, DARK and STATE."""
+    """Answers WHO, PROVE, LIGHT, KEEP, TRY, DARK and STATE."""
 
     def __init__(
         self, unit: EmissionUnit, *, identity: str, key: bytes, faults: FaultSchedule
@@ -32,7 +33,9 @@ class UnitFirmware:
 
     def _answer(self, words: list[str]) -> str | None:
         if words == ["KEEP"]:
-            return self._keep()
+            return self._hold(self._unit.keep, "DARK")
+        if len(words) == 2 and words[0] == "LIGHT" and words[1].isdecimal():
+            return self._hold(lambda: self._unit.light_up(int(words[1])), "TOO-LATE")
         if words == ["DARK"]:
             self._unit.dark()
             return self._unit.standing()
@@ -47,14 +50,15 @@ class UnitFirmware:
             return prove(self._key, words[1])
         return "DECLINED UNREADABLE"
 
-    def _keep(self) -> str | None:
+    def _hold(self, act: Callable[[], bool], why_not: str) -> str | None:
         fault = self._faults.due("unit-keep")
         does = "" if fault is None else fault.does
         if does == "door-opens":
             self._unit.set_door(closed=False)
         if does == "one-channel-opens":
             self._unit.set_door(closed=False, channel=2)
-        self._unit.keep()
+        if not act():
+            return f"DECLINED {why_not}"
         if does == "light-stuck":
             self._unit.stick()
         if does == "shutter-stuck":

@@ -17,11 +17,9 @@ from pitchsweep.acquire.journal_file import create_journal, open_journal
 from pitchsweep.acquire.progress import progress_for
 from pitchsweep.acquire.run_folder import RunFolder, create_run_folder
 from pitchsweep.acquire.sweep_session import resume_run
+from pitchsweep.acquire.unacknowledged import refuse_unacknowledged
 from pitchsweep.safety.ledger import Ledger, verify
-from pitchsweep.safety.run_ack import (
-    refuse_unacknowledged,
-    why_run_is_not_acknowledged,
-)
+from pitchsweep.safety.run_ack import why_run_is_not_acknowledged
 from pitchsweep.safety.safety_errors import GateRefused
 
 

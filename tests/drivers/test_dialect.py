@@ -43,8 +43,10 @@ ANSWERS: list[tuple[Dialect, str, dict[str, Any], bytes]] = [
             "shutter": "CLEAR",
             "resets": 2,
             "lapses": 0,
+            "ticket": 12,
         },
-        b"N7 LIGHT LIT DOOR AJAR SECOND ABSENT SHUTTER CLEAR RESETS 2 LAPSES 0\n",
+        b"N7 LIGHT LIT DOOR AJAR SECOND ABSENT SHUTTER CLEAR RESETS 2 LAPSES 0"
+        b" TICKET 12\n",
     ),
 ]
 

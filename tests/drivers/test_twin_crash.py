@@ -19,13 +19,13 @@ from pitchsweep.drivers.twin_launcher import start_twin
 CONTROLLER = """
 import sys, threading
 from pathlib import Path
-from twin_bench import running_twin
+from twin_bench import light_anew, running_twin
 with running_twin(Path(sys.argv[1])) as twin:
     twin.stage.home()
     twin.stage.move_to(12.0)
     def hold():
         while True:
-            twin.unit.keep_lit()
+            light_anew(twin.unit)
             threading.Event().wait(0.02)
     threading.Thread(target=hold, daemon=True).start()
     print(twin.handle.process.pid, flush=True)

@@ -34,6 +34,12 @@ class _Unit:
     def say(self, line: bytes) -> list[bytes]:
         return [reply.data for reply in self.firmware.receive(line)]
 
+    def light(self) -> bytes:
+        """Asks how it stands and quotes that ticket; the answer to it."""
+        (standing,) = self.say(b"N1 STATE\n")
+        (answer,) = self.say(b"N1 LIGHT " + standing.split()[-1] + b"\n")
+        return answer
+
     def rows(self) -> list[tuple[str, str]]:
         rows = map(json.loads, self.path.read_text().splitlines())
         return [(row["what"], row["value"]) for row in rows]
@@ -47,19 +53,37 @@ def unit(tmp_path: Path) -> Iterator[_Unit]:
 
 
 def test_light_lapses_without_keep_alive(unit: _Unit) -> None:
-    answer = b"N1 LIGHT LIT DOOR SHUT SECOND ABSENT SHUTTER CLEAR RESETS 0 LAPSES 0\n"
-    assert unit.say(b"N1 KEEP\n") == [answer]
+    answer = b"N1 LIGHT LIT DOOR SHUT SECOND ABSENT SHUTTER CLEAR RESETS 0 LAPSES 0"
+    assert unit.light() == answer + b" TICKET 2\n"
     unit.time_s += 0.19
     assert unit.firmware.due_in_s() == pytest.approx(0.01)
     unit.time_s += 0.02
     assert unit.firmware.due_in_s() is None
-    answer = b"N2 LIGHT DARK DOOR SHUT SECOND ABSENT SHUTTER SHUT RESETS 0 LAPSES 1\n"
-    assert unit.say(b"N2 STATE\n") == [answer]
+    answer = b"N2 LIGHT DARK DOOR SHUT SECOND ABSENT SHUTTER SHUT RESETS 0 LAPSES 1"
+    assert unit.say(b"N2 STATE\n") == [answer + b" TICKET 3\n"]
     assert unit.rows() == [("light", "on"), ("light", "off")]
 
 
+def test_what_holds_the_light_never_brings_it_back(unit: _Unit) -> None:
+    unit.light()
+    unit.time_s += 0.21
+    assert unit.say(b"N2 KEEP\n") == [b"N2 DECLINED DARK\n"]
+    assert unit.rows() == [("light", "on"), ("light", "off")]
+
+
+def test_light_asked_for_too_late_or_on_an_old_ticket_is_declined(unit: _Unit) -> None:
+    assert unit.say(b"N1 LIGHT 0\n") == [b"N1 DECLINED TOO-LATE\n"]
+    unit.say(b"N2 STATE\n")
+    unit.say(b"N3 STATE\n")
+    assert unit.say(b"N4 LIGHT 1\n") == [b"N4 DECLINED TOO-LATE\n"]
+    unit.time_s += 0.21
+    assert unit.say(b"N5 LIGHT 2\n") == [b"N5 DECLINED TOO-LATE\n"]
+    assert unit.say(b"N6 LIGHT two\n") == [b"N6 DECLINED UNREADABLE\n"]
+    assert not unit.unit.is_lit() and unit.rows() == []
+
+
 def test_asking_for_state_does_not_hold_the_light(unit: _Unit) -> None:
-    unit.say(b"N1 KEEP\n")
+    unit.light()
     for _ in range(5):
         unit.time_s += 0.05
         unit.say(b"N2 STATE\n")
@@ -67,11 +91,11 @@ def test_asking_for_state_does_not_hold_the_light(unit: _Unit) -> None:
 
 
 def test_an_open_door_is_told_but_does_not_cut_the_light(unit: _Unit) -> None:
-    unit.say(b"N1 KEEP\n")
+    unit.light()
     unit.unit.set_door(closed=False)
     unit.unit.press_reset()
-    answer = b"N2 LIGHT LIT DOOR AJAR SECOND ABSENT SHUTTER CLEAR RESETS 1 LAPSES 0\n"
-    assert unit.say(b"N2 KEEP\n") == [answer]
+    answer = b"N2 LIGHT LIT DOOR AJAR SECOND ABSENT SHUTTER CLEAR RESETS 1 LAPSES 0"
+    assert unit.say(b"N2 KEEP\n") == [answer + b" TICKET 3\n"]
     assert b"LIGHT DARK" in unit.say(b"N3 DARK\n")[0]
     assert unit.rows()[-1] == ("light", "off")
 
@@ -110,7 +134,7 @@ def test_faults_come_at_their_occasion(tmp_path: Path) -> None:
     assert unit.say(b"N1 WHO\n") == [b"N1 NAMED unit-9\n"]
     assert unit.say(b"N2 WHO\n") == []
     assert not unit.say(b"N3 WHO\n")[0].startswith(b"N3")
-    unit.say(b"N4 KEEP\n")
+    unit.light()
     assert b"LIGHT LIT" in unit.say(b"N5 DARK\n")[0]
     unit.log.close()
 

@@ -10,7 +10,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from twin_bench import Clients, label, running_twin, unit_log
+from twin_bench import Clients, label, light_anew, running_twin, unit_log, while_lit
 
 from pitchsweep.drivers.driver_errors import (
     AnsweredNonsense,
@@ -93,12 +93,13 @@ def test_a_wrong_token_opens_nothing(twin: Clients) -> None:
 def test_light_shows_spots_and_a_frame_and_dark_shows_none(twin: Clients) -> None:
     twin.stage.move_to(8.0)
     twin.world.seat_part(0, 0.0)
-    twin.unit.keep_lit()
-    spots = twin.world.spots(label(1))
-    again = twin.world.spots(label(1))
-    twin.unit.keep_lit()
-    lit = twin.camera.expose(5.0, label(1))
-    lit_again = twin.camera.expose(5.0, label(1))
+    spots, again = (
+        while_lit(twin.unit, lambda: twin.world.spots(label(1))) for _ in range(2)
+    )
+    lit, lit_again = (
+        while_lit(twin.unit, lambda: twin.camera.expose(5.0, label(1)))
+        for _ in range(2)
+    )
     assert not twin.unit.dark().light_on
     dark = twin.camera.expose(5.0, label(1))
     assert twin.world.spots(label(1)) == []
@@ -110,12 +111,17 @@ def test_light_shows_spots_and_a_frame_and_dark_shows_none(twin: Clients) -> Non
 
 def test_a_turning_stage_smears(twin: Clients) -> None:
     twin.stage.move_to(-20.0)
-    twin.unit.keep_lit()
-    still = twin.camera.expose(100.0, label(2))
-    twin.stage._ask("move", angle_deg=20.0, feed_deg_per_min=600.0)
-    assert twin.stage.where().turning and twin.world.spots(label(2)) == []
-    twin.unit.keep_lit()
-    smeared = twin.camera.expose(100.0, label(2))
+    still = while_lit(twin.unit, lambda: twin.camera.expose(100.0, label(2)))
+
+    def turn() -> None:
+        twin.stage.halt()
+        twin.stage.move_to(-20.0)
+        twin.stage._ask("move", angle_deg=20.0, feed_deg_per_min=600.0)
+        assert twin.stage.where().turning and twin.world.spots(label(2)) == []
+
+    smeared = while_lit(
+        twin.unit, lambda: twin.camera.expose(100.0, label(2)), first=turn
+    )
     twin.stage.halt()
     twin.unit.dark()
     threshold = 200
@@ -127,10 +133,8 @@ def test_a_frame_read_out_later_shows_what_was_there_when_it_was_exposed(
 ) -> None:
     twin.stage.move_to(9.0)
     twin.world.seat_part(0, 0.0)
-    twin.unit.keep_lit()
-    whole = twin.camera.expose(5.0, label(4))
-    twin.unit.keep_lit()
-    to_come = twin.camera.begin(5.0, label(4))
+    whole = while_lit(twin.unit, lambda: twin.camera.expose(5.0, label(4)))
+    to_come = while_lit(twin.unit, lambda: twin.camera.begin(5.0, label(4)))
     assert not twin.unit.dark().light_on
     twin.stage.move_to(14.0)
     twin.world.seat_part(1, 90.0)
@@ -160,7 +164,7 @@ def test_the_person_on_the_spot_is_seen_at_the_unit(twin: Clients) -> None:
 def test_the_light_lapses_within_250_ms_of_the_last_keep_alive(twin: Clients) -> None:
     twin.unit.dark()
     lapses = twin.unit.state().lapse_count
-    twin.unit.keep_lit()
+    light_anew(twin.unit)
     while twin.unit.state().light_on:  # the real safety clock runs here
         pass
     assert twin.unit.state().lapse_count == lapses + 1
@@ -170,6 +174,7 @@ def test_the_light_lapses_within_250_ms_of_the_last_keep_alive(twin: Clients) ->
 
 
 def test_a_line_that_nobody_reads_does_not_hold_up_the_light(twin: Clients) -> None:
+    light_anew(twin.unit)
     transport = twin.unit._line._transport
     for _ in range(300):
         transport.send(b"N1 KEEP\n" + b"N1 STATE\n" * 4)

@@ -23,7 +23,7 @@ def test_a_disarmed_gate_lets_people_open_the_door_for_as_long_as_they_like() ->
     rig.run(30.0, beats=False)
     rig.move_door(closed=True)
     assert rig.state == "cold" and not rig.unit.lit
-    assert rig.unit.asked.count("keep") == 1
+    assert rig.unit.asked.count("light") == 1
 
 
 def test_an_armed_gate_trips_at_the_same_door() -> None:
