@@ -45,9 +45,15 @@ from pitchsweep.analysis.records import (
     Rejection,
 )
 from pitchsweep.analysis.screen_area import off_screen, on_hole
-from pitchsweep.analysis.second_look import advice, monte_carlo, with_draws
+from pitchsweep.analysis.second_look import (
+    advice,
+    beside_the_fit,
+    monte_carlo,
+    with_draws,
+)
 from pitchsweep.analysis.shared_places import repeats_counted
 from pitchsweep.analysis.unknown_beams import unknown_beam_warnings
+from pitchsweep.analysis.wavelengths_found import wavelengths_found
 from pitchsweep.analysis.weak_directions import weak_directions
 from pitchsweep.analysis.what_would_help import Sweep
 from pitchsweep.configs.bench_model import Bench
@@ -131,6 +137,14 @@ def measure_pitch(
         simulated=bench.twin is not None,
     )
     sweep = Sweep(problem, clean.order, fit, bench, air)
+    wavelengths = wavelengths_found(
+        problem,
+        fit,
+        coverage=coverage,
+        dof=scatter.dof,
+        beside=beside_the_fit(sweep, result) / result.pitch_nm,
+    )
+    result = replace(result, wavelengths=wavelengths)
     if not advise:
         return result
     result = replace(result, advice=advice(sweep, result))

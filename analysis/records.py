@@ -232,6 +232,19 @@ class JumpSeen:
 
 
 @dataclass(frozen=True)
+class WavelengthFound:
+    """A vacuum wavelength that the sweep tells, with what was known before, in nm."""
+
+    laser: str
+    vacuum_nm: float
+    u_nm: float
+    U_nm: float
+    k: float
+    prior_nm: float
+    u_prior_nm: float
+
+
+@dataclass(frozen=True)
 class PitchResult:
     """What the joint fit says of one part, and everything the report shows.
 
@@ -269,6 +282,7 @@ class PitchResult:
     advice: tuple[str, ...] = ()
     monte_carlo: MonteCarlo | None = None
     jumps: tuple[JumpSeen, ...] = ()
+    wavelengths: tuple[WavelengthFound, ...] = ()
     part: str = ""
     serial: str = ""
     simulated: bool = False

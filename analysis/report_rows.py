@@ -24,6 +24,7 @@ from pitchsweep.analysis.result_file import (
     spots_words,
     subset_text,
     used_words,
+    wavelength_words,
 )
 
 FAR_IN_U = 2.0
@@ -144,6 +145,7 @@ def result_facts(result: PitchResult) -> list[Fact]:
         Fact("Orders", used or "none"),
         Fact("Not used", spots_words(len(result.rejected))),
         Fact("Reduced chi-squared", agreement_words(result)),
+        *(Fact("Wavelength", wavelength_words(w)) for w in result.wavelengths),
     ]
 
 

@@ -19,6 +19,7 @@ from pitchsweep.analysis.records import (
     Nuisance,
     PitchResult,
     PitchSeen,
+    WavelengthFound,
 )
 
 
@@ -50,6 +51,7 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
         "rejected": result.rejected_counts(),
         "budget": [_budget(line) for line in result.budget],
         "nuisance": [_nuisance(item) for item in result.nuisance],
+        "wavelengths": [vars(found) for found in result.wavelengths],
         "pitches_seen": [_pitch_seen(seen) for seen in result.pitches_seen],
         **_decision(result.decision),
         **_drawn(result.monte_carlo),
@@ -95,6 +97,15 @@ def unused_words(result: PitchResult) -> str:
     return f"{said} ({', '.join(reasons)})" if reasons else said
 
 
+def wavelength_words(found: WavelengthFound) -> str:
+    """A wavelength that the sweep tells, and how well it was known before."""
+    now = rounded(found.vacuum_nm, found.U_nm)
+    return (
+        f"{found.laser}: {now.value} nm +/- {now.u} nm in vacuum, k = {found.k:.2f} "
+        f"(known before with u {significant(found.u_prior_nm)} nm)"
+    )
+
+
 def agreement_words(result: PitchResult) -> str:
     """Reduced chi-squared, or that there are too few spots for one."""
     if not math.isfinite(result.reduced_chi2):
@@ -111,6 +122,7 @@ def summary_lines(result: PitchResult) -> list[str]:
         f"           k = {result.k:.2f}, coverage {plain_percent(result.coverage)},"
         f" U/pitch = {relative(result.U_pitch_nm, result.pitch_nm)}",
         f"Decision   {decision_words(result)}",
+        *(f"Wavelength {wavelength_words(w)}" for w in result.wavelengths),
         f"Used       {used_words(result)}, orders {used}; {unused_words(result)}",
         f"Agreement  reduced chi-squared {agreement_words(result)}",
     ]

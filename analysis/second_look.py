@@ -17,7 +17,7 @@ from pitchsweep.configs.part_model import Tolerance
 
 def advice(sweep: Sweep, result: PitchResult) -> tuple[str, ...]:
     """Sentences: what the pitch trades against, then what would help most."""
-    extra = _beside_the_fit(sweep, result)
+    extra = beside_the_fit(sweep, result)
     weak = weak_directions(sweep.problem, sweep.fit, result.pitch_nm, extra)
     return (*weak, *what_would_help(sweep, result.pitch_nm, extra))
 
@@ -33,7 +33,7 @@ def monte_carlo(
         base_nm=base_pitch_nm(sweep.problem.parts[0]),
         coverage=result.coverage,
         readings_dof=readings_dof,
-        extra_nm=_beside_the_fit(sweep, result),
+        extra_nm=beside_the_fit(sweep, result),
     )
     drawn = redrawn_pitch(sweep.problem, sweep.order, sweep.fit, stated, generator)
     tolerance = tolerance_of(result.u_pitch_nm)
@@ -93,7 +93,7 @@ def _not_borne_out(result: PitchResult, drawn: MonteCarlo, factor: float) -> str
     )
 
 
-def _beside_the_fit(sweep: Sweep, result: PitchResult) -> float:
+def beside_the_fit(sweep: Sweep, result: PitchResult) -> float:
     """The part of u (nm) that is in the budget but not in the fit's own variance."""
     fitted_2 = result.pitch_nm**2 * float(sweep.fit.covariance[0, 0])
     return math.sqrt(max(0.0, result.u_pitch_nm**2 - fitted_2))
