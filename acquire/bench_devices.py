@@ -67,7 +67,10 @@ class World(Protocol):
 
 @dataclass(frozen=True)
 class BenchDevices:
-    """An open bench, armed and dark; ``gate_history`` gives the gate's new events."""
+    """An open bench, armed and dark; ``gate_history`` gives the gate's new events.
+
+    ``lasers_by_hand``: a person lets another laser through when its turn comes.
+    """
 
     stage: Stage
     camera: Camera
@@ -75,3 +78,4 @@ class BenchDevices:
     world: World
     gate: Gate
     gate_history: Callable[[], Sequence[GateRow]]
+    lasers_by_hand: bool = False

@@ -29,7 +29,7 @@ from pitchsweep.drivers.dialect_files import shipped_dialect, shipped_dialect_ma
 from pitchsweep.drivers.line_client import LineClient
 from pitchsweep.drivers.serial_transport import open_serial
 from pitchsweep.drivers.stage_client import StageClient
-from pitchsweep.drivers.twin_launcher import TwinHandle, start_twin
+from pitchsweep.drivers.twin_launcher import start_twin
 from pitchsweep.drivers.twin_world_client import TwinWorldClient
 from pitchsweep.safety.file_watch import file_sha256
 from pitchsweep.safety.gate_event import GateEvent
@@ -174,7 +174,8 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
         request.stop.check()
         history, ledger = GateHistory(), folder.ledger
         stack.enter_context(entered(request.permit, folder, request.journal, ledger))
-        config = guard_config(request, twin)
+        unit = unit_settings(bench, twin.unit_port, UNIT_DIALECT, BAUD)
+        config = guard_config(request, unit, twin.proof_key)
         guard = stack.enter_context(start_guard(config, on_event=history.add))
         request.stop.on_request = guard.dark
         if request.resumed and guard.tripped.is_set():
@@ -210,12 +211,17 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
         )
 
 
-def guard_config(request: BenchRequest, twin: TwinHandle) -> GuardConfig:
-    """What the guard works from: unit, permit, permitted steps, files to watch."""
+def guard_config(
+    request: BenchRequest, unit: UnitSettings, proof_key: bytes | None
+) -> GuardConfig:
+    """What the guard works from: unit, permit, permitted steps, files to watch.
+
+    ``proof_key`` is the twin's, None on a bench with ports.
+    """
     folder, signed = request.folder, request.permit
     return GuardConfig(
-        unit=unit_settings(folder.job.bench, twin.unit_port, UNIT_DIALECT, BAUD),
-        permit=signed.for_guard(twin.proof_key),
+        unit=unit,
+        permit=signed.for_guard(proof_key),
         limits=GuardLimits(),
         permitted=permitted_steps(request.plan, folder.job.bench),
         ledger_path=str(folder.ledger),

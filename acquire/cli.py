@@ -81,7 +81,7 @@ def sweep(
         raise typer.BadParameter("give a JOB, or --resume RUN, one of them")
     if resume is not None and twin_seed is not None:
         raise typer.BadParameter("--twin-seed belongs to a new sweep")
-    from pitchsweep.acquire.bench_session import open_twin_bench
+    from pitchsweep.acquire.bench_opening import open_bench
     from pitchsweep.acquire.progress import progress_for
     from pitchsweep.acquire.sweep_session import resume_run, sweep_job
     from pitchsweep.acquire.watched_sources import sources_of, watching
@@ -89,12 +89,12 @@ def sweep(
 
     progress = progress_for(sys.stderr)
     if resume is not None:
-        folder = resume_run(resume, progress, open_twin_bench)
+        folder = resume_run(resume, progress, open_bench)
     else:
         loaded = read_job(str(job))
-        open_bench = watching(open_twin_bench, sources_of(loaded))
+        opener = watching(open_bench, sources_of(loaded))
         seeded = _seeded(loaded.job, twin_seed)
-        folder = sweep_job(seeded, runs, progress, open_bench)
+        folder = sweep_job(seeded, runs, progress, opener)
     progress.say(f"sweep complete; fitting {folder.path}")
     _fit_and_show([folder.path], folder.path, as_json)
 

@@ -92,9 +92,8 @@ class RunPermit:
 def permit_for(job: Job, plan: SweepPlan, say: Say) -> RunPermit:
     """The permit for ``job``; ``say`` takes a line about which one and why.
 
-    Raises GateRefused for a bench with ports without a valid sign-off (and, with one,
-    since its devices cannot be opened yet), LedgerBroken or RecordForged when the
-    people's ledger or register does not hold, OSError.
+    Raises GateRefused for a bench with ports without a valid sign-off, LedgerBroken or
+    RecordForged when the people's ledger or register does not hold, OSError.
     """
     home = safety_home()
     found = judged_for_job(home, job, plan)
@@ -102,8 +101,8 @@ def permit_for(job: Job, plan: SweepPlan, say: Say) -> RunPermit:
     real = job.bench.ports is not None
     if valid is not None and _in_real_time(job):
         _refuse_too_long(valid.kept, plan)
-    if real:
-        raise _hardware_refusal(job, found, valid)
+    if valid is None and real:
+        raise _hardware_refusal(job, found)
     if valid is None:
         if found:
             say(f"sign-off not used: {found[0].why_not}; this run rehearses")
@@ -137,16 +136,8 @@ def _why_not(
     return judge(home, kept, work, now, time.time())
 
 
-def _hardware_refusal(
-    job: Job, found: list[Judged], valid: Judged | None
-) -> GateRefused:
+def _hardware_refusal(job: Job, found: list[Judged]) -> GateRefused:
     bench = job.bench.bench
-    if valid is not None:
-        return GateRefused(
-            f"sign-off {valid.kept.record.statement.id} is valid, but this version"
-            f" cannot open the stage and camera of bench '{bench}' yet",
-            "use a bench with 'twin:', or 'fit' a table or frames taken elsewhere",
-        )
     why = f"its sign-off does not count: {found[0].why_not}" if found else "it has none"
     return GateRefused(
         f"bench '{bench}' has ports: light there needs a sign-off, and {why}",

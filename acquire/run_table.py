@@ -33,7 +33,7 @@ from pitchsweep.acquire.stored_spots import spots_of
 from pitchsweep.acquire.sweep_plan import SweepPlan, plan_sweep
 from pitchsweep.analysis.analysis_errors import NoResult
 from pitchsweep.configs.fingerprint import fingerprint
-from pitchsweep.configs.recipe_model import Recipe
+from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.typed_command import typed
 
 
@@ -136,8 +136,7 @@ def input_from_run(record: RunRecord) -> FitInput:
             f"{clipped} spots were saturated in every exposure and fitted from their "
             "wings: add a shorter exposure to the recipe"
         )
-    recipe = job.recipe
-    places = places_of([(s.found, _place(s, recipe)) for s in record.steps])
+    places = places_of([(s.found, _place(s, job)) for s in record.steps])
     return FitInput(
         name=str(record.folder.path),
         table=order_table(places, job.recipe.lasers),
@@ -173,14 +172,17 @@ def _in_words(rows: list[FaultRow]) -> str:
     )
 
 
-def _place(step: KeptStep, recipe: Recipe) -> StepPlace:
+def _place(step: KeptStep, job: Job) -> StepPlace:
+    """Slow processes of a twin follow its plan, those of a real bench its clock."""
+    row = step.row
+    on_clock = job.bench.ports is not None and row.bench_s is not None
     return StepPlace(
-        step=step.row.step,
+        step=row.step,
         stage_deg=step.stage_deg,
-        mount_deg=step.row.mount_deg,
-        laser=step.row.laser,
-        time_s=step.row.planned_s,
-        face_deg=recipe.face_of(step.row.mount),
+        mount_deg=row.mount_deg,
+        laser=row.laser,
+        time_s=row.bench_s if on_clock else row.planned_s,
+        face_deg=job.recipe.face_of(row.mount),
     )
 
 

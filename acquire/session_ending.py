@@ -75,7 +75,8 @@ class _Ending:
         self.note(f"{what}: {first_line(error)}")
         self._report.state(what.replace(" ", "-"), reason=first_line(error))
         self._report.teller.tell("trip" if tripped else "fault", first_line(error))
-        if tripped:
+        if tripped or self._folder.job.bench.ports is not None:
+            # A guard of a real bench that has ended is acknowledged like a trip.
             ack = typed("ack", self._folder.path)
             resume = typed("sweep", "--resume", self._folder.path)
             self._report.say(f"look at the bench, then: {ack}\nand then: {resume}")

@@ -25,6 +25,7 @@ class SweepRunner:
         self._exposures = Exposures(devices.camera, context.job.bench.camera)
         self._taker = StepTaker(context, devices, keeper, self._exposures)
         self._group: tuple[int, int, str] | None = None
+        self._laser = ""
 
     def run(self, standing: Standing) -> None:
         """Homes, checks the zero order, takes every remaining step; dark at the end.
@@ -78,6 +79,7 @@ class SweepRunner:
         """Seats the part, then waits until the zero order was found where it should."""
         if self._group is None or self._group[0] != step.mount:
             self._seat(step)
+        self._let_through(step)
         self._group = group_of(step)
         self._check_zero(step)
 
@@ -90,6 +92,14 @@ class SweepRunner:
             self._ask_person(step, what)
         world.seat_part(step.mount, step.mount_deg, step.face_deg)
         report.state("sweeping", mount=step.mount + 1)
+
+    def _let_through(self, step: Step) -> None:
+        """On a real bench with several lasers a person changes them, in the dark."""
+        several = len(self._context.job.recipe.lasers) > 1
+        if self._devices.lasers_by_hand and several and step.laser != self._laser:
+            what = f"let laser '{step.laser}' alone through to the shutter"
+            self._ask_person(step, what)
+        self._laser = step.laser
 
     def _ask_person(self, step: Step, what: str) -> None:
         """Waits, dark, until a person has done ``what`` and said so."""

@@ -22,7 +22,7 @@ def decode_frame(
     in the high bits of a 16-bit word are moved down, see ``in_low_bits``. A colour
     image is taken only where its channels are equal. Raises InputRefused.
     """
-    if content.startswith(_PNG) and not _png_is_whole(content):
+    if content.startswith(_PNG) and not png_is_whole(content):
         raise InputRefused(
             "the image is damaged or was not saved to its end",
             allowed=_ALLOWED,
@@ -47,7 +47,7 @@ def decode_frame(
     return in_low_bits(frame, bits=bits, name=name)
 
 
-def _png_is_whole(content: bytes) -> bool:
+def png_is_whole(content: bytes) -> bool:
     """Whether every chunk up to IEND is there and sound (PNG, W3C, section 5.3).
 
     Decoders print complaints of their own on stderr instead, and some then go on.

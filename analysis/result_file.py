@@ -60,6 +60,7 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
         "assumed_absent": list(result.assumed_absent),
         "warnings": list(result.warnings),
         "asked": list(result.asked),
+        "origin": "simulated" if result.simulated else "measured",
         "software": result.software,
         "inputs_sha256": result.inputs_sha256,
     }

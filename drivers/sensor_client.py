@@ -1,5 +1,6 @@
 """Sensors beside the part: air and part temperature, power at the part (acts)."""
 
+import threading
 from typing import Protocol
 
 from pitchsweep.drivers.devices import AirReading
@@ -32,14 +33,16 @@ class AirSensorClient:
 
 
 class PowerSensorClient:
-    """Reads the power at the part. Raises DriverError as above."""
+    """Reads the power at the part, from any thread. Raises DriverError as above."""
 
     def __init__(self, line: LineClient) -> None:
         self._line = line
+        self._lock = threading.Lock()
 
     def read_mw(self) -> float:
         """The power now, in milliwatts."""
-        return _number(self._line, _ask(self._line, "power"), "power_mw")
+        with self._lock:
+            return _number(self._line, _ask(self._line, "power"), "power_mw")
 
     def close(self) -> None:
         """Closes the line."""

@@ -39,6 +39,10 @@ def decode_still(content: bytes) -> NDArray[Any]:
         raise AnsweredNonsense("camera", content[:16], f"{what}; ask it for PNG, TIFF")
     import cv2
 
+    from pitchsweep.analysis.frame_image import png_is_whole
+
+    if content.startswith(PNG) and not png_is_whole(content):
+        raise AnsweredNonsense("camera", content[:16], "an image that cannot be read")
     try:
         image = cv2.imdecode(np.frombuffer(content, np.uint8), cv2.IMREAD_UNCHANGED)
     except cv2.error:

@@ -46,6 +46,7 @@ PROMISED = {
     "warnings",
     "software",
     "inputs_sha256",
+    "origin",
 }
 
 
