@@ -1,8 +1,9 @@
 """A small bench with a twin, and clients on its ports, for tests of the process."""
 
 import json
+import threading
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, TypeVar
@@ -13,6 +14,7 @@ from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.camera_client import TwinCameraClient
 from pitchsweep.drivers.devices import Label
 from pitchsweep.drivers.dialect_files import shipped_dialect
+from pitchsweep.drivers.driver_errors import DeviceRefused
 from pitchsweep.drivers.emission_client import EmissionClient
 from pitchsweep.drivers.line_client import LineClient
 from pitchsweep.drivers.serial_transport import open_serial
@@ -117,6 +119,25 @@ def label(step: int = 0, exposure: int = 0) -> Label:
     return Label(0, laser, 0, step, exposure, 3.0 * step)
 
 
+@contextmanager
+def _held(unit: EmissionClient) -> Iterator[None]:
+    """Keep-alives from a thread of their own; nobody else may use ``unit``."""
+    ended = threading.Event()
+
+    def hold() -> None:
+        with suppress(DeviceRefused):
+            while not ended.wait(0.03):
+                unit.keep_lit()
+
+    thread = threading.Thread(target=hold)
+    thread.start()
+    try:
+        yield
+    finally:
+        ended.set()
+        thread.join()
+
+
 def while_lit(
     unit: EmissionClient,
     act: Callable[[], Found],
@@ -130,7 +151,8 @@ def while_lit(
         first()
         light_anew(unit)
         lapses = unit.state().lapse_count
-        found = act()
+        with _held(unit):
+            found = act()
         after = unit.state()
         if after.light_on and after.lapse_count == lapses:
             return found
