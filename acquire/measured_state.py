@@ -1,7 +1,7 @@
 """What sensors said during a sweep, taken into the fit in place of the files (pure)."""
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -11,6 +11,12 @@ from pitchsweep.analysis.measure import measure_pitch
 from pitchsweep.analysis.records import PitchResult
 from pitchsweep.configs.bench_model import Air, Bench
 from pitchsweep.configs.part_model import Part
+
+SWITCHED = (
+    "the laser itself is switched and starts cold at every step: its wavelength is"
+    " taken as known to {:g} nm less well (emission.u_switched_nm); a laser kept warm"
+    " behind a head shutter is not"
+)
 
 
 @dataclass(frozen=True)
@@ -37,7 +43,10 @@ def state_of(rows: Iterable[ReadingRow]) -> MeasuredState | None:
 
 
 def surroundings(given: FitInput) -> Surroundings:
-    """What the fit works with: the files' values where nothing was measured."""
+    """What the fit works with: the files' values where nothing was measured.
+
+    A laser that is itself switched starts cold: its wavelength is known less well.
+    """
     states = given.measured or (None,) * (1 + len(given.references))
     parts = (given.part, *given.references)
     seated = tuple(
@@ -45,7 +54,8 @@ def surroundings(given: FitInput) -> Surroundings:
         for part, state in zip(parts, states, strict=True)
     )
     known = [state for state in states if state is not None]
-    return Surroundings(_with_air(given.bench, known), seated[0], seated[1:])
+    bench = _with_switched_lasers(_with_air(given.bench, known))
+    return Surroundings(bench, seated[0], seated[1:])
 
 
 def measure(
@@ -59,7 +69,7 @@ def measure(
     Raises InputRefused, NoResult.
     """
     around = surroundings(given)
-    return measure_pitch(
+    found = measure_pitch(
         given.table,
         bench=around.bench,
         part=around.part,
@@ -69,6 +79,23 @@ def measure(
         trust_nominal=trust_nominal,
         generator=generator,
     )
+    if given.bench.emission.switches != "laser":
+        return found
+    said = SWITCHED.format(given.bench.emission.u_switched_nm)
+    return replace(found, warnings=(*found.warnings, said))
+
+
+def _with_switched_lasers(bench: Bench) -> Bench:
+    if bench.emission.switches != "laser":
+        return bench
+    u_nm = bench.emission.u_switched_nm
+    lasers = {
+        name: laser.model_copy(
+            update={"u_wavelength_nm": float(np.hypot(laser.u_wavelength_nm, u_nm))}
+        )
+        for name, laser in bench.lasers.items()
+    }
+    return bench.model_copy(update={"lasers": lasers})
 
 
 def _with_air(bench: Bench, known: Sequence[MeasuredState]) -> Bench:

@@ -192,7 +192,9 @@ class Emission(Settings):
     time-out relay fed over a modem control line, which closes after several pulses.
     ``lasers_at_once``: whether a selector or the wiring lets one laser at a time
     through (``one``), or all of the bench may be alight behind the unit together
-    (``all``): the unit has one line and cannot tell which of them are.
+    (``all``): the unit has one line and cannot tell which of them are. With
+    ``switches: laser`` a laser starts cold at every step: ``u_switched_nm`` is the
+    standard uncertainty that this adds to its wavelength.
     """
 
     line: Literal["keep-alive", "pulses"] = "keep-alive"
@@ -200,6 +202,7 @@ class Emission(Settings):
     keep_alive_ms: Annotated[int, Field(ge=50, le=250)] = 200
     unit_identity: Name = "bench-unit-1"
     lasers_at_once: Literal["one", "all"] = "all"
+    u_switched_nm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.3
     interlock_channels: Annotated[Literal[1, 2], NotTruth] = 1
 
     @field_validator("line", mode="before")
