@@ -14,7 +14,7 @@ from pitchsweep.configs.job_model import Job
 from pitchsweep.drivers.camera_client import TwinCameraClient
 from pitchsweep.drivers.devices import Label
 from pitchsweep.drivers.dialect_files import shipped_dialect
-from pitchsweep.drivers.driver_errors import DeviceRefused
+from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.drivers.emission_client import EmissionClient
 from pitchsweep.drivers.line_client import LineClient
 from pitchsweep.drivers.serial_transport import open_serial
@@ -125,7 +125,7 @@ def _held(unit: EmissionClient) -> Iterator[None]:
     ended = threading.Event()
 
     def hold() -> None:
-        with suppress(DeviceRefused):
+        with suppress(DriverError):
             while not ended.wait(0.03):
                 unit.keep_lit()
 
