@@ -89,9 +89,9 @@ def _over_the_beam(local: FloatArray) -> Landing:
     ends = []
     for side in (1.0, -1.0):
         moved = local.copy()
-        moved[:, Local.BEAM_Y] += side * local[:, Local.BEAM_RMS]
+        moved[:, Local.BEAM_RMS] *= side
         end = _of_one_ray(moved)
-        end.jacobian[:, :, Local.BEAM_RMS] = side * end.jacobian[:, :, Local.BEAM_Y]
+        end.jacobian[:, :, Local.BEAM_RMS] *= side
         ends.append(end)
     one, other = ends
     return Landing(

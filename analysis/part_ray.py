@@ -40,7 +40,7 @@ class Local(IntEnum):
     WEDGE_G = 18  # the cover's front leaning towards g, against the grooves' plane
     WEDGE_H = 19  # and towards h
     TRACK = 20  # curvature of the grooves, per millimetre; their centre towards -g
-    BEAM_RMS = 21  # rms radius of a beam whose width counts
+    BEAM_RMS = 21  # rms radius of a beam whose width counts; the ray so far above it
     DISTORTION = 22  # of the lens: places grow by it times radius squared, per mm^2
     FAR = 23  # 1: the camera looks at infinity, DISTANCE is its focal length
 
@@ -181,7 +181,8 @@ def trace_rays(local: FloatArray) -> Trace:
     kn2, kn = _normal_part(kt, kh)
     out = kt[:, None] * frame.g + kh[:, None] * frame.h + kn[:, None] * frame.n
     zero = np.zeros_like(kt)
-    start = stack(local[:, Local.BEAM_X], local[:, Local.BEAM_Y], zero)
+    height = local[:, Local.BEAM_Y] + local[:, Local.BEAM_RMS]
+    start = stack(local[:, Local.BEAM_X], height, zero)
     reach = (local[:, Local.SURFACE] - dot(frame.n, start)) / facing
     axes, axes_by = _screen_axes(local)
     towards = dot(out, axes[:, 2])

@@ -30,7 +30,9 @@ def where_it_meets(local: FloatArray) -> FloatArray:
     """Incidence and azimuth as they are where the beam meets the part.
 
     On a curved part the normal leans by place / radius; grooves around a centre have
-    turned by the place along them over the distance from the centre.
+    turned by the place along them over the distance from the centre. The azimuth is
+    that of the grooves at the beam's height on the stage axis, as a person sees it in
+    the level of the orders.
     """
     met, place = local.copy(), _place_on_part(local)
     met[:, Local.INCIDENCE] += local[:, Local.CURVATURE] * place.across
@@ -52,7 +54,7 @@ class _Turn:
 
 def _groove_turn(local: FloatArray, place: _Place) -> _Turn:
     track, across = local[:, Local.TRACK], place.across
-    height = local[:, Local.BEAM_Y] + local[:, Local.ELEVATION] * place.reach
+    height = local[:, Local.BEAM_RMS] + local[:, Local.ELEVATION] * place.reach
     c, s = np.cos(local[:, Local.AZIMUTH]), np.sin(local[:, Local.AZIMUTH])
     along, away = height * c - across * s, 1.0 + track * across
     by_along = track / away
@@ -76,6 +78,7 @@ def chain_place(local: FloatArray, jacobian: FloatArray) -> None:
     jacobian[:, :, Local.CURVATURE] = met * place.across[:, None]
     by_across = met * local[:, None, Local.CURVATURE]
     by_reach = np.zeros_like(by_across)
+    jacobian[:, :, Local.BEAM_RMS] = jacobian[:, :, Local.BEAM_Y]
     if local[:, Local.TRACK].any():
         turned, turn = jacobian[:, :, Local.AZIMUTH].copy(), _groove_turn(local, place)
         climb = local[:, Local.ELEVATION]
@@ -83,7 +86,7 @@ def chain_place(local: FloatArray, jacobian: FloatArray) -> None:
         by_reach = turned * (turn.by_height * climb)[:, None]
         for column, slope in (
             (Local.AZIMUTH, turn.by_azimuth),
-            (Local.BEAM_Y, turn.by_height),
+            (Local.BEAM_RMS, turn.by_height),
             (Local.ELEVATION, turn.by_height * place.reach),
             (Local.TRACK, turn.by_track),
         ):

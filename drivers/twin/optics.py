@@ -75,6 +75,7 @@ class _Pose:
     bend_per_mm: float
     cover: Cover
     track_per_mm: float
+    level_mm: float
 
 
 @dataclass(frozen=True)
@@ -150,6 +151,7 @@ def _pose_of(truth: Truth, bench: Bench, steps: Steps) -> _Pose:
             side * part.wedge_along_rad,
         ),
         track_per_mm=side / part.track_radius_mm if part.track_radius_mm else 0.0,
+        level_mm=truth.beam.height_mm,
     )
 
 
@@ -159,8 +161,10 @@ def _surface_at(pose: _Pose, beam: _Beam) -> tuple[FloatArray, Grooves]:
     apex = pose.surface_offset_mm * normal
     point = meet_sphere(beam.point, beam.direction, apex, normal, pose.bend_per_mm)
     there = unit(normal + pose.bend_per_mm * (point - apex))
-    # Grooves of a disc run round its centre, one radius off along the grating vector.
-    outwards = across + pose.track_per_mm * (point - apex)
+    # Grooves of a disc run round its centre, one radius off along the grating vector;
+    # it was seated by the level of its orders, so at the height of the beam.
+    level = apex + pose.level_mm * pose.axes[..., :, 1]
+    outwards = across + pose.track_per_mm * (point - level)
     grating = unit(outwards - dot(outwards, there) * there)
     return point, Grooves(there, grating, np.cross(there, grating))
 

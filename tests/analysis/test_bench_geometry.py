@@ -53,8 +53,9 @@ def test_derivatives_equal_central_differences(column: Local, far: float) -> Non
     ahead, behind = landing(up), landing(down)
     slope = np.stack([ahead.x_mm - behind.x_mm, ahead.y_mm - behind.y_mm], axis=1)
     slope /= 2.0 * step
-    keep = there.valid
-    assert keep.sum() > 40
+    # Close to grazing and far out a difference is too coarse for these digits.
+    keep = there.valid & (there.leaving > 0.2) & (np.abs(there.x_mm) < 1000.0)
+    assert keep.sum() > 35
     np.testing.assert_allclose(
         there.jacobian[keep][:, :, column], slope[keep], rtol=3e-6, atol=2e-5
     )

@@ -182,12 +182,16 @@ def test_half_a_turn_in_its_own_plane_tells_the_wedge_of_a_cover() -> None:
         sweep = twin_sweep(job, 3, mounts_deg=(0.0, 0.001), faces_deg=faces)
         result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
         assert abs(result.pitch_nm - sweep.truth.pitch_nm) < 4.0 * result.u_pitch_nm
-        known[faces] = result.u_pitch_nm
+        (wedge,) = (n for n in result.nuisance if "wedge across" in n.name)
+        assert wedge.value == pytest.approx(
+            1e3 * sweep.truth.part.wedge_across_rad, abs=4.0 * wedge.u
+        )
+        known[faces] = wedge.u
         seats = [n.name for n in result.nuisance if n.name.startswith("zero offset")]
         assert len(seats) == 2
     seen = {s.subset for s in result.pitches_seen}
     assert {"face 0 deg", "face 180 deg"} <= seen
-    assert known[(0.0, 180.0)] < known[(0.0, 0.0)]
+    assert known[(0.0, 180.0)] < 0.3 * known[(0.0, 0.0)]
 
 
 def test_leftover_backlash_is_found_and_the_ways_are_compared() -> None:
