@@ -14,6 +14,8 @@ from pitchsweep.analysis.records import FloatArray
 
 ROUNDING = 1e-6
 """A step that promises less than this and gains nothing is lost in rounding."""
+KEPT = 0.1
+"""A step that keeps less than this share of its promise is a shot in the dark."""
 FIRST_DAMPING, LEAST_DAMPING = 1e-3, 1e-6
 
 Point = TypeVar("Point")
@@ -32,21 +34,25 @@ def descend(
     start: Point,
     *,
     step: Callable[[Point, float], tuple[Point, float]],
-    no_worse: Callable[[Point, Point], bool],
+    fall: Callable[[Point, Point], float],
     settled: float,
     most: int,
 ) -> Descent[Point]:
     """The minimum near ``start``.
 
     ``step`` (point, damping) gives a trial point and by how much the sum of squares
-    should fall to it; ``no_worse`` (point, trial) whether the trial is accepted. It
-    has settled when an undamped step promises less than ``settled``.
+    should fall to it; ``fall`` (point, trial) by how much it does, minus infinity
+    where the trial will not do. A step that falls far short of its promise is tried
+    again shorter: it may end where nothing slopes any more. The descent has settled
+    when an undamped step promises less than ``settled``.
     """
     point, damping, iterations, converged = start, 0.0, 0, False
     while iterations < most and not converged:
         iterations += 1
         trial, promised = step(point, damping)
-        if not no_worse(point, trial):
+        fallen = fall(point, trial)
+        lost_in_rounding = promised < ROUNDING and fallen > -ROUNDING
+        if not (fallen >= KEPT * promised or lost_in_rounding):
             # Rounding alone may keep the last digits from going down any further.
             converged = promised < ROUNDING
             damping = max(10.0 * damping, FIRST_DAMPING)

@@ -82,15 +82,15 @@ def solve_joint_fit(
         moved = FitState(state.values + move, state.step_error_rad + step_move)
         return normal_equations(blocks, moved), promised
 
-    def no_worse(point: Normal, trial: Normal) -> bool:
-        return _no_worse(point, trial, weight)
+    def fall(point: Normal, trial: Normal) -> float:
+        return _fall(point, trial, weight)
 
     if start is None:
         start = _start(problem, order, weight)
     end = descend(
         normal_equations(blocks, start),
         step=step,
-        no_worse=no_worse,
+        fall=fall,
         settled=settled,
         most=MAX_ITERATIONS,
     )
@@ -116,15 +116,15 @@ def _start(problem: FitProblem, order: IntArray, weight: FloatArray) -> FitState
     return replace(plain, values=some.state.values) if some.converged else plain
 
 
-def _no_worse(point: Normal, trial: Normal, weight: FloatArray) -> bool:
-    """Whether a trial lowers the sum of squares over the spots both states have.
+def _fall(point: Normal, trial: Normal, weight: FloatArray) -> float:
+    """By how much a trial lowers the sum of squares over the spots both states have.
 
     Losing spots lowers a plain sum; the common ones alone tell.
     """
     both = point.used & trial.used
     if both.sum() < (1.0 - LOST_SHARE) * point.used.sum():
-        return False
-    return trial.cost(weight * both) <= point.cost(weight * both) * (1.0 + 1e-12)
+        return -np.inf
+    return point.cost(weight * both) - trial.cost(weight * both)
 
 
 def one_step(

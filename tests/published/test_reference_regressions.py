@@ -51,16 +51,16 @@ def fitted(
     return descend(
         start,
         step=step,
-        no_worse=lambda old, new: squares(new) <= squares(old) * (1.0 + 1e-12),
+        fall=lambda old, new: squares(old) - squares(new),
         settled=1e-20,
         most=2000,
     )
 
 
 STARTS = [(name, start) for name in sorted(MODELS) for start in (0, 1)]
-BEYOND = [("Eckerle4", 0), ("MGH10", 0)]
-"""Starts up to 400 times off, from which the loop's first, undamped step runs away.
-The joint fit starts within per cents; damping from the start would cost it steps."""
+BEYOND = [("MGH10", 0)]
+"""A start up to 400 times off, in a narrow bent valley along which damped steps creep:
+6 000 do not reach its end. The joint fit starts within per cents."""
 
 
 @pytest.mark.parametrize(("name", "start"), [s for s in STARTS if s not in BEYOND])
