@@ -18,7 +18,7 @@ from pitchsweep.analysis.pixel_map import (
 )
 from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
 from pitchsweep.analysis.spot_search import Exposure, look
-from pitchsweep.analysis.spot_verdicts import judged_look
+from pitchsweep.analysis.spot_verdicts import Look, judged_look
 from pitchsweep.configs.bench_model import Bench, Camera
 
 _ROOM_SIGMAS = 2.0
@@ -31,19 +31,32 @@ def spot_finder(bench: Bench) -> FindSpots:
     cv2.setNumThreads(1)  # the finder has one worker; the sweep has the other core
     camera = bench.camera
     noise = CameraNoise.from_bench(camera)
-    places = [pixels_from_screen(*mark, camera) for mark in bench.screen.marks_mm]
     blind = no_screen(bench)
 
     def find(step: int, lights: Sequence[Shot], darks: Sequence[Shot]) -> StepSpots:
         exposures = [Exposure(shot.frame, shot.exposure_ms) for shot in lights]
         seen = look(exposures, mean_dark(darks), noise, blind=blind)
-        marks = find_marks(seen.scene, places)
-        found = off_the_hole(judged_look(seen, step), bench, step)
-        found = without_marks(found, marks, step)
+        marks = marks_of(seen, bench)
+        found = judged_on_bench(seen, marks, bench, step)
         rows = tuple(_mark_row(mark, camera) for mark in marks)
         return replace(on_screen(found, camera), marks=rows)
 
     return find
+
+
+def marks_of(seen: Look, bench: Bench) -> tuple[MarkSeen, ...]:
+    """The bench file's marks that a step's frames show."""
+    camera = bench.camera
+    places = [pixels_from_screen(*mark, camera) for mark in bench.screen.marks_mm]
+    return find_marks(seen.scene, places)
+
+
+def judged_on_bench(
+    seen: Look, marks: Sequence[MarkSeen], bench: Bench, step: int
+) -> SpotSearch:
+    """The verdicts on ``seen``, beam hole and marks heeded; marks are no spots."""
+    found = off_the_hole(judged_look(seen, step), bench, step)
+    return without_marks(found, marks, step)
 
 
 def no_screen(bench: Bench) -> NDArray[np.bool_]:

@@ -1,10 +1,14 @@
 """The picture of one step of a run, from its stored frames. Acts (disk: reads)."""
 
+import csv
+from collections.abc import Sequence
+from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
 
 from pitchsweep.acquire.acquire_errors import RunRefused
+from pitchsweep.acquire.analyse_run import ORDERS
 from pitchsweep.acquire.bench_devices import Shot
 from pitchsweep.acquire.durable_files import write_durably
 from pitchsweep.acquire.frame_store import FrameStore
@@ -12,10 +16,16 @@ from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.journal_rows import IntentRow
 from pitchsweep.acquire.resume import standing
 from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
-from pitchsweep.acquire.step_spots import mean_dark, no_screen
+from pitchsweep.acquire.step_spots import (
+    judged_on_bench,
+    marks_of,
+    mean_dark,
+    no_screen,
+)
 from pitchsweep.acquire.stored_spots import dark_shots, light_shots
 from pitchsweep.acquire.sweep_plan import plan_sweep
 from pitchsweep.analysis.camera_noise import CameraNoise
+from pitchsweep.analysis.pixel_map import screen_from_pixels
 from pitchsweep.analysis.records import Spot
 from pitchsweep.analysis.spot_scene import FittedCandidate
 from pitchsweep.analysis.spot_search import Exposure, look
@@ -26,7 +36,20 @@ from pitchsweep.analysis.step_picture import (
     WindowShown,
     step_png,
 )
+from pitchsweep.configs.bench_model import Bench
 from pitchsweep.configs.fingerprint import fingerprint
+
+_SAME_MM = 0.5
+"""A row of the order table is of a spot this near; marks move it by less."""
+
+
+@dataclass(frozen=True)
+class OrderTold:
+    """What the order table says of a place; ``order`` is empty where none was found."""
+
+    x_mm: float
+    y_mm: float
+    order: str
 
 
 def step_picture(path: Path, step: int, spot: int | None) -> bytes:
@@ -42,7 +65,8 @@ def step_picture(path: Path, step: int, spot: int | None) -> bytes:
     exposures = [Exposure(shot.frame, shot.exposure_ms) for shot in lights]
     blind = no_screen(folder.job.bench)
     seen = look(exposures, mean_dark(darks), camera, blind=blind)
-    windows = _windows(seen, step)
+    orders = _orders_told(folder, step)
+    windows = windows_shown(seen, folder.job.bench, step, orders)
     if spot is not None and not 1 <= spot <= len(windows):
         raise RunRefused(
             path, f"step {step} has {len(windows)} candidates, none is number {spot}"
@@ -89,22 +113,28 @@ def _stored(
         return done[step], lights, dark_shots(journal, store, done[step])
 
 
-def _windows(seen: Look, step: int) -> list[WindowShown]:
+def windows_shown(
+    seen: Look, bench: Bench, step: int, orders: Sequence[OrderTold]
+) -> list[WindowShown]:
+    """Every candidate with what became of it in the run, in the order of the fits."""
+    marks = marks_of(seen, bench)
+    found = judged_on_bench(seen, marks, bench, step)
+    refused = {(r.x, r.y): r for r in found.rejected}
     out = []
     for number, (item, verdict) in enumerate(
         zip(seen.fits, verdicts(seen, step), strict=True), 1
     ):
         shape = item.fit.shape
-        if isinstance(verdict, Spot):
-            (cc, _), (_, rr) = verdict.covariance_px2
-            text = (
-                f"{shape.column_px:.2f}, {shape.row_px:.2f} px, u {cc**0.5:.2f}, "
-                f"{rr**0.5:.2f}, peak {verdict.snr:.0f} of its noise"
-            )
+        used, spot = False, verdict if verdict in found.spots else None
+        why = refused.get((shape.column_px, shape.row_px))
+        if isinstance(spot, Spot):
+            told = _told_of(spot, orders, bench)
+            used = told is None or told.order != ""
+            text = _spot_words(spot, told)
+        elif why is not None:
+            text = f"{why.reason.value}: {why.detail} (score {why.score:.0f})"
         else:
-            text = (
-                f"{verdict.reason.value}: {verdict.detail} (score {verdict.score:.0f})"
-            )
+            text = "a mark of the screen frame, no spot"
         x, y = item.window.x, item.window.y
         out.append(
             WindowShown(
@@ -113,10 +143,41 @@ def _windows(seen: Look, step: int) -> list[WindowShown]:
                 row_px=float(y.mean()),
                 half_px=(float(np.ptp(x)) / 2.0, float(np.ptp(y)) / 2.0),
                 verdict=text,
-                accepted=isinstance(verdict, Spot),
+                accepted=used,
             )
         )
     return out
+
+
+def _spot_words(spot: Spot, told: OrderTold | None) -> str:
+    (cc, _), (_, rr) = spot.covariance_px2
+    what = ""
+    if told is not None:
+        what = f"order {told.order}: " if told.order else "not in the fit: "
+    return (
+        f"{what}{spot.column_px:.2f}, {spot.row_px:.2f} px, u {cc**0.5:.2f}, "
+        f"{rr**0.5:.2f}, peak/noise {spot.snr:.0f}"
+    )
+
+
+def _told_of(spot: Spot, orders: Sequence[OrderTold], bench: Bench) -> OrderTold | None:
+    """What the last fit made of the spot; None where the run was not fitted."""
+    x_mm, y_mm = screen_from_pixels(spot.column_px, spot.row_px, bench.camera)
+    near = [t for t in orders if np.hypot(t.x_mm - x_mm, t.y_mm - y_mm) < _SAME_MM]
+    return near[0] if near else None
+
+
+def _orders_told(folder: RunFolder, step: int) -> list[OrderTold]:
+    """The step's rows of the run's ``orders.csv``; none where there is no such file."""
+    path = folder.path / ORDERS
+    if not path.exists():
+        return []
+    lines = [s for s in path.read_text("utf-8").splitlines() if not s.startswith("#")]
+    return [
+        OrderTold(float(row["x_mm"]), float(row["y_mm"]), row["order"])
+        for row in csv.DictReader(lines)
+        if int(row["step"]) == step
+    ]
 
 
 def _shown(item: FittedCandidate, number: int) -> SpotShown:

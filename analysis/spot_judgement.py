@@ -202,6 +202,8 @@ def _shape_problem(
         return f"radii {major:.1f} and {minor:.1f} px"
     if major > limits.largest_aspect * minor:
         return f"{major / minor:.1f} times as long as wide"
+    if not np.isfinite(seen.share):
+        return "no pixel of its core is usable"
     if seen.share > most:
         return f"{100 * seen.share:.0f} % of it is not a Gaussian"
     return None

@@ -116,20 +116,43 @@ def _draw_window(axes: Axes, window: WindowShown, rows: int) -> None:
             linestyle="-" if window.accepted else ":",
         )
     )
-    below = window.row_px - high < 0.06 * rows
-    edge = window.row_px + high if below else window.row_px - high
+    place, offset, align = _label_place(window, rows)
     axes.annotate(
         str(window.number),
-        (window.column_px, edge),
-        xytext=(0.0, -2.0 if below else 2.0),
+        place,
+        xytext=offset,
         textcoords="offset points",
-        ha="center",
-        va="top" if below else "bottom",
+        ha=align[0],
+        va=align[1],
         fontsize=7.0,
         fontweight="bold" if window.accepted else "normal",
         color=colour,
         path_effects=halo(),
         annotation_clip=True,
+    )
+
+
+def _label_place(
+    window: WindowShown, rows: int
+) -> tuple[tuple[float, float], tuple[float, float], tuple[str, str]]:
+    """Where a number stands (px), offset (points) and alignment.
+
+    Those of spots above or below the window, of refused candidates beside it: the
+    two often lie on each other.
+    """
+    wide, high = window.half_px
+    if not window.accepted:
+        return (
+            (window.column_px + wide, window.row_px),
+            (2.0, 0.0),
+            ("left", "center"),
+        )
+    below = window.row_px - high < 0.06 * rows
+    edge = window.row_px + high if below else window.row_px - high
+    return (
+        (window.column_px, edge),
+        (0.0, -2.0 if below else 2.0),
+        ("center", "top" if below else "bottom"),
     )
 
 

@@ -6,12 +6,22 @@ import cv2
 import numpy as np
 import pytest
 from acquire_fakes import FakeBench, QuietProgress, opener, small_job
+from scenes import scene_job
+from twin_photons import seen_step
 
 from pitchsweep.acquire.acquire_errors import RunRefused
 from pitchsweep.acquire.cli import run
 from pitchsweep.acquire.run_table import read_run
-from pitchsweep.acquire.step_window import step_picture
+from pitchsweep.acquire.step_window import (
+    OrderTold,
+    step_picture,
+    windows_shown,
+)
 from pitchsweep.acquire.sweep_session import sweep_job
+from pitchsweep.analysis.camera_noise import CameraNoise
+from pitchsweep.analysis.records import Rejection
+from pitchsweep.analysis.spot_search import look
+from pitchsweep.drivers.twin.truth import draw_truth
 
 
 @pytest.fixture(scope="module")
@@ -44,3 +54,22 @@ def test_steps_and_candidates_that_are_not_there_are_refused(run_folder: Path) -
     with pytest.raises(RunRefused, match="candidates"):
         step_picture(run_folder, 1, 99)
     assert run(["report", str(run_folder), "--spot", "1"]) == 2
+
+
+def test_the_picture_names_marks_orders_and_what_the_fit_left_out() -> None:
+    job = scene_job("all-marks")
+    truth = draw_truth(job.bench, job.part, 1)
+    step = seen_step(job, truth, -12.0, step=7)
+    noise = CameraNoise.from_bench(job.bench.camera)
+    seen = look(step.exposures, step.dark.astype(np.float32), noise)
+    zero = step.place_mm[int(np.argmin(np.abs(step.order)))]
+    orders = [OrderTold(zero[0], zero[1], "0"), OrderTold(97.9, -1.9, "")]
+    shown = windows_shown(seen, job.bench, 7, orders)
+    told = [window.verdict for window in shown]
+    assert sum(text == "a mark of the screen frame, no spot" for text in told) == 4
+    (order,) = [window for window in shown if window.verdict.startswith("order 0: ")]
+    assert order.accepted
+    (stray,) = [w for w in shown if w.verdict.startswith("not in the fit: ")]
+    assert not stray.accepted
+    reasons = {text.split(":")[0] for text in told if "score" in text}
+    assert reasons and reasons <= {reason.value for reason in Rejection}
