@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 Float32Array = NDArray[np.float32]
+_BAND_ROWS = 256
 
 
 def averaged_down(frame: NDArray[np.uint16], factor: int) -> Float32Array:
@@ -20,19 +21,38 @@ def averaged_down(frame: NDArray[np.uint16], factor: int) -> Float32Array:
     factor).
     """
     rows, columns = frame.shape[0] // factor, frame.shape[1] // factor
-    clean = cv2.medianBlur(frame[: rows * factor, : columns * factor], 3)
+    kept = frame[: rows * factor, : columns * factor]
     if factor == 1:
-        return np.asarray(clean, dtype=np.float32)
-    spare = 16 - int(clean.max(initial=1)).bit_length()
+        return np.asarray(cv2.medianBlur(kept, 3), dtype=np.float32)
+    spare = 16 - int(kept.max(initial=1)).bit_length()
+    light = np.empty((rows, columns), dtype=np.float32)
+    # Band by band: what is needed in between stays in the processor's cache.
+    band = max(_BAND_ROWS // factor, 1)
+    for top in range(0, rows, band):
+        end = min(top + band, rows)
+        light[top:end] = _band_mean(kept, (top, end), factor, spare)
+    light *= np.float32(2.0**-spare)
+    return light
+
+
+def _band_mean(
+    frame: NDArray[np.uint16], band: tuple[int, int], factor: int, spare: int
+) -> NDArray[np.uint16]:
+    """Means of blocks in the rows ``band`` of blocks, moved up by ``spare`` bits."""
+    columns = frame.shape[1] // factor
+    top, end = band[0] * factor, band[1] * factor
+    above = min(top, 1)
+    clean = cv2.medianBlur(frame[top - above : end + 1], 3)[above : above + end - top]
     small = np.asarray(np.left_shift(clean, spare), dtype=np.uint16)
+    rows = end - top
     # Halving twice is four times faster than one step, and as good.
     while factor % 2 == 0:
         factor //= 2
-        small = _mean(small, columns * factor, rows * factor)
+        rows //= 2
+        small = _mean(small, columns * factor, rows)
     if factor > 1:
-        small = _mean(small, columns, rows)
-    light = small.astype(np.float32) * np.float32(2.0**-spare)
-    return np.asarray(light, dtype=np.float32)
+        small = _mean(small, columns, rows // factor)
+    return small
 
 
 def _mean(words: NDArray[np.uint16], columns: int, rows: int) -> NDArray[np.uint16]:

@@ -7,6 +7,7 @@ noise of variance Ac C^2 signal^2 (px^2 areas).
 """
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import cv2
 import numpy as np
@@ -35,9 +36,14 @@ class Speckle:
         """
         if self.contrast == 0.0:
             return 0.0
-        lags = np.arange(-30.0, 31.0)
-        along = float(np.exp(-((lags / max(self.w_px, 1e-3)) ** 2)).sum())
-        return (along * self.contrast) ** 2 / binning**2
+        return (_correlated_px(self.w_px) * self.contrast) ** 2 / binning**2
+
+
+@lru_cache(maxsize=64)
+def _correlated_px(w_px: float) -> float:
+    """Sum of the autocorrelation over pixels along one axis."""
+    lags = np.arange(-30.0, 31.0)
+    return float(np.exp(-((lags / max(w_px, 1e-3)) ** 2)).sum())
 
 
 NO_SPECKLE = Speckle(0.0, 2.0)

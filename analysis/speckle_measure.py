@@ -23,6 +23,11 @@ _SEEN_SHARE = 0.12
 """What speckle of contrast 0.7 and grain 2 px leaves in neighbours, of its power: half
 lies in their correlation, half of that is taken by the fit."""
 _GRID_W = np.geomspace(0.6, 5.0, 50)
+_ROUNDS = 3
+_DOWN, _RIGHT = np.mgrid[0 : _LAGS + 1, -_LAGS : _LAGS + 1].astype(np.float64)
+_SQUARE = _DOWN**2 + _RIGHT**2
+_ONCE = np.where((_DOWN == 0) & (_RIGHT < 0), 0.0, 1.0)
+"""Each pair of pixels counts once."""
 
 
 @dataclass(frozen=True)
@@ -80,6 +85,8 @@ def measure_speckle(samples: Sequence[GrainSample]) -> Speckle | None:
 
 
 def _products(sample: GrainSample) -> _Products:
+    _, *box = _box(sample.bright)
+    sample = _cut(sample, (box[0], box[1]))
     mask = sample.bright
     quiet = mask * sample.noise
     seen = _pairs((mask * sample.residual)[None])
@@ -101,10 +108,13 @@ def _fitted(
     # Noise of dim pixels reaches bright ones through the fit, at all lags.
     seen = seen + np.sum([_taken(s, s.noise * s.modes) for s in samples], axis=0)
     answer = _best(seen, signal, np.zeros_like(seen), 1.0)
-    for _ in range(3):
+    lit = [_cut(s, _lit(s)) for s in samples]
+    for _ in range(_ROUNDS):
         w = answer.w_px
-        loss = np.sum([_loss(sample, w) for sample in samples], axis=0)
+        loss = np.sum([_loss(sample, w) for sample in lit], axis=0)
         answer = _best(seen, signal, loss, w)
+        if abs(answer.w_px - w) < 0.01 * w:
+            break
     return answer
 
 
@@ -115,20 +125,35 @@ def _best(
 
     ``loss`` was computed for ``loss_w`` and is taken to grow with the grain's area.
     """
-    down = np.arange(_LAGS + 1)[:, None]
-    right = np.arange(-_LAGS, _LAGS + 1)[None, :]
-    square = (down**2 + right**2).astype(np.float64)
-    once = np.where((down == 0) & (right < 0), 0.0, 1.0)
-    best, answer = np.inf, NO_SPECKLE
-    for w in _GRID_W:
-        shape = np.exp(-square / w**2) * signal - loss * (w / loss_w) ** 2
-        power = float((once * shape * seen).sum() / (once * shape**2).sum())
-        power = min(power, _MOST_CONTRAST**2)
-        left = float((once * (seen - power * shape) ** 2).sum())
-        if left < best and power > 0.0:
-            best = left
-            answer = Speckle(float(np.sqrt(power)), float(w * FWHM_PER_W))
-    return answer
+    w = _GRID_W[:, None, None]
+    shape = np.exp(-_SQUARE / w**2) * signal - loss * (w / loss_w) ** 2
+    weighted = _ONCE * shape
+    power = (weighted * seen).sum(axis=(1, 2)) / (weighted * shape).sum(axis=(1, 2))
+    power = np.minimum(power, _MOST_CONTRAST**2)
+    off = seen - power[:, None, None] * shape
+    left = np.where(power > 0.0, (_ONCE * off * off).sum(axis=(1, 2)), np.inf)
+    best = int(np.argmin(left))
+    if not np.isfinite(left[best]):
+        return NO_SPECKLE
+    return Speckle(float(np.sqrt(power[best])), float(_GRID_W[best] * FWHM_PER_W))
+
+
+def _cut(sample: GrainSample, box: tuple[slice, slice]) -> GrainSample:
+    """The sample within ``box``."""
+    return GrainSample(
+        sample.residual[box],
+        sample.signal[box],
+        sample.noise[box],
+        sample.rounding[box],
+        sample.modes[:, box[0], box[1]],
+        sample.bright[box],
+    )
+
+
+def _lit(sample: GrainSample) -> tuple[slice, slice]:
+    """The part of a sample in which there is light for speckle to show in."""
+    _, rows, columns = _box(sample.signal > 2e-3 * sample.signal.max())
+    return rows, columns
 
 
 def _loss(sample: GrainSample, w: float) -> FloatArray:

@@ -56,7 +56,7 @@ def misfit(fit: SpotFit, speckle: Speckle) -> Misfit:
     w = speckle.w_px / fit.binning
     root = np.sqrt(fit.weight)
     private = fit.weight * fit.variance
-    grainy = fit.weight * (speckle.contrast * fit.signal) ** 2
+    grainy = fit.weight * (speckle.contrast * fit.light) ** 2
     along = max(4.0 * np.pi * s * s, 1.0)
     expected = private / along + grainy * w * w / (w * w + 4.0 * s * s)
     smooth = np.asarray(cv2.GaussianBlur(root * fit.residual, (0, 0), s), np.float64)
@@ -127,6 +127,10 @@ def judged(
     step: int,
 ) -> Spot | RejectedSpot:
     """The spot as it is stated, or the first reason not to use it."""
+    if not fit.converged:
+        detail = f"after {fit.steps} steps"
+        place = fit.shape.column_px, fit.shape.row_px
+        return RejectedSpot(step, *place, "px", Rejection.FIT_FAILED, detail)
     seen = misfit(fit, speckle)
     spot = _stated(window, fit, seen, speckle)
     refusal = _refusal(window, fit, spot, seen, speckle, side, limits)
@@ -173,8 +177,6 @@ def _refusal(
     side: FrameSide,
     limits: SpotLimits,
 ) -> tuple[Rejection, str] | None:
-    if not fit.converged:
-        return Rejection.FIT_FAILED, f"after {fit.steps} steps"
     lost = clipped_core(window, fit)
     if lost > limits.clipped_core and not limits.accept_saturated:
         return Rejection.SATURATED, f"{100 * lost:.0f} % of its core"

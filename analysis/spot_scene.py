@@ -11,8 +11,10 @@ from pitchsweep.analysis.camera_noise import CameraNoise, measured_noise_dn
 from pitchsweep.analysis.frame_background import robust_width
 from pitchsweep.analysis.speckle_grain import Speckle
 from pitchsweep.analysis.spot_candidates import Candidate, SmallFrame, small_frame
-from pitchsweep.analysis.spot_fit import Shape, SpotFit, fit_spot
+from pitchsweep.analysis.spot_fit import TRUSTED_TO, SpotFit, fit_spot
 from pitchsweep.analysis.spot_judgement import FrameSide, light_over_noise
+from pitchsweep.analysis.spot_model import Companion
+from pitchsweep.analysis.spot_shape import Shape
 from pitchsweep.analysis.spot_window import BoolArray, FrameLayer, Window, cut_window
 
 _WINDOW_SIGMAS = 5.0
@@ -47,11 +49,12 @@ class StepScene:
 
 @dataclass(frozen=True)
 class FittedCandidate:
-    """A candidate, the window around it and what was fitted there."""
+    """A candidate, the window around it, what was fitted there and what with it."""
 
     candidate: Candidate
     window: Window
     fit: SpotFit
+    beside: tuple[Companion, ...] = ()
 
 
 def hot_pixels(dark: NDArray[np.float32] | NDArray[np.uint16]) -> BoolArray:
@@ -95,7 +98,12 @@ def step_scene(
 
 
 def fit_candidate(
-    scene: StepScene, item: Candidate, speckle: Speckle
+    scene: StepScene,
+    item: Candidate,
+    speckle: Speckle,
+    beside: tuple[Companion, ...] = (),
+    *,
+    trusted_to: float = TRUSTED_TO,
 ) -> FittedCandidate:
     """The fit of one candidate, its window recut if the spot is of another size."""
     start = Shape.round_spot(
@@ -103,32 +111,48 @@ def fit_candidate(
     )
     half = (_WINDOW_SIGMAS * item.sigma_px + 1.0,) * 2
     window = _window(scene, start, half)
-    fit = fit_spot(window, start, speckle)
+
+    def fitted(window: Window, start: Shape) -> SpotFit:
+        return fit_spot(
+            window, start, speckle, companions=beside, trusted_to=trusted_to
+        )
+
+    fit = fitted(window, start)
     wanted = fit.shape.half_sides(_WINDOW_SIGMAS)
     if fit.converged and _off(wanted, half) and max(wanted) < 3.0 * half[0] + 20.0:
         window = _window(scene, fit.shape, wanted)
-        fit = fit_spot(window, fit.shape, speckle)
-    return FittedCandidate(item, window, fit)
+        fit = fitted(window, fit.shape)
+    return FittedCandidate(item, window, fit, beside)
 
 
-def refit(scene: StepScene, item: FittedCandidate, speckle: Speckle) -> FittedCandidate:
+def refit(
+    scene: StepScene,
+    item: FittedCandidate,
+    speckle: Speckle,
+    *,
+    trusted_to: float = TRUSTED_TO,
+) -> FittedCandidate:
     """The fit renewed with other weights; from the start where it had not converged.
 
-    Bins that were too coarse for speckle are made finer.
+    Bins that were too coarse for speckle are made finer. ``trusted_to`` as for
+    ``fit_spot``.
     """
     if not item.fit.converged:
-        return fit_candidate(scene, item.candidate, speckle)
+        return fit_candidate(scene, item.candidate, speckle, item.beside)
     shape = item.fit.shape
     finest = max(1, int(shape.widths()[1] / _PIXELS_FOR_GRAIN))
     if speckle.contrast > 0.0 and item.window.binning > finest:
         half = shape.half_sides(_WINDOW_SIGMAS)
         window = _window(scene, shape, half, _PIXELS_FOR_GRAIN)
         item = replace(item, window=window)
-    return replace(item, fit=fit_spot(item.window, shape, speckle))
+    fit = fit_spot(
+        item.window, shape, speckle, companions=item.beside, trusted_to=trusted_to
+    )
+    return replace(item, fit=fit)
 
 
 def core_if_wings_disagree(
-    item: FittedCandidate, first: Shape, speckle: Speckle
+    scene: StepScene, item: FittedCandidate, seen: FittedCandidate, speckle: Speckle
 ) -> FittedCandidate:
     """The fit, or that of the core alone where the two differ by too much.
 
@@ -136,12 +160,13 @@ def core_if_wings_disagree(
     percent pulls the spot. The difference of an efficient and a less efficient
     estimate has the difference of their variances; beyond ``_DISAGREE`` of it, wings
     are not trusted, and a tenth of what they pulled is added to the core's error.
-    ``first`` is where the core was seen.
+    ``seen`` is where the core was seen before.
     """
     if not item.fit.converged:
         return item
-    core = fit_spot(item.window, first, speckle, trusted_to=_CORE_ONLY)
-    if not core.converged:
+    start = replace(item, fit=seen.fit if seen.fit.converged else item.fit)
+    core = refit(scene, start, speckle, trusted_to=_CORE_ONLY).fit
+    if not core.converged or core.shape.widths()[1] < 0.6 * item.fit.shape.widths()[1]:
         return item
     off = np.array(
         [

@@ -15,18 +15,16 @@ from numpy.typing import NDArray
 from pitchsweep.analysis.camera_noise import CameraNoise
 from pitchsweep.analysis.records import SpotSearch
 from pitchsweep.analysis.speckle_grain import NO_SPECKLE, TYPICAL_SPECKLE, Speckle
-from pitchsweep.analysis.speckle_measure import GrainSample, measure_speckle
 from pitchsweep.analysis.spot_candidates import (
     Candidate,
     LightMap,
     candidates,
     light_map,
 )
-from pitchsweep.analysis.spot_fit import Shape
-from pitchsweep.analysis.spot_judgement import (
-    SpotLimits,
-    light_over_noise,
-)
+from pitchsweep.analysis.spot_grains import speckle_seen
+from pitchsweep.analysis.spot_judgement import SpotLimits
+from pitchsweep.analysis.spot_model import Companion
+from pitchsweep.analysis.spot_neighbours import among_lobes, one_lobe, renewed
 from pitchsweep.analysis.spot_scene import (
     Exposure,
     FittedCandidate,
@@ -36,12 +34,15 @@ from pitchsweep.analysis.spot_scene import (
     refit,
     step_scene,
 )
+from pitchsweep.analysis.spot_shape import Shape
 from pitchsweep.analysis.spot_verdicts import Look, judged_look, nearer
-from pitchsweep.analysis.spot_window import shared_rounding
 
 __all__ = ["Exposure", "Look", "SearchSettings", "find_spots", "look"]
 
-_COARSEST_GRAIN_PX = 8.0
+
+_OUT_OF_WING, _WIDER, _LEFT_OVER = 8.0, 1.3, 0.2
+_NEXT_TO_U, _WINDOW_OF = 0.2, 5.0
+_ROUGHLY, _LEAST_CORE = 0.2, 0.65
 
 
 @dataclass(frozen=True)
@@ -92,16 +93,70 @@ def look(
     settings = settings or SearchSettings()
     scene = step_scene(exposures, dark, camera, settings.factor, blind)
     light = light_map(scene.smalls)
-    grain, measured = speckle or NO_SPECKLE, False
-    found = _fit_all(scene, candidates(light, threshold=settings.threshold), grain, [])
+    bright = candidates(light, threshold=settings.threshold)
+    found = _fit_all(scene, bright, speckle or NO_SPECKLE, [])
+    first = speckle or _first_grain(scene, found)
+    weights = first or TYPICAL_SPECKLE
+    if weights.contrast > 0.0:
+        # Ghosts and halos must not pull before they are known: the core alone counts.
+        fine = speckle or _fine_grain(weights, found)
+        found = [_core(scene, item, fine) for item in found]
+        weights = speckle or _some(speckle_seen(found)) or fine
     rest = _without(light, found)
     late = candidates(rest, threshold=settings.threshold)
-    found += _fit_all(scene, late, grain, found)
-    if speckle is None:
-        seen, found = _with_speckle(scene, found)
-        grain = seen or TYPICAL_SPECKLE
-        measured = seen is not None
-    return Look(scene, tuple(_distinct(found)), grain, measured)
+    found = _distinct(found + _fit_all(scene, late, weights, found))
+    if weights.contrast == 0.0:
+        found = renewed(scene, found, weights, all_of_them=False)
+        return Look(scene, tuple(_distinct(found)), weights, speckle is None)
+    cores = found
+    found = renewed(scene, found, weights, all_of_them=True)
+    # Weights that allow for speckle may hide that of a faint spot: then the first.
+    grain = speckle or _some(speckle_seen(found)) or first
+    last = grain or TYPICAL_SPECKLE
+    if _other_than(last, weights):
+        found = renewed(scene, found, last, all_of_them=True)
+    found = [
+        core_if_wings_disagree(scene, item, core, last)
+        for item, core in zip(found, cores, strict=True)
+    ]
+    measured = speckle is None and grain is not None
+    return Look(scene, tuple(_distinct(found)), last, measured)
+
+
+def _first_grain(scene: StepScene, found: Sequence[FittedCandidate]) -> Speckle | None:
+    """Speckle that fits without it show; None where they cannot tell."""
+    grain = speckle_seen(found)
+    if _some(grain) is None and not all(f.fit.converged for f in found):
+        # Weights without speckle may be what kept them from converging.
+        grain = speckle_seen(
+            [f if f.fit.converged else refit(scene, f, TYPICAL_SPECKLE) for f in found]
+        )
+    return grain
+
+
+def _fine_grain(grain: Speckle, found: Sequence[FittedCandidate]) -> Speckle:
+    """``grain`` where spots are wide enough to show it; else the typical."""
+    minor = [f.fit.shape.widths()[1] for f in found if f.fit.converged]
+    wide = bool(minor) and grain.grain_fwhm_px < 0.7 * float(np.median(minor))
+    return grain if wide and grain.contrast < 1.1 else TYPICAL_SPECKLE
+
+
+def _core(scene: StepScene, item: FittedCandidate, grain: Speckle) -> FittedCandidate:
+    """The core of a spot under speckle; as it was where that is one lobe of it.
+
+    Begun anew where fits without speckle took one lobe for it.
+    """
+    if item.fit.shape.widths()[1] < _LEAST_CORE * item.candidate.sigma_px:
+        first = item.candidate
+        return fit_candidate(scene, first, grain, item.beside, trusted_to=_ROUGHLY)
+    core = refit(scene, item, grain, trusted_to=_ROUGHLY)
+    return item if one_lobe(core, item) else core
+
+
+def _other_than(grain: Speckle, before: Speckle) -> bool:
+    """Whether fits made for ``before`` must be renewed: 5 % in the stated error."""
+    change = grain.noise_area() / before.noise_area()
+    return not 0.9 < change < 1.1
 
 
 def _fit_all(
@@ -113,49 +168,39 @@ def _fit_all(
     """Fits of the candidates, leaving out what lies on a spot already fitted."""
     out: list[FittedCandidate] = []
     for item in found:
-        taken = any(_covers(f.fit.shape, item) for f in (*before, *out))
-        if not taken:
-            out.append(fit_candidate(scene, item, speckle))
+        known = [f for f in (*before, *out) if f.fit.converged]
+        if not any(_covers(f, item, speckle) for f in known):
+            near = [f.fit.shape for f in known if _near(f.fit.shape, item)]
+            beside = tuple(Companion(shape, _NEXT_TO_U) for shape in near[:2])
+            out.append(fit_candidate(scene, item, speckle, beside))
     return out
 
 
-def _covers(shape: Shape, item: Candidate) -> bool:
-    """Whether a candidate lies within 3.5 radii of a brighter fitted spot."""
-    dx, dy = item.column_px - shape.column_px, item.row_px - shape.row_px
-    square = shape.a * dx * dx + 2 * shape.b * dx * dy + shape.c * dy * dy
-    return square < 3.5**2 and item.height < shape.height
+def _covers(known: FittedCandidate, item: Candidate, speckle: Speckle) -> bool:
+    """Whether a candidate may be part of a brighter fitted spot.
 
-
-def _with_speckle(
-    scene: StepScene, found: list[FittedCandidate]
-) -> tuple[Speckle | None, list[FittedCandidate]]:
-    """Speckle seen, and the fits renewed with it; twice, as weights matter to both.
-
-    None where there is too little light to see any: the fits then allow for the
-    speckle that is typical of a diffusing screen.
+    Under speckle nothing tells a second spot near the first from a lobe of it;
+    without, it must stand out of what a spot a little wider would have there.
     """
-    grain, renewed = _measured(found), found
-    if _none_seen(grain) and not all(f.fit.converged for f in found):
-        # Weights without speckle may be what kept them from converging.
-        renewed = [
-            f if f.fit.converged else refit(scene, f, TYPICAL_SPECKLE) for f in found
-        ]
-        grain = _measured(renewed)
-    if grain is not None and grain.contrast == 0.0:
-        return grain, found
-    renewed = [refit(scene, item, grain or TYPICAL_SPECKLE) for item in renewed]
-    # Weights that allow for speckle may hide that of a faint spot: then the first.
-    grain = _measured(renewed) or grain
-    last = grain or TYPICAL_SPECKLE
-    renewed = [refit(scene, item, last) for item in renewed]
-    return grain, [
-        core_if_wings_disagree(item, first.fit.shape, last)
-        for item, first in zip(renewed, found, strict=True)
-    ]
+    shape, column, row = known.fit.shape, item.column_px, item.row_px
+    if speckle.contrast > 0.0:
+        return among_lobes(known, column, row)
+    near = shape.radii_away(column, row) < 3.5 and item.height < shape.height
+    return near and item.height < _OUT_OF_WING * shape.light_at(column, row, _WIDER)
 
 
-def _none_seen(speckle: Speckle | None) -> bool:
-    return speckle is None or speckle.contrast == 0.0
+def _near(shape: Shape, item: Candidate) -> bool:
+    """Whether a fitted spot's light reaches the candidate's window."""
+    reach = shape.radii_away(item.column_px, item.row_px)
+    return (
+        shape.height > item.height
+        and reach < 4.0 + _WINDOW_OF * item.sigma_px / (shape.widths()[1])
+    )
+
+
+def _some(seen: Speckle | None) -> Speckle | None:
+    """Speckle if any was seen: where it once showed, it does not go away."""
+    return None if seen is None or seen.contrast == 0.0 else seen
 
 
 def _without(light: LightMap, found: Sequence[FittedCandidate]) -> LightMap:
@@ -164,13 +209,13 @@ def _without(light: LightMap, found: Sequence[FittedCandidate]) -> LightMap:
     middle = (light.factor - 1) / 2.0
     x = (np.arange(columns, dtype=np.float64) * light.factor + middle)[None, :]
     y = (np.arange(rows, dtype=np.float64) * light.factor + middle)[:, None]
-    rate, variance = light.rate.copy(), light.noise**2
+    rate, noise = light.rate.copy(), light.noise.copy()
     for item in found:
         box = _box(item.fit.shape, light)
-        signal = item.fit.shape.signal(x[:, box[1]], y[box[0]])
-        rate[box] -= signal.astype(np.float32)
-        variance[box] += ((0.2 * signal) ** 2).astype(np.float32)
-    return replace(light, rate=rate, noise=np.sqrt(variance))
+        signal = item.fit.shape.signal(x[:, box[1]], y[box[0]]).astype(np.float32)
+        rate[box] -= signal
+        noise[box] = np.hypot(noise[box], np.float32(_LEFT_OVER) * signal)
+    return replace(light, rate=rate, noise=noise)
 
 
 def _box(shape: Shape, light: LightMap) -> tuple[slice, slice]:
@@ -184,49 +229,6 @@ def _box(shape: Shape, light: LightMap) -> tuple[slice, slice]:
             max(int((shape.column_px - wide) / f), 0),
             int((shape.column_px + wide) / f) + 2,
         ),
-    )
-
-
-def _measured(found: Sequence[FittedCandidate]) -> Speckle | None:
-    """Speckle from the four brightest fits; None where there is too little light.
-
-    In binned windows the grain is seen in bins; contrast and grain of bins stand for
-    the same noise per area.
-    """
-    good = [f for f in found if _shows_grain(f)]
-    good.sort(key=lambda f: -light_over_noise(f.fit))
-    binning = good[0].fit.binning if good else 1
-    good = [f for f in good if f.fit.binning == binning]
-    seen = measure_speckle([_sample(f) for f in good[:4]])
-    if seen is None:
-        return None
-    seen = replace(seen, grain_fwhm_px=seen.grain_fwhm_px * binning)
-    minor = [f.fit.shape.widths()[1] for f in good[:4]]
-    # Coarse, or pale and as wide as the spots: no grain, but beams of another form.
-    pale = seen.contrast < 0.3 and minor
-    wide = pale and seen.grain_fwhm_px > 0.8 * float(np.median(minor))
-    return NO_SPECKLE if wide or seen.grain_fwhm_px > _COARSEST_GRAIN_PX else seen
-
-
-def _shows_grain(item: FittedCandidate) -> bool:
-    """Whether a fit is a clear spot, not a streak or a leftover."""
-    if not item.fit.converged or light_over_noise(item.fit) < 20.0:
-        return False
-    major, minor, _ = item.fit.shape.widths()
-    return major < 4.0 * minor
-
-
-def _sample(item: FittedCandidate) -> GrainSample:
-    fit = item.fit
-    bright = (fit.weight > 0.0) & (fit.signal > 0.05 * fit.shape.height)
-    root = np.sqrt(fit.weight)
-    return GrainSample(
-        residual=root * fit.residual,
-        signal=root * fit.signal,
-        noise=fit.weight * fit.variance,
-        rounding=root * shared_rounding(item.window, fit.signal),
-        modes=fit.modes,
-        bright=bright.astype(np.float64),
     )
 
 

@@ -11,7 +11,6 @@ import numpy as np
 
 from pitchsweep.analysis.records import RejectedSpot, Rejection, Spot, SpotSearch
 from pitchsweep.analysis.speckle_grain import Speckle
-from pitchsweep.analysis.spot_fit import Shape
 from pitchsweep.analysis.spot_judgement import (
     SpotLimits,
     clipped_core,
@@ -24,6 +23,7 @@ from pitchsweep.analysis.spot_scene import (
     StepScene,
     lost_in_unevenness,
 )
+from pitchsweep.analysis.spot_shape import Shape
 
 _SKIRTS = ((5.0, 0.1), (10.0, 0.04))
 """Within so many radii of a spot, what is fainter than this share is part of it;
