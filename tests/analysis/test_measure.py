@@ -160,6 +160,8 @@ def test_wild_and_missing_spots_do_not_steer() -> None:
         result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
         assert abs(result.pitch_nm - sweep.truth.pitch_nm) < 4.0 * result.u_pitch_nm
         assert len(result.rejected) >= 0.04 * len(sweep.table)
+        # None is left out without a reason.
+        assert result.spots_used + len(result.rejected) == len(sweep.table)
         assert {r.reason for r in result.rejected} <= set(Rejection)
 
 
