@@ -18,12 +18,20 @@ from pitchsweep.acquire.bench_session import (
     TwinPerson,
     unit_settings,
 )
+from pitchsweep.acquire.hardware_bench import (
+    check_stage,
+    device_line,
+    refuse_same_device,
+)
+from pitchsweep.acquire.people_at_bench import TerminalPeople
 from pitchsweep.acquire.stop_signals import StopSignals
-from pitchsweep.configs.bench_model import SerialPort
 from pitchsweep.configs.job_model import Job
+from pitchsweep.configs.ports_model import Ports, SerialPort
+from pitchsweep.drivers.bench_clock import MonotonicBenchClock
 from pitchsweep.drivers.devices import BenchClock
 from pitchsweep.drivers.dialect_files import shipped_dialect
 from pitchsweep.drivers.line_client import LineClient
+from pitchsweep.drivers.sensor_client import PowerSensorClient
 from pitchsweep.drivers.serial_transport import open_serial
 from pitchsweep.drivers.stage_client import StageClient
 from pitchsweep.drivers.twin_launcher import start_twin
@@ -35,7 +43,6 @@ from pitchsweep.safety.permit import Permit
 from pitchsweep.safety.permitted_steps import PermittedSteps
 
 READ_AGE_LIMIT_S = 5.0
-DOOR_PATIENCE_S = 120.0
 Say = Callable[[str], None]
 
 
@@ -115,7 +122,7 @@ class AttendedLight:
 
 @dataclass(frozen=True)
 class AttendedBench:
-    """An open bench, armed and dark; ``meter``: laser -> mW on a twin's meter."""
+    """An open bench, armed and dark; ``meter``: laser -> mW, where one can be read."""
 
     guard: GuardClient
     stage: StageClient
@@ -130,23 +137,6 @@ class AttendedBench:
         return AttendedLight(self.guard, self.stage, place)
 
 
-class DoorByHand:
-    """Asks whoever is there to open and close the door."""
-
-    patience_s = DOOR_PATIENCE_S
-
-    def __init__(self, say: Say) -> None:
-        self._say = say
-
-    def open_interlock(self) -> None:
-        """Says that the door is to be opened."""
-        self._say("the shutter is shut: open the door of the enclosure now")
-
-    def close_interlock(self) -> None:
-        """Says that the door is to be closed."""
-        self._say("seen open; close the door again, with nobody's hand inside")
-
-
 @contextmanager
 def open_attended_bench(request: AttendedRequest) -> Iterator[AttendedBench]:
     """The bench of ``request``, armed and dark; everything ends with the block.
@@ -158,10 +148,7 @@ def open_attended_bench(request: AttendedRequest) -> Iterator[AttendedBench]:
         if bench.ports is None:
             opened = _open_twin(request, stack)
         else:
-            guard = _guard(request, stack, bench.ports.unit, None)
-            stage = _stage(request, stack, bench.ports.stage, _RealClock())
-            _arm(request, guard, DoorByHand(request.say))
-            opened = AttendedBench(guard, stage, None)
+            opened = _open_ports(request, stack, bench.ports)
         yield opened
 
 
@@ -180,6 +167,21 @@ def _open_twin(request: AttendedRequest, stack: ExitStack) -> AttendedBench:
     stage = _stage(request, stack, at, world)
     _arm(request, guard, TwinPerson(world))
     return AttendedBench(guard, stage, world.read_meter)
+
+
+def _open_ports(
+    request: AttendedRequest, stack: ExitStack, ports: Ports
+) -> AttendedBench:
+    refuse_same_device(request.job.job, ports)
+    guard = _guard(request, stack, ports.unit, None)
+    clock = MonotonicBenchClock(check=request.stop.check)
+    stage = _stage(request, stack, ports.stage, clock)
+    check_stage(stage, ports)
+    _arm(request, guard, TerminalPeople(request.say))
+    if ports.power is None:
+        return AttendedBench(guard, stage, None)
+    sensor = PowerSensorClient(device_line(ports.power, "power sensor", stack))
+    return AttendedBench(guard, stage, lambda laser: sensor.read_mw())
 
 
 def _guard(
@@ -228,13 +230,3 @@ def _stage(
 def _arm(request: AttendedRequest, guard: GuardClient, person: Person) -> None:
     request.stop.check()
     guard.arm(person)
-
-
-class _RealClock:
-    """Bench time of a bench with ports: real time."""
-
-    def now_s(self) -> float:
-        return time.monotonic()
-
-    def wait(self, seconds: float) -> None:
-        time.sleep(seconds)

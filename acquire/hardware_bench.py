@@ -117,14 +117,14 @@ def _open(
     unit = unit_settings(bench, ports.unit.port, ports.unit.dialect, ports.unit.baud)
     config = guard_config(request, unit, None)
     guard = stack.enter_context(start_guard(config, on_event=history.add))
-    stage_line = _line(ports.stage, "stage", stack)
+    stage_line = device_line(ports.stage, "stage", stack)
     stage = StageClient(stage_line, clock, bench.stage)
-    _check_stage(stage, ports)
+    check_stage(stage, ports)
     sensors = Sensors(
-        air=AirSensorClient(_line(ports.air, "air sensor", stack))
+        air=AirSensorClient(device_line(ports.air, "air sensor", stack))
         if ports.air
         else None,
-        power=PowerSensorClient(_line(ports.power, "power sensor", stack))
+        power=PowerSensorClient(device_line(ports.power, "power sensor", stack))
         if ports.power
         else None,
     )
@@ -162,13 +162,15 @@ def _gate(
     return gate
 
 
-def _line(port: SerialPort, device: str, stack: ExitStack) -> LineClient:
+def device_line(port: SerialPort, device: str, stack: ExitStack) -> LineClient:
+    """The line to what ``port`` names, closed with ``stack``. Raises LineBroke."""
     transport = open_serial(port.port, baud=port.baud)
     stack.callback(transport.close)
     return LineClient(transport, shipped_dialect(port.dialect), device=device)
 
 
-def _check_stage(stage: StageClient, ports: Ports) -> None:
+def check_stage(stage: StageClient, ports: Ports) -> None:
+    """Raises DeviceRefused when another stage answers than the bench file names."""
     wanted, found = ports.stage.identity, stage.identify()
     if wanted is not None and found != wanted:
         raise DeviceRefused(

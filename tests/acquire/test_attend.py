@@ -17,6 +17,7 @@ from pathlib import Path
 
 import pytest
 from acquire_fakes import QuietProgress
+from emulated_bench import EmulatedBench
 from sign_off_builders import (
     PASSPHRASE,
     Office,
@@ -27,12 +28,19 @@ from sign_off_builders import (
 )
 from twin_bench import short_job, unit_log
 
+from pitchsweep.acquire.attended_bench import Place, open_attended_bench
+from pitchsweep.acquire.attended_session import Noted, Terms, attended_session
 from pitchsweep.acquire.bench_session import open_twin_bench
 from pitchsweep.acquire.cli import run
+from pitchsweep.acquire.stop_signals import StopSignals
+from pitchsweep.acquire.sweep_plan import plan_sweep
 from pitchsweep.acquire.sweep_session import sweep_job
+from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.frozen_job import freeze, plain_yaml
+from pitchsweep.configs.job_model import Job
 from pitchsweep.configs.ports_model import CameraPort, Ports, SerialPort, StagePort
 from pitchsweep.safety.people_store import read_people
+from pitchsweep.safety.safety_errors import GateRefused
 
 JOB = "demo:shims-spots"
 LIMIT_S = 40.0
@@ -160,6 +168,51 @@ def test_a_person_holds_types_what_the_meter_says_and_stops_it_by_ctrl_c(
     assert [a.ended for a in people.attended.values()] == ["stopped: SIGINT"]
     assert lights(at) == ["on", "off", "on", "off"]
     assert PASSPHRASE not in person.seen and "Traceback" not in person.seen
+
+
+def test_on_a_bench_with_ports_the_door_is_moved_by_hand_and_the_key_holds(
+    at: Office, tmp_path: Path
+) -> None:
+    bench = EmulatedBench(tmp_path / "bench", short_frames())
+
+    def hears(text: str) -> None:
+        if "open the door" in text:
+            bench.open_interlock()
+        if "close its door" in text:
+            bench.close_interlock()
+
+    job = bench.job()
+    step = plan_sweep(job, fingerprint(job)).steps[0]
+    place = Place(step.laser, step.step, step.stage_deg, 0.9)
+    terms = Terms(job, (place,), at.keys["bo"], "technician", "density 2", 5.0)
+    try:
+        with attended_session(at.home, terms) as session, StopSignals() as stop:
+            with open_attended_bench(session.request(stop, hears)) as opened:
+                light = opened.light_at(place)
+                with pytest.raises(GateRefused, match="no key press"):
+                    light.light_on()
+                light.press()
+                light.light_on()
+                assert light.lit
+                until_s = time.monotonic() + LIMIT_S
+                while light.lit and time.monotonic() < until_s:
+                    light.still()
+                    time.sleep(0.1)
+                assert not light.lit
+            session.note(Noted(place.laser, 0.8, "meter 7", "2999-01-31", 2.0))
+        assert [value for _, value, _ in bench.rows("light")] == ["on", "off"]
+        people = read_people(at.home).people
+        assert [(p.simulated, p.by) for p in people.powers] == [(False, "bo")]
+    finally:
+        bench.end()
+
+
+def short_frames() -> Job:
+    job = short_job("real")
+    quick = job.bench.stage.model_copy(update={"speed_deg_per_s": 720.0})
+    recipe = job.recipe.model_copy(update={"record": "frames"})
+    bench = job.bench.model_copy(update={"stage": quick})
+    return job.model_copy(update={"bench": bench, "recipe": recipe})
 
 
 @pytest.mark.parametrize(
