@@ -4,7 +4,7 @@ import os
 from pathlib import Path
 
 
-def write_durably(path: Path, data: bytes) -> None:
+def write_durably(path: Path, data: bytes | memoryview) -> None:
     """Puts ``data`` at ``path``: a temporary file, fsync, rename, fsync the folder.
 
     ``path`` holds the old content or the new one, never a part. Raises OSError; the

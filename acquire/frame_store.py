@@ -54,7 +54,7 @@ class FrameStore:
         coded, data = cv2.imencode(ending, frame, options)
         if not coded:
             raise StorageFailed(path, f"the frame could not be coded as {ending}")
-        content = data.tobytes()
+        content = data.data  # not copied: large, and nothing else runs meanwhile
         try:
             write_durably(path, content)
         except OSError as error:

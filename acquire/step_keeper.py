@@ -42,8 +42,8 @@ from pitchsweep.drivers.driver_errors import DriverError
 from pitchsweep.safety.safety_errors import GateTripped
 
 NO_LIGHT = (Rejection.TOO_FAINT.value, Rejection.ON_MARK.value)
-DEPTH = 2
-"""Steps that may wait: bounds memory to a few frames."""
+DEPTH = 1
+"""Steps that may wait, besides one being kept and one being taken: bounds memory."""
 
 
 @dataclass(frozen=True)

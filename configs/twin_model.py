@@ -79,7 +79,8 @@ class TwinSettings(Settings):
     """How the twin runs: its seed, its clock, the size of every effect, its faults.
 
     ``person_min`` is the bench time that its person takes for what is asked of them.
-    ``prepared`` frames reuse noise made beforehand, for timing alone.
+    ``prepared`` frames reuse noise made beforehand, for timing alone. With
+    ``repeated_noise: fresh`` a step taken again, after a kill say, sees other noise.
     """
 
     seed: Seed = 0
@@ -88,6 +89,7 @@ class TwinSettings(Settings):
     spot_reading_mm: Annotated[float, Field(gt=0.0, le=20.0)] = 0.1
     person_min: Annotated[float, Field(ge=0.0, le=600.0)] = 3.0
     frames: Literal["rendered", "prepared"] = "rendered"
+    repeated_noise: Literal["same", "fresh"] = "same"
     light_e_per_ms_per_mw: Annotated[float, Field(gt=0.0, le=1e9)] = 6e4
     effects: TwinEffects = TwinEffects()
     faults: Annotated[tuple[TwinFault, ...], Field(max_length=100)] = ()

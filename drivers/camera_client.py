@@ -57,7 +57,6 @@ class TwinCameraClient:
         if self._index is None:
             self._find()
         timeout_s = exposure_ms * 1e-3 + ANSWER_TIMEOUT_S
-        asked_s = float(self._link.ask("now"))
         try:
             said = self._link.ask(
                 "begin",
@@ -71,7 +70,7 @@ class TwinCameraClient:
                 raise DeviceRefused("camera", "declined", error.detail) from None
             self._index = None
             raise LineBroke("camera", "exposing", "it is gone") from None
-        return lambda: self._fetch(int(said["exposure"]), asked_s)
+        return lambda: self._fetch(int(said["exposure"]), float(said["asked_s"]))
 
     def _fetch(self, exposure: int, asked_s: float) -> NDArray[np.uint16]:
         said = self._frames.ask("fetch", exposure=exposure)

@@ -22,6 +22,7 @@ from pitchsweep.drivers.twin.emission_unit import EmissionUnit
 from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
 from pitchsweep.drivers.twin.kept_state import KeptState, read_state, write_state
 from pitchsweep.drivers.twin.keyed_noise import keyed_generator
+from pitchsweep.drivers.twin.repeated_steps import RepeatedSteps
 from pitchsweep.drivers.twin.spots_door import spots
 from pitchsweep.drivers.twin.stage_mechanics import Rest, StageMechanics, Windup
 from pitchsweep.drivers.twin.truth import Truth, twin_settings
@@ -77,6 +78,8 @@ class World:
         self._laser = LaserState(kept.laser_shift_pm, kept.laser_power)
         self._out = False
         self.camera = TwinCamera(truth, bench, self.time)
+        fresh = settings.repeated_noise == "fresh"
+        self._repeated = RepeatedSteps(state_path.parent) if fresh else None
         faults.go_on_from(kept.seen)
 
     # The stage, as its firmware sees it. Angles are readings.
@@ -200,7 +203,7 @@ class World:
             does = self._light_fault()
         if does in ("dropout", "blocked"):
             return []
-        label = _seated(label, seat)
+        label = self._as_seen(label, seat)
         seen = spots(
             self.truth,
             self.bench,
@@ -236,7 +239,7 @@ class World:
         self.wait(exposure_s if self.time.is_real else exposure_s + readout_s)
         lit = lit and self.unit.is_lit() and light not in ("dropout", "blocked")
         exposing = Exposing(
-            label=_seated(label, seat),
+            label=self._as_seen(label, seat),
             exposure_ms=exposure_ms,
             lit=lit,
             stage_deg=start_deg,
@@ -249,6 +252,10 @@ class World:
         )
         self.camera.exposed(exposing)
         return exposing
+
+    def _as_seen(self, label: Label, seat: Seat) -> Label:
+        label = replace(label, mount=seat.mount, face_deg=seat.face_deg)
+        return label if self._repeated is None else self._repeated.fresh(label)
 
     def _light_fault(self) -> str:
         """What goes wrong with the light at this look at the screen, if anything."""
@@ -283,18 +290,6 @@ class World:
             return
         if self._stage.rest(now_s) != self._saved:
             self.save()
-
-
-def _seated(label: Label, seat: Seat) -> Label:
-    return Label(
-        mount=seat.mount,
-        laser=label.laser,
-        repeat=label.repeat,
-        step=label.step,
-        exposure=label.exposure,
-        planned_s=label.planned_s,
-        face_deg=seat.face_deg,
-    )
 
 
 def _first_state(seed: int) -> KeptState:

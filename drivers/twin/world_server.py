@@ -147,6 +147,7 @@ class WorldAsks:
 
     def _begin(self, message: Message) -> Message:
         """Answers when the exposure is over; its frame is fetched by the number."""
+        asked_s = self._world.time.now_s()
         self._check_index(message)
         exposure_ms = float(message["exposure_ms"])
         exposing = self._world.begin_exposure(exposure_ms, _label(message))
@@ -156,7 +157,7 @@ class WorldAsks:
             self._exposed[self._exposures] = exposing
             # What nobody fetched is lost: a client that was killed asks no more.
             self._exposed.pop(self._exposures - MOST_UNFETCHED, None)
-            return {"exposure": self._exposures, "began_s": exposing.began_s}
+            return {"exposure": self._exposures, "asked_s": asked_s}
 
     def _fetch(self, message: Message) -> Message:
         with self._lock:

@@ -1,13 +1,17 @@
 """Kills the controller's process group, resumes, compares. Run it as a script.
 
-    python tests/faults/kill_and_resume.py [RANDOM_MOMENTS]
+    python tests/faults/kill_and_resume.py [RANDOM_MOMENTS [fresh]]
 
 A short sweep with frames on the twin is killed with SIGKILL after every step kept and
-at random moments (seed 0), and resumed. Each time: every acknowledged step is kept,
-the light is off on the unit's log within 250 ms of the kill, and frames' checksums,
-orders.csv and result.json equal those of a sweep left alone.
+at random moments (seed 0), in turn with and without its guard and its twin; of every
+two, one is killed once more while it resumes. Each time: every acknowledged step is
+kept and its frame files are what the journal says, the light is off on the unit's log
+within 250 ms of the kill (where the twin lives to tell), and frames' checksums,
+orders.csv and result.json equal those of a sweep left alone. With ``fresh`` repeated
+steps see other noise, and the pitch agrees within half its standard uncertainty.
 """
 
+import itertools
 import json
 import os
 import signal
@@ -19,12 +23,18 @@ from dataclasses import dataclass
 from pathlib import Path
 from random import Random
 
+from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.configs.frozen_job import freeze
 from pitchsweep.configs.reader import read_job
 
 COMMAND = (sys.executable, "-m", "pitchsweep.acquire", "sweep")
 DARK_WITHIN_S = 0.25
+HELPERS = {"guard": "guard_process", "twin": "drivers.twin"}
+"""Processes of sessions of their own, by a word of their command line."""
+VICTIMS = ((), ("guard",), ("twin",), ("guard", "twin"))
+"""What is killed with the controller."""
+AGREE_U = 0.5
 
 
 @dataclass(frozen=True)
@@ -36,9 +46,10 @@ class Outcome:
     result: bytes
 
 
-def write_job(path: Path, record: str = "frames") -> None:
-    """The shipped shim job with ten steps."""
+def write_job(path: Path, record: str = "frames", repeated_noise: str = "same") -> None:
+    """The shipped shim job with ten steps and a camera of a third of a megapixel."""
     job = read_job("demo:shims").job
+    assert job.bench.twin is not None
     recipe = job.recipe.model_copy(
         update={
             "start_deg": -27.0,
@@ -48,13 +59,29 @@ def write_job(path: Path, record: str = "frames") -> None:
             "dark_every_steps": 4,
         }
     )
-    path.write_text(freeze(job.model_copy(update={"recipe": recipe})), encoding="utf-8")
+    camera = job.bench.camera
+    smaller = {
+        "width_px": camera.width_px // 2,
+        "height_px": camera.height_px // 2,
+        "mm_per_px": 2.0 * camera.mm_per_px,
+        "centre_column_px": (camera.centre_column_px - 0.5) / 2.0,
+        "centre_row_px": (camera.centre_row_px - 0.5) / 2.0,
+    }
+    twin = job.bench.twin.model_copy(update={"repeated_noise": repeated_noise})
+    camera = camera.model_copy(update=smaller)
+    bench = job.bench.model_copy(update={"camera": camera, "twin": twin})
+    job = job.model_copy(update={"recipe": recipe, "bench": bench})
+    path.write_text(freeze(job), encoding="utf-8")
 
 
 def start(job: Path, runs: Path) -> "subprocess.Popen[str]":
     """A sweep in a process group of its own."""
+    return _started([str(job), "--runs", str(runs)])
+
+
+def _started(words: list[str]) -> "subprocess.Popen[str]":
     return subprocess.Popen(
-        [*COMMAND, str(job), "--runs", str(runs)],
+        [*COMMAND, *words],
         stdout=subprocess.DEVNULL,
         stderr=subprocess.PIPE,
         text=True,
@@ -62,31 +89,49 @@ def start(job: Path, runs: Path) -> "subprocess.Popen[str]":
     )
 
 
-def kill(process: "subprocess.Popen[str]") -> float:
-    """SIGKILL to the whole group; the monotonic time of it."""
+def helpers_of(pid: int) -> dict[str, int]:
+    """Guard and twin of the controller ``pid``: name -> process (Linux)."""
+    children = Path(f"/proc/{pid}/task/{pid}/children").read_text().split()
+    found = {}
+    for child, (name, word) in itertools.product(children, HELPERS.items()):
+        command = Path(f"/proc/{child}/cmdline")
+        if command.exists() and word.encode() in command.read_bytes():
+            found[name] = int(child)
+    return found
+
+
+def kill(process: "subprocess.Popen[str]", also: tuple[str, ...] = ()) -> float:
+    """SIGKILL to the whole group, and to helpers; the monotonic time of it."""
+    helpers = helpers_of(process.pid) if also else {}
     at_s = time.monotonic()
     os.killpg(process.pid, signal.SIGKILL)
+    for name in also:
+        if name in helpers:
+            os.kill(helpers[name], signal.SIGKILL)
     process.wait()
     assert process.stderr is not None
     process.stderr.close()
     return at_s
 
 
-def kill_after_step(job: Path, runs: Path, step: int) -> float:
+def kill_after_step(
+    job: Path, runs: Path, step: int, also: tuple[str, ...] = ()
+) -> float:
     """Kills as soon as the progress says that ``step`` steps are kept."""
     process = start(job, runs)
     assert process.stderr is not None
     for line in process.stderr:
         if line.startswith(f"step {step}/"):
             break
-    return kill(process)
+    return kill(process, also)
 
 
-def kill_after_seconds(job: Path, runs: Path, seconds: float) -> float:
+def kill_after_seconds(
+    process: "subprocess.Popen[str]", seconds: float, also: tuple[str, ...] = ()
+) -> float:
     """Kills after so many seconds."""
-    process = start(job, runs)
     time.sleep(seconds)
-    return kill(process)
+    return kill(process, also)
 
 
 def only_run(runs: Path) -> Path | None:
@@ -96,15 +141,21 @@ def only_run(runs: Path) -> Path | None:
 
 
 def acknowledged(run: Path) -> dict[int, tuple[str, ...]]:
-    """Step -> its frames' checksums, of every acknowledged step."""
+    """Step -> its frames' checksums, of every acknowledged step.
+
+    Raises StorageFailed where a file is not what the journal says.
+    """
     if not (run / "run.db").exists():
         return {}
+    store, found = FrameStore(run), {}
     with open_journal(run / "run.db") as journal:
-        return {
-            row.step: tuple(frame.sha256 for frame in journal.frames(row.intent))
-            for row in journal.intents()
-            if row.outcome == "done" and row.kind == "step"
-        }
+        for row in journal.intents():
+            if row.outcome == "done" and row.kind == "step":
+                frames = journal.frames(row.intent)
+                for frame in frames:
+                    store.read(frame.file, frame.sha256)
+                found[row.step] = tuple(frame.sha256 for frame in frames)
+    return found
 
 
 def resume(run: Path) -> None:
@@ -139,28 +190,57 @@ def dark_after_s(run: Path, killed_s: float) -> float:
     return float("inf") if lit else last_off_s - killed_s
 
 
-def check(run: Path, killed_s: float, whole: Outcome) -> float:
-    """Resumes a killed run and checks everything; seconds from kill to dark."""
+def check(
+    run: Path,
+    killed_s: float,
+    whole: Outcome,
+    *,
+    also: tuple[str, ...] = (),
+    again_s: float | None = None,
+    fresh: bool = False,
+) -> float:
+    """Resumes a killed run and checks everything; seconds from kill to dark.
+
+    ``also`` says what was killed with it; ``again_s`` after how many seconds the first
+    resume is killed too.
+    """
     time.sleep(DARK_WITHIN_S + 0.1)
-    dark_s = dark_after_s(run, killed_s)
+    dark_s = 0.0 if "twin" in also else dark_after_s(run, killed_s)
+    assert dark_s <= DARK_WITHIN_S, f"dark only after {dark_s:.3f} s"
     before = acknowledged(run)
+    if again_s is not None:
+        kill_after_seconds(_started(["--resume", str(run)]), again_s, also)
+        between = acknowledged(run)
+        assert before.items() <= between.items(), "a step was lost in the resume"
+        before = between
     resume(run)
     after = acknowledged(run)
-    assert dark_s <= DARK_WITHIN_S, f"dark only after {dark_s:.3f} s"
     assert before.items() <= after.items(), "an acknowledged step was lost"
     again = outcome(run)
+    if fresh:
+        off = pitch_off_u(again, whole)
+        assert off <= AGREE_U, f"the pitch is {off:.2f} u away"
+        return dark_s
     for name in ("frames", "orders", "result"):
         assert getattr(again, name) == getattr(whole, name), f"other {name}"
     return dark_s
 
 
+def pitch_off_u(one: Outcome, other: Outcome) -> float:
+    """How far the pitches lie apart, in standard uncertainties of the second."""
+    first, second = json.loads(one.result), json.loads(other.result)
+    off_nm = abs(first["pitch_nm"] - second["pitch_nm"])
+    return float(off_nm / second["u_pitch_nm"])
+
+
 def main() -> int:
     """Runs the campaign and prints one line a kill."""
     moments = int(sys.argv[1]) if len(sys.argv) > 1 else 20
+    fresh = "fresh" in sys.argv
     random = Random(0)
     with tempfile.TemporaryDirectory() as folder:
         job = Path(folder) / "job.yaml"
-        write_job(job)
+        write_job(job, repeated_noise="fresh" if fresh else "same")
         began_s = time.monotonic()
         process = start(job, Path(folder) / "whole")
         process.communicate()
@@ -169,25 +249,41 @@ def main() -> int:
         lasts_s = time.monotonic() - began_s
         whole = outcome(whole_run)
         print(f"left alone: {len(whole.frames)} frames, {lasts_s:.1f} s")
-        worst_s = 0.0
+        worst_s, worst_u, failed = 0.0, 0.0, 0
         for number in range(10 + moments):
             runs = Path(folder) / f"killed-{number}"
+            also = VICTIMS[number % len(VICTIMS)]
+            again_s = random.uniform(0.0, lasts_s) if number // 4 % 2 else None
             if number < 10:
                 what = f"after step {number + 1}"
-                killed_s = kill_after_step(job, runs, number + 1)
+                killed_s = kill_after_step(job, runs, number + 1, also)
             else:
                 after_s = random.uniform(0.0, lasts_s)
                 what = f"after {after_s:.3f} s"
-                killed_s = kill_after_seconds(job, runs, after_s)
+                killed_s = kill_after_seconds(start(job, runs), after_s, also)
+            what = ", ".join([what, *(f"{name} too" for name in also)])
+            if again_s is not None:
+                what += f", again {again_s:.3f} s into the resume"
             run = only_run(runs)
             if run is None:
-                print(f"{what}: nothing had begun")
+                print(f"{what}: nothing had begun", flush=True)
                 continue
             kept = len(acknowledged(run))
-            worst_s = max(worst_s, check(run, killed_s, whole))
-            print(f"{what}: {kept} steps kept, the same outcome", flush=True)
-        print(f"longest light after a kill: {1000 * worst_s:.0f} ms")
-    return 0
+            try:
+                dark_s = check(
+                    run, killed_s, whole, also=also, again_s=again_s, fresh=fresh
+                )
+            except (AssertionError, subprocess.CalledProcessError) as error:
+                failed += 1
+                said = getattr(error, "stderr", None) or error
+                print(f"{what}: {kept} steps kept, FAILED: {said}", flush=True)
+                continue
+            worst_s = max(worst_s, dark_s)
+            worst_u = max(worst_u, pitch_off_u(outcome(run), whole))
+            print(f"{what}: {kept} steps kept, as it should be", flush=True)
+        print(f"{failed} failed; longest light after a kill: {1000 * worst_s:.0f} ms; ")
+        print(f"largest difference of the pitch: {worst_u:.3g} u")
+    return 1 if failed else 0
 
 
 if __name__ == "__main__":

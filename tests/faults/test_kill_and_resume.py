@@ -6,6 +6,7 @@ from pathlib import Path
 
 import pytest
 from faults.kill_and_resume import (
+    Outcome,
     acknowledged,
     check,
     kill_after_step,
@@ -19,22 +20,29 @@ from faults.kill_and_resume import (
 from pitchsweep.acquire.journal_file import open_journal
 
 
+@pytest.fixture(scope="module")
+def whole(tmp_path_factory: pytest.TempPathFactory) -> Outcome:
+    """What a sweep left alone gives; noise of repeated steps does not matter to it."""
+    folder = tmp_path_factory.mktemp("whole")
+    write_job(folder / "job.yaml", record="spots")
+    process = start(folder / "job.yaml", folder / "runs")
+    process.communicate()
+    assert process.returncode == 0
+    run = only_run(folder / "runs")
+    assert run is not None
+    return outcome(run)
+
+
 def test_a_killed_or_stopped_sweep_goes_dark_and_resumes_to_the_same(
-    tmp_path: Path,
+    tmp_path: Path, whole: Outcome
 ) -> None:
     job = tmp_path / "job.yaml"
     write_job(job, record="spots")
-    process = start(job, tmp_path / "whole")
-    process.communicate()
-    assert process.returncode == 0
-    whole_run = only_run(tmp_path / "whole")
-    assert whole_run is not None
-    whole = outcome(whole_run)
-
-    killed_s = kill_after_step(job, tmp_path / "killed", 4)
+    victims = ("guard", "twin")
+    killed_s = kill_after_step(job, tmp_path / "killed", 4, victims)
     run = only_run(tmp_path / "killed")
     assert run is not None and len(acknowledged(run)) >= 4
-    check(run, killed_s, whole)
+    check(run, killed_s, whole, also=victims, again_s=1.5)
 
     process = start(job, tmp_path / "stopped")
     assert process.stderr is not None
@@ -54,3 +62,14 @@ def test_a_killed_or_stopped_sweep_goes_dark_and_resumes_to_the_same(
         assert journal.sessions()[0][4] == "stopped: SIGTERM"
     resume(run)
     assert outcome(run) == whole
+
+
+def test_fresh_noise_in_repeated_steps_leaves_the_pitch_within_its_uncertainty(
+    tmp_path: Path, whole: Outcome
+) -> None:
+    job = tmp_path / "job.yaml"
+    write_job(job, record="spots", repeated_noise="fresh")
+    killed_s = kill_after_step(job, tmp_path / "killed", 5)
+    run = only_run(tmp_path / "killed")
+    assert run is not None
+    check(run, killed_s, whole, fresh=True)
