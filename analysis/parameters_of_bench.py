@@ -41,9 +41,10 @@ def air(scene: FitScene) -> Iterator[Parameter]:
 def screen_and_beam(scene: FitScene) -> Iterator[Parameter]:
     screen, beam = scene.bench.screen, scene.bench.beam
     tilt, climb = screen.u_tilt_mrad * 1e-3, beam.u_elevation_mrad * 1e-3
+    far = screen.kind == "camera-at-infinity"
     for label, source, column, u, shown, mean in (
         (
-            "screen distance",
+            "focal length" if far else "screen distance",
             Source.SCREEN,
             Local.DISTANCE,
             screen.u_distance_mm,

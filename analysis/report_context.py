@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from pitchsweep.configs.bench_model import Bench
+from pitchsweep.configs.bench_model import Bench, Screen
 from pitchsweep.configs.part_model import Part
 
 
@@ -147,11 +147,7 @@ def bench_facts(bench: Bench) -> tuple[Fact, ...]:
         Fact("Bench", bench.bench + (" (simulated)" if bench.twin else "")),
         *((Fact("Note", bench.note),) if bench.note else ()),
         *lasers,
-        Fact(
-            "Screen",
-            f"{screen.width_mm:g} mm x {screen.height_mm:g} mm at"
-            f" {screen.distance_mm:g} mm, u {screen.u_distance_mm:g} mm",
-        ),
+        _view(screen),
         Fact(
             "Stage",
             f"zero u {stage.u_zero_deg:g} deg, repeatability u"
@@ -164,3 +160,12 @@ def bench_facts(bench: Bench) -> tuple[Fact, ...]:
             f" {bench.camera.bits} bit, {bench.camera.mm_per_px:g} mm a pixel",
         ),
     )
+
+
+def _view(screen: Screen) -> Fact:
+    """What the orders are seen on."""
+    size = f"{screen.width_mm:g} mm x {screen.height_mm:g} mm"
+    length = f"{screen.distance_mm:g} mm, u {screen.u_distance_mm:g} mm"
+    if screen.kind == "camera-at-infinity":
+        return Fact("Camera at infinity", f"sensor {size}, focal length {length}")
+    return Fact("Screen", f"{size} at {length}")

@@ -235,6 +235,6 @@ def test_a_camera_at_infinity_measures_too() -> None:
         assert result.u_pitch_nm < 2e-3 * result.pitch_nm
         (lens,) = (n for n in result.nuisance if n.name.startswith("lens distortion"))
         assert lens.value == pytest.approx(0.05, abs=4.0 * lens.u)
-        (focal,) = (n for n in result.nuisance if n.name == "screen distance")
+        (focal,) = (n for n in result.nuisance if n.name == "focal length")
         true_mm = sweep.truth.screen.distance_mm
         assert focal.value == pytest.approx(true_mm, abs=4.0 * focal.u)

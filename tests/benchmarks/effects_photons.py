@@ -28,6 +28,9 @@ EFFECTS: dict[str, dict[str, Any]] = {
     "camera shift 3 mm/h": {"camera_shift_um_per_h": 3000.0},
     "part radius 10 m": {"part_radius_m": 10.0},
     "cover 0.6 mm": {"cover_thickness_mm": 0.6},
+    "track radius 40 mm": {"track_radius_mm": 40.0},
+    "part ends 2.5 mm off": {"part_edge_mm": 2.5},
+    "leftover backlash 10 arcsec": {"leftover_backlash_arcsec": 10.0},
     "missing orders 20 %": {"missing_fraction": 0.2},
 }
 
