@@ -1,6 +1,7 @@
 """Frames read out while the stage turns: what they gain and how their loss is met."""
 
 import threading
+import weakref
 from collections.abc import Callable
 from pathlib import Path
 
@@ -118,3 +119,34 @@ def test_a_last_frame_that_never_comes_ends_the_sweep_where_the_recipe_says_stop
     with open_journal(run, read_only=True) as journal:
         rows = {row.step: row.outcome for row in journal.intents() if row.step <= 8}
     assert rows == {**{step: "done" for step in range(8)}, 8: "failed"}
+
+
+def test_frames_in_memory_do_not_grow_with_the_sweep(tmp_path: Path) -> None:
+    # Being taken, waiting, being kept, read out last: two each, four with darks; and
+    # the dark frames that serve until the next come.
+    most = 4 * 4 + 2
+    job = small_job(
+        record="frames", exposures_ms=(2.0, 20.0), step_deg=1.0, dark_every_steps=5
+    )
+    fake = LaterBench(job)
+    alive, highest, taken = 0, 0, 0
+    lock = threading.Lock()
+    expose = fake.expose
+
+    def gone() -> None:
+        nonlocal alive
+        with lock:
+            alive -= 1
+
+    def counted(exposure_ms: float, label: Label) -> NDArray[np.uint16]:
+        nonlocal alive, highest, taken
+        frame = expose(exposure_ms, label)
+        weakref.finalize(frame, gone)
+        with lock:
+            alive, taken = alive + 1, taken + 1
+            highest = max(highest, alive)
+        return frame
+
+    fake.expose = counted  # type: ignore[method-assign]
+    sweep_job(job, tmp_path, QuietProgress(), opener(fake))
+    assert taken > 90 and highest <= most
