@@ -63,6 +63,7 @@ def measure(
     *,
     trust_nominal: bool = True,
     generator: np.random.Generator | None = None,
+    advise: bool = True,
 ) -> PitchResult:
     """The fit of ``given`` with what was measured; options as in ``measure_pitch``.
 
@@ -78,6 +79,7 @@ def measure(
         rejected=given.rejected,
         trust_nominal=trust_nominal,
         generator=generator,
+        advise=advise,
     )
     if given.bench.emission.switches != "laser":
         return found

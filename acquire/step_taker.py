@@ -1,6 +1,6 @@
 """One step: move, settle, light, expose, sense, dark, hand over. Acts (devices)."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 from pitchsweep.acquire.acquire_errors import FaultMet
@@ -9,6 +9,7 @@ from pitchsweep.acquire.bench_watch import Sensed, after_reading
 from pitchsweep.acquire.disk_room import free_bytes, why_nearly_full
 from pitchsweep.acquire.exposures import Exposures, ShotToCome, wait_for
 from pitchsweep.acquire.fault_policy import reaction
+from pitchsweep.acquire.live_judge import LaserJumped
 from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.step_keeper import SpoiltStep, StepKeeper, TakenStep
 from pitchsweep.acquire.stop_signals import StopSignals
@@ -27,7 +28,8 @@ class SweepContext:
     """What a sweep needs besides its devices.
 
     ``why_over`` is asked before every step and says why the sweep ends here, if it
-    does; ``soaked_s`` is how long the bench was left to settle before the first step.
+    does; ``jumps`` is asked likewise for jumps of a laser's wavelength; ``soaked_s`` is
+    how long the bench was left to settle before the first step.
     """
 
     job: Job
@@ -37,6 +39,7 @@ class SweepContext:
     stop: StopSignals
     report: SweepReporter
     why_over: Callable[[Step], str | None] = lambda step: None
+    jumps: Callable[[Step], Sequence[LaserJumped]] = lambda step: ()
     soaked_s: float = 0.0
 
 

@@ -45,6 +45,7 @@ class SweepRunner:
                 begins = group_of(step) != self._group
                 if begins:
                     self._finish()
+                self._meet_jumps(step)
                 if why := self._context.why_over(step):
                     self._end_early(why)
                     break
@@ -68,6 +69,28 @@ class SweepRunner:
     def _end_early(self, why: str) -> None:
         self._context.journal.set_meta("ended_early", why)
         self._context.report.say(f"the sweep ends here: {why}")
+
+    def _meet_jumps(self, step: Step) -> None:
+        """Meets jumps of the wavelength as the recipe says; the fit carries the rest.
+
+        Skipped: every step since the jump is left out. Taken again: those of them that
+        need no person to seat the part.
+        """
+        for jump in self._context.jumps(step):
+            fault = FaultMet("laser_jump", jump.detail)
+            does = self._react(jump.first, fault, 0)
+            if does not in ("skip", "retry", "re-home"):
+                continue
+            self._drain()
+            for row in self._context.journal.intents():
+                since = jump.first.step <= row.step < step.step
+                same = row.laser == jump.laser and row.kind == "step"
+                if since and same and row.outcome == "done":
+                    self._context.journal.void(row.intent, str(fault))
+            for old in self._context.plan.steps[jump.first.step : step.step]:
+                again = does != "skip" and old.laser == jump.laser
+                if again and group_of(old) == self._group:
+                    self._take(old, None)
 
     def _find_what_was_not_found(self, standing: Standing) -> None:
         """Finds spots of steps that an earlier session kept but had no time for."""

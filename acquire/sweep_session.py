@@ -3,7 +3,7 @@
 import sqlite3
 import sys
 from collections.abc import Callable
-from contextlib import AbstractContextManager, suppress
+from contextlib import AbstractContextManager, ExitStack, suppress
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -13,6 +13,8 @@ from pitchsweep.acquire.bench_lock import refuse_network_folder, take_bench_lock
 from pitchsweep.acquire.disk_room import frames_left, free_bytes, why_too_small
 from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_file import create_journal, open_journal
+from pitchsweep.acquire.live_fit import LiveFit
+from pitchsweep.acquire.live_judge import LiveJudge, told_before
 from pitchsweep.acquire.progress import Progress, clock_text
 from pitchsweep.acquire.resume import Standing, standing
 from pitchsweep.acquire.run_folder import (
@@ -214,12 +216,17 @@ def _session(
         request = BenchRequest(
             folder, plan, journal, stop, resumed, progress.say, permit
         )
-        with open_bench(request) as devices:
+        with ExitStack() as stack, open_bench(request) as devices:
             stop.on_request = devices.gate.dark
             stop.check()
             start = make_ready(job, devices, journal, stop, report)
             shown = ShownSteps(job, plan, len(now.done), progress, report.status)
             over = SweepEnd(folder, plan, journal, devices.clock, start, progress.say)
+            live = stack.enter_context(
+                LiveFit(folder.path, len(plan.steps), told_before(journal))
+            )
+            judge = LiveJudge(job, plan, report, devices.clock, start, live)
+            judge.at_start(now.remaining)
             context = SweepContext(
                 job=job,
                 plan=plan,
@@ -228,6 +235,7 @@ def _session(
                 stop=stop,
                 report=report,
                 why_over=over.before_step,
+                jumps=judge.before_step,
                 soaked_s=start.soaked_s,
             )
             try:

@@ -16,7 +16,8 @@ class FaultPolicies(Settings):
     ``retry`` takes the step again, ``re-home`` searches the zero in the dark and takes
     it again, each ``retries`` times at most, then ``then`` holds; ``skip`` leaves the
     step out, ``pause`` waits for a person, ``stop`` ends the sweep so that it can be
-    resumed, ``note`` goes on and says so.
+    resumed, ``note`` goes on and says so. A jump of a laser's wavelength is carried by
+    the fit whatever is done; ``skip`` leaves out every step since it was.
     """
 
     retries: Annotated[int, Field(ge=0, le=20)] = 2
@@ -37,7 +38,7 @@ class FaultPolicies(Settings):
     laser_power: Policy = "note"
     laser_dropout: Policy = "retry"
     laser_feedback: Policy = "skip"
-    laser_jump: Policy = "stop"
+    laser_jump: Policy = "note"
     air_missing: Policy = "note"
     disk_low: Policy = "stop"
     spots_vanished: Policy = "retry"

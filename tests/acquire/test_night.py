@@ -12,7 +12,7 @@ import numpy as np
 import pytest
 from acquire_fakes import FakeBench, QuietProgress, opener, small_job
 
-from pitchsweep.acquire import bench_lock
+from pitchsweep.acquire import bench_lock, live_fit
 from pitchsweep.acquire.acquire_errors import FaultMet, JobRefused, RunRefused
 from pitchsweep.acquire.bench_lock import (
     file_system_of,
@@ -151,8 +151,9 @@ def test_a_sweep_stops_by_the_hour_and_still_gives_its_result(tmp_path: Path) ->
 
 
 def test_precision_enough_ends_a_sweep_alike_whether_resumed_or_not(
-    tmp_path: Path,
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
+    monkeypatch.setattr(live_fit, "FEWEST_STEPS", 1000)  # no look in between
     job = small_job(step_deg=1.0, repeats=4)
     job = job.model_copy(update={"schedule": Schedule(enough_relative_u=0.05)})
     whole = sweep_job(

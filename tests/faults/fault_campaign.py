@@ -31,6 +31,8 @@ from pitchsweep.configs.twin_faults import TwinFault
 
 PROGRAM = (sys.executable, "-m", "pitchsweep.acquire")
 SIGMAS = 4.0
+MIDST = 30
+HOP_PM = 300.0
 
 
 @dataclass(frozen=True)
@@ -44,6 +46,7 @@ class Case:
     record: str = "spots"
     every: int = 1
     late_s: float = 0.5
+    steps: int = 12
 
     @property
     def name(self) -> str:
@@ -72,6 +75,14 @@ CASES = (
     Case("light", "dropout", "laser_dropout", ("retry", "pause")),
     Case("light", "power-drop", "laser_power", ("note", "stop")),
     Case("light", "blocked", "spots_vanished", ("retry", "skip")),
+    Case(
+        "light",
+        "mode-hop",
+        "laser_jump",
+        ("note", "pause", "stop", "skip"),
+        every=3,
+        steps=92,
+    ),
     Case("light", "stray-spot", "spots_appeared", ("note", "skip")),
     Case("sensors", "missing", "air_missing", ("note", "stop")),
 )
@@ -83,6 +94,9 @@ def occasion(case: Case, nth: int) -> int:
         looks = well_seen_looks()
         # Only far above or below the band of the orders is a stray spot told apart.
         return looks[0] if case.does == "stray-spot" else looks[(nth - 1) % len(looks)]
+    if case.does == "mode-hop":
+        # Before and after it there must be enough to tell it by.
+        return MIDST + (nth - 1) * case.every
     first = 2 if case.does in ("identical", "stale") else 1
     return first + (nth - 1) * case.every
 
@@ -103,14 +117,15 @@ def well_seen_looks() -> list[int]:
     ]
 
 
-def swept_job() -> Job:
-    """The shipped shim in twelve steps."""
+def swept_job(steps: int = 12) -> Job:
+    """The shipped shim in twelve steps, or in many to tell a small thing by."""
     job = read_job("demo:shims").job
+    few = steps == 12
     recipe = job.recipe.model_copy(
         update={
-            "start_deg": -27.5,
-            "stop_deg": 27.5,
-            "step_deg": 5.0,
+            "start_deg": -27.5 if few else -45.5,
+            "stop_deg": 27.5 if few else 45.5,
+            "step_deg": 5.0 if few else 91.0 / (steps - 1),
             "dark_every_steps": 100,
         }
     )
@@ -118,8 +133,8 @@ def swept_job() -> Job:
 
 
 def job_for(case: Case, policy: str, nth: int) -> Job:
-    """The shipped shim with twelve steps, sensors, one fault and its policy."""
-    job = swept_job()
+    """The shipped shim in a few steps, with sensors, one fault and its policy."""
+    job = swept_job(case.steps)
     assert job.bench.twin is not None
     fault = TwinFault.model_validate(
         {
@@ -130,6 +145,9 @@ def job_for(case: Case, policy: str, nth: int) -> Job:
         }
     )
     twin = job.bench.twin.model_copy(update={"faults": (fault,), "seed": nth})
+    if case.does == "mode-hop":
+        effects = twin.effects.model_copy(update={"mode_hop_pm": HOP_PM})
+        twin = twin.model_copy(update={"effects": effects, "spot_reading_mm": 0.03})
     camera = job.bench.camera.model_copy(
         update={
             "width_px": 640,
@@ -222,8 +240,9 @@ def _stretches(run: Path, what: str, begins: str) -> list[tuple[float, float]]:
     return stretches
 
 
-def check(case: Case, policy: str, played: Played, steps: int = 12) -> None:
+def check(case: Case, policy: str, played: Played) -> None:
     """Holds one run against what its policy says; AssertionError otherwise."""
+    steps = case.steps
     words = case.kind.replace("_", " ")
     met = [row for row in played.faults if row.what == words]
     assert met, f"no '{words}' in the journal: {played.said}"
@@ -239,6 +258,8 @@ def check(case: Case, policy: str, played: Played, steps: int = 12) -> None:
         return
     assert played.code == 0, played.said
     missing = 1 if policy == "skip" and met[0].step is not None else 0
+    if policy == "skip" and case.does == "mode-hop":
+        missing = steps  # everything since then is left out
     assert steps - missing <= played.steps <= steps, played.steps
     assert words in played.report, "not in the report"
     assert played.off_in_u is not None and abs(played.off_in_u) <= SIGMAS
