@@ -23,6 +23,7 @@ from pitchsweep.acquire.hardware_world import HardwareWorld, Sensors
 from pitchsweep.acquire.people_at_bench import People, TerminalPeople
 from pitchsweep.acquire.power_watch import PowerWatch
 from pitchsweep.acquire.run_permit import entered
+from pitchsweep.acquire.stop_signals import StopSignals
 from pitchsweep.acquire.sweep_session import BenchRequest, OpenBench
 from pitchsweep.configs.ports_model import Ports, SerialPort
 from pitchsweep.drivers.bench_clock import MonotonicBenchClock
@@ -33,7 +34,7 @@ from pitchsweep.drivers.line_client import LineClient
 from pitchsweep.drivers.sensor_client import AirSensorClient, PowerSensorClient
 from pitchsweep.drivers.serial_transport import open_serial
 from pitchsweep.drivers.stage_client import StageClient
-from pitchsweep.safety.guard_client import GuardClient, start_guard
+from pitchsweep.safety.guard_client import GuardClient, Person, start_guard
 from pitchsweep.safety.safety_errors import GateRefused
 
 TIME_ZERO = "bench_time_zero_utc_s"
@@ -75,6 +76,25 @@ def bench_clock(request: BenchRequest) -> MonotonicBenchClock:
     last_s = max((row.bench_s or 0.0 for row in journal.intents()), default=0.0)
     start_s = max(last_s, now_s - float(zero))
     return MonotonicBenchClock(start_s, check=request.stop.check)
+
+
+class _Doorway:
+    """The guard while people are at the bench: a stop ends it, and thereby the wait."""
+
+    def __init__(self, guard: GuardClient, stop: StopSignals) -> None:
+        self._guard = guard
+        self._stop = stop
+
+    def disarm(self) -> None:
+        """Dark and cold, so that the door may be opened. Raises GateTripped."""
+        self._guard.disarm()
+
+    def arm(self, person: Person) -> None:
+        """Arms once the door was moved. Raises StopRequested and as the guard does."""
+        self._stop.on_request = self._guard.stop
+        self._stop.check()
+        self._guard.arm(person)
+        self._stop.on_request = self._guard.dark
 
 
 def _ports(request: BenchRequest) -> Ports:
@@ -128,15 +148,13 @@ def _open(
         if ports.power
         else None,
     )
-    # While people are waited for, a stop has nothing to end but the guard.
-    stop.on_request = guard.stop
-    guard.arm(people)
-    stop.on_request = guard.dark
+    doorway = _Doorway(guard, stop)
+    doorway.arm(people)
     return BenchDevices(
         stage=stage,
         camera=camera,
         clock=clock,
-        world=HardwareWorld(guard, people, sensors, stop.check),
+        world=HardwareWorld(doorway, people, sensors, stop.check),
         gate=_gate(request, guard, sensors, stack),
         gate_history=history.take,
         lasers_by_hand=True,

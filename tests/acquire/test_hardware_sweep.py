@@ -3,11 +3,9 @@
 Real processes: the emulated bench, guard, controller. Judged by the unit's own log.
 """
 
-import contextlib
 import json
 import os
 import signal
-import subprocess
 import threading
 import time
 from collections.abc import Callable, Iterator
@@ -16,14 +14,18 @@ from typing import Any
 
 import pytest
 from acquire_fakes import QuietProgress
-from builders import demo_job
 from emulated_bench import EmulatedBench
+from hardware_builders import emulated, heard, lit, program, twin_job
+from port_builders import invented_ports
 from sign_off_builders import Office, office, signed, work_of
-from whole_sweep import PROGRAM
 
 from pitchsweep.acquire.ack_run import acknowledge_run
-from pitchsweep.acquire.cli import run
-from pitchsweep.acquire.hardware_bench import hardware_opener, open_hardware_bench
+from pitchsweep.acquire.acquire_errors import JobRefused
+from pitchsweep.acquire.hardware_bench import (
+    hardware_opener,
+    open_hardware_bench,
+    refuse_same_device,
+)
 from pitchsweep.acquire.journal_file import create_journal, open_journal
 from pitchsweep.acquire.run_folder import create_run_folder
 from pitchsweep.acquire.run_permit import RunPermit
@@ -46,30 +48,6 @@ KEPT_DARK_S = 1.0
 """From kill to dark: 0.25 s by the keep-alive; the rest for a busy machine."""
 
 
-def twin_job(**recipe: Any) -> Job:
-    """A short sweep of the shim with a small camera, in real time."""
-    job = demo_job("shims")
-    camera = job.bench.camera.model_copy(
-        update={
-            "width_px": 512,
-            "height_px": 160,
-            "mm_per_px": 0.78125,
-            "centre_column_px": 255.5,
-            "centre_row_px": 79.5,
-            "readout_s": 0.0,
-        }
-    )
-    stage = job.bench.stage.model_copy(
-        update={"speed_deg_per_s": 720.0, "settle_s": 0.0}
-    )
-    return demo_job(
-        "shims",
-        twin={"speed": "real"},
-        bench={"camera": camera, "stage": stage},
-        recipe={"step_deg": 15.0, "exposures_ms": (2.0, 15.0), **recipe},
-    )
-
-
 @pytest.fixture
 def at(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Office:
     made = office(tmp_path)
@@ -77,42 +55,10 @@ def at(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Office:
     return made
 
 
-@contextlib.contextmanager
-def emulated(folder: Path, job: Job) -> Iterator[EmulatedBench]:
-    bench = EmulatedBench(folder / "bench", job)
-    try:
+@pytest.fixture(scope="module")
+def standing(tmp_path_factory: pytest.TempPathFactory) -> Iterator[EmulatedBench]:
+    with emulated(tmp_path_factory.mktemp("standing"), twin_job()) as bench:
         yield bench
-    finally:
-        bench.end()
-
-
-def program(folder: Path, *words: str) -> "subprocess.Popen[str]":
-    return subprocess.Popen(
-        [*PROGRAM, *words],
-        cwd=folder,
-        stdin=subprocess.DEVNULL,
-        stdout=subprocess.PIPE,
-        stderr=subprocess.PIPE,
-        text=True,
-        start_new_session=True,
-    )
-
-
-def heard(process: "subprocess.Popen[str]", bench: EmulatedBench) -> list[str]:
-    """Everything said on stderr; the person at the bench does what is said there."""
-    said = []
-    assert process.stderr is not None
-    for line in process.stderr:
-        said.append(line)
-        if "open the door" in line:
-            bench.open_interlock()
-        if "close its door" in line:
-            bench.close_interlock()
-    return said
-
-
-def lit(bench: EmulatedBench) -> list[str]:
-    return [value for _, value, _ in bench.rows("light")]
 
 
 def test_from_unsigned_to_signed_to_a_measured_result(
@@ -177,84 +123,6 @@ def test_a_rehearsal_is_nothing_to_a_bench_with_ports(
             with pytest.raises(SafetyError, match="no proof of the twin"):
                 guard.arm(bench)
         assert lit(bench) == []
-
-
-CAMERA_FAILURES: dict[str, tuple[str, dict[str, Any], str]] = {
-    "wrong size": ("camera small", {}, "gives 512 x 80 pixels, the bench file says"),
-    "automatic": ("camera auto", {}, "automatic: its images say exposure is automatic"),
-    "colour": ("camera colour", {}, "a colour image of 3 channels"),
-    "lossy": ("camera lossy", {}, "a lossy JPEG"),
-    "fewer bits": ("camera eight-bit", {}, "an image of 8 bits, and the bench file"),
-    "busy": ("camera busy", {}, "HTTP 503"),
-    "hangs up": ("camera silent", {}, "Remote end closed connection"),
-    "refused": ("unplug-camera", {}, "failed: Connection refused"),
-    "no such device": (
-        "camera",
-        {"by": "usb-video", "address": "/dev/video-none", "pixel_format": "Y16"},
-        "opening failed: /dev/video-none: No such file or directory",
-    ),
-    "no camera": (
-        "camera",
-        {"by": "usb-video", "address": "/dev/null", "pixel_format": "Y16"},
-        "opening failed: /dev/null is no video device",
-    ),
-}
-
-
-@pytest.fixture(scope="module")
-def standing(tmp_path_factory: pytest.TempPathFactory) -> Iterator[EmulatedBench]:
-    with emulated(tmp_path_factory.mktemp("standing"), twin_job()) as bench:
-        yield bench
-
-
-@pytest.mark.parametrize("name", [n for n in CAMERA_FAILURES if n != "refused"])
-def test_a_camera_that_will_not_do_exits_4_in_one_line(
-    name: str,
-    tmp_path: Path,
-    at: Office,
-    standing: EmulatedBench,
-    capsys: pytest.CaptureFixture[str],
-) -> None:
-    word, camera, words = CAMERA_FAILURES[name]
-    _camera_fails(standing, word, camera, words, tmp_path, at, capsys)
-    standing.tell("camera")
-
-
-def test_a_camera_that_nobody_serves_exits_4_in_one_line(
-    tmp_path: Path, at: Office, capsys: pytest.CaptureFixture[str]
-) -> None:
-    with emulated(tmp_path, twin_job()) as bench:
-        word, camera, words = CAMERA_FAILURES["refused"]
-        _camera_fails(bench, word, camera, words, tmp_path, at, capsys)
-
-
-def _camera_fails(
-    bench: EmulatedBench,
-    word: str,
-    camera: dict[str, Any],
-    words: str,
-    folder: Path,
-    at: Office,
-    capsys: pytest.CaptureFixture[str],
-) -> None:
-    if camera:
-        job = bench.job()
-        assert job.bench.ports is not None
-        port = type(job.bench.ports.camera).model_validate(camera)
-        ports = job.bench.ports.model_copy(update={"camera": port})
-        job = job.model_copy(
-            update={"bench": job.bench.model_copy(update={"ports": ports})}
-        )
-    else:
-        job = bench.job()
-    (folder / "job.yaml").write_text(freeze(job))
-    signed(at, work_of(job))
-    bench.tell(word)
-    arguments = ["sweep", str(folder / "job.yaml"), "--runs", str(folder / "runs")]
-    assert run(arguments) == 4
-    said = [x for x in capsys.readouterr().err.splitlines() if "pitchsweep:" in x]
-    assert len(said) == 1 and words in said[0] and "camera" in said[0]
-    assert lit(bench) == []
 
 
 def policies(**changes: str) -> FaultPolicies:
@@ -419,13 +287,26 @@ def test_a_stranger_at_a_port_is_not_taken_for_the_device(
     assert len(lit(standing)) == before
 
 
-def test_two_names_of_one_device_are_one_port(tmp_path: Path, at: Office) -> None:
-    from pitchsweep.acquire.acquire_errors import JobRefused
-    from pitchsweep.acquire.hardware_bench import refuse_same_device
+def test_a_stop_is_heard_while_the_door_is_waited_for(
+    tmp_path: Path, at: Office, standing: EmulatedBench
+) -> None:
+    job = standing.job()
+    signed(at, work_of(job))
+    (tmp_path / "job.yaml").write_text(freeze(job))
+    before = len(lit(standing))
+    with program(tmp_path, "sweep", "job.yaml") as sweep:
+        said = []
+        assert sweep.stderr is not None
+        for line in sweep.stderr:
+            said.append(line)
+            if "open the door" in line:
+                os.kill(sweep.pid, signal.SIGINT)
+    assert sweep.returncode == 5 and "stopped, dark: SIGINT" in "".join(said)
+    assert len(lit(standing)) == before
 
+
+def test_two_names_of_one_device_are_one_port(tmp_path: Path) -> None:
     (tmp_path / "by-id").symlink_to("/dev/zero")
-    from port_builders import invented_ports
-
     stage = {"port": str(tmp_path / "by-id"), "dialect": "rotary-line"}
     with pytest.raises(JobRefused, match="are the same device, /dev/zero"):
         refuse_same_device("job", invented_ports(stage=stage))
