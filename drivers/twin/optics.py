@@ -42,7 +42,7 @@ from pitchsweep.drivers.twin.truth import MountTruth, Truth, twin_settings
 
 _MIDDLE = ((0.0, 1.0),)
 _EVEN = tuple(
-    (float(x), float(np.exp(-0.5 * x**2))) for x in np.linspace(-3.5, 3.5, 57)
+    (float(x), float(np.exp(-0.5 * x**2))) for x in np.linspace(-3.5, 3.5, 58)
 )
 _ROUND = tuple(zip(*(v.tolist() for v in hermegauss(5)), strict=True))
 """Places across a Gaussian beam in its rms radius, with weights: a comb where an edge

@@ -143,3 +143,36 @@ def test_step_errors_have_the_stated_spread_and_repeat_with_their_key() -> None:
     np.testing.assert_array_equal(errors, again)
     assert np.std(errors) * 3600.0 == pytest.approx(5.0, rel=0.06)
     assert np.all(other - np.array(angles) != errors)
+
+
+def test_a_part_that_ends_under_the_beam_leaves_half_of_it() -> None:
+    """The mean of the half of a Gaussian above its middle: rms * sqrt(2 / pi)."""
+    bench = scene.bench(part_edge_mm=1e-6)
+    truth = scene.ideal(bench, scene.part())
+    whole = trace_orders(truth, scene.bench(), scene.steps(0.0))
+    half = trace_orders(truth, bench, scene.steps(0.0))
+    zero = whole.order == 0
+    light = half.share[0, zero][0] / whole.share[0, zero][0]
+    assert light == pytest.approx(0.5, abs=0.03)
+    rms_mm = bench.beam.diameter_mm / 4.0
+    expected = rms_mm * float(np.sqrt(2.0 / np.pi))
+    assert half.place_mm[0, zero, 0][0] == pytest.approx(expected, rel=0.05)
+
+
+def test_half_a_turn_in_the_parts_plane_moves_the_cut_to_the_other_side() -> None:
+    bench = scene.bench(part_edge_mm=1e-6)
+    truth = scene.ideal(bench, scene.part())
+    turned = replace(scene.steps(0.0), face_deg=180.0)
+    places = [trace_orders(truth, bench, s) for s in (scene.steps(0.0), turned)]
+    x = [p.place_mm[0, p.order == 0, 0][0] for p in places]
+    assert x[0] > 0.1 and x[1] == pytest.approx(-x[0])
+
+
+def test_what_is_left_of_the_backlash_falls_off_with_the_run_up() -> None:
+    bench = scene.bench(leftover_backlash_arcsec=36.0, run_up_deg=1.0)
+    truth = scene.ideal(bench, scene.part())
+    steps = scene.steps([0.0, 4.0, 2.0, 3.0])
+    left = 3600.0 * (true_stage_deg(truth, bench, steps) - steps.stage_deg)
+    approach = bench.stage.approach_deg
+    expected = [0.0, *(36.0 * np.exp(-np.array([4.0, 0.0, 1.0]) - approach))]
+    np.testing.assert_allclose(left, expected, atol=1e-4)
