@@ -35,6 +35,13 @@ HELPERS = {"guard": "guard_process", "twin": "drivers.twin"}
 VICTIMS = ((), ("guard",), ("twin",), ("guard", "twin"))
 """What is killed with the controller."""
 AGREE_U = 0.5
+RESUMES = 5
+STARVED = ("heartbeat-stale", "unit-silent", "tick-late")
+BEGUN = "run folder"
+RESUMING = "going on with"
+STEP_KEPT = "{} of 10 steps"
+FIRST, COMPLETE = STEP_KEPT.format(1), "sweep complete"
+"""Said when there is a run folder, when a resume has read its journal, and later."""
 
 
 @dataclass(frozen=True)
@@ -119,19 +126,37 @@ def kill_after_step(
 ) -> float:
     """Kills as soon as the progress says that ``step`` steps are kept."""
     process = start(job, runs)
-    assert process.stderr is not None
-    for line in process.stderr:
-        if line.startswith(f"step {step}/"):
-            break
+    wait_for_words(process, STEP_KEPT.format(step))
     return kill(process, also)
 
 
 def kill_after_seconds(
-    process: "subprocess.Popen[str]", seconds: float, also: tuple[str, ...] = ()
+    process: "subprocess.Popen[str]",
+    seconds: float,
+    also: tuple[str, ...] = (),
+    words: str = BEGUN,
 ) -> float:
-    """Kills after so many seconds."""
+    """Kills so many seconds after ``words`` were said."""
+    wait_for_words(process, words)
     time.sleep(seconds)
     return kill(process, also)
+
+
+def wait_for_words(process: "subprocess.Popen[str]", words: str) -> None:
+    """Returns when ``words`` were said."""
+    assert process.stderr is not None
+    said = []
+    for line in process.stderr:
+        said.append(line)
+        if words in line:
+            return
+    raise AssertionError(f"'{words}' was not said, but: {''.join(said)}")
+
+
+def time_of_words(process: "subprocess.Popen[str]", words: str) -> float:
+    """The monotonic time at which ``words`` were said."""
+    wait_for_words(process, words)
+    return time.monotonic()
 
 
 def only_run(runs: Path) -> Path | None:
@@ -159,10 +184,17 @@ def acknowledged(run: Path) -> dict[int, tuple[str, ...]]:
 
 
 def resume(run: Path) -> None:
-    """Resumes to the end; raises CalledProcessError if it cannot."""
-    subprocess.run(
-        [*COMMAND, "--resume", str(run)], check=True, capture_output=True, text=True
-    )
+    """Resumes to the end; raises CalledProcessError if it cannot.
+
+    A trip because this machine was too busy to keep the heartbeat is resumed again.
+    """
+    for left in reversed(range(RESUMES)):
+        done = subprocess.run(
+            [*COMMAND, "--resume", str(run)], capture_output=True, text=True
+        )
+        if not (left and any(word in done.stderr for word in STARVED)):
+            done.check_returncode()
+            return
 
 
 def outcome(run: Path) -> Outcome:
@@ -209,7 +241,8 @@ def check(
     assert dark_s <= DARK_WITHIN_S, f"dark only after {dark_s:.3f} s"
     before = acknowledged(run)
     if again_s is not None:
-        kill_after_seconds(_started(["--resume", str(run)]), again_s, also)
+        resuming = _started(["--resume", str(run)])
+        kill_after_seconds(resuming, again_s, also, RESUMING)
         between = acknowledged(run)
         assert before.items() <= between.items(), "a step was lost in the resume"
         before = between
@@ -241,12 +274,12 @@ def main() -> int:
     with tempfile.TemporaryDirectory() as folder:
         job = Path(folder) / "job.yaml"
         write_job(job, repeated_noise="fresh" if fresh else "same")
-        began_s = time.monotonic()
         process = start(job, Path(folder) / "whole")
+        times = [time_of_words(process, w) for w in (BEGUN, FIRST, COMPLETE)]
         process.communicate()
         whole_run = only_run(Path(folder) / "whole")
         assert process.returncode == 0 and whole_run is not None
-        lasts_s = time.monotonic() - began_s
+        lasts_s, steps_s = time.monotonic() - times[0], times[2] - times[1]
         whole = outcome(whole_run)
         print(f"left alone: {len(whole.frames)} frames, {lasts_s:.1f} s")
         worst_s, worst_u, failed = 0.0, 0.0, 0
@@ -258,9 +291,11 @@ def main() -> int:
                 what = f"after step {number + 1}"
                 killed_s = kill_after_step(job, runs, number + 1, also)
             else:
-                after_s = random.uniform(0.0, lasts_s)
-                what = f"after {after_s:.3f} s"
-                killed_s = kill_after_seconds(start(job, runs), after_s, also)
+                # Every second one while steps are taken, the others at any time.
+                words, span_s = ((BEGUN, lasts_s), (FIRST, steps_s))[number // 2 % 2]
+                after_s = random.uniform(0.0, span_s)
+                what = f"{after_s:.3f} s after '{words}'"
+                killed_s = kill_after_seconds(start(job, runs), after_s, also, words)
             what = ", ".join([what, *(f"{name} too" for name in also)])
             if again_s is not None:
                 what += f", again {again_s:.3f} s into the resume"

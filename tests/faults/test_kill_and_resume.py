@@ -6,6 +6,7 @@ from pathlib import Path
 
 import pytest
 from faults.kill_and_resume import (
+    STEP_KEPT,
     Outcome,
     acknowledged,
     check,
@@ -14,6 +15,7 @@ from faults.kill_and_resume import (
     outcome,
     resume,
     start,
+    wait_for_words,
     write_job,
 )
 
@@ -45,11 +47,8 @@ def test_a_killed_or_stopped_sweep_goes_dark_and_resumes_to_the_same(
     check(run, killed_s, whole, also=victims, again_s=1.5)
 
     process = start(job, tmp_path / "stopped")
-    assert process.stderr is not None
-    for line in process.stderr:
-        if line.startswith("step 2/"):
-            os.kill(process.pid, signal.SIGTERM)
-            break
+    wait_for_words(process, STEP_KEPT.format(2))
+    os.kill(process.pid, signal.SIGTERM)
     _, said = process.communicate()
     if process.returncode == 0:
         pytest.skip("the sweep was over before the signal came")
