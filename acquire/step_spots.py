@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from pitchsweep.acquire.bench_devices import FindSpots, Shot
 from pitchsweep.acquire.journal_rows import MarkRow, RejectedRow, SpotRow, StepSpots
+from pitchsweep.analysis.bracket_noise import bracket_noise, camera_seen
 from pitchsweep.analysis.camera_noise import CameraNoise
 from pitchsweep.analysis.mark_finding import MarkSeen, find_marks, without_marks
 from pitchsweep.analysis.pixel_map import (
@@ -30,11 +31,11 @@ def spot_finder(bench: Bench) -> FindSpots:
     """A finder for frames of ``bench``: its noise model, pixel map and marks."""
     cv2.setNumThreads(1)  # the finder has one worker; the sweep has the other core
     camera = bench.camera
-    noise = CameraNoise.from_bench(camera)
     blind = no_screen(bench)
 
     def find(step: int, lights: Sequence[Shot], darks: Sequence[Shot]) -> StepSpots:
         exposures = [Exposure(shot.frame, shot.exposure_ms) for shot in lights]
+        noise = camera_of(bench, lights, darks)
         seen = look(exposures, mean_dark(darks), noise, blind=blind)
         marks = marks_of(seen, bench)
         found = judged_on_bench(seen, marks, bench, step)
@@ -42,6 +43,18 @@ def spot_finder(bench: Bench) -> FindSpots:
         return replace(on_screen(found, camera), marks=rows)
 
     return find
+
+
+def camera_of(
+    bench: Bench, lights: Sequence[Shot], darks: Sequence[Shot]
+) -> CameraNoise:
+    """The camera's noise as the bench file states it.
+
+    Where a step's bracket and dark clearly show another one, they are believed.
+    """
+    stated = CameraNoise.from_bench(bench.camera)
+    frames = [(shot.frame, shot.exposure_ms) for shot in lights]
+    return camera_seen(stated, bracket_noise(frames, mean_dark(darks), stated))
 
 
 def marks_of(seen: Look, bench: Bench) -> tuple[MarkSeen, ...]:

@@ -17,6 +17,7 @@ from pitchsweep.acquire.journal_rows import IntentRow
 from pitchsweep.acquire.resume import standing
 from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
 from pitchsweep.acquire.step_spots import (
+    camera_of,
     judged_on_bench,
     marks_of,
     mean_dark,
@@ -24,7 +25,6 @@ from pitchsweep.acquire.step_spots import (
 )
 from pitchsweep.acquire.stored_spots import dark_shots, light_shots
 from pitchsweep.acquire.sweep_plan import plan_sweep
-from pitchsweep.analysis.camera_noise import CameraNoise
 from pitchsweep.analysis.pixel_map import screen_from_pixels
 from pitchsweep.analysis.records import Spot
 from pitchsweep.analysis.spot_scene import FittedCandidate
@@ -61,7 +61,7 @@ def step_picture(path: Path, step: int, spot: int | None) -> bytes:
     """
     folder = open_run_folder(path)
     row, lights, darks = _stored(folder, step)
-    camera = CameraNoise.from_bench(folder.job.bench.camera)
+    camera = camera_of(folder.job.bench, lights, darks)
     exposures = [Exposure(shot.frame, shot.exposure_ms) for shot in lights]
     blind = no_screen(folder.job.bench)
     seen = look(exposures, mean_dark(darks), camera, blind=blind)

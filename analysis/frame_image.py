@@ -80,13 +80,16 @@ def in_low_bits(
 
     Many cameras store 10 or 12 bits in the high bits: the low 16 - bits bits are then
     zero. Frames where that holds for all but one pixel in ten thousand (some cameras
-    write their data into the first pixels) and that are not all one value are shifted
-    right. Raises InputRefused where values are too large and not so aligned.
+    write their data into the first pixels) are shifted right; not those of one value
+    that may be meant as it is. Raises InputRefused where values are too large and not
+    so aligned.
     """
     spare = 2 ** (16 - bits) - 1
     brightest = int(frame.max(initial=0))
     odd = np.count_nonzero(frame & np.uint16(spare)) if spare else frame.size
-    if odd <= 1e-4 * frame.size and brightest > int(frame.min(initial=brightest)):
+    aligned = odd <= 1e-4 * frame.size
+    varied = brightest > int(frame.min(initial=brightest))
+    if aligned and (varied or brightest >= 2**bits):
         return frame >> np.uint16(16 - bits)
     if brightest < 2**bits:
         return frame

@@ -75,10 +75,12 @@ def photon_transfer(
     ``exposures_ms`` (one a pair) tells the linearity too. Raises ValueError where fewer
     than three levels lie below 70 % of saturation or the variance does not grow.
     """
-    dark_mean, dark_variance = pair_statistics(*dark_pair)
-    dark_variance = max(dark_variance, LEAST_DARK_VARIANCE_DN2)
+    dark_mean, dark_seen = pair_statistics(*dark_pair)
+    dark_variance = max(dark_seen, LEAST_DARK_VARIANCE_DN2)
+    # Lit frames are dithered and hold the whole 1/12 of rounding; no dark shows less.
+    quiet = max(dark_seen, ROUNDING_VARIANCE_DN2)
     points = np.array([pair_statistics(*pair) for pair in pairs]).reshape(-1, 2)
-    mean, variance = points[:, 0] - dark_mean, points[:, 1] - dark_variance
+    mean, variance = points[:, 0] - dark_mean, points[:, 1] - quiet
     saturation = float(mean[np.argmax(variance)]) if mean.size else 0.0
     low = (mean > 0.0) & (mean <= FIT_TO * saturation)
     if np.count_nonzero(low) < _LEAST_LEVELS:

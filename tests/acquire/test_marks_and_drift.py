@@ -83,3 +83,17 @@ def test_shift_and_scale_are_those_put_in() -> None:
     assert middle.undone(17.0, -3.0) == pytest.approx((17.0, -3.0))
     assert first.undone((1 + 1e-4) * 80.0 + 0.05, -0.05) == pytest.approx((80.0, 0.0))
     assert drifts(steps[::-1])[::-1] == [first, middle, last, none]
+
+
+def test_a_gain_that_the_bench_file_states_ten_times_too_low_is_noticed() -> None:
+    """Without that the stated errors of bright spots would be three times too small."""
+    job = demo_job("track-1600-red", effects={"speckle_contrast": 0.0})
+    truth = draw_truth(job.bench, job.part, 3)
+    seen = seen_step(job, truth, 0.0)
+    right = found_in(job, seen, 0)
+    camera = job.bench.camera.model_copy(update={"gain_dn_per_e": 0.04})
+    bench = job.bench.model_copy(update={"camera": camera})
+    wrong = found_in(job.model_copy(update={"bench": bench}), seen, 0)
+    u_right = [spot.ux_mm for spot in right.spots]
+    u_wrong = [spot.ux_mm for spot in wrong.spots]
+    assert u_wrong == pytest.approx(u_right, rel=0.25)
