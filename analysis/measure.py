@@ -52,6 +52,7 @@ from pitchsweep.analysis.second_look import (
     with_draws,
 )
 from pitchsweep.analysis.shared_places import repeats_counted
+from pitchsweep.analysis.standing_beams import standing_spots
 from pitchsweep.analysis.unknown_beams import unknown_beam_warnings
 from pitchsweep.analysis.wavelengths_found import wavelengths_found
 from pitchsweep.analysis.weak_directions import weak_directions
@@ -98,6 +99,8 @@ def measure_pitch(
     if len(table) == 0:
         raise NoResult("no spot lies on the screen outside the beam hole")
     table = _within_the_part(table, bench, (part, *references), refused)
+    everything = table
+    table = _without_standing(table, refused)
     table = repeats_counted(table)
     problem = fit_problem(table, bench, (part, *references), air)
     try:
@@ -126,7 +129,7 @@ def measure_pitch(
     warnings += off_nominal(problem, fit, part)
     warnings += prior_warnings(problem, fit)
     # What concerns people's eyes is said first.
-    warnings = unknown_beam_warnings(table, refused) + warnings
+    warnings = unknown_beam_warnings(everything, refused) + warnings
     warnings += off_screen_warnings(refused, table)
     result = _result(problem, carried, fit, scatter, coverage, warnings, refused)
     result = replace(
@@ -204,6 +207,18 @@ def _within_the_part(
     for index in np.flatnonzero(cut):
         refused.append(_rejected_row(table, int(index), Rejection.OVERRUN))
     return table.take(~cut)
+
+
+def _without_standing(table: OrderTable, refused: list[RejectedSpot]) -> OrderTable:
+    standing = standing_spots(table)
+    if standing.all():
+        raise NoResult(
+            "every spot stands still while the stage says that it turns",
+            remedy="does the part turn with the stage, and is it lit at all?",
+        )
+    for index in np.flatnonzero(standing):
+        refused.append(_rejected_row(table, int(index), Rejection.NO_ORDER))
+    return table.take(~standing)
 
 
 def _rejected_row(table: OrderTable, index: int, reason: Rejection) -> RejectedSpot:

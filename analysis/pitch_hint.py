@@ -34,6 +34,9 @@ from pitchsweep.configs.part_model import Part
 
 MOST_UNEXPLAINED = 0.2
 """Beyond this share of spots without an order the nominal pitch is doubted."""
+MOST_LEFT_ELSEWHERE = 0.5
+"""A pitch not near the nominal one that leaves more than this share is none: with stray
+beams and ghosts some pitch always explains a few."""
 WORTH_A_LOOK = 0.05
 FOUND_RANGE = 0.01
 """Relative range of a pitch found from directions; its own u is far smaller."""
@@ -71,7 +74,7 @@ def fit_with_hint(
     if part.certified is not None:
         return HintedFit(problem, clean_fit(problem, _range_of(part)))
     if not trust_nominal:
-        return _refitted(_found(problem, bench, air, nominal_counts=False))
+        return _elsewhere(problem, bench, air, nominal_counts=False)
     try:
         clean = clean_fit(problem, _range_of(part))
     except NoResult as first:
@@ -112,6 +115,24 @@ def _refitted(found: UnhintedOrders) -> HintedFit:
     return HintedFit(found.problem, clean, found.warnings)
 
 
+def _elsewhere(
+    problem: FitProblem, bench: Bench, air: AirState, *, nominal_counts: bool
+) -> HintedFit:
+    """The fit without the nominal pitch; NoResult where it explains too little."""
+    other = _refitted(_found(problem, bench, air, nominal_counts=nominal_counts))
+    left = _unexplained(other.problem, other.clean)
+    pitch_nm, part = _pitch_nm(other.problem, other.clean), problem.parts[0]
+    far = abs(pitch_nm / part.nominal_pitch_nm - 1.0) > _range_of(part)
+    if far and left > MOST_LEFT_ELSEWHERE:
+        raise NoResult(
+            f"no pitch explains the spots: {pitch_nm:.5g} nm, the best, leaves "
+            f"{100.0 * left:.0f} % of them without an order",
+            remedy="look for stray beams and ghosts among the rejected spots; take "
+            "more angles",
+        )
+    return other
+
+
 def _rescued(
     problem: FitProblem, bench: Bench, air: AirState, first: NoResult
 ) -> HintedFit:
@@ -119,7 +140,7 @@ def _rescued(
     if _told(problem.table):
         raise first
     try:
-        return _refitted(_found(problem, bench, air, nominal_counts=True))
+        return _elsewhere(problem, bench, air, nominal_counts=True)
     except AmbiguousOrders:
         raise
     except NoResult:
@@ -137,7 +158,7 @@ def _better_of(
         if second:
             return HintedFit(problem, clean, second)
     try:
-        other = _refitted(_found(problem, bench, air, nominal_counts=True))
+        other = _elsewhere(problem, bench, air, nominal_counts=True)
     except NoResult as reason:
         if isinstance(reason, AmbiguousOrders) and not _explains(problem, clean):
             raise

@@ -101,6 +101,9 @@ def _on_a_line(seen: FloatArray, enough: float) -> tuple[float, int] | None:
                 np.abs(turn) < 20.0
             )
             steps = len(np.unique(seen[close, 0]))
+            if np.ptp(turn[close]) < 1.0:
+                continue
             if steps >= enough and (best is None or steps > best[1]):
-                best = float(rate), steps
+                # The slope of all of them, not that of the pair which found them.
+                best = float(np.polyfit(turn[close], x[close], 1)[0]), steps
     return best
