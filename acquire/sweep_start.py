@@ -69,17 +69,37 @@ def make_ready(
 
 
 def warn_of_due_dates(job: Job, report: SweepReporter) -> None:
-    """Says which sensors are due for calibration, or soon will be."""
+    """Says which instruments and certificates are due, or soon will be."""
     now = datetime.now(UTC)
-    for sensor in (job.bench.air_sensor, job.bench.power_sensor):
-        if sensor is None or sensor.calibration_due is None:
-            continue
-        days = days_until(sensor.calibration_due, now)
+    for what, due in due_dates(job):
+        days = days_until(due, now)
         if days < 0:
-            text = f"was due for calibration on {sensor.calibration_due}"
-            report.warning(None, f"{sensor.name} {text}: have it calibrated")
+            report.warning(None, f"{what} was due on {due}: have it renewed")
         elif days < DUE_SOON_DAYS:
-            report.say(f"{sensor.name} is due for calibration in {days} days")
+            report.say(f"{what} is due in {days} days")
+
+
+def due_dates(job: Job) -> list[tuple[str, str]]:
+    """What has a date by which it must be renewed, and the date."""
+    bench = job.bench
+    found = [
+        (f"the calibration of {sensor.name}", sensor.calibration_due)
+        for sensor in (bench.air_sensor, bench.power_sensor)
+        if sensor is not None
+    ]
+    found += [
+        (
+            f"the wavelength calibration of laser {name}",
+            bench.lasers[name].wavelength_due,
+        )
+        for name in job.recipe.lasers
+    ]
+    if job.part.certified is not None:
+        certified = job.part.certified
+        found.append(
+            (f"certificate {certified.certificate}", certified.certificate_due)
+        )
+    return [(what, due) for what, due in found if due is not None]
 
 
 def _settle(

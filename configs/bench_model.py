@@ -10,7 +10,7 @@ from pydantic import Field, field_validator, model_validator
 
 from pitchsweep.configs.enclosure_model import Enclosure
 from pitchsweep.configs.ports_model import CameraPort, Ports, SerialPort, StagePort
-from pitchsweep.configs.sensor_model import AirSensor, PowerSensor
+from pitchsweep.configs.sensor_model import AirSensor, Day, PowerSensor
 from pitchsweep.configs.settings_base import (
     AngleDeg,
     Fraction,
@@ -146,7 +146,8 @@ class Laser(Settings):
     """One laser: vacuum wavelength with its standard uncertainty, power at the part.
 
     ``u_jump_pm``: size of a mode hop, should the spots show one; ``may_jump`` also
-    counts hops too small for them to show.
+    counts hops too small for them to show. ``wavelength_due``: when it is to be
+    calibrated again.
     ``full_drive_mw`` is what reaches the part at full drive with every attenuator out
     (``power_mw`` where it is not given); ``divergence_mrad`` the full 1/e2 angle (the
     smallest that diffraction allows where it is not given).
@@ -157,6 +158,7 @@ class Laser(Settings):
     u_drift_pm: Annotated[float, Field(gt=0.0, le=1000.0)] = 0.5
     u_jump_pm: Annotated[float, Field(gt=0.0, le=5000.0)] = 300.0
     may_jump: bool = False
+    wavelength_due: Day | None = None
     power_mw: Annotated[float, Field(gt=0.0, le=500.0)]
     full_drive_mw: Annotated[float, Field(gt=0.0, le=1e5)] | None = None
     divergence_mrad: Annotated[float, Field(gt=0.0, le=500.0)] | None = None

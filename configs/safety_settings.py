@@ -27,6 +27,7 @@ NOT_BOUND: Mapping[str, str] = MappingProxyType(
         "bench.lasers.*.u_drift_pm": "weighs spots, after the light",
         "bench.lasers.*.u_jump_pm": "weighs spots, after the light",
         "bench.lasers.*.may_jump": "weighs spots, after the light",
+        "bench.lasers.*.wavelength_due": "a date that is only told",
         "bench.reading_u_mm": "weighs spots, after the light",
         "bench.camera.bits": "how frames are read, after the light",
         "bench.camera.gain_dn_per_e": "how frames are read, after the light",

@@ -287,3 +287,37 @@ def test_too_small_a_disk_is_foretold(
     with pytest.raises(JobRefused, match="GB are free, the sweep needs up to"):
         sweep_job(job, tmp_path / "runs", QuietProgress(), opener(FakeBench(job)))
     assert not list((tmp_path / "runs").iterdir())
+
+
+def test_what_is_due_is_told_and_what_is_overdue_is_a_warning(tmp_path: Path) -> None:
+    from datetime import timedelta
+
+    from pitchsweep.configs.part_model import Certified
+
+    job = small_job()
+    soon = (datetime.now(UTC) + timedelta(days=9, hours=1)).date().isoformat()
+    lasers = {
+        name: laser.model_copy(update={"wavelength_due": soon})
+        for name, laser in job.bench.lasers.items()
+    }
+    certified = Certified(
+        pitch_nm=830.0,
+        u_pitch_nm=0.01,
+        certificate="invented-7",
+        certificate_due="2020-02-29",
+    )
+    job = job.model_copy(
+        update={
+            "bench": job.bench.model_copy(update={"lasers": lasers}),
+            "part": job.part.model_copy(update={"certified": certified}),
+        }
+    )
+    progress = QuietProgress()
+    record = read_run(sweep_job(job, tmp_path, progress, opener(FakeBench(job))).path)
+    assert any(
+        "wavelength calibration of laser red is due in" in t for t in progress.said
+    )
+    (fault,) = record.faults
+    assert (
+        fault.what == "warning" and "invented-7 was due on 2020-02-29" in fault.detail
+    )
