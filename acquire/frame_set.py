@@ -16,6 +16,7 @@ from pitchsweep.acquire.spot_places import (
     StepPlace,
     places_of,
     rejected_of,
+    saturation_warnings,
 )
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.analysis.analysis_errors import InputRefused
@@ -73,7 +74,10 @@ def input_from_frames(
     )
     rejected = [r for step, spots in found.items() for r in rejected_of(spots, step)]
     table = order_table(places, lasers)
-    return FitInput(str(folder), table, bench, part, coverage, tuple(rejected))
+    warnings = saturation_warnings(found.values(), "add frames of shorter exposure")
+    return FitInput(
+        str(folder), table, bench, part, coverage, tuple(rejected), tuple(warnings)
+    )
 
 
 def read_frame_list(path: Path, lasers: tuple[str, ...]) -> list[ListedFrame]:

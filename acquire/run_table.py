@@ -27,6 +27,7 @@ from pitchsweep.acquire.spot_places import (
     StepPlace,
     places_of,
     rejected_of,
+    saturation_warnings,
 )
 from pitchsweep.acquire.step_spots import spot_finder
 from pitchsweep.acquire.stored_spots import spots_of
@@ -130,12 +131,9 @@ def input_from_run(record: RunRecord) -> FitInput:
             f"the sweep is incomplete: {len(record.steps)} of {record.planned} steps"
         )
     warnings += fault_warnings(record.faults)
-    clipped = sum(bool(s.saturated) for step in record.steps for s in step.found.spots)
-    if clipped:
-        warnings.append(
-            f"{clipped} spots were saturated in every exposure and fitted from their "
-            "wings: add a shorter exposure to the recipe"
-        )
+    warnings += saturation_warnings(
+        [step.found for step in record.steps], "add a shorter exposure to the recipe"
+    )
     places = places_of([(s.found, _place(s, job)) for s in record.steps])
     return FitInput(
         name=str(record.folder.path),

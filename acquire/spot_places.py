@@ -75,6 +75,17 @@ def rejected_of(found: StepSpots, step: int) -> list[RejectedSpot]:
     ]
 
 
+def saturation_warnings(steps: Iterable[StepSpots], remedy: str) -> list[str]:
+    """A warning where spots were saturated in every exposure, with what to do."""
+    clipped = sum(bool(spot.saturated) for found in steps for spot in found.spots)
+    if not clipped:
+        return []
+    return [
+        f"{clipped} spots were saturated in every exposure and fitted from their "
+        f"wings: {remedy}"
+    ]
+
+
 def _speckle(found: StepSpots) -> Speckle | None:
     if found.speckle_contrast is None or found.grain_fwhm_px is None:
         return None

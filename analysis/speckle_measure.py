@@ -8,9 +8,11 @@ a trial grain, the expected products at every lag are convolutions.
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import cv2
 import numpy as np
+from numpy.typing import NDArray
 
 from pitchsweep.analysis.records import FloatArray
 from pitchsweep.analysis.speckle_grain import FWHM_PER_W, NO_SPECKLE, Speckle
@@ -49,12 +51,12 @@ class GrainSample:
 
 
 @dataclass(frozen=True)
-class _Products:
-    """Sums over pairs of pixels at lags (0..L, -L..L): seen, and what to expect."""
+class _Nearest:
+    """Sums over pixels and over pairs of neighbours: products of the light, products
+    seen beyond the noise, square of the error of these; and the shared rounding."""
 
-    seen: FloatArray
-    signal: FloatArray
-    error_square: FloatArray
+    here: tuple[float, float, float]
+    beside: tuple[float, float, float]
     rounding: float
 
 
@@ -66,39 +68,39 @@ def measure_speckle(samples: Sequence[GrainSample]) -> Speckle | None:
     """
     if not samples:
         return None
-    products = [_products(sample) for sample in samples]
-    seen = np.sum([p.seen for p in products], axis=0)
-    signal = np.sum([p.signal for p in products], axis=0)
-    error = np.sqrt(np.sum([p.error_square for p in products], axis=0))
-    light = float(signal[_CENTRE])
-    if light <= 0.0 or float(error[_CENTRE]) > 0.2 * light:
+    lit = [_cut(sample, _box(sample.bright)[1:]) for sample in samples]
+    beside = [_nearest(sample) for sample in lit]
+    light, seen_0, error_0 = (sum(b.here[k] for b in beside) for k in range(3))
+    if light <= 0.0 or error_0**0.5 > 0.2 * light:
         return None
-    floor = sum(p.rounding for p in products)
-    near = float(seen[0, _LAGS + 1] + seen[1, _LAGS])
-    near_u = float(np.hypot(error[0, _LAGS + 1], error[1, _LAGS]))
-    alone = float(seen[_CENTRE]) < max(0.03 * light, 4.0 * float(error[_CENTRE]))
-    least = 4.0 * near_u + 4.0 * floor
+    in_common, near, error_1 = (sum(b.beside[k] for b in beside) for k in range(3))
+    alone = seen_0 < max(0.03 * light, 4.0 * error_0**0.5)
+    least = 4.0 * error_1**0.5 + 4.0 * sum(b.rounding for b in beside)
     if near < least and alone:
-        in_common = float(signal[0, _LAGS + 1] + signal[1, _LAGS])
         return NO_SPECKLE if least < _SEEN_SHARE * in_common else None
+    seen = np.sum([_pairs((s.bright * s.residual)[None]) for s in lit], axis=0)
+    seen[_CENTRE] -= sum(float((s.bright * s.noise).sum()) for s in lit)
+    signal = np.sum([_pairs((s.bright * s.signal)[None]) for s in lit], axis=0)
     return _fitted(samples, seen, signal)
 
 
-def _products(sample: GrainSample) -> _Products:
-    _, *box = _box(sample.bright)
-    sample = _cut(sample, (box[0], box[1]))
-    mask = sample.bright
-    quiet = mask * sample.noise
-    seen = _pairs((mask * sample.residual)[None])
-    seen[_CENTRE] -= float(quiet.sum())
-    error_square = _pairs(quiet[None])
-    error_square[_CENTRE] *= 2.0
-    return _Products(
-        seen=seen,
-        signal=_pairs((mask * sample.signal)[None]),
-        error_square=np.maximum(error_square, 0.0),
-        rounding=float(((mask * sample.rounding) ** 2).sum()),
+def _nearest(sample: GrainSample) -> _Nearest:
+    quiet = sample.bright * sample.noise
+    seen = _here_and_beside(sample.bright * sample.residual)
+    light = _here_and_beside(sample.bright * sample.signal)
+    error = _here_and_beside(quiet)
+    return _Nearest(
+        here=(light[0], seen[0] - float(quiet.sum()), 2.0 * error[0]),
+        beside=(light[1], seen[1], error[1]),
+        rounding=float(((sample.bright * sample.rounding) ** 2).sum()),
     )
+
+
+def _here_and_beside(image: FloatArray) -> tuple[float, float]:
+    """Sums over pixels of its square, and of its products with the next ones."""
+    right = np.vdot(image[:, 1:], image[:, :-1])
+    down = np.vdot(image[1:], image[:-1])
+    return float(np.vdot(image, image)), float(right + down)
 
 
 def _fitted(
@@ -152,8 +154,7 @@ def _cut(sample: GrainSample, box: tuple[slice, slice]) -> GrainSample:
 
 def _lit(sample: GrainSample) -> tuple[slice, slice]:
     """The part of a sample in which there is light for speckle to show in."""
-    _, rows, columns = _box(sample.signal > 2e-3 * sample.signal.max())
-    return rows, columns
+    return _box(sample.signal > 2e-3 * sample.signal.max())[1:]
 
 
 def _loss(sample: GrainSample, w: float) -> FloatArray:
@@ -179,8 +180,8 @@ def _taken(sample: GrainSample, moved: FloatArray) -> FloatArray:
     return both - _pairs((mask * own)[box])
 
 
-def _box(mask: FloatArray) -> tuple[slice, slice, slice]:
-    """The part of a stack of images where the mask is not zero."""
+def _box(mask: NDArray[Any]) -> tuple[slice, slice, slice]:
+    """The part of a stack of images where the mask (rows, columns) is not zero."""
     rows, columns = np.nonzero(mask.sum(axis=1))[0], np.nonzero(mask.sum(axis=0))[0]
     if rows.size == 0:
         return slice(None), slice(0, 1), slice(0, 1)

@@ -1,10 +1,11 @@
 """Where there may be spots: components above the noise in averaged-down frames."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import cv2
 import numpy as np
+from numpy.typing import NDArray
 
 from pitchsweep.analysis.camera_noise import (
     ROUNDING_VARIANCE_DN2,
@@ -17,16 +18,23 @@ from pitchsweep.analysis.frame_background import (
     background_map,
     robust_width,
 )
+from pitchsweep.analysis.records import FloatArray
+from pitchsweep.analysis.smear_stripes import has_stripes, stripe_profile
+from pitchsweep.analysis.spot_shape import Shape
 from pitchsweep.analysis.spot_window import FrameLayer, Plane
 
 _CORE = 0.2
+_REACH, _LEFT_OVER = 6.0, 0.2
 _WIDEN = 1.294
 """1/sqrt(0.597): rms of a Gaussian from the rms of its part above a fifth."""
 
 
 @dataclass(frozen=True)
 class SmallFrame:
-    """One exposure averaged down: background and light over it, DN; noise, DN."""
+    """One exposure averaged down: background and light over it, DN; noise, DN.
+
+    ``stripes`` (columns of the full frame,): smear that was taken off, DN.
+    """
 
     factor: int
     exposure_ms: float
@@ -34,6 +42,7 @@ class SmallFrame:
     excess: Float32Array
     noise: Float32Array
     clipped: Float32Array | None
+    stripes: Float32Array | None = None
 
     def level(self) -> float:
         """The middle of the background, DN."""
@@ -61,20 +70,16 @@ class SmallFrame:
 
 @dataclass(frozen=True)
 class LightMap:
-    """All exposures in one averaged-down map, DN a millisecond.
+    """All exposures in one averaged-down map, DN of an exposure of ``unit_ms``.
 
-    Where an exposure is saturated the next shorter one stands; ``snr`` is light over
-    noise of the exposure that stands.
+    Where an exposure is saturated the next shorter one stands; ``noise`` is that of
+    the exposure that stands.
     """
 
     factor: int
-    rate: Float32Array
+    unit_ms: float
+    light: Float32Array
     noise: Float32Array
-
-    @property
-    def snr(self) -> Float32Array:
-        """Light over noise."""
-        return self.rate / self.noise
 
 
 @dataclass(frozen=True)
@@ -96,8 +101,14 @@ def small_frame(layer: FrameLayer, factor: int) -> SmallFrame:
     """``layer`` averaged down by ``factor`` with background and noise."""
     small = averaged_down(layer.frame, factor)
     background = background_map(small)
-    excess = small - background
+    excess = np.subtract(small, background, out=small)
     noise = _noise_map(background, excess, layer.noise)
+    stripes = None
+    if has_stripes(excess, noise):
+        level = layer.noise.variance_dn2(float(np.median(background[::4, ::4])))
+        stripes = stripe_profile(layer.frame, background, level**0.5)
+        columns = excess.shape[1]
+        excess -= stripes[: columns * factor].reshape(columns, factor).mean(axis=1)
     return SmallFrame(
         factor=factor,
         exposure_ms=layer.exposure_ms,
@@ -105,23 +116,22 @@ def small_frame(layer: FrameLayer, factor: int) -> SmallFrame:
         excess=excess,
         noise=noise,
         clipped=_clipped_share(layer, factor),
+        stripes=stripes,
     )
 
 
 def light_map(smalls: Sequence[SmallFrame]) -> LightMap:
     """The exposures, longest first, joined into one map."""
     first = smalls[0]
-    rate = first.excess / np.float32(first.exposure_ms)
-    noise = first.noise / np.float32(first.exposure_ms)
-    clipped = first.clipped
+    light, noise, clipped = first.excess, first.noise, first.clipped
     for small in smalls[1:]:
         if clipped is None:
             break
-        lost = clipped > 0.0
-        rate = np.where(lost, small.excess / np.float32(small.exposure_ms), rate)
-        noise = np.where(lost, small.noise / np.float32(small.exposure_ms), noise)
+        lost, longer = clipped > 0.0, np.float32(first.exposure_ms / small.exposure_ms)
+        light = np.where(lost, small.excess * longer, light)
+        noise = np.where(lost, small.noise * longer, noise)
         clipped = None if small.clipped is None else small.clipped * lost
-    return LightMap(first.factor, rate, noise)
+    return LightMap(first.factor, first.exposure_ms, light, noise)
 
 
 def candidates(
@@ -132,28 +142,91 @@ def candidates(
     Each patch is measured in the part above a fifth of its own height that hangs
     together with its brightest place; gaps of a small pixel or two are bridged.
     """
-    snr = light.snr
-    mask = (snr > threshold).astype(np.uint8)
+    mask = np.greater(light.light, light.noise * np.float32(threshold))
+    return _patches(light, mask.view(np.uint8), threshold, at_most)
+
+
+def late_candidates(
+    light: LightMap,
+    shapes: Sequence[Shape],
+    *,
+    threshold: float = 5.0,
+    at_most: int = 60,
+) -> list[Candidate]:
+    """What is left around spots when they are taken off, brightest first.
+
+    Within six radii of each of ``shapes``; a fifth of their light counts as noise.
+    """
+    rows, columns = light.light.shape
+    left, noise = light.light.copy(), light.noise.copy()
+    boxes = [_box(shape, light) for shape in shapes]
+    for shape, box in zip(shapes, boxes, strict=True):
+        x = _places(np.arange(columns)[None, box[1]], light.factor)
+        y = _places(np.arange(rows)[box[0], None], light.factor)
+        signal = (shape.signal(x, y) * light.unit_ms).astype(np.float32)
+        left[box] -= signal
+        noise[box] = np.hypot(noise[box], np.float32(_LEFT_OVER) * signal)
+    mask = np.zeros((rows, columns), dtype=np.uint8)
+    for box in boxes:
+        mask[box] = left[box] > noise[box] * np.float32(threshold)
+    rest = LightMap(light.factor, light.unit_ms, left, noise)
+    return _patches(rest, mask, threshold, at_most)
+
+
+def _places(index: NDArray[np.int64], factor: int) -> FloatArray:
+    """Where small pixels lie in the full frame, px."""
+    return np.asarray(index * float(factor) + (factor - 1) / 2.0)
+
+
+def _box(shape: Shape, light: LightMap) -> tuple[slice, slice]:
+    """The small pixels within six radii of a spot."""
+    wide, high = shape.half_sides(_REACH)
+    return (
+        _slice(shape.row_px, high, light.factor),
+        _slice(shape.column_px, wide, light.factor),
+    )
+
+
+def _slice(centre: float, half: float, factor: int) -> slice:
+    low = max(int((centre - half) / factor), 0)
+    return slice(low, max(int((centre + half) / factor) + 2, low))
+
+
+def _patches(
+    light: LightMap, mask: NDArray[np.uint8], threshold: float, at_most: int
+) -> list[Candidate]:
+    """The connected parts of ``mask``, measured."""
     if not mask.any():
         return []
     bridged = cv2.morphologyEx(mask, cv2.MORPH_CLOSE, np.ones((3, 3), np.uint8))
     count, labels, stats, _ = cv2.connectedComponentsWithStatsWithAlgorithm(
         bridged, 8, cv2.CV_32S, cv2.CCL_GRANA
     )
-    smooth = cv2.GaussianBlur(light.rate, (3, 3), 0)
     found = []
     order = np.argsort(-stats[1:count, cv2.CC_STAT_AREA], kind="stable")[: 4 * at_most]
     for label in order + 1:
         left, top, wide, high, area = (int(v) for v in stats[label])
         box = (slice(top, top + high), slice(left, left + wide))
         own = labels[box] == label
-        patch = np.where(own, smooth[box], 0.0)
-        best = float(snr[box][own].max())
+        best = float((light.light[box] / light.noise[box])[own].max())
         if area < 2 and best < 2.0 * threshold:
             continue
-        found.append(_measured(patch, best, (left, top), light.factor))
+        patch = np.where(own, _smoothed(light.light, box), 0.0)
+        item = _measured(patch, best, (left, top), light.factor)
+        found.append(replace(item, height=item.height / light.unit_ms))
     found.sort(key=lambda c: -c.height)
     return found[:at_most]
+
+
+def _smoothed(light: Float32Array, box: tuple[slice, slice]) -> Float32Array:
+    """``light`` in ``box``, blurred by 3 x 3 with what is around it."""
+    above, before = min(box[0].start, 1), min(box[1].start, 1)
+    wider = light[
+        box[0].start - above : box[0].stop + 1, box[1].start - before : box[1].stop + 1
+    ]
+    smooth = cv2.GaussianBlur(wider, (3, 3), 0)[above:, before:]
+    rows, columns = box[0].stop - box[0].start, box[1].stop - box[1].start
+    return np.asarray(smooth[:rows, :columns], dtype=np.float32)
 
 
 def _measured(

@@ -87,7 +87,11 @@ def step_scene(
     smalls = [small_frame(layer, factor) for layer in layers]
     seen = tuple(measured_noise_dn(layer.frame) for layer in layers)
     layers = [
-        replace(layer, noise=layer.noise.with_measured(small.level(), noise_dn))
+        replace(
+            layer,
+            noise=layer.noise.with_measured(small.level(), noise_dn),
+            stripes=small.stripes,
+        )
         for layer, small, noise_dn in zip(layers, smalls, seen, strict=True)
     ]
     rows, columns = ordered[0].frame.shape

@@ -7,7 +7,7 @@ faint ones beside bright ones. Speckle is measured in the residuals unless given
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,8 +17,8 @@ from pitchsweep.analysis.records import SpotSearch
 from pitchsweep.analysis.speckle_grain import NO_SPECKLE, TYPICAL_SPECKLE, Speckle
 from pitchsweep.analysis.spot_candidates import (
     Candidate,
-    LightMap,
     candidates,
+    late_candidates,
     light_map,
 )
 from pitchsweep.analysis.spot_grains import speckle_seen
@@ -40,7 +40,7 @@ from pitchsweep.analysis.spot_verdicts import Look, judged_look, nearer
 __all__ = ["Exposure", "Look", "SearchSettings", "find_spots", "look"]
 
 
-_OUT_OF_WING, _WIDER, _LEFT_OVER = 8.0, 1.3, 0.2
+_OUT_OF_WING, _WIDER = 8.0, 1.3
 _NEXT_TO_U, _WINDOW_OF = 0.2, 5.0
 _ROUGHLY, _LEAST_CORE = 0.2, 0.65
 
@@ -102,8 +102,8 @@ def look(
         fine = speckle or _fine_grain(weights, found)
         found = [_core(scene, item, fine) for item in found]
         weights = speckle or _some(speckle_seen(found)) or fine
-    rest = _without(light, found)
-    late = candidates(rest, threshold=settings.threshold)
+    shapes = [item.fit.shape for item in found]
+    late = late_candidates(light, shapes, threshold=settings.threshold)
     found = _distinct(found + _fit_all(scene, late, weights, found))
     if weights.contrast == 0.0:
         found = renewed(scene, found, weights, all_of_them=False)
@@ -201,35 +201,6 @@ def _near(shape: Shape, item: Candidate) -> bool:
 def _some(seen: Speckle | None) -> Speckle | None:
     """Speckle if any was seen: where it once showed, it does not go away."""
     return None if seen is None or seen.contrast == 0.0 else seen
-
-
-def _without(light: LightMap, found: Sequence[FittedCandidate]) -> LightMap:
-    """The map with fitted spots taken off and their leftovers counted as noise."""
-    rows, columns = light.rate.shape
-    middle = (light.factor - 1) / 2.0
-    x = (np.arange(columns, dtype=np.float64) * light.factor + middle)[None, :]
-    y = (np.arange(rows, dtype=np.float64) * light.factor + middle)[:, None]
-    rate, noise = light.rate.copy(), light.noise.copy()
-    for item in found:
-        box = _box(item.fit.shape, light)
-        signal = item.fit.shape.signal(x[:, box[1]], y[box[0]]).astype(np.float32)
-        rate[box] -= signal
-        noise[box] = np.hypot(noise[box], np.float32(_LEFT_OVER) * signal)
-    return replace(light, rate=rate, noise=noise)
-
-
-def _box(shape: Shape, light: LightMap) -> tuple[slice, slice]:
-    wide, high = shape.half_sides(6.0)
-    f = light.factor
-    return (
-        slice(
-            max(int((shape.row_px - high) / f), 0), int((shape.row_px + high) / f) + 2
-        ),
-        slice(
-            max(int((shape.column_px - wide) / f), 0),
-            int((shape.column_px + wide) / f) + 2,
-        ),
-    )
 
 
 def _distinct(found: Sequence[FittedCandidate]) -> list[FittedCandidate]:

@@ -81,11 +81,15 @@ class Fused:
 
 @dataclass(frozen=True)
 class FrameLayer:
-    """A whole exposure as the cutter needs it."""
+    """A whole exposure as the cutter needs it.
+
+    ``stripes`` (columns,) is smear along the columns in DN, to be taken off.
+    """
 
     frame: NDArray[np.uint16]
     exposure_ms: float
     noise: CameraNoise
+    stripes: NDArray[np.float32] | None = None
 
 
 def cut_window(
@@ -182,6 +186,8 @@ def _layer(
     clipped = raw >= noise.saturation_dn
     excess = raw.astype(np.float64)
     excess -= plane.level + plane.per_column * away[0] + plane.per_row * away[1]
+    if source.stripes is not None:
+        excess -= source.stripes[box[1]]
     quiet = noise.variance_dn2(plane.level)
     good = ~clipped & ~_isolated(excess, quiet**0.5)
     if hot is not None:

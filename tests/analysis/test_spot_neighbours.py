@@ -10,7 +10,7 @@ from spot_frames import Scene, TrueSpot, camera, expose
 from pitchsweep.analysis.records import Spot
 from pitchsweep.analysis.speckle_grain import NO_SPECKLE
 from pitchsweep.analysis.spot_fit import Companion, Shape, fit_spot
-from pitchsweep.analysis.spot_search import find_spots
+from pitchsweep.analysis.spot_search import SearchSettings, find_spots
 from pitchsweep.analysis.spot_window import FrameLayer, Plane, cut_window
 
 MAIN = TrueSpot(300.3, 200.7, 60.0, (5.0, 4.5), 0.4)
@@ -128,3 +128,55 @@ def test_orders_500_times_apart_do_not_depend_on_the_exposures_used() -> None:
                 u2 = one.covariance_px2[k][k] + other.covariance_px2[k][k]
                 out.append((a - b) / u2**0.5)
     assert float(np.sqrt(np.mean(np.square(out)))) == pytest.approx(1.0, abs=0.27)
+
+
+@pytest.mark.parametrize(
+    "settings",
+    [
+        SearchSettings(threshold=3.5),
+        SearchSettings(threshold=12.0),
+        SearchSettings(factor=2),
+        SearchSettings(factor=5),
+    ],
+)
+@pytest.mark.parametrize("contrast", [0.0, 1.0])
+def test_a_position_does_not_walk_with_threshold_or_first_window(
+    settings: SearchSettings, contrast: float
+) -> None:
+    scene = Scene((MAIN,), speckle_contrast=contrast)
+    exposures, dark = expose(scene, camera(12), (6.0,), 4)
+    usual = near(find_spots(exposures, dark, camera(12), 0).spots, MAIN)
+    other = near(
+        find_spots(exposures, dark, camera(12), 0, settings=settings).spots, MAIN
+    )
+    assert usual is not None and other is not None
+    u = usual.covariance_px2[0][0] ** 0.5, usual.covariance_px2[1][1] ** 0.5
+    assert other.column_px == pytest.approx(usual.column_px, abs=0.3 * u[0])
+    assert other.row_px == pytest.approx(usual.row_px, abs=0.3 * u[1])
+
+
+def test_a_position_does_not_walk_with_brightness() -> None:
+    """The same lopsided beam, 30 times brighter: 24 pulls of the differences."""
+    out: list[float] = []
+    for seed in range(12):
+        places = []
+        for height in (3.0, 90.0):
+            spot = replace(MAIN, height=height, lopsided=0.01)
+            exposures, dark = expose(Scene((spot,)), camera(12), (20.0,), seed)
+            found = near(find_spots(exposures, dark, camera(12), 0).spots, MAIN)
+            assert found is not None
+            places.append(found)
+        one, other = places
+        for k, off in enumerate(
+            (one.column_px - other.column_px, one.row_px - other.row_px)
+        ):
+            u2 = one.covariance_px2[k][k] + other.covariance_px2[k][k]
+            out.append(off / u2**0.5)
+    assert float(np.sqrt(np.mean(np.square(out)))) < 1.45
+
+
+def test_wings_lopsided_by_a_percent_stay_within_the_stated_error() -> None:
+    """Under speckle, as on a screen; 24 pulls, within 1 + 0.43 (3 sigma)."""
+    spot = replace(MAIN, lopsided=0.01)
+    scene = Scene((spot,), speckle_contrast=1.0)
+    assert rms_pull(scene, (spot,), 12) < 1.43
