@@ -36,11 +36,21 @@ def speckle_seen(found: Sequence[FittedCandidate]) -> Speckle | None:
 
 
 def _shows_grain(item: FittedCandidate) -> bool:
-    """Whether a fit is a clear spot, not a streak or a leftover."""
+    """Whether a fit is a clear spot, not a streak, a leftover or cut by the frame.
+
+    What the frame cuts is no Gaussian, and its misfit passes for grain.
+    """
     if not item.fit.converged or light_over_noise(item.fit) < 20.0:
         return False
-    major, minor, _ = item.fit.shape.widths()
-    return major < 4.0 * minor
+    shape, x, y = item.fit.shape, item.window.x, item.window.y
+    major, minor, _ = shape.widths()
+    room = min(
+        shape.column_px - x[0, 0],
+        x[0, -1] - shape.column_px,
+        shape.row_px - y[0, 0],
+        y[-1, 0] - shape.row_px,
+    )
+    return bool(major < 4.0 * minor and room > 2.0 * major)
 
 
 def _sample(item: FittedCandidate) -> GrainSample:
