@@ -142,9 +142,16 @@ def test_an_overlong_line_in_one_piece_is_nonsense() -> None:
     assert [type(e) for e in events] == [Nonsense, Answer]
 
 
-def test_shipped_dialects_are_these_two() -> None:
-    assert shipped_dialect_names() == ("emission-line", "rotary-line")
-    with pytest.raises(AskedIllegal, match="emission-line, rotary-line"):
+def test_shipped_dialects_are_these_four() -> None:
+    assert shipped_dialect_names() == (
+        "air-line",
+        "emission-line",
+        "power-line",
+        "rotary-line",
+    )
+    with pytest.raises(
+        AskedIllegal, match="air-line, emission-line, power-line, rotary-line"
+    ):
         shipped_dialect("klingon")
 
 
