@@ -90,12 +90,12 @@ def spots_words(count: int) -> str:
 
 def unused_words(result: PitchResult) -> str:
     """How many spots were not used, and for which reasons."""
-    said = f"{spots_words(len(result.rejected))} not used"
+    said = spots_words(len(result.rejected))
     reasons = [
-        f"{row['count']} {row['reason'].replace('-', ' ')}"
+        f"{row['reason'].replace('-', ' ')} ({row['count']})"
         for row in result.rejected_counts()
     ]
-    return f"{said} ({', '.join(reasons)})" if reasons else said
+    return f"{said}: {', '.join(reasons)}" if reasons else said
 
 
 def wavelength_words(found: WavelengthFound) -> str:
@@ -124,7 +124,8 @@ def summary_lines(result: PitchResult) -> list[str]:
         f" U/pitch = {relative(result.U_pitch_nm, result.pitch_nm)}",
         f"Decision   {decision_words(result)}",
         *(f"Wavelength {wavelength_words(w)}" for w in result.wavelengths),
-        f"Used       {used_words(result)}, orders {used}; {unused_words(result)}",
+        f"Used       {used_words(result)}, orders {used}",
+        f"Not used   {unused_words(result)}",
         f"Agreement  reduced chi-squared {agreement_words(result)}",
     ]
     if result.monte_carlo is not None:

@@ -127,8 +127,8 @@ def test_undecided_says_whether_any_pitch_could_have_conformed(
 def test_spots_not_used_are_counted_with_their_reasons() -> None:
     spot = RejectedSpot(3, 1.0, 2.0, "mm", Rejection.OFF_TRACK)
     result = replace(build_result(), rejected=(spot,))
-    assert unused_words(result) == "1 spot not used (1 off its track)"
-    assert unused_words(replace(result, rejected=())) == "0 spots not used"
+    assert unused_words(result) == "1 spot: off its track (1)"
+    assert unused_words(replace(result, rejected=())) == "0 spots"
 
 
 def test_orders_carry_their_sign() -> None:
