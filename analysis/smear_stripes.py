@@ -8,22 +8,43 @@ import cv2
 import numpy as np
 from numpy.typing import NDArray
 
+from pitchsweep.analysis.camera_noise import (
+    ROUNDING_VARIANCE_DN2,
+    correlated_rounding_dn,
+)
 from pitchsweep.analysis.frame_background import Float32Array
 
 _ROWS_LOOKED_AT, _CLEAR, _ROWS_A_MEAN = 32, 6.0, 8
+_UNDITHERED_DN = 0.02
 _MEDIAN_NOISE = 1.2533
 """The scatter of a median of normal quantities over that of their mean."""
 
 
-def has_stripes(excess: Float32Array, noise: Float32Array) -> bool:
+def has_stripes(excess: Float32Array, noise: Float32Array, noise_dn: float) -> bool:
     """Whether columns of an averaged-down frame stand out of the noise as a whole.
 
     ``excess`` and ``noise`` (rows, columns) as in a SmallFrame; some rows tell.
+    ``noise_dn`` is the noise of a pixel of the full frame, rounding included.
     """
     step = max(excess.shape[0] // _ROWS_LOOKED_AT, 1)
-    ratio = excess[::step] / noise[::step]
-    limit = _CLEAR * _MEDIAN_NOISE / ratio.shape[0] ** 0.5
-    return bool(ratio.shape[0] >= 8 and np.median(ratio, axis=0).max() > limit)
+    some, scatter = excess[::step], noise[::step]
+    if some.shape[0] < 8:
+        return False
+    limit = _CLEAR * _MEDIAN_NOISE / some.shape[0] ** 0.5 * np.median(scatter, axis=0)
+    limit += _rounding_step_dn(noise_dn)
+    return bool((np.median(some, axis=0) > limit).any())
+
+
+def _rounding_step_dn(noise_dn: float) -> float:
+    """How far rounding alone may part two columns whatever the rows averaged, DN.
+
+    The median of 3 x 3 leaves about 1/2.5 of the noise to dither the rounding. Where
+    that does not do it, medians and the background made of them are whole numbers,
+    a step apart; else pixels of one level share the bias that is left.
+    """
+    dither = max(noise_dn**2 - ROUNDING_VARIANCE_DN2, 0.0) ** 0.5 / 2.5
+    bias = float(correlated_rounding_dn(dither))
+    return 1.0 if bias > _UNDITHERED_DN else 2.0 * 2.0**0.5 * bias
 
 
 def stripe_profile(
@@ -32,7 +53,8 @@ def stripe_profile(
     """Light of the stripes in each column of ``frame`` (rows, columns), DN, (columns,).
 
     ``background`` is that of the frame averaged down. Zero where a column shows no
-    more than the noise of its median; ``noise_dn`` is the noise of a pixel.
+    more than the noise of its median and the rounding that its pixels share;
+    ``noise_dn`` is the noise of a pixel, rounding included.
     """
     columns, means = frame.shape[1], max(frame.shape[0] // _ROWS_A_MEAN, 1)
     size = (columns, means)

@@ -104,9 +104,10 @@ def small_frame(layer: FrameLayer, factor: int) -> SmallFrame:
     excess = np.subtract(small, background, out=small)
     noise = _noise_map(background, excess, layer.noise)
     stripes = None
-    if has_stripes(excess, noise):
-        level = layer.noise.variance_dn2(float(np.median(background[::4, ::4])))
-        stripes = stripe_profile(layer.frame, background, level**0.5)
+    level = float(np.median(background[::4, ::4]))
+    noise_dn = layer.noise.variance_dn2(level) ** 0.5
+    if has_stripes(excess, noise, noise_dn):
+        stripes = stripe_profile(layer.frame, background, noise_dn)
         columns = excess.shape[1]
         excess -= stripes[: columns * factor].reshape(columns, factor).mean(axis=1)
     return SmallFrame(

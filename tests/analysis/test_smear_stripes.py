@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from spot_frames import Scene, TrueSpot, camera, expose
 
 from pitchsweep.analysis.smear_stripes import stripe_profile
-from pitchsweep.analysis.spot_search import Exposure, find_spots
+from pitchsweep.analysis.spot_search import Exposure, find_spots, look
 
 BRIGHT = TrueSpot(300.3, 80.6, 150.0, (5.0, 5.0))
 BESIDE = TrueSpot(307.7, 300.2, 12.0, (4.5, 4.0))
@@ -75,6 +75,18 @@ def test_a_frame_without_stripes_has_no_profile() -> None:
     width = noise.variance_dn2(level) ** 0.5
     profile = stripe_profile(exposure.frame, background, width)
     assert np.count_nonzero(profile) == 0
+
+
+@pytest.mark.parametrize("bits", [8, 12])
+def test_rounding_that_pixels_share_is_no_stripe(bits: int) -> None:
+    """Eight bits round a calm background in steps as wide as its noise."""
+    scale = 2.0 ** (bits - 12)
+    spot = replace(BESIDE, height=BESIDE.height * scale)
+    scene = Scene((spot,), columns=1200, rows=900, background_dn_per_ms=scale)
+    for seed in range(4):
+        (exposure,), _ = expose(scene, camera(bits), (TIME_MS,), seed)
+        seen = look([exposure], None, camera(bits))
+        assert seen.scene.smalls[0].stripes is None
 
 
 def test_exposures_under_changing_room_light_agree() -> None:
