@@ -42,7 +42,9 @@ def one(task: tuple[str, tuple[float, ...], int]) -> tuple[float, ...] | None:
     job = cell_job(name)
     sweep = twin_sweep(job, seed, mounts_deg=mounts)
     try:
-        result = measure_pitch(sweep.table, bench=job.bench, part=job.part)
+        result = measure_pitch(
+            sweep.table, bench=job.bench, part=job.part, advise=False
+        )
     except AnalysisError as error:
         print(f"  {name} {len(mounts)} mounts seed {seed}: {error}", file=sys.stderr)
         return None
@@ -71,7 +73,7 @@ def main() -> None:
             for mounts in MOUNTS:
                 start = time.monotonic()
                 tasks = [(name, mounts, seed) for seed in range(options.seeds)]
-                rows = pool.map(one, tasks, chunksize=8)
+                rows = pool.map(one, tasks, chunksize=4)
                 kept = np.array([row for row in rows if row is not None])
                 rms = np.sqrt(np.mean(kept[:, 0] ** 2))
                 print(
