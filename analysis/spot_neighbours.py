@@ -23,6 +23,8 @@ be a lobe of its speckle."""
 _LEAST_RADII, _LEAST_WIDTH, _MOST_WIDTH = 2.0, 0.6, 2.0
 _LEAST_SHARE, _LEAST_NOISE = 1e-3, 0.3
 _BRIGHTER_U, _FAINTER_U, _MUCH_BRIGHTER = 0.1, 0.3, 3.0
+PARTNER_U = 3.0
+"""Of two spots seen as one, next to nothing is known but from their joint fit."""
 _AT_MOST = 4
 
 
@@ -40,16 +42,13 @@ def companions_of(
     for other in found:
         if other is item or _light_within(other.fit.shape, item) <= least:
             continue
-        if _believed(other) and _apart(other, item):
-            lit.append((_light_within(other.fit.shape, item), other.fit.shape))
-    lit.sort(key=lambda pair: -pair[0])
-    return tuple(
-        Companion(
-            shape,
-            _BRIGHTER_U if shape.height > _MUCH_BRIGHTER * height else _FAINTER_U,
-        )
-        for _, shape in lit[:_AT_MOST]
-    )
+        partner = other.parted and item.parted
+        if _believed(other) and (partner or _apart(other, item)):
+            brighter = other.fit.shape.height > _MUCH_BRIGHTER * height
+            u = PARTNER_U if partner else _BRIGHTER_U if brighter else _FAINTER_U
+            lit.append((_light_within(other.fit.shape, item), other.fit.shape, u))
+    lit.sort(key=lambda one: -one[0])
+    return tuple(Companion(shape, u) for _, shape, u in lit[:_AT_MOST])
 
 
 def renewed(

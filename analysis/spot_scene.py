@@ -49,12 +49,16 @@ class StepScene:
 
 @dataclass(frozen=True)
 class FittedCandidate:
-    """A candidate, the window around it, what was fitted there and what with it."""
+    """A candidate, the window around it, what was fitted there and what with it.
+
+    ``parted``: it is one of two spots that were seen as one.
+    """
 
     candidate: Candidate
     window: Window
     fit: SpotFit
     beside: tuple[Companion, ...] = ()
+    parted: bool = False
 
 
 def hot_pixels(dark: NDArray[np.float32] | NDArray[np.uint16]) -> BoolArray:
@@ -232,6 +236,20 @@ def _off(wanted: tuple[float, float], half: tuple[float, float]) -> bool:
     """Whether a window is too small for its spot, or much too large."""
     ratios = [w / h for w, h in zip(wanted, half, strict=True)]
     return max(ratios) > 1.08 or min(ratios) < 0.7
+
+
+def window_around(scene: StepScene, shapes: Sequence[Shape]) -> Window:
+    """The window that holds all of ``shapes``."""
+    sides = [(s, *s.half_sides(_WINDOW_SIGMAS)) for s in shapes]
+    left = min(s.column_px - wide for s, wide, _ in sides)
+    right = max(s.column_px + wide for s, wide, _ in sides)
+    top = min(s.row_px - high for s, _, high in sides)
+    bottom = max(s.row_px + high for s, _, high in sides)
+    narrow = min(shapes, key=lambda s: s.widths()[1])
+    middle = replace(
+        narrow, column_px=0.5 * (left + right), row_px=0.5 * (top + bottom)
+    )
+    return _window(scene, middle, (0.5 * (right - left), 0.5 * (bottom - top)))
 
 
 def _window(

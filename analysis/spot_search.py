@@ -25,6 +25,7 @@ from pitchsweep.analysis.spot_grains import speckle_seen
 from pitchsweep.analysis.spot_judgement import SpotLimits
 from pitchsweep.analysis.spot_model import Companion
 from pitchsweep.analysis.spot_neighbours import among_lobes, one_lobe, renewed
+from pitchsweep.analysis.spot_pairs import parted
 from pitchsweep.analysis.spot_scene import (
     Exposure,
     FittedCandidate,
@@ -95,13 +96,16 @@ def look(
     light = light_map(scene.smalls)
     bright = candidates(light, threshold=settings.threshold)
     found = _fit_all(scene, bright, speckle or NO_SPECKLE, [])
-    first = speckle or _first_grain(scene, found)
+    seen = parted(scene, found, speckle or NO_SPECKLE, settings.limits)
+    found = seen.found
+    first = speckle or _first_grain(scene, seen.to_tell_grain)
     weights = first or TYPICAL_SPECKLE
     if weights.contrast > 0.0:
         # Ghosts and halos must not pull before they are known: the core alone counts.
         fine = speckle or _fine_grain(weights, found)
         found = [_core(scene, item, fine) for item in found]
         weights = speckle or _some(speckle_seen(found)) or fine
+        found = parted(scene, found, weights, settings.limits).found
     shapes = [item.fit.shape for item in found]
     late = late_candidates(light, shapes, threshold=settings.threshold)
     found = _distinct(found + _fit_all(scene, late, weights, found))
