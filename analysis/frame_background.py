@@ -4,6 +4,8 @@ Medians of square blocks; blocks that stand out of a smooth surface (they lie un
 spot) are replaced by it; the rest is kept and interpolated.
 """
 
+from functools import lru_cache
+
 import cv2
 import numpy as np
 from numpy.typing import NDArray
@@ -12,19 +14,23 @@ Float32Array = NDArray[np.float32]
 _BAND_ROWS = 256
 
 
-def averaged_down(frame: NDArray[np.uint16], factor: int) -> Float32Array:
+def averaged_down(
+    frame: NDArray[np.uint16], factor: int, brightest: int | None = None
+) -> Float32Array:
     """``frame`` (rows, columns), hot pixels out, averaged in factor x factor blocks.
 
     The median of 3 x 3 pixels takes single hot and dead pixels out. Values are moved
     to the top of their words first: whole numbers would round the noise away. Rows and
     columns that do not fill a block are left out. Shape (rows // factor, columns //
-    factor).
+    factor). ``brightest`` is the frame's highest value where it is known.
     """
     rows, columns = frame.shape[0] // factor, frame.shape[1] // factor
     kept = frame[: rows * factor, : columns * factor]
     if factor == 1:
         return np.asarray(cv2.medianBlur(kept, 3), dtype=np.float32)
-    spare = 16 - int(kept.max(initial=1)).bit_length()
+    if brightest is None:
+        brightest = int(kept.max(initial=1))
+    spare = 16 - max(brightest, 1).bit_length()
     light = np.empty((rows, columns), dtype=np.float32)
     # Band by band: what is needed in between stays in the processor's cache.
     band = max(_BAND_ROWS // factor, 1)
@@ -135,6 +141,7 @@ def _cleaned(grid: Float32Array) -> Float32Array:
     return np.asarray(clean, dtype=np.float32)
 
 
+@lru_cache(maxsize=8)
 def _surface_terms(rows: int, columns: int) -> NDArray[np.float64]:
     """Products of powers up to the second (third along long sides), (blocks, terms)."""
     y = np.linspace(-1.0, 1.0, rows)[:, None] + np.zeros((1, columns))

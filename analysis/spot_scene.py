@@ -9,8 +9,9 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.camera_noise import CameraNoise, measured_noise_dn
 from pitchsweep.analysis.frame_background import robust_width
+from pitchsweep.analysis.small_frames import SmallFrame, small_frame
 from pitchsweep.analysis.speckle_grain import Speckle
-from pitchsweep.analysis.spot_candidates import Candidate, SmallFrame, small_frame
+from pitchsweep.analysis.spot_candidates import Candidate
 from pitchsweep.analysis.spot_fit import TRUSTED_TO, SpotFit, fit_spot
 from pitchsweep.analysis.spot_judgement import FrameSide, light_over_noise
 from pitchsweep.analysis.spot_model import Companion

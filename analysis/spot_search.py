@@ -14,12 +14,12 @@ from numpy.typing import NDArray
 
 from pitchsweep.analysis.camera_noise import CameraNoise
 from pitchsweep.analysis.records import SpotSearch
+from pitchsweep.analysis.small_frames import light_map
 from pitchsweep.analysis.speckle_grain import NO_SPECKLE, TYPICAL_SPECKLE, Speckle
 from pitchsweep.analysis.spot_candidates import (
     Candidate,
     candidates,
     late_candidates,
-    light_map,
 )
 from pitchsweep.analysis.spot_grains import speckle_seen
 from pitchsweep.analysis.spot_judgement import SpotLimits

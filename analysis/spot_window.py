@@ -218,12 +218,20 @@ def _isolated(excess: FloatArray, noise_dn: float) -> BoolArray:
 def _binned(
     excess: FloatArray, good: BoolArray, clipped: BoolArray, binning: int
 ) -> tuple[FloatArray, BoolArray, BoolArray]:
-    rows, columns = excess.shape[0] // binning, excess.shape[1] // binning
-    shape = (rows, binning, columns, binning)
-    count = good.reshape(shape).sum(axis=(1, 3))
-    total = np.where(good, excess, 0.0).reshape(shape).sum(axis=(1, 3))
-    any_clipped = clipped.reshape(shape).any(axis=(1, 3))
+    size = (excess.shape[1] // binning, excess.shape[0] // binning)
+
+    def mean(values: NDArray[np.generic]) -> FloatArray:
+        share = cv2.resize(
+            values.astype(np.float64), size, interpolation=cv2.INTER_AREA
+        )
+        return np.asarray(share, dtype=np.float64)
+
+    if good.all() and not clipped.any():
+        everywhere = np.ones(size[::-1], dtype=np.bool_)
+        return mean(excess), everywhere, ~everywhere
+    kept = mean(good)
+    any_clipped = mean(clipped) > 0.0
     # A bin half lost to clipping would be pulled to its darker half.
-    whole = (count > 0.7 * binning**2) & ~any_clipped
-    mean = total / np.maximum(count, 1)
-    return mean, np.asarray(whole, np.bool_), np.asarray(any_clipped, np.bool_)
+    whole = (kept > 0.7) & ~any_clipped
+    light = mean(np.where(good, excess, 0.0)) / np.maximum(kept, 1.0 / binning**2)
+    return light, np.asarray(whole, np.bool_), np.asarray(any_clipped, np.bool_)
