@@ -172,12 +172,10 @@ def _taken(sample: GrainSample, moved: FloatArray) -> FloatArray:
     modes, mask = sample.modes, sample.bright
     flat = modes.reshape(modes.shape[0], -1)
     inner = flat @ moved.reshape(modes.shape[0], -1).T
-    values, vectors = np.linalg.eigh(0.5 * (inner + inner.T))
-    turned = np.sqrt(np.maximum(values, 0.0))[:, None] * vectors.T
-    own = (turned @ flat).reshape(modes.shape)
+    own = ((0.25 * (inner + inner.T)) @ flat).reshape(modes.shape)
     box = _box(mask)
-    both = _pairs((mask * moved)[box], (mask * modes)[box])
-    return both - _pairs((mask * own)[box])
+    # Cov Q Q^T + Q Q^T Cov - Q (Q^T Cov Q) Q^T, both terms as products with Q.
+    return _pairs((mask * (moved - own))[box], (mask * modes)[box])
 
 
 def _box(mask: NDArray[Any]) -> tuple[slice, slice, slice]:
