@@ -56,20 +56,40 @@ def late_candidates(
 
     Within six radii of each of ``shapes``; a fifth of their light counts as noise.
     """
-    rows, columns = light.light.shape
-    left, noise = light.light.copy(), light.noise.copy()
     boxes = [_box(shape, light) for shape in shapes]
-    for shape, box in zip(shapes, boxes, strict=True):
-        x = _places(np.arange(columns)[None, box[1]], light.factor)
-        y = _places(np.arange(rows)[box[0], None], light.factor)
-        signal = (shape.signal(x, y) * light.unit_ms).astype(np.float32)
+    own = [_own_light(*pair, light) for pair in zip(shapes, boxes, strict=True)]
+    # Other spots in a box can only lower what is left there.
+    if not any(
+        _left_over(light, box, signal, threshold).any()
+        for box, signal in zip(boxes, own, strict=True)
+    ):
+        return []
+    left, noise = light.light.copy(), light.noise.copy()
+    for signal, box in zip(own, boxes, strict=True):
         left[box] -= signal
         noise[box] = np.hypot(noise[box], np.float32(_LEFT_OVER) * signal)
-    mask = np.zeros((rows, columns), dtype=np.uint8)
+    mask = np.zeros(left.shape, dtype=np.uint8)
     for box in boxes:
         mask[box] = left[box] > noise[box] * np.float32(threshold)
     rest = LightMap(light.factor, light.unit_ms, left, noise)
     return _patches(rest, mask, threshold, at_most)
+
+
+def _left_over(
+    light: LightMap, box: tuple[slice, slice], signal: Float32Array, threshold: float
+) -> NDArray[np.bool_]:
+    """Where light stands out of a box without the spot whose ``signal`` it holds."""
+    noise = np.hypot(light.noise[box], np.float32(_LEFT_OVER) * signal)
+    left = light.light[box] - signal
+    return np.asarray(left > noise * np.float32(threshold), dtype=np.bool_)
+
+
+def _own_light(shape: Shape, box: tuple[slice, slice], light: LightMap) -> Float32Array:
+    """The light of a spot in its box, DN."""
+    rows, columns = light.light.shape
+    x = _places(np.arange(columns)[None, box[1]], light.factor)
+    y = _places(np.arange(rows)[box[0], None], light.factor)
+    return (shape.signal(x, y) * light.unit_ms).astype(np.float32)
 
 
 def _places(index: NDArray[np.int64], factor: int) -> FloatArray:
