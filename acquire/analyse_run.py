@@ -82,6 +82,7 @@ def analyse(
         result,
         warnings=(*given.warnings, *result.warnings),
         asked=(*(() if trust_nominal else (UNKNOWN_PITCH,)), *drawn),
+        origin=origin_of(sources),
         software=software_name(),
         inputs_sha256=inputs_sha256(given),
     )
@@ -114,6 +115,18 @@ def write_derived(analysed: Analysed, folder: Path) -> None:
         (PICTURE, summary_png(result, context)),
     ):
         write_durably(folder / name, content)
+
+
+def origin_of(sources: Sequence[FitSource]) -> str:
+    """Where the readings come from, as far as that is known here.
+
+    ``simulated`` (one run of a simulated bench is enough), ``measured`` (only runs of
+    benches with ports), or ``handed-in``: a table or frames say nothing of their bench.
+    """
+    jobs = [source.run.folder.job for source in sources if source.run is not None]
+    if any(job.bench.twin is not None for job in jobs):
+        return "simulated"
+    return "measured" if len(jobs) == len(sources) else "handed-in"
 
 
 def with_orders(table: OrderTable, result: PitchResult) -> OrderTable:

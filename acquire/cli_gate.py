@@ -13,6 +13,11 @@ SILENT_WORDS = (
     "no answer; its unit goes dark by itself within 250 ms of the last keep-alive"
 )
 
+NOBODY_WORDS = (
+    "no guard of this user was found here; that says nothing of light that others hold:"
+    "\nuse the interlock, the emergency stop or the mains where light must go at once"
+)
+
 
 def ack(
     run: Annotated[Path, typer.Argument(help="The run folder that was tripped.")],
@@ -45,7 +50,7 @@ def dark() -> None:
     for answer in answers:
         print(f"{answer.guard.run} on {answer.guard.unit}: {_dark_words(answer)}")
     if not answers:
-        print("no guard of this user is running: nothing here holds light")
+        print(NOBODY_WORDS)
     sys.stdout.flush()
     if not all(answer.answered and not answer.light_on for answer in answers):
         _say("cut the power or open the interlock where the light must go at once")

@@ -141,7 +141,9 @@ def attend(
     eyewear: Annotated[
         str | None, typer.Option(help="What is worn and its density, or why none.")
     ] = None,
-    ceiling_mw: Annotated[float, typer.Option(help="Highest power at the part.")] = 1.0,
+    ceiling_mw: Annotated[
+        float, typer.Option(min=0.001, max=500.0, help="Highest power at the part.")
+    ] = 1.0,
     ceiling_by: Annotated[
         str | None, typer.Option(help="The safety officer who writes more than 1 mW.")
     ] = None,

@@ -6,6 +6,7 @@ from pathlib import Path
 
 from pitchsweep.acquire.acquire_errors import RunRefused
 from pitchsweep.acquire.durable_files import sync_folder, write_durably
+from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.frozen_job import freeze, thaw
 from pitchsweep.configs.job_model import Job
 
@@ -62,6 +63,16 @@ def _new_folder(runs: Path, name: str) -> Path:
             continue
         return path
     raise RunRefused(runs / name, "too many runs of that name in this second")
+
+
+def refuse_another_job(folder: RunFolder, known: str | None) -> None:
+    """RunRefused unless ``known`` (as the journal has it) is job.yaml's fingerprint."""
+    if known not in (None, fingerprint(folder.job)):
+        raise RunRefused(
+            folder.path,
+            f"{JOB} is not the job with which this run began",
+            f"put the original {JOB} back, or sweep anew",
+        )
 
 
 def is_run_folder(path: Path) -> bool:

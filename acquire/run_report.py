@@ -33,7 +33,7 @@ def context_of_table(bench: Bench, part: Part) -> ReportContext:
     return ReportContext(
         part=part_facts(part),
         screen=screen_facts(bench),
-        simulated=bench.twin is not None,
+        simulated=False,
         bench_facts=bench_facts(bench),
     )
 

@@ -21,7 +21,11 @@ from pitchsweep.acquire.journal_rows import (
 )
 from pitchsweep.acquire.measured_state import state_of
 from pitchsweep.acquire.resume import standing
-from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
+from pitchsweep.acquire.run_folder import (
+    RunFolder,
+    open_run_folder,
+    refuse_another_job,
+)
 from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.spot_places import (
     StepPlace,
@@ -76,6 +80,7 @@ def read_run(path: Path) -> RunRecord:
     folder = open_run_folder(path)
     plan = plan_sweep(folder.job, fingerprint(folder.job))
     with open_journal(folder.journal, read_only=True) as journal:
+        refuse_another_job(folder, journal.meta().get("job_fingerprint"))
         return record_of(folder, plan, journal)
 
 

@@ -21,6 +21,7 @@ from pitchsweep.acquire.run_folder import (
     RunFolder,
     create_run_folder,
     open_run_folder,
+    refuse_another_job,
 )
 from pitchsweep.acquire.run_journal import RunJournal
 from pitchsweep.acquire.run_lock import RunLock, take_run_lock
@@ -175,12 +176,7 @@ def _check_same_job(folder: RunFolder, journal: RunJournal) -> None:
     known = journal.meta().get("job_fingerprint")
     if known is None:
         journal.set_meta("job_fingerprint", fingerprint(folder.job))
-    elif known != fingerprint(folder.job):
-        raise RunRefused(
-            folder.path,
-            "job.yaml is not the job with which this run began",
-            "put the original job.yaml back, or sweep anew",
-        )
+    refuse_another_job(folder, known)
 
 
 def _where_it_stands(folder: RunFolder, plan: SweepPlan, journal: RunJournal) -> str:

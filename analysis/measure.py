@@ -137,7 +137,6 @@ def measure_pitch(
         assumed_absent=assumed_absent(bench, part),
         part=part.part,
         serial=part.serial,
-        simulated=bench.twin is not None,
     )
     sweep = Sweep(problem, clean.order, fit, bench, air)
     wavelengths = wavelengths_found(

@@ -56,16 +56,18 @@ def temperatures(scene: FitScene) -> Iterator[Parameter]:
 def of_each_part(scene: FitScene) -> Iterator[Parameter]:
     """What belongs to a part however it is seated."""
     for index, part in enumerate(scene.parts):
-        yield local_row(
-            name_of(scene, index, "cover thickness"),
-            Scope.PART,
-            Source.COVER,
-            Local.COVER,
-            part.u_cover_mm,
-            MM,
-            spots_on(scene, index),
-            part.cover_mm,
-        )
+        # Who says bare has looked; who says nothing may have a film on the grooves.
+        if part.read_side != "bare":
+            yield local_row(
+                name_of(scene, index, "cover thickness"),
+                Scope.PART,
+                Source.COVER,
+                Local.COVER,
+                part.u_cover_mm,
+                MM,
+                spots_on(scene, index),
+                part.cover_mm,
+            )
         yield local_row(
             name_of(scene, index, "curvature"),
             Scope.PART,

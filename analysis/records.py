@@ -285,7 +285,7 @@ class PitchResult:
     wavelengths: tuple[WavelengthFound, ...] = ()
     part: str = ""
     serial: str = ""
-    simulated: bool = False
+    origin: str = "handed-in"
     asked: tuple[str, ...] = ()
     software: str = ""
     inputs_sha256: str = ""

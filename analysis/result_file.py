@@ -36,7 +36,7 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
     return {
         "part": result.part,
         "serial": result.serial,
-        "simulated": result.simulated,
+        "simulated": result.origin == "simulated",
         "pitch_nm": float(result.pitch_nm),
         "u_pitch_nm": float(result.u_pitch_nm),
         "U_pitch_nm": float(result.U_pitch_nm),
@@ -60,7 +60,7 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
         "assumed_absent": list(result.assumed_absent),
         "warnings": list(result.warnings),
         "asked": list(result.asked),
-        "origin": "simulated" if result.simulated else "measured",
+        "origin": result.origin,
         "software": result.software,
         "inputs_sha256": result.inputs_sha256,
     }
@@ -118,7 +118,9 @@ def summary_lines(result: PitchResult) -> list[str]:
     """What a terminal shows: pitch, U, k, decision, what was used, warnings."""
     pitch = rounded(result.pitch_nm, result.U_pitch_nm)
     used = ", ".join(order_text(order) for order in result.orders_used)
+    head = ["Simulated  invented data, no real part was measured"]
     lines = [
+        *(head if result.origin == "simulated" else []),
         f"Pitch      {pitch.value} nm +/- {pitch.u} nm at {result.pitch_at_C:g} C",
         f"           k = {result.k:.2f}, coverage {plain_percent(result.coverage)},"
         f" U/pitch = {relative(result.U_pitch_nm, result.pitch_nm)}",

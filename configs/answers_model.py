@@ -5,9 +5,9 @@ from typing import Annotated
 from pydantic import Field
 
 from pitchsweep.configs.checklist_model import Role
+from pitchsweep.configs.moments import Day
 from pitchsweep.configs.settings_base import Name, NonNegative, Settings, Text
 
-Day = Annotated[str, Field(pattern=r"^[0-9]{4}-[0-9]{2}-[0-9]{2}$")]
 UtcText = Annotated[
     str, Field(pattern=r"^[0-9]{4}-[0-9]{2}-[0-9]{2}T[0-9]{2}:[0-9]{2}(:[0-9]{2})?Z$")
 ]

@@ -9,8 +9,9 @@ from typing import Annotated, Literal, Self
 from pydantic import Field, field_validator, model_validator
 
 from pitchsweep.configs.enclosure_model import Enclosure
+from pitchsweep.configs.moments import Day
 from pitchsweep.configs.ports_model import CameraPort, Ports, SerialPort, StagePort
-from pitchsweep.configs.sensor_model import AirSensor, Day, PowerSensor
+from pitchsweep.configs.sensor_model import AirSensor, PowerSensor
 from pitchsweep.configs.settings_base import (
     AngleDeg,
     Fraction,
@@ -139,7 +140,7 @@ class InfraredFilter(Settings):
 
     description: Text
     residual_mw: Annotated[float, Field(ge=0.0, le=1000.0)]
-    measured_on: Annotated[str, Field(pattern=r"^\d{4}-\d{2}-\d{2}$")]
+    measured_on: Day
 
 
 class Laser(Settings):

@@ -4,7 +4,7 @@ from typing import Annotated, Literal, Self
 
 from pydantic import Field, model_validator
 
-from pitchsweep.configs.sensor_model import Day
+from pitchsweep.configs.moments import Day
 from pitchsweep.configs.settings_base import Name, Positive, Settings, Text
 
 PitchNm = Annotated[float, Field(ge=100.0, le=100000.0)]

@@ -7,10 +7,11 @@ open standards only: USB video class, a motion-JPEG stream, or still images by H
 
 from importlib.resources import files
 from typing import Annotated, Literal, Self
+from urllib.parse import urlsplit
 
 from pydantic import AfterValidator, Field, model_validator
 
-from pitchsweep.configs.sensor_model import Day
+from pitchsweep.configs.moments import Day
 from pitchsweep.configs.settings_base import Name, Settings, Text
 
 EXPOSURE_MARKS = ("{exposure_ms}", "{exposure_us}")
@@ -90,6 +91,8 @@ class CameraPort(Settings):
             schemes += ("rtsp",)
         if self.address.partition("://")[0] not in schemes:
             return f"address of {self.by} begins with {', '.join(schemes)}"
+        if not _host_and_port(self.address):
+            return f"address {self.address} has no host, or a port that is no number"
         if "@" in self.address.partition("://")[2].partition("/")[0]:
             return (
                 "a name or password in the address would stand in every run folder:"
@@ -136,3 +139,12 @@ class Ports(Settings):
                 )
             taken[port.port] = name
         return self
+
+
+def _host_and_port(address: str) -> bool:
+    """Whether ``address`` names a host and, if at all, a port from 1 to 65535."""
+    try:
+        parts = urlsplit(address)
+        return bool(parts.hostname) and parts.port != 0
+    except ValueError:
+        return False

@@ -4,13 +4,8 @@ from typing import Annotated
 
 from pydantic import Field
 
+from pitchsweep.configs.moments import UtcMoment
 from pitchsweep.configs.settings_base import Settings, Text
-
-UtcMoment = Annotated[
-    str,
-    Field(pattern=r"^([0-9]{4}-[0-9]{2}-[0-9]{2}T)?([01][0-9]|2[0-3]):[0-5][0-9]Z$"),
-]
-"""``2026-01-31T18:00Z``, or ``18:00Z`` for the next time that it is so late; UTC."""
 
 
 class Schedule(Settings):

@@ -4,9 +4,8 @@ from typing import Annotated
 
 from pydantic import Field
 
+from pitchsweep.configs.moments import Day
 from pitchsweep.configs.settings_base import Settings, Text
-
-Day = Annotated[str, Field(pattern=r"^\d{4}-\d{2}-\d{2}$")]
 
 
 class AirSensor(Settings):

@@ -1,4 +1,4 @@
-"""Spots at the beam hole: what the hole takes does not pull them, cut ones are refused."""
+"""Spots at the beam hole: what it takes does not pull them, cut ones are refused."""
 
 import numpy as np
 import pytest

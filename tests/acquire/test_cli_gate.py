@@ -133,4 +133,4 @@ def test_dark_where_nothing_runs_says_so(
 ) -> None:
     monkeypatch.setenv("PITCHSWEEP_GUARDS", str(tmp_path / "none"))
     assert run(["dark"]) == 0
-    assert "nothing here holds light" in capsys.readouterr().out
+    assert "says nothing of light that others" in capsys.readouterr().out

@@ -40,7 +40,7 @@ def test_a_run_without_a_result_asks_for_nothing(tmp_path: Path) -> None:
     assert options_of_run(tmp_path) == FitOptions()
 
 
-def test_a_coverage_of_its_own_holds_for_a_run_and_its_later_report(
+def test_a_run_keeps_its_options_and_is_not_fitted_with_an_edited_job(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
 ) -> None:
     job = small_job(step_deg=2.0, start_deg=-30.0, stop_deg=30.0)
@@ -58,3 +58,9 @@ def test_a_coverage_of_its_own_holds_for_a_run_and_its_later_report(
     assert wider["k"] > 1.25 * first["k"]
     assert run(["report", str(folder), "--json"]) == 0
     assert json.loads(capsys.readouterr().out) == wider
+    frozen = folder / "job.yaml"
+    whole = frozen.read_text(encoding="utf-8")
+    frozen.write_text(whole.replace("lower_nm: 825", "lower_nm: 820"), encoding="utf-8")
+    assert frozen.read_text(encoding="utf-8") != whole
+    assert run(["fit", str(folder)]) == 2
+    assert "not the job with which this run began" in capsys.readouterr().err

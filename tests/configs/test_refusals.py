@@ -249,3 +249,11 @@ def test_a_cover_without_a_thickness_is_refused(tmp_path: Path) -> None:
     path.write_text(text.replace("side: bare", "side: through-cover"), encoding="utf-8")
     with pytest.raises(SettingsRefused, match="needs cover_mm above 0"):
         read_part(str(path))
+
+
+@pytest.mark.parametrize("day", ["2026-02-31", "2026-13-01"])
+def test_a_day_that_no_calendar_has_is_refused(tmp_path: Path, day: str) -> None:
+    said, line = _refused_bench(
+        tmp_path, "u_wavelength_nm:", f'wavelength_due: "{day}"\n    u_wavelength_nm:'
+    )
+    assert f"line {line}" in said and f"{day} is no day of the calendar" in said
