@@ -107,7 +107,9 @@ def _guard_at_bench(
         if bench.ports is None:
             seed = bench.twin.seed if bench.twin else 0
             twin = stack.enter_context(
-                start_twin(folder.twin, bench, folder.job.part, seed)
+                start_twin(
+                    folder.twin, bench, folder.job.part, seed, lot=folder.job.lot
+                )
             )
             world = TwinWorldClient(twin.address)
             stack.callback(world.close)

@@ -15,7 +15,7 @@ from pitchsweep.safety.checklist import (
     signatures_needed,
 )
 from pitchsweep.safety.power_readings import takes_attended_powers
-from pitchsweep.safety.sign_off_making import Work, part_in_words
+from pitchsweep.safety.sign_off_making import Work, parts_in_words
 
 WIDTH = 88
 HEAD = (
@@ -29,7 +29,7 @@ def answers_form(work: Work) -> str:
     here = circumstances_of(work.job)
     lines = [
         f"# Answers for the sign-off of job {work.job.job}:",
-        f"# {part_in_words(work.job.part)}.",
+        *_remark(f"{parts_in_words(work.job)}.", ""),
         *_remark(HEAD, ""),
         "signers:",
     ]

@@ -55,7 +55,7 @@ class World(Protocol):
     """What a person or the bench does on request: re-seat the part, tell spots."""
 
     def seat_part(
-        self, mount: int, mount_deg: float, face_deg: float = 0.0
+        self, mount: int, mount_deg: float, face_deg: float = 0.0, part: int = 0
     ) -> None: ...
 
     def spots(self, label: Label) -> Sequence[SpotReading]: ...

@@ -166,7 +166,9 @@ def open_twin_bench(request: BenchRequest) -> Iterator[BenchDevices]:
     with ExitStack() as stack:
         request.say("starting the simulated bench")
         seed = bench.twin.seed if bench.twin else 0
-        twin = stack.enter_context(start_twin(folder.twin, bench, job.part, seed))
+        twin = stack.enter_context(
+            start_twin(folder.twin, bench, job.part, seed, lot=job.lot)
+        )
         world = TwinWorldClient(twin.address)
         stack.callback(world.close)
         camera = TwinCameraClient(twin.address)

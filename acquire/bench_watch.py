@@ -25,9 +25,13 @@ STRAY = 1.25
 
 @dataclass(frozen=True)
 class Sensed:
-    """What was first read, each laser's power since, and what has been said already."""
+    """What was first read, each laser's power since, and what has been said already.
+
+    ``part``: which part of a lot the first temperature of the part is of.
+    """
 
     first: BenchReading | None = None
+    part: int = 0
     powers_mw: tuple[tuple[str, float], ...] = ()
     said: frozenset[str] = frozenset()
 
@@ -49,7 +53,9 @@ def after_reading(
     A fault that lasts (power, air) is told once; a dropout or feedback at every step.
     """
     first = state.first or reading
-    state = replace(state, first=first)
+    if step.part != state.part:
+        first = _of_another_part(first, reading)
+    state = replace(state, first=first, part=step.part)
     fault = _power_fault(state, reading, bench, part, step)
     if reading.power_mw is not None and (fault is None or fault.kind == "laser_power"):
         powers = {**dict(state.powers_mw), step.laser: reading.power_mw}
@@ -67,6 +73,14 @@ def after_reading(
         said = state.said | {warning.split()[0]}
         return Sensing(replace(state, said=said), warning=warning)
     return Sensing(state)
+
+
+def _of_another_part(first: BenchReading, reading: BenchReading) -> BenchReading:
+    """What another part of a lot has as its temperature is no change of it."""
+    if first.air is None or reading.air is None:
+        return first
+    part_C = reading.air.part_temperature_C
+    return replace(first, air=replace(first.air, part_temperature_C=part_C))
 
 
 def _power_fault(

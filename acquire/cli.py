@@ -215,14 +215,15 @@ def _fit_and_show(
 
 def _show(analysed: "Analysed", out: Path | None, as_json: bool) -> None:
     from pitchsweep.acquire.analyse_run import PAPER, PICTURE, REPORT
+    from pitchsweep.analysis.lot_parts import lot_lines
     from pitchsweep.analysis.result_file import result_json, summary_lines
     from pitchsweep.safety.safety_errors import CAUTION
 
     if as_json:
-        sys.stdout.write(result_json(analysed.result))
+        sys.stdout.write(result_json(analysed.result, analysed.lot))
         sys.stdout.flush()
         return
-    lines = summary_lines(analysed.result)
+    lines = summary_lines(analysed.result) + lot_lines(analysed.lot)
     if out is not None:
         lines += [
             f"Report     {out / REPORT} (for paper: {PAPER})",

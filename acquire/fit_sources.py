@@ -9,7 +9,7 @@ from pitchsweep.acquire.acquire_errors import RunRefused
 from pitchsweep.acquire.fit_input import FitInput
 from pitchsweep.acquire.frame_set import LIST, input_from_frames
 from pitchsweep.acquire.run_folder import is_run_folder
-from pitchsweep.acquire.run_table import RunRecord, input_from_run, read_run
+from pitchsweep.acquire.run_table import RunRecord, inputs_from_run, read_run
 from pitchsweep.analysis.analysis_errors import InputRefused
 from pitchsweep.analysis.order_table_file import (
     TableSource,
@@ -39,10 +39,14 @@ class FitOptions:
 
 @dataclass(frozen=True)
 class FitSource:
-    """One input; ``run`` is its record if it is a run."""
+    """One input; ``run`` is its record if it is a run.
+
+    ``others`` are the inputs of the further parts of a lot.
+    """
 
     given: FitInput
     run: RunRecord | None = None
+    others: tuple[FitInput, ...] = ()
 
 
 def read_sources(paths: Sequence[Path], options: FitOptions) -> list[FitSource]:
@@ -73,9 +77,11 @@ def _read(path: Path, options: FitOptions) -> FitSource:
     if path.is_dir():
         if is_run_folder(path):
             record = read_run(path)
-            given = input_from_run(record)
-            coverage = options.coverage or given.coverage
-            return FitSource(replace(given, coverage=coverage), record)
+            given, *others = [
+                replace(given, coverage=options.coverage or given.coverage)
+                for given in inputs_from_run(record)
+            ]
+            return FitSource(given, record, tuple(others))
         if (path / LIST).is_file():
             bench, part = _bench_and_part(path, options)
             coverage = options.coverage or 0.95

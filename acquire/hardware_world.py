@@ -47,7 +47,9 @@ class HardwareWorld:
         self._sensors = sensors
         self._check = check
 
-    def seat_part(self, mount: int, mount_deg: float, face_deg: float = 0.0) -> None:
+    def seat_part(
+        self, mount: int, mount_deg: float, face_deg: float = 0.0, part: int = 0
+    ) -> None:
         """Nothing: the person who was asked has seated the part."""
 
     def spots(self, label: Label) -> Sequence[SpotReading]:

@@ -39,7 +39,7 @@ from pitchsweep.safety.power_readings import (
 )
 from pitchsweep.safety.safety_errors import CAUTION, GateRefused
 from pitchsweep.safety.shown_figures import beam_map_shown, figures_shown
-from pitchsweep.safety.sign_off_making import Work, part_in_words, window_utc_s
+from pitchsweep.safety.sign_off_making import Work, parts_in_words, window_utc_s
 
 _M = TypeVar("_M", ItemAnswer, ReadingAnswer)
 WIDTH = 78
@@ -120,7 +120,7 @@ class Asking:
 def _show(interview: Interview) -> None:
     job = interview.work.job
     say(f"Sign-off of job '{job.job}' on bench '{job.bench.bench}'")
-    say(f"  {part_in_words(job.part)}")
+    say(f"  {parts_in_words(job)}")
     if job.bench.twin is not None:
         say("  REHEARSAL: the bench is simulated, no laser is switched by this")
     say_wrapped(CAUTION)

@@ -43,6 +43,7 @@ class LiveNews:
     u_pitch_nm: float
     jumps: tuple[JumpSeen, ...] = ()
     warnings: tuple[str, ...] = ()
+    part: str = ""
 
 
 class LiveFit:
@@ -120,7 +121,14 @@ class LiveFit:
         )
         self._told += [jump.step for jump in jumps]
         warnings = tuple(w for w in answer["warnings"] if self._is_worth(w))
-        return LiveNews(look, answer["pitch_nm"], answer["u_pitch_nm"], jumps, warnings)
+        return LiveNews(
+            look,
+            answer["pitch_nm"],
+            answer["u_pitch_nm"],
+            jumps,
+            warnings,
+            answer.get("part", ""),
+        )
 
     def _answer(self) -> dict[str, Any] | None:
         try:

@@ -87,7 +87,9 @@ class LiveJudge:
     def _judge_precision(self, step: Step, news: LiveNews) -> None:
         relative = news.u_pitch_nm / news.pitch_nm
         self._report.status.update(
-            pitch_nm_so_far=news.pitch_nm, relative_u_so_far=relative
+            pitch_nm_so_far=news.pitch_nm,
+            relative_u_so_far=relative,
+            **({"so_far_of": news.part} if self._job.lot else {}),
         )
         enough = self._job.schedule.enough_relative_u
         if enough is None:

@@ -19,7 +19,7 @@ from pitchsweep.acquire.acquire_errors import AcquireError
 from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.measured_state import measure
 from pitchsweep.acquire.run_folder import RunFolder, open_run_folder
-from pitchsweep.acquire.run_table import input_from_run, record_of
+from pitchsweep.acquire.run_table import inputs_from_run, record_of
 from pitchsweep.acquire.sweep_plan import SweepPlan, plan_sweep
 from pitchsweep.analysis.analysis_errors import AnalysisError
 from pitchsweep.configs.fingerprint import fingerprint
@@ -32,8 +32,11 @@ def fitted(folder: RunFolder, plan: SweepPlan, before: int) -> dict[str, Any] | 
     with suppress(AnalysisError, AcquireError, ValueError):
         with open_journal(folder.journal, read_only=True) as journal:
             record = record_of(folder, plan, journal, before=before)
-        result = measure(input_from_run(record), advise=False)
+        # Of a lot the part that is being swept, once it has been seen.
+        given = inputs_from_run(record)[-1]
+        result = measure(given, advise=False)
         return {
+            "part": f"{given.part.part}, serial {given.part.serial}",
             "pitch_nm": float(result.pitch_nm),
             "u_pitch_nm": float(result.u_pitch_nm),
             "jumps": [vars(jump) for jump in result.jumps],

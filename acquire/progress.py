@@ -20,11 +20,13 @@ class StepShown:
     orders_expected: int
     gate: str
     left_s: float
+    part: str = ""
 
     def text(self) -> str:
         """One line for a log."""
         return (
-            f"{self.done} of {self.total} steps, {self.incidence_deg:+.2f} deg, mount "
+            f"{self.done} of {self.total} steps, {self.incidence_deg:+.2f} deg, "
+            f"{f'{self.part}, ' if self.part else ''}mount "
             f"{self.mount + 1}, {self.laser}, orders {self.spots} (of "
             f"{self.orders_expected} expected), gate {self.gate}, "
             f"{clock_text(self.left_s)} left"
@@ -90,6 +92,7 @@ class BarProgress:
     def show(self, shown: StepShown) -> None:
         text = (
             f"{shown.incidence_deg:+6.2f} deg  mount {shown.mount + 1}  {shown.laser}  "
+            f"{f'{shown.part}  ' if shown.part else ''}"
             f"orders {shown.spots}/{shown.orders_expected}  gate {shown.gate}  "
             f"{clock_text(shown.left_s)} left"
         )

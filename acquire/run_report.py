@@ -1,6 +1,6 @@
 """What a run's report shows beside the fit: frames, gate, facts. Acts (disk)."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 
@@ -38,8 +38,11 @@ def context_of_table(bench: Bench, part: Part) -> ReportContext:
     )
 
 
-def context_of_run(record: RunRecord, result: PitchResult) -> ReportContext:
-    """What a run's report shows. Raises StorageFailed for a changed frame."""
+def context_of_run(record: RunRecord, results: Sequence[PitchResult]) -> ReportContext:
+    """What a run's report shows. Raises StorageFailed for a changed frame.
+
+    ``results``: what was found, of a lot that of each part.
+    """
     job = record.folder.job
     count = record.meta.get("ledger_entries", "")
     return ReportContext(
@@ -49,7 +52,7 @@ def context_of_run(record: RunRecord, result: PitchResult) -> ReportContext:
         bench_facts=bench_facts(job.bench),
         run_facts=_facts(record),
         gate_history=gate_shown(record.gate),
-        frames=_frames(record, result),
+        frames=_frames(record, results),
         ledger_entries=int(count) if count else None,
         ledger_head=record.meta.get("ledger_head", ""),
     )
@@ -81,11 +84,26 @@ def _facts(record: RunRecord) -> tuple[Fact, ...]:
             + " ms",
         ),
     ]
+    facts += [
+        Fact(f"Seated {number}", _seated_words(part))
+        for number, part in enumerate(job.lot, 1)
+    ]
     facts += _permit_facts(record.meta)
     facts += [
         Fact("Fault", f"{f.what}: {f.detail} ({f.policy})") for f in record.faults
     ]
     return tuple(facts)
+
+
+def _seated_words(part: Part) -> str:
+    words = f"{part.part}, serial {part.serial}, {part.place}"
+    if part.certified is None:
+        return words
+    certified = part.certified
+    return (
+        f"{words}: reference, {certified.pitch_nm!r} nm, u {certified.u_pitch_nm:g} nm"
+        f" ({certified.certificate})"
+    )
 
 
 def _permit_facts(meta: Mapping[str, str]) -> list[Fact]:
@@ -136,24 +154,26 @@ def _drawn_together(rows: list[GateRow]) -> list[GateShown]:
     ]
 
 
-def _frames(record: RunRecord, result: PitchResult) -> tuple[FrameShown, ...]:
+def _frames(
+    record: RunRecord, results: Sequence[PitchResult]
+) -> tuple[FrameShown, ...]:
     with_frames = [step for step in record.steps if step.frames]
     if not with_frames:
         return ()
     places = np.linspace(0, len(with_frames) - 1, min(MOST_FRAMES, len(with_frames)))
     store = FrameStore(record.folder.path)
-    orders = orders_by_place(result)
+    orders = orders_by_place(*results)
     return tuple(
         _shown(store, record, with_frames[int(round(place))], orders)
         for place in places
     )
 
 
-def orders_by_place(result: PitchResult) -> dict[tuple[int, float, float], int]:
+def orders_by_place(*results: PitchResult) -> dict[tuple[int, float, float], int]:
     """(step, x_mm, y_mm) of every spot used -> its order."""
-    table = result.table
     return {
         (int(step), float(x), float(y)): int(order)
+        for table in (result.table for result in results)
         for step, x, y, order in zip(
             table.step, table.x_mm, table.y_mm, table.order, strict=True
         )

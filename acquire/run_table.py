@@ -5,11 +5,13 @@ looked into.
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
+import numpy as np
+
 from pitchsweep.acquire.acquire_errors import RunRefused
-from pitchsweep.acquire.fit_input import FitInput, order_table
+from pitchsweep.acquire.fit_input import TURN_DEG, FitInput, order_table
 from pitchsweep.acquire.frame_store import FrameStore
 from pitchsweep.acquire.journal_file import open_journal
 from pitchsweep.acquire.journal_rows import (
@@ -39,6 +41,7 @@ from pitchsweep.acquire.sweep_plan import SweepPlan, plan_sweep
 from pitchsweep.analysis.analysis_errors import NoResult
 from pitchsweep.configs.fingerprint import fingerprint
 from pitchsweep.configs.job_model import Job
+from pitchsweep.configs.part_model import Part
 from pitchsweep.configs.typed_command import typed
 
 
@@ -117,7 +120,79 @@ def record_of(
 
 
 def input_from_run(record: RunRecord) -> FitInput:
-    """The run's spots as a fit input. Raises NoResult if no step is acknowledged."""
+    """The run's spots as a fit input. Raises NoResult if no step is acknowledged.
+
+    Of a lot: those of the part that the run is about, and of the references.
+    """
+    job = record.folder.job
+    if job.lot:
+        return input_of_part(record, job.part)
+    return whole_input(record)
+
+
+def inputs_from_run(record: RunRecord) -> tuple[FitInput, ...]:
+    """A fit input for each part to be measured that has been seen, the first first.
+
+    There is one where the run has one part. Raises NoResult where there is none.
+    """
+    job = record.folder.job
+    if not job.lot:
+        return (whole_input(record),)
+    seen = {job.part_in(step.row.mount) for step in record.steps}
+    wanted = [part for part in job.parts if part.certified is None and part in seen]
+    return tuple(input_of_part(record, part) for part in wanted) or (
+        input_of_part(record, job.part),
+    )
+
+
+def input_of_part(record: RunRecord, part: Part) -> FitInput:
+    """The spots of one part of a lot with those of all references of the lot.
+
+    They stay one run: what wanders does so over the whole of it, so that the
+    references before and after a part tell how its wavelength moved meanwhile. Raises
+    NoResult where the part was not seen yet.
+    """
+    job, whole = record.folder.job, whole_input(record)
+    seats = {step.row.step: job.seat_of(step.row.mount) for step in record.steps}
+    here = {step for step, seat in seats.items() if job.seated[seat] == part}
+    if not here:
+        raise NoResult(
+            f"{record.folder.path}: no step of {part.part}, serial {part.serial},"
+            f" {part.place}, is acknowledged yet",
+            remedy=f"go on with: {typed('sweep', '--resume', record.folder.path)}",
+        )
+    references = tuple(p for p in job.parts if p.certified is not None)
+    parts = (part, *references)
+    number = {s: _place_in(parts, job.seated[seat]) for s, seat in seats.items()}
+    index = np.array([number[int(s)] for s in whole.table.step], dtype=np.int64)
+    table = replace(whole.table, part=index)
+    return replace(
+        whole,
+        table=table.take(index >= 0),
+        part=part,
+        references=references,
+        rejected=tuple(r for r in whole.rejected if number.get(r.step, -1) >= 0),
+        measured=tuple(
+            state_of(
+                reading
+                for step, reading in record.readings.items()
+                if number.get(step) == place
+            )
+            for place in range(len(parts))
+        ),
+    )
+
+
+def _place_in(parts: Sequence[Part], part: Part) -> int:
+    return parts.index(part) if part in parts else -1
+
+
+def whole_input(record: RunRecord) -> FitInput:
+    """All spots of a run, whatever part they are of. Raises NoResult as above.
+
+    Every part of a lot as seated has mounts of its own: they are told apart by whole
+    turns of ``mount_deg``, which change no angle.
+    """
     job = record.folder.job
     if not record.steps:
         raise NoResult(
@@ -182,7 +257,7 @@ def _place(step: KeptStep, job: Job) -> StepPlace:
     return StepPlace(
         step=row.step,
         stage_deg=step.stage_deg,
-        mount_deg=row.mount_deg,
+        mount_deg=row.mount_deg + TURN_DEG * job.seat_of(row.mount),
         laser=row.laser,
         time_s=row.bench_s if on_clock else row.planned_s,
         face_deg=job.recipe.face_of(row.mount),

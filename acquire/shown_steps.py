@@ -41,6 +41,7 @@ class ShownSteps:
             step=step.step,
             incidence_deg=step.incidence_deg,
             mount=step.mount + 1,
+            **({"part": part_named(self._job, step)} if self._job.lot else {}),
             repeat=step.repeat + 1,
             laser=step.laser,
             spots=shown.spots,
@@ -50,15 +51,25 @@ class ShownSteps:
     def _shown(self, step: Step, found: StepSpots) -> StepShown:
         job, plan = self._job, self._plan
         later = plan.steps[step.step + 1 :]
-        view = visible_orders(job.bench, job.part, step.laser, step.incidence_deg)
+        part = job.part_in(step.mount)
+        view = visible_orders(job.bench, part, step.laser, step.incidence_deg)
         return StepShown(
             done=min(self._done, len(plan.steps)),
             total=len(plan.steps),
             incidence_deg=step.incidence_deg,
             mount=step.mount,
+            part=part_named(job, step),
             laser=step.laser,
             spots=len(found.spots),
             orders_expected=int(np.count_nonzero(view.seen)),
             gate="ready",
             left_s=plan.duration_s - later[0].planned_s if later else 0.0,
         )
+
+
+def part_named(job: Job, step: Step) -> str:
+    """A lot's part with serial and place; empty where there is one part only."""
+    if not job.lot:
+        return ""
+    part = job.part_in(step.mount)
+    return f"{part.part}, serial {part.serial}, {part.place}"

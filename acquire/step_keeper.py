@@ -194,7 +194,8 @@ class StepKeeper:
 
     def _note_reading(self, taken: TakenStep, found: StepSpots) -> None:
         job, step = self._tools.job, taken.step
-        zero = predict_zero_order(job.bench, job.part, step.incidence_deg)
+        part = job.part_in(step.mount)
+        zero = predict_zero_order(job.bench, part, step.incidence_deg)
         row = reading_row(taken.sensed, found, zero)
         if row != ReadingRow():
             self._tools.journal.record_reading(taken.intent, row)
@@ -205,7 +206,7 @@ class StepKeeper:
             found,
             light_seen_mm(found, job.bench.camera),
             bench=job.bench,
-            part=job.part,
+            part=job.part_in(step.mount),
             step=step,
         )
         if fault is not None and step.kind == "step":
@@ -245,7 +246,7 @@ class StepKeeper:
         self._watch = after_exposure(
             WatchState() if first else self._watch,
             bench=self._tools.job.bench,
-            part=self._tools.job.part,
+            part=self._tools.job.part_in(step.mount),
             incidence_deg=step.incidence_deg,
             spots_mm=light_seen_mm(found, self._tools.job.bench.camera),
             first_after_homing=first,

@@ -146,7 +146,7 @@ class StepTaker:
             return BenchReading()
         planned_s = step.planned_s + self._context.soaked_s
         reading = self._devices.world.sense(step.laser, planned_s)
-        part = self._context.job.part
+        part = self._context.job.part_in(step.mount)
         found = after_reading(self._sensed, reading, bench=bench, part=part, step=step)
         self._sensed = found.state
         if found.warning:

@@ -1,12 +1,15 @@
 """Job -> the steps of a sweep, in the order in which they are taken (pure).
 
-Mounts come outermost (a person re-seats the part between them), then repeats with a
-shifted grid, then lasers, then angles. Every step carries the bench time at which the
+The parts of a lot come outermost, then mounts (a person re-seats the part between
+them; mounts are numbered on through the lot), then repeats with a shifted grid, then
+lasers, then angles. Every step carries the bench time at which the
 plan places it, so that a twin's slow processes depend on the plan and not on
 interruptions.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import product
 from random import Random
 from typing import Literal
 
@@ -21,6 +24,7 @@ from pitchsweep.analysis.order_visibility import (
 )
 from pitchsweep.configs.bench_model import Bench, Stage
 from pitchsweep.configs.job_model import Job
+from pitchsweep.configs.part_model import Part
 from pitchsweep.configs.recipe_model import Recipe
 
 Kind = Literal["step", "zero-check"]
@@ -31,6 +35,7 @@ class Step:
     """One stage angle: what is commanded and what is exposed there.
 
     ``stage_deg`` lies in the stage's travel with room to approach it from below.
+    ``part`` says which part of a lot is in, counted as they are seated.
     ``first_frame`` is the number of its first frame file: dark frames first (one an
     exposure, if ``dark_due``), then the light ones.
     """
@@ -48,6 +53,7 @@ class Step:
     first_frame: int
     repeat: int = 0
     face_deg: float = 0.0
+    part: int = 0
 
 
 @dataclass(frozen=True)
@@ -78,10 +84,10 @@ def plan_sweep(job: Job, fingerprint: str) -> SweepPlan:
     recipe = job.recipe
     grid_deg = incidence_grid_deg(recipe)
     refuse_without_orders(job, grid_deg)
-    check_deg = _zero_check_or_refuse(job, grid_deg)
+    check_deg = [_zero_check_or_refuse(job, part, grid_deg) for part in job.seated]
     rows = [
         (mount, repeat, laser, incidence)
-        for mount in range(len(recipe.mounts_deg))
+        for mount in range(len(job.seated) * len(recipe.mounts_deg))
         for repeat in range(recipe.repeats)
         for laser in recipe.lasers
         for incidence in ordered(
@@ -101,7 +107,7 @@ def plan_sweep(job: Job, fingerprint: str) -> SweepPlan:
             step=number,
             kind="step",
             mount=mount,
-            mount_deg=recipe.mounts_deg[mount],
+            mount_deg=recipe.mount_deg_of(mount),
             laser=laser,
             incidence_deg=incidence,
             stage_deg=reachable_stage_deg(job, mount, incidence),
@@ -111,6 +117,7 @@ def plan_sweep(job: Job, fingerprint: str) -> SweepPlan:
             first_frame=frame,
             repeat=repeat,
             face_deg=recipe.face_of(mount),
+            part=job.seat_of(mount),
         )
         steps.append(step)
         clock_s += step_duration_s(job.bench, step, previous)
@@ -185,7 +192,7 @@ def reachable_stage_deg(job: Job, mount: int, incidence_deg: float) -> float:
     fits with room below it for the approach.
     """
     stage = job.bench.stage
-    wanted = job.recipe.mounts_deg[mount] + stage.direction * incidence_deg
+    wanted = job.recipe.mount_deg_of(mount) + stage.direction * incidence_deg
     for turns in (0, -1, 1, -2, 2, -3, 3):
         if _in_travel(stage, wanted + 360.0 * turns):
             return round(wanted + 360.0 * turns, 9)
@@ -204,20 +211,23 @@ def _in_travel(stage: Stage, value_deg: float) -> bool:
 
 
 def refuse_without_orders(job: Job, grid_deg: tuple[float, ...]) -> None:
-    """Raises JobRefused for a laser with which no order but zero is ever seen."""
-    for laser in job.recipe.lasers:
-        view = visible_orders(job.bench, job.part, laser, grid_deg)
+    """Raises JobRefused for a laser with which no order but zero is ever seen.
+
+    Every part of a lot must show one.
+    """
+    for laser, part in product(job.recipe.lasers, job.parts):
+        view = visible_orders(job.bench, part, laser, grid_deg)
         if not view.any_but_zero():
-            why = why_no_order(job.bench, job.part, laser, grid_deg)
+            why = why_no_order(job.bench, part, laser, grid_deg)
             raise JobRefused(
                 job.job,
-                f"laser '{laser}' on {job.part.nominal_pitch_nm:g} nm: {why}",
-                remedy_of_no_order(job.bench, job.part, laser),
+                f"laser '{laser}' on {part.nominal_pitch_nm:g} nm: {why}",
+                remedy_of_no_order(job.bench, part, laser),
             )
 
 
-def _zero_check_or_refuse(job: Job, grid_deg: tuple[float, ...]) -> float:
-    check_deg = zero_check_incidence_deg(job.bench, job.part, grid_deg)
+def _zero_check_or_refuse(job: Job, part: Part, grid_deg: tuple[float, ...]) -> float:
+    check_deg = zero_check_incidence_deg(job.bench, part, grid_deg)
     if check_deg is None:
         raise JobRefused(
             job.job,
@@ -229,7 +239,7 @@ def _zero_check_or_refuse(job: Job, grid_deg: tuple[float, ...]) -> float:
 
 
 def _zero_checks(
-    job: Job, check_deg: float, steps: list[Step], first_frame: int
+    job: Job, check_deg: Sequence[float], steps: list[Step], first_frame: int
 ) -> tuple[Step, ...]:
     starts: dict[tuple[int, str], Step] = {}
     for step in steps:
@@ -241,13 +251,14 @@ def _zero_checks(
             mount=start.mount,
             mount_deg=start.mount_deg,
             laser=start.laser,
-            incidence_deg=check_deg,
-            stage_deg=reachable_stage_deg(job, start.mount, check_deg),
+            incidence_deg=check_deg[start.part],
+            stage_deg=reachable_stage_deg(job, start.mount, check_deg[start.part]),
             exposures_ms=start.exposures_ms,
             dark_due=False,
             planned_s=start.planned_s,
             first_frame=first_frame,
             face_deg=start.face_deg,
+            part=start.part,
         )
         for number, start in enumerate(starts.values())
     )

@@ -7,6 +7,7 @@ from pitchsweep.acquire.bench_devices import BenchDevices
 from pitchsweep.acquire.exposures import Exposures
 from pitchsweep.acquire.fault_policy import fault_kind, reaction
 from pitchsweep.acquire.resume import Standing
+from pitchsweep.acquire.shown_steps import part_named
 from pitchsweep.acquire.step_keeper import StepKeeper
 from pitchsweep.acquire.step_taker import StepTaker, SweepContext
 from pitchsweep.acquire.sweep_plan import Step, group_of
@@ -108,13 +109,22 @@ class SweepRunner:
 
     def _seat(self, step: Step) -> None:
         world, report = self._devices.world, self._context.report
-        if len(self._context.job.recipe.mounts_deg) > 1 and step.step > 0:
-            what = f"seat the part for mount {step.mount + 1}, {step.mount_deg:g} deg"
-            if any(self._context.job.recipe.faces_deg):
-                what += f", turned in its own plane by {step.face_deg:g} deg"
-            self._ask_person(step, what)
-        world.seat_part(step.mount, step.mount_deg, step.face_deg)
+        job = self._context.job
+        if job.lot and step.step == 0:
+            report.say(f"the first part is {part_named(job, step)}: it must be in")
+        elif (job.lot or len(job.recipe.mounts_deg) > 1) and step.step > 0:
+            self._ask_person(step, self._seating_words(step))
+        world.seat_part(step.mount, step.mount_deg, step.face_deg, step.part)
         report.state("sweeping", mount=step.mount + 1)
+
+    def _seating_words(self, step: Step) -> str:
+        job = self._context.job
+        what = f"seat {part_named(job, step) or 'the part'}"
+        if len(job.recipe.mounts_deg) > 1:
+            what += f" for mount {step.mount + 1}, {step.mount_deg:g} deg"
+        if any(job.recipe.faces_deg):
+            what += f", turned in its own plane by {step.face_deg:g} deg"
+        return what
 
     def _let_through(self, step: Step) -> None:
         """On a real bench with several lasers a person changes them, in the dark."""

@@ -102,7 +102,7 @@ def _sweep_into(
     lock = take_run_lock(folder.path)
     try:
         with create_journal(folder.journal) as journal:
-            journal.set_meta("job_fingerprint", fingerprint(job))
+            _note_job(journal, job)
             _session(
                 folder,
                 plan,
@@ -167,9 +167,19 @@ def _journal_to_go_on(folder: RunFolder) -> RunJournal:
     # A run killed before its journal was there has nothing acknowledged.
     if not folder.journal.exists():
         journal = create_journal(folder.journal)
-        journal.set_meta("job_fingerprint", fingerprint(folder.job))
+        _note_job(journal, folder.job)
         return journal
     return open_journal(folder.journal)
+
+
+def _note_job(journal: RunJournal, job: Job) -> None:
+    """Which job this is, and which part is in which mount where it has a lot."""
+    journal.set_meta("job_fingerprint", fingerprint(job))
+    if job.lot:
+        for mount in range(len(job.lot) * len(job.recipe.mounts_deg)):
+            part = job.part_in(mount)
+            words = f"{part.part}, serial {part.serial}, {part.place}"
+            journal.set_meta(f"part_in_mount_{mount}", words)
 
 
 def _check_same_job(folder: RunFolder, journal: RunJournal) -> None:

@@ -94,11 +94,8 @@ def due_dates(job: Job) -> list[tuple[str, str]]:
         )
         for name in job.recipe.lasers
     ]
-    if job.part.certified is not None:
-        certified = job.part.certified
-        found.append(
-            (f"certificate {certified.certificate}", certified.certificate_due)
-        )
+    certified = [part.certified for part in job.parts if part.certified is not None]
+    found += [(f"certificate {c.certificate}", c.certificate_due) for c in certified]
     return [(what, due) for what, due in found if due is not None]
 
 

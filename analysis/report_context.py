@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from pitchsweep.analysis.lot_parts import LotRow
 from pitchsweep.configs.bench_model import Bench, Screen
 from pitchsweep.configs.part_model import Part
 
@@ -98,6 +99,7 @@ class ReportContext:
     cautions: tuple[str, ...] = ()
     ledger_entries: int | None = None
     ledger_head: str = ""
+    lot: tuple[LotRow, ...] = ()
 
 
 def part_facts(part: Part) -> PartFacts:

@@ -100,6 +100,7 @@ def _values(result: PitchResult, context: ReportContext) -> dict[str, Any]:
         "cautions": (*STANDING_CAUTIONS, *context.cautions),
         "facts": result_facts(result),
         "part_rows": part_rows(context.part),
+        "lot": context.lot,
         "bench_rows": context.bench_facts,
         "run_rows": run_rows(result, context),
         "tracks": _tracks(result, context),

@@ -31,6 +31,7 @@ from pitchsweep.analysis.report_pdf_tables import (
     budget_table,
     correlated_words,
     gate_table,
+    lot_table,
     nuisance_table,
     reason_table,
     seen_table,
@@ -94,6 +95,8 @@ def _first_page(result: PitchResult, context: ReportContext) -> list[Flowable]:
         blocks += [boxed([paragraph(SIMULATED_SAID, "simulated")], dashed=True)]
         blocks += [_gap(3)]
     blocks += [*_identity(context.part), _gap(3), _result_box(result), _gap(3)]
+    if context.lot:
+        blocks += [lot_table(context.lot), _gap(3)]
     if result.warnings:
         blocks += [_warnings(result), _gap(3)]
     blocks += [_label("Cautions")]

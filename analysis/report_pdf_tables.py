@@ -6,6 +6,7 @@ from reportlab.platypus import Flowable, KeepTogether, Table
 
 from pitchsweep.analysis.budget_picture import budget_shares
 from pitchsweep.analysis.budget_words import INDEPENDENT, correlation_words
+from pitchsweep.analysis.lot_parts import LotRow
 from pitchsweep.analysis.number_text import rounded, significant
 from pitchsweep.analysis.pdf_style import paragraph
 from pitchsweep.analysis.pdf_tables import Column, Far, table
@@ -44,6 +45,15 @@ NUISANCE_COLUMNS = (
     Column("Unit", 14.0),
     Column("Moved, in u before", 32.0, number=True),
 )
+LOT_COLUMNS = (
+    Column("Part", 34.0),
+    Column("Serial", 20.0),
+    Column("Place", 32.0),
+    Column("Pitch, nm", 25.0, number=True),
+    Column("U, nm", 18.0, number=True),
+    Column("k", 11.0, number=True),
+    Column("Decision", 40.0),
+)
 REASON_COLUMNS = (
     Column("Reason", 56.0),
     Column("Meaning", 106.0),
@@ -55,6 +65,8 @@ GATE_COLUMNS = (
     Column("State after it", 24.0),
     Column("Remark", 66.0),
 )
+
+FIRST = "Everything else here is of the first of them."
 
 
 def absent_words(result: PitchResult) -> str:
@@ -72,6 +84,15 @@ def correlated_words(result: PitchResult) -> str:
         return INDEPENDENT
     fitted = "Quantities fitted beside the pitch that go most with it (correlation)"
     return f"{INDEPENDENT} {fitted}: {told}."
+
+
+def lot_table(rows: Sequence[LotRow]) -> Flowable:
+    """Every part that the run measured, with its pitch and decision."""
+    told = [
+        (r.part, r.serial, r.place, r.pitch, r.expanded, r.k, r.decision) for r in rows
+    ]
+    label = paragraph("Parts of this run", "label")
+    return KeepTogether([label, table(LOT_COLUMNS, told), paragraph(FIRST, "soft")])
 
 
 def seen_table(result: PitchResult) -> Flowable:

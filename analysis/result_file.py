@@ -2,10 +2,12 @@
 
 import json
 import math
+from collections.abc import Sequence
 from typing import Any
 
 from pitchsweep.analysis.analysis_errors import NoResult
 from pitchsweep.analysis.decision_words import decision_words
+from pitchsweep.analysis.lot_parts import LotPart, lot_values
 from pitchsweep.analysis.number_text import (
     plain_percent,
     relative,
@@ -66,14 +68,18 @@ def result_dict(result: PitchResult) -> dict[str, Any]:
     }
 
 
-def result_json(result: PitchResult) -> str:
+def result_json(result: PitchResult, lot: Sequence[LotPart] = ()) -> str:
     """The text of result.json: indented, no NaN or infinity, newline at the end.
 
-    Raises NoResult where the pitch or its uncertainty is not a finite number.
+    ``lot``: every part of the run's lot, ``result`` being that of the first.
+    Raises NoResult where a pitch or its uncertainty is not a finite number.
     """
-    text = json.dumps(
-        result_dict(result), indent=2, ensure_ascii=False, allow_nan=False
-    )
+    for one in lot:
+        _check_finite(one.result)
+    values = result_dict(result)
+    if lot:
+        values["parts"] = [_finite(part) for part in lot_values(lot)]
+    text = json.dumps(values, indent=2, ensure_ascii=False, allow_nan=False)
     return text + "\n"
 
 
@@ -167,6 +173,14 @@ def _check_finite(result: PitchResult) -> None:
     for name in ("pitch_nm", "u_pitch_nm", "U_pitch_nm", "k", "coverage"):
         if not math.isfinite(getattr(result, name)):
             raise NoResult(f"The fit gave no finite {name}.")
+
+
+def _finite(values: dict[str, Any]) -> dict[str, Any]:
+    """``values`` with None for side values that are not finite."""
+    return {
+        key: _number(value) if isinstance(value, float) else value
+        for key, value in values.items()
+    }
 
 
 def _number(value: float | None) -> float | None:

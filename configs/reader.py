@@ -46,7 +46,8 @@ class LoadedJob:
     """A complete job and where it came from.
 
     ``source`` is what the user wrote; ``files`` holds the file read for each of job,
-    bench, part and recipe (all the same file for a frozen job).
+    bench, part and recipe (all the same file for a frozen job), and ``lot[0]`` and so
+    on for each part of a lot.
     """
 
     job: Job
@@ -90,10 +91,18 @@ def read_job(place: Place) -> LoadedJob:
         job = settings_from(document, Job)
         return LoadedJob(job, str(place), dict.fromkeys(("job", *PARTS_OF_A_JOB), path))
     named = settings_from(document, JobFile)
-    found = {k: _neighbour(document, path, k) for k in PARTS_OF_A_JOB}
-    blocks: dict[str, Settings] = {
+    found = {k: _neighbour(document, path, (k,)) for k in ("bench", "recipe")}
+    seated, files = _seated(document, path, named)
+    # A lot that is all certified is refused by the job itself.
+    open_ones = [part for part in seated if part.certified is None]
+    part = (open_ones or seated)[0]
+    found["part"] = files[seated.index(part)]
+    if named.lot:
+        found |= {f"lot[{index}]": file for index, file in enumerate(files)}
+    blocks: dict[str, Any] = {
         "bench": read_settings(found["bench"], Bench),
-        "part": read_settings(found["part"], Part),
+        "part": part,
+        "lot": tuple(seated) if named.lot else (),
         "recipe": read_settings(found["recipe"], Recipe),
     }
     head: dict[str, Any] = {
@@ -150,14 +159,36 @@ def _house() -> Path:
     return Path(str(files("pitchsweep.configs")))
 
 
-def _neighbour(document: YamlDocument, path: Path, key: str) -> Path:
-    """The file that ``key`` of a job file names, seen from the job file itself."""
-    name = str(document.value[key])
+def _seated(
+    document: YamlDocument, path: Path, named: JobFile
+) -> tuple[list[Part], list[Path]]:
+    """The parts that a job file names, in order, and the file of each."""
+    if not named.lot:
+        file = _neighbour(document, path, ("part",))
+        return [read_settings(file, Part)], [file]
+    files = [
+        _neighbour(document, path, ("lot", index, "part"))
+        for index in range(len(named.lot))
+    ]
+    parts = [read_settings(file, Part) for file in files]
+    places = [seating.place for seating in named.lot]
+    return [
+        part if place is None else part.model_copy(update={"place": place})
+        for part, place in zip(parts, places, strict=True)
+    ], files
+
+
+def _neighbour(document: YamlDocument, path: Path, at: KeyPath) -> Path:
+    """The file that a job file names at ``at``, seen from the job file itself."""
+    value: Any = document.value
+    for key in at:
+        value = value[key]
+    name = str(value)
     beside = Path(os.path.normpath(path.parent / name))
     if "\0" not in name and beside.is_file():
         return beside
     saying = f"no such file ({beside}); names are relative to the job file"
-    problem = Problem(document.name, document.line((key,)), key, name, saying)
+    problem = Problem(document.name, document.line(at), dotted(at), name, saying)
     raise SettingsRefused([problem])
 
 

@@ -73,4 +73,8 @@ class Recipe(Settings):
 
     def face_of(self, mount: int) -> float:
         """How far the part is turned in its own plane in mount number ``mount``."""
-        return self.faces_deg[mount] if self.faces_deg else 0.0
+        return self.faces_deg[mount % len(self.faces_deg)] if self.faces_deg else 0.0
+
+    def mount_deg_of(self, mount: int) -> float:
+        """The angle of mount number ``mount``, counted through a lot."""
+        return self.mounts_deg[mount % len(self.mounts_deg)]

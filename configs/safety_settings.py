@@ -6,6 +6,7 @@ sign-off stands in ``NOT_BOUND`` with its reason.
 
 import hashlib
 import json
+import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from fnmatch import fnmatchcase
@@ -41,6 +42,9 @@ NOT_BOUND: Mapping[str, str] = MappingProxyType(
 )
 """Pattern of dotted paths -> why a sign-off does not depend on them."""
 
+OF_LOT = re.compile(r"^lot\[[0-9]+\]")
+"""Every part of a lot is bound like the part of a job."""
+
 
 @dataclass(frozen=True)
 class Change:
@@ -66,13 +70,16 @@ def bound_settings(job: Job, checklist: Checklist) -> dict[str, object]:
         "checklist": checklist.model_dump(mode="json"),
         "simulated": job.bench.twin is not None,
     }
+    if job.lot:
+        values["lot"] = [part.model_dump(mode="json") for part in job.lot]
     leaves = dict(_leaves(values, ""))
     return {path: leaves[path] for path in sorted(leaves) if is_bound(path)}
 
 
 def is_bound(path: str) -> bool:
     """False for a path that ``NOT_BOUND`` lists."""
-    return not any(fnmatchcase(path, pattern) for pattern in NOT_BOUND)
+    of_part = OF_LOT.sub("part", path)
+    return not any(fnmatchcase(of_part, pattern) for pattern in NOT_BOUND)
 
 
 def settings_sha256(settings: Mapping[str, object]) -> str:

@@ -73,11 +73,13 @@ def start_twin(
     seed: int,
     *,
     faults: Sequence[Fault] = (),
+    lot: Sequence[Part] = (),
 ) -> TwinHandle:
     """A twin working in ``directory`` (made if missing), ready to be asked.
 
-    It goes on from ``state.json`` where there is one and writes ``twin_truth.json``,
-    ``unit.log`` and ``twin.err``. Raises DeviceRefused where the twin refuses its
+    ``lot`` holds the parts that are seated in turn, ``part`` among them; empty where
+    that is ``part`` alone. The twin goes on from ``state.json`` where there is one and
+    writes ``twin_truth.json``, ``unit.log`` and ``twin.err``. Raises DeviceRefused where the twin refuses its
     configuration or its folder, LineBroke where it does not start, NoAnswerInTime.
     """
     directory.mkdir(parents=True, exist_ok=True)
@@ -86,6 +88,7 @@ def start_twin(
         "directory": str(directory.resolve()),
         "bench": bench.model_dump(mode="json"),
         "part": part.model_dump(mode="json"),
+        "lot": [one.model_dump(mode="json") for one in lot],
         "seed": seed,
         "key": key.hex(),
         "token": token,

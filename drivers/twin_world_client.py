@@ -22,9 +22,13 @@ class TwinWorldClient:
         """Lets bench time pass: at once in rehearsal, by sleeping at real speed."""
         self._link.ask("wait", seconds=seconds, timeout_s=seconds + ANSWER_TIMEOUT_S)
 
-    def seat_part(self, mount: int, mount_deg: float, face_deg: float = 0.0) -> None:
-        """The person on the spot seats the part as mount number ``mount``."""
-        self._link.ask("seat", mount=mount, mount_deg=mount_deg, face_deg=face_deg)
+    def seat_part(
+        self, mount: int, mount_deg: float, face_deg: float = 0.0, part: int = 0
+    ) -> None:
+        """The person on the spot seats part ``part`` of a lot as mount ``mount``."""
+        self._link.ask(
+            "seat", mount=mount, mount_deg=mount_deg, face_deg=face_deg, part=part
+        )
 
     def spots(self, label: Label) -> list[SpotReading]:
         """Spots of this moment; none without light and none while the stage turns."""

@@ -8,6 +8,7 @@ import numpy as np
 from pitchsweep.analysis.order_visibility import wavelength_over_pitch
 from pitchsweep.analysis.records import FloatArray, IntArray
 from pitchsweep.configs.job_model import Job
+from pitchsweep.configs.part_model import Part
 from pitchsweep.safety.beam_cones import Cones, Spread, spread_of
 from pitchsweep.safety.beam_faults import Fault, Ray, faults_by_bit
 from pitchsweep.safety.hazard_figures import full_drive_mw
@@ -19,7 +20,8 @@ from pitchsweep.safety.surroundings import NOTHING, Surroundings
 class Light:
     """One laser, its directions' spread, and what its beams must not meet.
 
-    ``faults`` has the bits of ``around`` with what is wrong in meeting them.
+    ``faults`` has the bits of ``around`` with what is wrong in meeting them; ``part``
+    names the part of a lot that turns the beam, empty where there is one part only.
     """
 
     name: str
@@ -29,21 +31,23 @@ class Light:
     around: Surroundings
     faults: Mapping[int, Fault]
     margin_deg: float
+    part: str = ""
 
 
-def light_of(job: Job, name: str, around: Surroundings) -> Light:
-    """Laser ``name`` of a job at full drive. KeyError for an unknown one."""
+def light_of(job: Job, name: str, around: Surroundings, part: Part) -> Light:
+    """Laser ``name`` on ``part`` of a job, full drive. KeyError for an unknown one."""
     laser = job.bench.lasers[name]
     power_mw = full_drive_mw(laser)
     enclosure = job.bench.enclosure
     return Light(
         name=name,
         power_mw=power_mw,
-        ratio=wavelength_over_pitch(job.bench, job.part, name),
-        spread=spread_of(job.bench, job.part, name),
+        ratio=wavelength_over_pitch(job.bench, part, name),
+        spread=spread_of(job.bench, part, name),
         around=around,
         faults=faults_by_bit(around, rays_with(job, name)),
         margin_deg=enclosure.margin_deg if enclosure else 0.0,
+        part=f"{part.part} {part.serial}" if job.lot else "",
     )
 
 

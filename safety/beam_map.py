@@ -9,11 +9,13 @@ A beam that may meet anything but a declared stop that bears it refuses the run.
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from enum import StrEnum
+from itertools import product
 
 import numpy as np
 
 from pitchsweep.configs.enclosure_model import Enclosure, PartMount
 from pitchsweep.configs.job_model import Job
+from pitchsweep.configs.part_model import Part
 from pitchsweep.safety.beam_cones import (
     SIGMAS,
     Spread,
@@ -62,7 +64,8 @@ class Beam:
     ``azimuth_deg``, ``elevation_deg``: where it goes with the grooves upright (None if
     it then stays in). ``meets``: all that it may meet, its cone and any groove
     direction taken in. ``fault`` says what is wrong with that, ``fault_within_deg`` of
-    the direction ``fault_azimuth_deg``, ``fault_elevation_deg``.
+    the direction ``fault_azimuth_deg``, ``fault_elevation_deg``. ``part`` names the
+    part of a lot.
     """
 
     laser: str
@@ -77,6 +80,7 @@ class Beam:
     fault_azimuth_deg: float | None = None
     fault_elevation_deg: float | None = None
     fault_within_deg: float | None = None
+    part: str = ""
 
 
 @dataclass(frozen=True)
@@ -100,6 +104,8 @@ class BeamMap:
 def beam_map(job: Job) -> BeamMap:
     """The beam map of ``job``: all lasers that may be alight, at all its angles.
 
+    Every part of a lot is taken in, each at all angles.
+
     Where several may be so together, whatever stops one beam must bear them all: their
     zero orders and straight ways coincide.
     """
@@ -107,8 +113,8 @@ def beam_map(job: Job) -> BeamMap:
     around = surroundings_of(enclosure.surfaces if enclosure else ())
     angles = lit_angles(job)
     beams: list[Beam] = []
-    for name in lasers_alight(job):
-        light = light_of(job, name, around)
+    for name, part in product(lasers_alight(job), _alike_once(job)):
+        light = light_of(job, name, around, part)
         beams.extend(_order_beams(light, angles))
         beams.extend(_missing_part_beams(job, light, angles))
     return BeamMap(
@@ -122,6 +128,15 @@ def beam_map(job: Job) -> BeamMap:
     )
 
 
+def _alike_once(job: Job) -> list[Part]:
+    """The job's parts, of those that send every beam alike only the first."""
+    seen: dict[tuple[float, ...], Part] = {}
+    for part in job.parts:
+        key = (part.nominal_pitch_nm, part.nominal_within_percent, part.u_tilt_mrad)
+        seen.setdefault(key, part)
+    return list(seen.values())
+
+
 def refusals(found: BeamMap) -> tuple[Refusal, ...]:
     """Why the beams of a map refuse the run, alike ones together; empty: none does."""
     if found.enclosure is None:
@@ -133,10 +148,16 @@ def refusals(found: BeamMap) -> tuple[Refusal, ...]:
                 "add 'enclosure:' to the bench file, with stops for all directions",
             ),
         )
-    alike: dict[tuple[str, BeamKind, Fault, bool], list[Beam]] = {}
+    alike: dict[tuple[str, str, BeamKind, Fault, bool], list[Beam]] = {}
     for beam in found.beams:
         if beam.fault is not None:
-            key = (beam.laser, beam.kind, beam.fault, beam.at.left_behind)
+            key = (
+                beam.laser,
+                beam.part,
+                beam.kind,
+                beam.fault,
+                beam.at.left_behind,
+            )
             alike.setdefault(key, []).append(beam)
     return tuple(_refusal(beams, found.step_deg) for beams in alike.values())
 
@@ -148,6 +169,8 @@ def _refusal(beams: Sequence[Beam], step_deg: float) -> Refusal:
     orders = sorted({beam.order for beam in beams if beam.order is not None})
     left = ", the part left in another mount" if first.at.left_behind else ""
     named = f" {_orders_text(orders)}" if orders else ""
+    if first.part and first.order is not None:
+        named += f" of part {first.part}"
     return Refusal(
         f"laser '{first.laser}', {first.kind}{named} at"
         f" {steps_text(steps, step_deg)}{left}: {first.fault.reason}"
@@ -220,6 +243,7 @@ def _missing_part_beams(
             elevation_deg=None,
             power_mw=light.power_mw,
             meets=("mount",),
+            part=light.part,
         )
         return
     for angle in angles:
@@ -256,4 +280,5 @@ def _beam(
         fault_azimuth_deg=what.azimuth_deg if fault else None,
         fault_elevation_deg=what.elevation_deg if fault else None,
         fault_within_deg=what.within_deg if fault else None,
+        part=light.part,
     )

@@ -219,14 +219,18 @@ def _draw_reach(axes: Axes, job: Job, laser: str) -> None:
     middles = [0.5 * (edge[1:] + edge[:-1]) for edge in edges]
     azimuth, elevation = (m.ravel() for m in np.meshgrid(*middles))
     angles = lit_angles(job)
-    lit = reached(
-        azimuth,
-        elevation,
-        np.array([angle.incidence_deg for angle in angles]),
-        np.array([angle.half_width_deg for angle in angles]),
-        wavelength_over_pitch(job.bench, job.part, laser),
-        spread_of(job.bench, job.part, laser),
-    )
+    each = [
+        reached(
+            azimuth,
+            elevation,
+            np.array([angle.incidence_deg for angle in angles]),
+            np.array([angle.half_width_deg for angle in angles]),
+            wavelength_over_pitch(job.bench, part, laser),
+            spread_of(job.bench, part, laser),
+        )
+        for part in job.parts
+    ]
+    lit = np.logical_or.reduce(each)
     around = surroundings_of(
         job.bench.enclosure.surfaces if job.bench.enclosure else ()
     )

@@ -25,9 +25,9 @@ def beam_map_lines(found: BeamMap) -> tuple[str, ...]:
     Azimuths are those with the grooves upright; "may meet" takes in every groove
     direction and all that is not known well. Refusals stand at the end.
     """
-    rows: dict[tuple[str, str, int | None, bool], list[Beam]] = {}
+    rows: dict[tuple[str, str, str, int | None, bool], list[Beam]] = {}
     for beam in found.beams:
-        key = (beam.laser, beam.kind, beam.order, beam.at.left_behind)
+        key = (beam.laser, beam.part, beam.kind, beam.order, beam.at.left_behind)
         rows.setdefault(key, []).append(beam)
     lines = [f"Beam map of job '{found.job}' on bench '{found.bench}'", *_around(found)]
     if found.at_once:
@@ -77,6 +77,7 @@ def _row(beams: Sequence[Beam]) -> str:
     return (
         f"{first.laser:<8} {kind:<25} {order:>5}  {span:<13}"
         f"  {_azimuths(beams):<13} {first.power_mw:6.3g}  {', '.join(met)}"
+        + (f"  (part {first.part})" if first.part else "")
     )
 
 

@@ -88,7 +88,7 @@ def statement_of(work: Work, answers: Answers, moment: Moment) -> Statement:
         made=utc_text(moment.utc_s),
         bench=job.bench.bench,
         job=job.job,
-        part=part_in_words(job.part),
+        part=parts_in_words(job),
         simulated=job.bench.twin is not None,
         valid_from=utc_text(start_s),
         valid_until=utc_text(end_s),
@@ -128,6 +128,15 @@ def part_in_words(part: Part) -> str:
     """Part, serial, lot, side and place in one line."""
     return (
         f"{part.part}, serial {part.serial}, lot {part.lot}, {part.side}, {part.place}"
+    )
+
+
+def parts_in_words(job: Job) -> str:
+    """The part of a job in words, or every part of a lot as they are seated."""
+    if not job.lot:
+        return part_in_words(job.part)
+    return "; ".join(
+        f"{number}: {part_in_words(part)}" for number, part in enumerate(job.lot, 1)
     )
 
 

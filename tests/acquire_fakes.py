@@ -118,7 +118,9 @@ class FakeBench:
 
     # The person, the spots door, the camera.
 
-    def seat_part(self, mount: int, mount_deg: float, face_deg: float = 0.0) -> None:
+    def seat_part(
+        self, mount: int, mount_deg: float, face_deg: float = 0.0, part: int = 0
+    ) -> None:
         self.count(f"seat {mount}")
         assert not self.lit
         self.mount_deg = mount_deg

@@ -47,6 +47,7 @@ class TwinCamera:
         self._bench = bench
         self._time = time
         prepared = twin_settings(bench).frames == "prepared"
+        self._is_prepared = prepared
         self._prepared = PreparedFrames(truth, bench) if prepared else None
         self._faults = CameraFaults(bench.camera)
         self._free_s = float("-inf")
@@ -55,6 +56,14 @@ class TwinCamera:
     def index(self) -> int:
         """Under which index the camera is found; another one after it was gone."""
         return self._faults.index
+
+    def sees(self, truth: Truth) -> None:
+        """What is true from now on; frames of before must have been read out."""
+        if truth is self._truth:
+            return
+        self._truth = truth
+        if self._is_prepared:
+            self._prepared = PreparedFrames(truth, self._bench)
 
     def before(self, does: str) -> None:
         """Raises ValueError where an exposure with this fault does not even begin."""

@@ -21,6 +21,7 @@ from pitchsweep.configs.part_model import Part
 from pitchsweep.drivers.twin.emission_unit import EmissionUnit
 from pitchsweep.drivers.twin.fault_schedule import FaultSchedule
 from pitchsweep.drivers.twin.kept_state import write_durably
+from pitchsweep.drivers.twin.lot_truths import draw_lot, truths_said
 from pitchsweep.drivers.twin.one_at_a_time import (
     FolderInUse,
     hold_folder,
@@ -30,7 +31,7 @@ from pitchsweep.drivers.twin.pty_port import PtyPort
 from pitchsweep.drivers.twin.relay import TimeOutRelay
 from pitchsweep.drivers.twin.relay_port import RelayPort
 from pitchsweep.drivers.twin.stage_firmware import StageFirmware
-from pitchsweep.drivers.twin.truth import draw_truth, twin_settings
+from pitchsweep.drivers.twin.truth import Truth, draw_truth, twin_settings
 from pitchsweep.drivers.twin.unit_firmware import RelayBoxFirmware, UnitFirmware
 from pitchsweep.drivers.twin.unit_log import UnitLog
 from pitchsweep.drivers.twin.world import World
@@ -49,6 +50,7 @@ class TwinConfiguration:
     directory: Path
     bench: Bench
     part: Part
+    lot: tuple[Part, ...]
     seed: int
     key: bytes
     token: str
@@ -62,6 +64,9 @@ class TwinConfiguration:
             directory=Path(values["directory"]),
             bench=Bench.model_validate_json(json.dumps(values["bench"])),
             part=Part.model_validate_json(json.dumps(values["part"])),
+            lot=tuple(
+                Part.model_validate_json(json.dumps(part)) for part in values["lot"]
+            ),
             seed=int(values["seed"]),
             key=bytes.fromhex(values["key"]),
             token=str(values["token"]),
@@ -95,13 +100,19 @@ def _run(configuration: TwinConfiguration, asked_to_end: threading.Event) -> Non
         has_shutter=bench.emission.switches == "head-shutter",
         channels=bench.emission.interlock_channels,
     )
-    truth = draw_truth(bench, configuration.part, configuration.seed)
-    truth_text = json.dumps(truth.to_json(), indent=1) + "\n"
+    truth, lot = _truths(configuration)
+    said = truths_said(truth, configuration.lot, lot)
+    truth_text = json.dumps(said, indent=1) + "\n"
     write_durably(directory / "twin_truth.json", truth_text.encode("utf-8"))
     settings = twin_settings(bench)
     faults = configuration.faults.and_also(settings.faults)
     world = World(
-        truth, bench, unit, faults=faults, state_path=directory / "state.json"
+        truth,
+        bench,
+        unit,
+        faults=faults,
+        state_path=directory / "state.json",
+        lot=lot,
     )
     stage_port = PtyPort(
         StageFirmware(world, identity="twin-stage", faults=faults), name="stage"
@@ -123,6 +134,15 @@ def _run(configuration: TwinConfiguration, asked_to_end: threading.Event) -> Non
     world.save()
     log.write("unit", "end", why)
     log.close()
+
+
+def _truths(configuration: TwinConfiguration) -> tuple[Truth, tuple[Truth, ...]]:
+    """The truth of the part that the run is about, and of each of a lot as seated."""
+    bench, part, seed = configuration.bench, configuration.part, configuration.seed
+    if not configuration.lot:
+        return draw_truth(bench, part, seed), ()
+    truths = draw_lot(bench, part, configuration.lot, seed)
+    return truths[configuration.lot.index(part)], truths
 
 
 def _unit_port(

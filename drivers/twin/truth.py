@@ -150,20 +150,35 @@ def twin_settings(bench: Bench) -> TwinSettings:
     return bench.twin
 
 
-def draw_truth(bench: Bench, part: Part, seed: int) -> Truth:
-    """A truth drawn from the priors of ``bench`` and ``part`` with ``seed`` alone."""
+def draw_truth(
+    bench: Bench,
+    part: Part,
+    seed: int,
+    *,
+    own: str = "",
+    mounts: int = MOUNTS_DRAWN,
+) -> Truth:
+    """A truth drawn from the priors of ``bench`` and ``part`` with ``seed`` alone.
+
+    ``own`` (any text) sets what belongs to this part apart from another part's on the
+    same bench; ``mounts`` is how many mounts are drawn.
+    """
     settings = twin_settings(bench)
-    off = settings.pitch_off_percent / 100.0
-    stretch = keyed_generator(seed, "pitch").uniform(-off, off)
     material = part.material
     return Truth(
         seed=seed,
-        pitch_nm=part.nominal_pitch_nm * (1.0 + float(stretch)),
+        pitch_nm=_draw_pitch_nm(bench, part, seed, own),
         expansion_per_K=_normal(
-            seed, "expansion", material.expansion_per_K, material.u_expansion_per_K
+            seed,
+            f"expansion{own}",
+            material.expansion_per_K,
+            material.u_expansion_per_K,
         ),
         part_temperature_C=_normal(
-            seed, "part temperature", material.temperature_C, material.u_temperature_C
+            seed,
+            f"part temperature{own}",
+            material.temperature_C,
+            material.u_temperature_C,
         ),
         vacuum_wavelength_nm={
             name: _draw_wavelength(seed, name, laser)
@@ -173,9 +188,20 @@ def draw_truth(bench: Bench, part: Part, seed: int) -> Truth:
         beam=_draw_beam(bench, seed),
         air=_draw_air(bench, seed),
         phases=_draw_phases(seed),
-        mounts=tuple(_draw_mount(bench, part, seed, i) for i in range(MOUNTS_DRAWN)),
-        part=_draw_part(bench, part, seed),
+        mounts=tuple(_draw_mount(bench, part, seed, i) for i in range(mounts)),
+        part=_draw_part(bench, part, seed, own),
     )
+
+
+def _draw_pitch_nm(bench: Bench, part: Part, seed: int, own: str) -> float:
+    """A certified pitch is off by what its certificate says, another by the bench's."""
+    if part.certified is not None:
+        certified = part.certified
+        quantity = f"certified pitch{own}"
+        return _normal(seed, quantity, certified.pitch_nm, certified.u_pitch_nm)
+    off = twin_settings(bench).pitch_off_percent / 100.0
+    stretch = keyed_generator(seed, f"pitch{own}").uniform(-off, off)
+    return part.nominal_pitch_nm * (1.0 + float(stretch))
 
 
 def _normal(seed: int, quantity: str, mean: float, sd: float, mount: int = 0) -> float:
@@ -236,23 +262,23 @@ def _draw_air(bench: Bench, seed: int) -> AirTruth:
     )
 
 
-def _draw_part(bench: Bench, part: Part, seed: int) -> PartTruth:
+def _draw_part(bench: Bench, part: Part, seed: int, own: str = "") -> PartTruth:
     effects = twin_settings(bench).effects
     mm, index, wedges = 0.0, effects.cover_index, (0.0, 0.0)
     if part.cover_mm > 0.0:
-        mm = abs(_normal(seed, "cover", part.cover_mm, part.u_cover_mm))
-        index = _normal(seed, "cover index", part.cover_index, part.u_cover_index)
+        mm = abs(_normal(seed, f"cover{own}", part.cover_mm, part.u_cover_mm))
+        index = _normal(seed, f"cover index{own}", part.cover_index, part.u_cover_index)
         wedge = part.u_cover_wedge_mrad * 1e-3
         wedges = (
-            _normal(seed, "cover wedge across", 0.0, wedge),
-            _normal(seed, "cover wedge along", 0.0, wedge),
+            _normal(seed, f"cover wedge across{own}", 0.0, wedge),
+            _normal(seed, f"cover wedge along{own}", 0.0, wedge),
         )
     if effects.cover_thickness_mm > 0.0:
         mm, index = effects.cover_thickness_mm, effects.cover_index
     radius = effects.track_radius_mm
     if radius == 0.0 and part.track_radius_mm is not None:
         u_mm = part.u_track_radius_mm
-        radius = abs(_normal(seed, "track radius", part.track_radius_mm, u_mm))
+        radius = abs(_normal(seed, f"track radius{own}", part.track_radius_mm, u_mm))
     return PartTruth(
         cover_mm=mm,
         cover_index=index,

@@ -5,6 +5,7 @@ bench, the label and what is here; nothing from job, recipe or controller.
 """
 
 import threading
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -37,11 +38,15 @@ STRAY = SpotReading(x_mm=77.0, y_mm=44.0, ux_mm=0.1, uy_mm=0.1, brightness=0.02)
 
 @dataclass(frozen=True)
 class Seat:
-    """How the part is seated: index of the mount, its angle, turn in its own plane."""
+    """How the part is seated: index of the mount, its angle, turn in its own plane.
+
+    ``part`` says which of a lot it is.
+    """
 
     mount: int
     mount_deg: float
     face_deg: float = 0.0
+    part: int = 0
 
 
 class World:
@@ -55,10 +60,12 @@ class World:
         *,
         faults: FaultSchedule,
         state_path: Path,
+        lot: Sequence[Truth] = (),
     ) -> None:
+        """``lot``: the truth of each part of a lot; ``truth`` where there is none."""
         kept = read_state(state_path) or _first_state(truth.seed)
         settings = twin_settings(bench)
-        self.truth = truth
+        self._truths = tuple(lot) or (truth,)
         self.bench = bench
         self.unit = unit
         self.time = BenchTime(kept.bench_s, settings.speed)
@@ -81,6 +88,11 @@ class World:
         fresh = settings.repeated_noise == "fresh"
         self._repeated = RepeatedSteps(state_path.parent) if fresh else None
         faults.go_on_from(kept.seen)
+
+    @property
+    def truth(self) -> Truth:
+        """What is true with the part that is in."""
+        return self._truths[self._seat.part]
 
     # The stage, as its firmware sees it. Angles are readings.
 
@@ -137,10 +149,18 @@ class World:
             self._save_at_rest(now_s)
         return now_s
 
-    def seat(self, mount: int, mount_deg: float, face_deg: float = 0.0) -> None:
-        """The person on the spot seats the part anew."""
+    def seat(
+        self, mount: int, mount_deg: float, face_deg: float = 0.0, part: int = 0
+    ) -> None:
+        """The person on the spot seats the part anew, or another one of the lot.
+
+        Raises ValueError where there is no such part.
+        """
         with self._lock:
-            self._seat = Seat(mount, mount_deg, face_deg)
+            if not 0 <= part < len(self._truths):
+                raise ValueError(f"there is no part number {part}")
+            self._seat = Seat(mount, mount_deg, face_deg, part)
+            self.camera.sees(self.truth)
 
     def cut_power(self) -> None:
         """The stage loses its zero and the unit its light, as in a power cut."""

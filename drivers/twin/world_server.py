@@ -94,7 +94,10 @@ class WorldAsks:
             "now": lambda m: world.time.now_s(),
             "wait": lambda m: world.wait(float(m["seconds"])),
             "seat": lambda m: world.seat(
-                int(m["mount"]), float(m["mount_deg"]), float(m.get("face_deg", 0.0))
+                int(m["mount"]),
+                float(m["mount_deg"]),
+                float(m.get("face_deg", 0.0)),
+                int(m.get("part", 0)),
             ),
             "door": lambda m: world.unit.set_door(
                 bool(m["closed"]), channel=m.get("channel")

@@ -32,7 +32,8 @@ def test_every_shipped_job_loads_from_another_folder(
     loaded = read_job(f"demo:{name}")
     assert loaded.job.job == name
     assert loaded.source == f"demo:{name}"
-    assert set(loaded.files) == {"job", "bench", "part", "recipe"}
+    seated = {f"lot[{index}]" for index in range(len(loaded.job.lot))}
+    assert set(loaded.files) == {"job", "bench", "part", "recipe"} | seated
     assert all(path.is_file() for path in loaded.files.values())
     assert read_job(loaded.files["job"]).job == loaded.job
 
