@@ -79,8 +79,9 @@ def start_twin(
 
     ``lot`` holds the parts that are seated in turn, ``part`` among them; empty where
     that is ``part`` alone. The twin goes on from ``state.json`` where there is one and
-    writes ``twin_truth.json``, ``unit.log`` and ``twin.err``. Raises DeviceRefused where the twin refuses its
-    configuration or its folder, LineBroke where it does not start, NoAnswerInTime.
+    writes ``twin_truth.json``, ``unit.log`` and ``twin.err``. Raises DeviceRefused
+    where the twin refuses its configuration or its folder, LineBroke where it does not
+    start, NoAnswerInTime.
     """
     directory.mkdir(parents=True, exist_ok=True)
     key, token = secrets.token_bytes(32), secrets.token_hex(16)

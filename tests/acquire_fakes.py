@@ -69,10 +69,12 @@ class FakeBench:
     angle_deg: float = 7.0
     homed: bool = False
     mount_deg: float = 0.0
+    part_in: int = 0
     clock_s: float = 0.0
     lit_moves: int = 0
     resumed: bool | None = None
     trips: list[str] = field(default_factory=list)
+    asked: list[str] = field(default_factory=list)
     on_call: Callable[[str], None] | None = None
 
     def count(self, what: str) -> None:
@@ -124,6 +126,7 @@ class FakeBench:
         self.count(f"seat {mount}")
         assert not self.lit
         self.mount_deg = mount_deg
+        self.part_in = part
 
     def spots(self, label: Label) -> Sequence[SpotReading]:
         self.count(f"spots {label.step}")
@@ -142,6 +145,7 @@ class FakeBench:
 
     def ask_person(self, what: str) -> str:
         self.count("person")
+        self.asked.append(what)
         assert not self.lit
         return "somebody"
 
@@ -159,7 +163,7 @@ class FakeBench:
 
     def places_mm(self, laser: str) -> list[float]:
         """Where the orders -1, 0, +1 meet the screen, hole and edge left out."""
-        bench, part = self.job.bench, self.job.part
+        bench, part = self.job.bench, self.job.seated[self.part_in]
         a = np.radians(bench.stage.direction * (self.angle_deg - self.mount_deg))
         wave_nm = bench.lasers[laser].vacuum_wavelength_nm / 1.00027
         places = []
