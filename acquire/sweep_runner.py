@@ -27,6 +27,7 @@ class SweepRunner:
         self._taker = StepTaker(context, devices, keeper, self._exposures)
         self._group: tuple[int, int, str] | None = None
         self._laser = ""
+        self._begun = False
 
     def run(self, standing: Standing) -> None:
         """Homes, checks the zero order, takes every remaining step; dark at the end.
@@ -39,6 +40,8 @@ class SweepRunner:
 
     def _run(self, standing: Standing) -> None:
         self._find_what_was_not_found(standing)
+        # A first step that was skipped is taken up when another part may be in.
+        self._begun = bool(standing.done)
         try:
             self._devices.gate.dark()
             self._meeting_faults(standing.remaining[0], self._devices.stage.home)
@@ -110,9 +113,10 @@ class SweepRunner:
     def _seat(self, step: Step) -> None:
         world, report = self._devices.world, self._context.report
         job = self._context.job
-        if job.lot and step.step == 0:
+        first = step.step == 0 and not self._begun
+        if job.lot and first:
             report.say(f"the first part is {part_named(job, step)}: it must be in")
-        elif (job.lot or len(job.recipe.mounts_deg) > 1) and step.step > 0:
+        elif not first and (job.lot or len(job.recipe.mounts_deg) > 1):
             self._ask_person(step, self._seating_words(step))
         world.seat_part(step.mount, step.mount_deg, step.face_deg, step.part)
         report.state("sweeping", mount=step.mount + 1)
@@ -120,6 +124,9 @@ class SweepRunner:
     def _seating_words(self, step: Step) -> str:
         job = self._context.job
         what = f"seat {part_named(job, step) or 'the part'}"
+        if job.lot and self._group is None:
+            # Taken up again: seated anew it would sit otherwise than at the steps done.
+            what += ", or leave it as it sits if it is in"
         if len(job.recipe.mounts_deg) > 1:
             what += f" for mount {step.mount + 1}, {step.mount_deg:g} deg"
         if any(job.recipe.faces_deg):

@@ -114,6 +114,23 @@ def test_killed_at_every_exchange_and_resumed_nothing_is_of_another_part(
             }
 
 
+def test_a_first_step_taken_up_late_has_its_part_seated_again(tmp_path: Path) -> None:
+    whole = FakeBench(SHORT)
+    sweep_job(SHORT, tmp_path / "whole", QuietProgress(), opener(whole))
+    last = len(whole.log) - whole.log[::-1].index("person")
+    with pytest.raises(Killed):
+        fake = FakeBench(SHORT, fail_at=last)
+        sweep_job(SHORT, tmp_path / "cut", QuietProgress(), opener(fake))
+    (run,) = (tmp_path / "cut").iterdir()
+    with open_journal(run / "run.db") as journal:
+        first = next(r for r in journal.intents() if r.kind == "step")
+        journal.void(first.intent, "skipped")
+    fake = FakeBench(SHORT)
+    resume_run(run, QuietProgress(), opener(fake))
+    assert fake.asked[0].startswith("seat reference-740, serial R1, centre, or leave")
+    assert outcome(run) == outcome(next((tmp_path / "whole").iterdir()))
+
+
 def test_another_part_is_no_change_of_temperature() -> None:
     def reading(part_C: float) -> BenchReading:
         return BenchReading(AirReading(20.0, 1013.0, 50.0, part_C))
@@ -257,7 +274,7 @@ class KilledAtExchange:
 def test_killed_while_parts_are_exchanged_on_the_twin(
     swept: Swept, tmp_path: Path
 ) -> None:
-    """The twin comes up again with the first part in; the person seats the right one."""
+    """The twin comes up with the first part in; the person seats the right one."""
 
     @contextmanager
     def dying(request: BenchRequest) -> Iterator[BenchDevices]:
@@ -270,5 +287,6 @@ def test_killed_while_parts_are_exchanged_on_the_twin(
     run = next(p for p in tmp_path.iterdir() if p.is_dir())
     progress = QuietProgress()
     resume_run(run, progress, open_bench)
-    assert any("seat shim-830-second, serial 8" in said for said in progress.said)
+    asked = "seat shim-830-second, serial 8, near-the-edge, or leave it as it sits"
+    assert any(asked in said for said in progress.said)
     assert outcome(run) == outcome(swept.run)
