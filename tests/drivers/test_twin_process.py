@@ -111,6 +111,7 @@ def test_light_shows_spots_and_a_frame_and_dark_shows_none(twin: Clients) -> Non
 
 def test_a_turning_stage_smears(twin: Clients) -> None:
     twin.stage.move_to(-20.0)
+    twin.world.seat_part(0, 0.0)
     still = while_lit(twin.unit, lambda: twin.camera.expose(100.0, label(2)))
 
     def turn() -> None:
