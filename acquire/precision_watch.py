@@ -2,11 +2,11 @@
 
 What decides must not depend on how busy the machine is: the fit of the repeats up to
 one is looked at when the *next* one is over, for which a whole repeat was time. So
-nothing waits, and a resumed run decides the same.
+nothing waits, and a resumed run decides the same. Whether it will be reached by the end
+is foretold elsewhere (``live_judge``).
 """
 
 import bisect
-import math
 import threading
 from collections.abc import Callable, Sequence
 from contextlib import suppress
@@ -14,7 +14,6 @@ from contextlib import suppress
 from pitchsweep.acquire.fit_input import FitInput
 from pitchsweep.acquire.measured_state import measure
 from pitchsweep.analysis.analysis_errors import AnalysisError
-from pitchsweep.analysis.budget import READINGS
 from pitchsweep.analysis.records import PitchResult
 
 
@@ -25,23 +24,18 @@ class PrecisionWatch:
         self,
         enough: float,
         blocks: Sequence[int],
-        last_mount: int,
         read: Callable[[int], FitInput],
         say: Callable[[str], None],
     ) -> None:
         """``blocks``: first step of every repeat in every mount, rising, and the end.
 
-        ``last_mount`` is the first step of the last mount: until it is under way
-        nobody can say what another mount will do for the stage's errors.
         ``read(step)`` gives the spots of all steps before ``step``.
         """
         self._enough = enough
         self._blocks = list(blocks)
-        self._last_mount = last_mount
         self._read = read
         self._say = say
         self._fits: dict[int, tuple[threading.Thread, list[PitchResult]]] = {}
-        self._warned = False
 
     def before_step(self, step: int) -> str:
         """Why the sweep may end before ``step``; empty to go on.
@@ -79,38 +73,10 @@ class PrecisionWatch:
         self._say(f"so far {result.pitch_nm:.4f} nm, relative u {relative:.1e}")
         if relative <= self._enough:
             return f"the pitch is known to {relative:.1e}, {self._enough:.1e} is enough"
-        if self._blocks[block] > self._last_mount:
-            self._warn(result, self._blocks[block] / self._blocks[-1])
         return ""
-
-    def _warn(self, result: PitchResult, share_done: float) -> None:
-        expected = expected_u(result, share_done)
-        if expected > self._enough and not self._warned:
-            self._warned = True
-            self._say(
-                f"warning: at the end the relative u will be near {expected:.1e}, not "
-                f"{self._enough:.1e}: {advice(result)}"
-            )
 
 
 def _fit(given: FitInput, found: list[PitchResult]) -> None:
     # Too few spots for a fit yet: there is simply no figure.
     with suppress(AnalysisError, ValueError):
         found.append(measure(given))
-
-
-def expected_u(result: PitchResult, share_done: float) -> float:
-    """Relative u at the end: what comes from readings falls with their number."""
-    total = (result.u_pitch_nm / result.pitch_nm) ** 2
-    readings = sum(
-        (line.u_nm / result.pitch_nm) ** 2
-        for line in result.budget
-        if line.source == READINGS
-    )
-    return math.sqrt(max(0.0, total - readings) + readings * share_done)
-
-
-def advice(result: PitchResult) -> str:
-    """What the largest part of the budget asks for."""
-    largest = max(result.budget, key=lambda line: line.u_nm)
-    return f"most of it is {largest.source}; lessen that, or add mounts and repeats"

@@ -36,7 +36,6 @@ class SweepEnd:
             self._precision = PrecisionWatch(
                 schedule.enough_relative_u,
                 repeats_of(plan),
-                last_mount_of(plan),
                 self._kept_before,
                 say,
             )
@@ -62,9 +61,3 @@ def repeats_of(plan: SweepPlan) -> list[int]:
     for step in plan.steps:
         firsts.setdefault((step.mount, step.repeat), step.step)
     return [*firsts.values(), len(plan.steps)]
-
-
-def last_mount_of(plan: SweepPlan) -> int:
-    """First step of the last mount."""
-    last = plan.steps[-1].mount
-    return min(step.step for step in plan.steps if step.mount == last)
